@@ -1,0 +1,303 @@
+"""The frozen description of a cell: arm, paddle, limits, margins, acceptance, command log. Data only.
+
+Everything is in SI units and in radians. Arrays are read-only.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from typing import Literal
+
+import numpy as np
+from numpy.typing import NDArray
+
+Array = NDArray[np.float64]
+Vec3 = tuple[float, float, float]
+
+STANDARD_GRAVITY_M_S2 = 9.80665  # 3rd CGPM, 1901
+
+LimitName = Literal[
+    "position", "velocity", "acceleration", "jerk", "torque", "torque rate", "duty", "tool speed"
+]
+
+
+@dataclass(frozen=True)
+class Input:
+    """A file that was read, with the SHA-256 of its bytes."""
+
+    path: str
+    sha256: str
+
+
+@dataclass(frozen=True)
+class Pose:
+    """A placement: translation in m, then roll-pitch-yaw about fixed x, y, z in rad (URDF's convention)."""
+
+    xyz_m: Vec3 = (0.0, 0.0, 0.0)
+    rpy_rad: Vec3 = (0.0, 0.0, 0.0)
+
+    @property
+    def rotation(self) -> Array:
+        """Rotation matrix Rz(yaw) Ry(pitch) Rx(roll), shape (3, 3)."""
+        (cr, cp, cy), (sr, sp, sy) = np.cos(self.rpy_rad), np.sin(self.rpy_rad)
+        return np.array(
+            [
+                [cy * cp, cy * sp * sr - sy * cr, cy * sp * cr + sy * sr],
+                [sy * cp, sy * sp * sr + cy * cr, sy * sp * cr - cy * sr],
+                [-sp, cp * sr, cp * cr],
+            ]
+        )
+
+
+@dataclass(frozen=True)
+class Bound:
+    """A stated limit lo <= x <= hi and where it was stated; ±inf where there is known to be none."""
+
+    lo: float
+    hi: float
+    source: str
+
+
+@dataclass(frozen=True)
+class JointLimits:
+    """What is known of one joint; None is unknown, never zero and never infinite.
+
+    Units: rad (m for a sliding joint), per s, per s², per s³; N·m (N), N·m/s (N/s);
+    armature (reflected rotor inertia) kg·m² (kg), damping N·m·s/rad (N·s/m), dry friction N·m (N).
+    """
+
+    position: Bound | None = None
+    velocity: Bound | None = None
+    acceleration: Bound | None = None
+    jerk: Bound | None = None
+    torque: Bound | None = None
+    torque_rate: Bound | None = None
+    torque_continuous: Bound | None = None
+    armature: float | None = None
+    damping: float | None = None
+    friction: float | None = None
+
+
+@dataclass(frozen=True)
+class Joint:
+    """One joint of the chain from base to tip, in the user's own name."""
+
+    name: str
+    kind: Literal["revolute", "continuous", "prismatic"]
+    limits: JointLimits = field(default_factory=JointLimits)
+
+    @property
+    def sliding(self) -> bool:
+        """True for a prismatic joint, whose position is in metres."""
+        return self.kind == "prismatic"
+
+
+@dataclass(frozen=True)
+class HeldJoint:
+    """A joint off the chain, held at a value in rad or m; `name` is the user's, `model_name` that of `model_xml`."""
+
+    name: str
+    model_name: str
+    value: float
+
+
+@dataclass(frozen=True)
+class ArmSpec:
+    """The arm as read and checked.
+
+    Attributes
+    ----------
+    urdf_path : str
+    model_xml : str
+        A URDF of links, joints and inertias alone, rewritten from the checked one: canonical names
+        (joint i of the chain is "chain_i", the tip link is "tip"), every limit attribute present,
+        continuous joints written as revolute, no geometry.
+    tip : str
+        The tip link's name in the user's file.
+    joints : tuple of Joint
+        The chain in order from base to tip.
+    held : tuple of HeldJoint
+    base : Pose
+        Base (root link) in the world.
+    gravity_m_s2 : Vec3
+        In world axes.
+    start : tuple of float, or None
+        Start posture, one value a joint; None asks for a posture for the log's first pose.
+    start_velocity : tuple of float
+    """
+
+    urdf_path: str
+    model_xml: str
+    tip: str
+    joints: tuple[Joint, ...]
+    held: tuple[HeldJoint, ...] = ()
+    base: Pose = Pose()
+    gravity_m_s2: Vec3 = (0.0, 0.0, -STANDARD_GRAVITY_M_S2)
+    start: tuple[float, ...] | None = None
+    start_velocity: tuple[float, ...] = ()
+
+
+@dataclass(frozen=True)
+class Part:
+    """A further mass on the paddle (holder, screws, sensor): a point unless an inertia is given.
+
+    com_m in the face frame; inertia about the part's own centre, face-frame axes (xx, yy, zz, xy, xz, yz).
+    """
+
+    mass_kg: float
+    com_m: Vec3
+    inertia_kg_m2: tuple[float, ...] = (0.0,) * 6
+
+
+@dataclass(frozen=True)
+class Paddle:
+    """The rigid paddle: face frame on the tip link (origin the strike point, z out of the face), shape, mass."""
+
+    mount: Pose
+    mass_kg: float
+    shape: Literal["disc", "plate", "given"]
+    radius_m: float | None = None
+    size_m: tuple[float, float] | None = None
+    thickness_m: float = 0.0
+    com_m: Vec3 | None = None
+    inertia_kg_m2: tuple[float, ...] | None = None
+    parts: tuple[Part, ...] = ()
+
+
+@dataclass(frozen=True)
+class Tool:
+    """A maker's cap on the speed of the strike point."""
+
+    speed_m_s: float
+    source: str
+
+
+@dataclass(frozen=True)
+class Ball:
+    """The ball; `source` names the rule a preset came from."""
+
+    mass_kg: float
+    radius_m: float
+    drag_coefficient: float = 0.0
+    lift_coefficient: float = 0.0
+    air_kg_m3: float = 1.2
+    source: str = "cell"
+
+
+@dataclass(frozen=True)
+class Contact:
+    """The pair of ball and face."""
+
+    restitution: float
+    restitution_spread: float = 0.0
+    restitution_at: tuple[tuple[float, float], ...] = ()
+    friction: float = 0.0
+    tangential_restitution: float = 0.0
+    source: str = "cell"
+
+
+@dataclass(frozen=True)
+class Drive:
+    """How the real joints follow what is sent to them: pure delay, first-order lag, timing jitter (±)."""
+
+    delay_s: float = 0.0
+    lag_s: float = 0.0
+    jitter_s: float = 0.0
+
+
+@dataclass(frozen=True)
+class SolverSpec:
+    """QP solvers by qpsolvers' names, the weight of rotation (m), the null-space return rate (1/s)."""
+
+    name: str = "daqp"
+    fallback: str = "piqp"
+    rotation_length_m: float | None = None
+    posture_gain_per_s: float = 0.5
+
+
+@dataclass(frozen=True)
+class Margins:
+    """What a plan keeps back from every stated limit; shares of one for all but position."""
+
+    position_rad: float = 0.002
+    position_m: float = 0.0005
+    velocity_share: float = 0.02
+    acceleration_share: float = 0.02
+    torque_share: float = 0.10
+    torque_rate_share: float = 0.05
+    jerk_share: float = 0.05
+
+
+@dataclass(frozen=True)
+class Accept:
+    """What counts as delivered."""
+
+    at: Literal["strikes", "throughout"] = "strikes"
+    strike_speed_error_share: float = 0.03
+    strike_lateral_m_s: float = 0.05
+    strike_position_m: float = 0.005
+    strike_tilt_error_rad: float = float(np.radians(1.0))
+    strike_window_s: float = 0.010
+    strikes_share: float = 1.0
+    require: tuple[LimitName, ...] = ("position", "velocity", "torque", "torque rate")
+
+
+@dataclass(frozen=True, eq=False)
+class CommandLog:
+    """Commanded paddle twists as sent.
+
+    Attributes
+    ----------
+    t_s : (N,) strictly increasing
+    twist : (N, 6) vx, vy, vz in m/s, wx, wy, wz in rad/s, in the frame and about the point of Follow
+    strike : (N,) bool, or None where the log marks none
+    pose : (N, 7) px, py, pz in m, unit quaternion qw, qx, qy, qz, world axes, of the strike point; or None
+    mends : what was mended while reading, a line each
+    source : the file, or "arrays"
+    """
+
+    t_s: Array
+    twist: Array
+    strike: NDArray[np.bool_] | None = None
+    pose: Array | None = None
+    mends: tuple[str, ...] = ()
+    source: str = "arrays"
+
+
+@dataclass(frozen=True)
+class Follow:
+    """How a command log is to be read and followed."""
+
+    frame: Literal["world", "base", "paddle"]
+    point: Literal["strike", "tip"] | Vec3
+    commands: CommandLog
+    interpolation: Literal["hold", "linear"] = "hold"
+    shortfall: Literal["closest", "same-direction"] = "closest"
+    pose_gain_per_s: float = 0.0
+    strikes: Literal["marked", "guessed-ok"] = "marked"
+    strike_min_m_s: float = 0.1
+    strike_min_gap_s: float = 0.15
+
+
+@dataclass(frozen=True)
+class Cell:
+    """A whole cell file, checked.
+
+    `follow` is None where the file has no [follow] table. `inputs` are the files read; `notes` are things
+    the readers found worth saying that are no faults (a limit ignored, a joint held at zero by default).
+    """
+
+    path: str
+    arm: ArmSpec
+    paddle: Paddle
+    period_s: float = 0.001
+    tool: Tool | None = None
+    ball: Ball | None = None
+    contact: Contact | None = None
+    drive: Drive | None = None
+    solver: SolverSpec = SolverSpec()
+    margins: Margins = Margins()
+    accept: Accept = Accept()
+    follow: Follow | None = None
+    inputs: tuple[Input, ...] = ()
+    notes: tuple[str, ...] = ()

@@ -1,0 +1,243 @@
+"""One cell made ready to run, and one run of it: start posture, reference, roll, evidence, verdict."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from reach.arm import Arm
+from reach.cell import Accept, Array, Cell
+from reach.errors import Fault, InputError
+from reach.evidence.measure import Measured, measure
+from reach.evidence.record import Evidence, Strike
+from reach.evidence.strikes import compare, judge_strike, strike_faults, throughout_faults, track
+from reach.follow.contacts import Contacts, contacts
+from reach.follow.reference import Reference, build_reference
+from reach.follow.roll import Roll, roll
+from reach.kinematics import Chain, logarithm
+from reach.limits import LIMITS
+from reach.limits.base import Limit
+from reach.posture import postures
+from reach.verdict import Verdict, judge
+
+ALWAYS_UNCHECKED = ("clearance", "stand flexibility")
+
+
+@dataclass(frozen=True, eq=False)
+class Run:
+    """One run of a cell.
+
+    Attributes
+    ----------
+    cell : Cell with the start posture filled in
+    reference, roll, measured : None where there was no start posture
+    early : whether a search ended the roll at its first miss
+    """
+
+    cell: Cell
+    contacts: Contacts
+    reference: Reference | None
+    roll: Roll | None
+    measured: Measured | None
+    evidence: Evidence
+    verdict: Verdict
+    early: bool = False
+
+    @property
+    def passed(self) -> bool:
+        """Whether nothing speaks against the motion; what is unknown counts as unlimited."""
+        return not self.early and self.verdict.verdict != "not deliverable"
+
+
+def build_limits(cell: Cell) -> dict[str, Limit]:
+    """Every limit kind of LIMITS for a cell, by name."""
+    return {name: kind(cell) for name, kind in LIMITS.items()}
+
+
+def run(cell: Cell, quick: bool = False) -> Run:
+    """Follow the cell's log once and judge it.
+
+    Parameters
+    ----------
+    quick : end at the first strike that misses; for searches that only ask whether the verdict holds
+    """
+    assert cell.follow is not None
+    arm = Arm(cell.arm, cell.paddle)
+    limits = build_limits(cell)
+    cell, blocked = _with_start(cell, arm)
+    if cell.arm.start is None:
+        found = contacts(cell.follow, None)
+        evidence = _no_motion(cell, limits, found, blocked)
+        return Run(cell, found, None, None, None, evidence, judge(evidence, cell.accept))
+    start = np.array(cell.arm.start)
+    reference = build_reference(cell, cell.follow, *_first_pose(cell, arm, start))
+    found = contacts(cell.follow, reference)
+    blocked = blocked + _static_overload(cell, arm, start)
+    accept = cell.accept
+    watch = _Watch(cell, arm, reference, found, accept) if quick else None
+    rolled = roll(cell, arm, limits, reference, start, cell.follow.pose_gain_per_s, watch)
+    chain = Chain.of(arm)
+    measured = measure(arm, chain, limits, rolled.delivered)
+    evidence = _evidence(cell, limits, chain, reference, found, rolled, measured, blocked)
+    early = watch is not None and watch.missed
+    return Run(cell, found, reference, rolled, measured, evidence, judge(evidence, accept), early)
+
+
+def _first_pose(cell: Cell, arm: Arm, start: Array) -> tuple[Array, Array]:
+    """Where the reference begins: the log's first pose where it has one, else the start posture's."""
+    assert cell.follow is not None
+    pose = cell.follow.commands.pose
+    if pose is None:
+        return arm.pose(start)
+    return pose[0, :3].copy(), rotation_of(pose[0, 3:])
+
+
+def rotation_of(quaternion: Array) -> Array:
+    """Rotation matrix (3, 3) of a unit quaternion (w, x, y, z)."""
+    w, x, y, z = quaternion
+    return np.array(
+        [
+            [1 - 2 * (y * y + z * z), 2 * (x * y - w * z), 2 * (x * z + w * y)],
+            [2 * (x * y + w * z), 1 - 2 * (x * x + z * z), 2 * (y * z - w * x)],
+            [2 * (x * z - w * y), 2 * (y * z + w * x), 1 - 2 * (x * x + y * y)],
+        ]
+    )
+
+
+def _with_start(cell: Cell, arm: Arm) -> tuple[Cell, tuple[str, ...]]:
+    """Fill in start = "auto" by inverse kinematics; say what blocks where none is found or it is far off."""
+    assert cell.follow is not None
+    pose = cell.follow.commands.pose
+    if cell.arm.start is None:
+        if pose is None:
+            what = 'start = "auto" needs the pose columns in the command log; give start_rad instead'
+            raise InputError([Fault(cell.path, "arm.start", what)])
+        answer = postures(arm, pose[0, :3], rotation_of(pose[0, 3:]))
+        if len(answer.q) == 0:
+            return cell, (f"reach: no posture for the log's first pose; {answer.text}",)
+        best = tuple(float(x) for x in answer.q[0])
+        return replace(cell, arm=replace(cell.arm, start=best)), ()
+    if pose is None:
+        return cell, ()
+    position, rotation = arm.pose(np.array(cell.arm.start))
+    off = float(np.linalg.norm(pose[0, :3] - position))
+    turn = float(np.linalg.norm(logarithm(rotation_of(pose[0, 3:]) @ rotation.T)))
+    if off > cell.accept.strike_position_m or turn > cell.accept.strike_tilt_error_rad:
+        text = f"reach: the start posture is {1000 * off:.1f} mm and {np.degrees(turn):.1f}° from the log's first pose"
+        return cell, (text,)
+    return cell, ()
+
+
+def _static_overload(cell: Cell, arm: Arm, start: Array) -> tuple[str, ...]:
+    """Torque limits that holding the start posture alone breaks."""
+    load = arm.static_torque(start)
+    found = []
+    for joint, torque in zip(cell.arm.joints, load, strict=True):
+        bound = joint.limits.torque
+        if bound is not None and not bound.lo <= torque <= bound.hi:
+            limit = bound.hi if torque > 0 else -bound.lo
+            found.append(f"torque: holding {joint.name} at the start takes {abs(torque):.1f}, its limit is {limit:.1f}")
+    return tuple(found)
+
+
+class _Watch:
+    """Ends a roll at the first strike that is missed at its very instant."""
+
+    def __init__(self, cell: Cell, arm: Arm, reference: Reference, found: Contacts, accept: Accept):
+        self.missed = False
+        self._arm, self._accept = Arm(arm.spec, cell.paddle), accept
+        begin, dt = reference.t_s[0], cell.period_s
+        self._begin, self._dt, self._reference = begin, dt, reference
+        self._allowed = len(found.t_s) - int(np.ceil(accept.strikes_share * len(found.t_s) - 1e-9))
+        rows = np.rint((found.t_s - begin) / dt).astype(int)
+        near = np.abs(rows * dt + begin - found.t_s) <= accept.strike_window_s / 2
+        self._rows = set(rows[near].tolist()) if accept.at == "strikes" else set()
+
+    def __call__(self, row: int, q: Array, v: Array) -> bool:
+        if row not in self._rows:
+            return False
+        wanted = self._reference.at(np.array([self._begin + row * self._dt]))
+        position, rotation, jacobian = self._arm.jacobian(q)
+        errors = compare(wanted, (jacobian @ v)[None], position[None], rotation[None])
+        if strike_faults(errors, self._accept):
+            self._allowed -= 1
+            self.missed = self._allowed < 0
+        return self.missed
+
+
+def _evidence(
+    cell: Cell,
+    limits: dict[str, Limit],
+    chain: Chain,
+    reference: Reference,
+    found: Contacts,
+    rolled: Roll,
+    measured: Measured,
+    blocked: tuple[str, ...],
+) -> Evidence:
+    motion, accept = rolled.delivered, cell.accept
+    jitter = cell.drive.jitter_s if cell.drive else 0.0
+    strikes: tuple[Strike, ...] = tuple(
+        judge_strike(float(t), found.marked, chain, motion, reference.at, accept, jitter, cell.contact)
+        for t in found.t_s
+    )
+    beside = track(motion, reference.at, measured.position, measured.rotation, measured.twist, rolled.end_row)
+    throughout = accept.at == "throughout" or not strikes
+    return Evidence(
+        motion=motion,
+        torque=measured.torque,
+        rms_torque=measured.rms_torque,
+        uses=measured.uses,
+        track=beside,
+        strikes=strikes,
+        base_load=measured.base_load,
+        guessed=found.guessed and cell.follow is not None and cell.follow.strikes != "guessed-ok",
+        throughout_faults=throughout_faults(beside, accept) if throughout else (),
+        stopped=rolled.stopped,
+        unknown=_unknown(limits),
+        not_checked=not_checked(cell, limits),
+        blocked=blocked,
+        failed_steps=rolled.failed_steps,
+    )
+
+
+def _no_motion(cell: Cell, limits: dict[str, Limit], found: Contacts, blocked: tuple[str, ...]) -> Evidence:
+    return Evidence(
+        motion=None,
+        torque=None,
+        rms_torque=None,
+        uses=(),
+        track=None,
+        strikes=(),
+        base_load=None,
+        guessed=found.guessed,
+        throughout_faults=(),
+        stopped=False,
+        unknown=_unknown(limits),
+        not_checked=not_checked(cell, limits),
+        blocked=blocked,
+        failed_steps=0,
+    )
+
+
+def _unknown(limits: dict[str, Limit]) -> tuple[tuple[str, str | None], ...]:
+    return tuple(
+        (name, joint)
+        for name, limit in limits.items()
+        for joint, known in zip(limit.joints, limit.known, strict=True)
+        if not known
+    )
+
+
+def not_checked(cell: Cell, limits: dict[str, Limit]) -> tuple[str, ...]:
+    """Names of what a verdict on this cell leaves out: limits with an unknown joint, then the model's gaps."""
+    names = [name for name, limit in limits.items() if not limit.known.all()]
+    if cell.drive is None:
+        names.append("drive tracking")
+    joints = [joint.limits for joint in cell.arm.joints]
+    if any(item.friction is None for item in joints):
+        names.append("friction")
+    if any(item.armature is None for item in joints):
+        names.append("reflected inertia")
+    return (*names, *ALWAYS_UNCHECKED)

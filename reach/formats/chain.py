@@ -1,0 +1,229 @@
+"""The tree of a URDF, the chain from its root to the tip, and what is held still beside the chain."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+
+from reach.cell import Array
+from reach.errors import FaultList, nearest
+from reach.formats import inertia
+from reach.formats.urdf import HELD_AS_DRAWN, MOVING, Urdf, UrdfJoint, UrdfLink, turned
+
+MOVABLE_KG_M2 = (
+    1e-9  # inertia about its joint below which a body counts as having none; a servo horn has 1e-7
+)
+MOVABLE_KG = 1e-6
+
+
+@dataclass(frozen=True)
+class Tree:
+    """A URDF whose links hang together as one tree.
+
+    Attributes
+    ----------
+    root : str
+        Name of the root link.
+    order : tuple of UrdfJoint
+        Every joint, parents before children, otherwise in the file's order.
+    path : tuple of UrdfJoint
+        From the root to the tip, fixed ones included.
+    """
+
+    urdf: Urdf
+    root: str
+    tip: str
+    order: tuple[UrdfJoint, ...]
+    path: tuple[UrdfJoint, ...]
+
+    @property
+    def chain(self) -> tuple[UrdfJoint, ...]:
+        """The joints that move the tip, in order."""
+        return tuple(joint for joint in self.path if joint.kind in MOVING)
+
+    @property
+    def beside(self) -> tuple[UrdfJoint, ...]:
+        """Joints off the chain that a value holds still."""
+        on_path = {joint.name for joint in self.path}
+        return tuple(j for j in self.order if j.kind in MOVING and j.name not in on_path)
+
+
+def read_tree(urdf: Urdf, tip: str, tip_where: tuple[FaultList, str], faults: FaultList) -> Tree | None:
+    """Check that links and joints form one tree and find the chain to `tip`.
+
+    Parameters
+    ----------
+    tip_where : the fault list and place of the file that named the tip
+    faults : those of the URDF
+
+    Returns
+    -------
+    Tree or None, after noting why there is none
+    """
+    before = len(faults.faults)
+    links = {link.name: link for link in urdf.links}
+    _unique(urdf.links, "link", faults)
+    _unique(urdf.joints, "joint", faults)
+    parent_of: dict[str, UrdfJoint] = {}
+    for joint in urdf.joints:
+        for role, name in (("parent", joint.parent), ("child", joint.child)):
+            if name not in links:
+                faults.add(joint.place, f'its {role} link "{name}" does not exist{nearest(name, links)}')
+        other = parent_of.setdefault(joint.child, joint)
+        if other is not joint:
+            faults.add(
+                joint.place,
+                f'link "{joint.child}" already hangs on joint "{other.name}" (line {other.line}); '
+                "a link has one parent, so loops can't be described",
+            )
+    if len(faults.faults) > before:
+        return None
+    order, root = _ordered(urdf, parent_of, faults)
+    tip_faults, where = tip_where
+    if tip not in links:
+        tip_faults.add(where, f'link "{tip}" does not exist in {urdf.path}{nearest(tip, links)}')
+        return None
+    if root is None:
+        return None
+    path: list[UrdfJoint] = []
+    name = tip
+    while name in parent_of:
+        path.insert(0, parent_of[name])
+        name = parent_of[name].parent
+    tree = Tree(urdf, root, tip, order, tuple(path))
+    if not tree.chain:
+        kind = "is the root link" if tip == root else "is fixed to the root link"
+        tip_faults.add(where, f'"{tip}" {kind}: no joint moves it; name the link that carries the paddle')
+        return None
+    for joint in path:
+        _fit_for_chain(joint, faults)
+    return tree if len(faults.faults) == before else None
+
+
+def _unique(items: tuple[UrdfLink, ...] | tuple[UrdfJoint, ...], what: str, faults: FaultList) -> None:
+    first: dict[str, int] = {}
+    for item in items:
+        line = first.setdefault(item.name, item.line)
+        if line != item.line:
+            faults.add(
+                f"line {item.line}, {what} {item.name}", f"name already used in line {line}; rename one"
+            )
+
+
+def _ordered(
+    urdf: Urdf, parent_of: Mapping[str, UrdfJoint], faults: FaultList
+) -> tuple[tuple[UrdfJoint, ...], str | None]:
+    """Joints with parents before children, and the one root; None where there are loops or several roots."""
+    roots = [link for link in urdf.links if link.name not in parent_of]
+    if len(roots) > 1:
+        names = ", ".join(f'"{link.name}"' for link in roots[:6])
+        faults.add(
+            f"line {roots[1].line}, link {roots[1].name}",
+            f"the file has {len(roots)} root links ({names}); join them to one tree with fixed joints",
+        )
+    children: dict[str, list[UrdfJoint]] = {}
+    for joint in urdf.joints:
+        children.setdefault(joint.parent, []).append(joint)
+    order: list[UrdfJoint] = []
+    waiting = [link.name for link in roots]
+    while waiting:
+        following = children.get(waiting.pop(0), [])
+        order.extend(following)
+        waiting.extend(joint.child for joint in following)
+    reached = {joint.name for joint in order}
+    circle = [joint for joint in urdf.joints if joint.name not in reached]
+    if circle:
+        names = ", ".join(joint.name for joint in circle[:6])
+        faults.add(circle[0].place, f"joints {names} form a loop without a root; cut it")
+    return tuple(order), roots[0].name if len(roots) == 1 and not circle else None
+
+
+def _fit_for_chain(joint: UrdfJoint, faults: FaultList) -> None:
+    if joint.kind in HELD_AS_DRAWN:
+        faults.add(joint.place, f"a {joint.kind} joint on the way to the tip can't be driven; make it fixed")
+    if joint.mimics is not None:
+        faults.add(
+            joint.place,
+            f'it mimics "{joint.mimics}" on the way to the tip; coupled joints are not supported: '
+            "make it fixed, or a joint of its own",
+        )
+
+
+def check_inertias(
+    tree: Tree, held: Mapping[str, float], torque_counts: bool, faults: FaultList
+) -> tuple[str, ...]:
+    """Check the inertia of every link that moves with the chain, before anything is merged.
+
+    For each chain joint the body it carries (up to the next chain joint) must have inertia about the
+    joint's own axis, which makes the mass matrix positive definite in every posture: in any motion the
+    first joint that moves then already gives kinetic energy. The tip's body may owe it to the paddle.
+
+    Parameters
+    ----------
+    held : value in rad or m by name, of joints beside the chain
+    torque_counts : without torque in the acceptance an absent inertia is a note, not a fault
+
+    Returns
+    -------
+    Notes.
+    """
+    links = {link.name: link for link in tree.urdf.links}
+    notes: list[str] = []
+    inertias: dict[str, float] = {}
+    # link -> (chain joint that carries it, placement in that joint's frame)
+    carried: dict[str, tuple[UrdfJoint, Array, Array]] = {}
+    chain = {joint.name for joint in tree.chain}
+    for joint in tree.order:
+        if joint.name in chain:
+            placed = joint, np.eye(3), np.zeros(3)
+        elif joint.parent in carried:
+            carrier, rotation, shift = carried[joint.parent]
+            own_rotation, own_shift = turned(joint.origin, joint.kind, joint.axis, held.get(joint.name, 0.0))
+            placed = carrier, rotation @ own_rotation, shift + rotation @ own_shift
+        else:
+            continue
+        carried[joint.child] = placed
+        carrier = placed[0]
+        inertias[carrier.name] = inertias.get(carrier.name, 0.0) + _about_axis(
+            links[joint.child], placed, faults, notes
+        )
+    tip_body = carried[tree.tip][0].name
+    for joint in tree.chain:
+        least = MOVABLE_KG if joint.kind == "prismatic" else MOVABLE_KG_M2
+        if inertias[joint.name] > least:
+            continue
+        bodies = ", ".join(name for name, (carrier, _, _) in carried.items() if carrier is joint)
+        lack = f"what it moves ({bodies}) has no inertia about its axis"
+        if joint.name == tip_body:
+            notes.append(f"{faults.file}: {joint.place}: {lack} but the paddle's")
+        elif torque_counts:
+            faults.add(joint.place, f"{lack}, so its torque would come out too small; add <inertial> there")
+        else:
+            notes.append(f"{faults.file}: {joint.place}: {lack}; torque would come out too small")
+    return tuple(notes)
+
+
+def _about_axis(
+    link: UrdfLink, placed: tuple[UrdfJoint, Array, Array], faults: FaultList, notes: list[str]
+) -> float:
+    """Inertia of one link about the axis of the joint that carries it (its mass for a sliding joint)."""
+    if link.inertial is None:
+        return 0.0
+    joint, rotation, shift = placed
+    own, place = link.inertial, f"line {link.inertial.line}, link {link.name}"
+    tensor = inertia.matrix(own.inertia)
+    fault, note = inertia.judge(own.mass_kg, tensor)
+    if not fault and float(np.linalg.norm(own.origin.xyz_m)) > inertia.FAR_COM_M:
+        fault = f"centre of mass {own.origin.xyz_m} m lies far off the link; is it in mm?"
+    if fault:
+        faults.add(place, fault)
+    if note:
+        notes.append(f"{faults.file}: {place}: {note}")
+    if joint.kind == "prismatic":
+        return own.mass_kg
+    axis = np.array(joint.axis)
+    turn = rotation @ own.origin.rotation
+    arm = np.cross(axis, shift + rotation @ np.array(own.origin.xyz_m))
+    return float(axis @ turn @ tensor @ turn.T @ axis + own.mass_kg * arm @ arm)

@@ -1,0 +1,116 @@
+"""What one key of a cell file means for another: shapes, presets, either-or, room for margins."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from typing import Any
+
+from reach.cell import Joint, Margins
+from reach.errors import FaultList
+from reach.formats import inertia
+
+_SHAPES: dict[str, tuple[tuple[str, ...], tuple[str, ...]]] = {
+    "disc": (("radius_m",), ("thickness_m",)),
+    "plate": (("size_m",), ("thickness_m",)),
+    "given": (("com_m", "inertia_kg_m2"), ()),
+}
+"""Shape -> (keys it needs, keys it may have)."""
+
+_SHAPE_KEYS = ("radius_m", "size_m", "thickness_m", "com_m", "inertia_kg_m2")
+
+
+def check_paddle(
+    paddle: Mapping[str, Any], given: Mapping[str, Any], faults: FaultList, notes: list[str]
+) -> None:
+    """Each shape has its keys and no other's; given inertias are those of solids."""
+    shape = paddle["shape"]
+    needs, may = _SHAPES[shape]
+    for key in _SHAPE_KEYS:
+        if key in needs and key not in given:
+            faults.add(f"paddle.{key}", f'missing; shape "{shape}" needs it')
+        elif key in given and key not in (*needs, *may):
+            faults.add(f"paddle.{key}", f'does not belong to shape "{shape}"; drop it, or change the shape')
+    bodies = [("paddle", paddle)] + [(f"paddle.part[{i}]", part) for i, part in enumerate(paddle["part"])]
+    for where, body in bodies:
+        mass, six = body["mass_kg"], body["inertia_kg_m2"]
+        if mass is None or six is None or not any(six):
+            continue
+        fault, note = inertia.judge(mass, inertia.matrix(six))
+        if fault:
+            faults.add(f"{where}.inertia_kg_m2", fault)
+        if note:
+            notes.append(f"{faults.file}: {where}.inertia_kg_m2: {note}")
+
+
+def check_ball(ball: Mapping[str, Any], given: Mapping[str, Any], faults: FaultList) -> None:
+    """Without a preset mass and radius must be given."""
+    if "preset" in given:
+        return
+    for key in ("mass_kg", "radius_m"):
+        if key not in given:
+            faults.add(f"ball.{key}", 'missing; give it, or preset = "table tennis" or "tennis"')
+
+
+def check_contact(contact: Mapping[str, Any], given: Mapping[str, Any], faults: FaultList) -> None:
+    """Restitution stays in (0, 1] with its spread; a table of it goes up in speed."""
+    restitution, spread = contact["restitution"], contact["restitution_spread"]
+    if "restitution_spread" in given and "restitution_at" in given:
+        faults.add("contact.restitution_at", "stands beside restitution_spread; keep one")
+    if restitution is not None and not spread < restitution <= 1 - spread:
+        faults.add(
+            "contact.restitution_spread",
+            f"{restitution:g} ± {spread:g} leaves the range above 0 and at most 1; narrow the spread",
+        )
+    before = -1.0
+    for row, (speed, value) in enumerate(contact["restitution_at"]):
+        where = f"contact.restitution_at[{row}]"
+        if speed < 0 or speed <= before:
+            faults.add(where, f"speed {speed:g} m/s; speeds must be at least 0 and go up")
+        if not 0 < value <= 1:
+            faults.add(where, f"restitution {value:g}; it must be above 0 and at most 1")
+        before = max(before, speed)
+
+
+def check_sections(read: Mapping[str, Any], given: Mapping[str, Any], faults: FaultList) -> None:
+    """Either-or keys of [survey] and repeated names in accept.require."""
+    if read["accept"]:
+        names = read["accept"]["require"]
+        for name in sorted({name for name in names if names.count(name) > 1}):
+            faults.add("accept.require", f'"{name}" stands twice; keep one')
+    if not read["survey"]:
+        return
+    survey, written = read["survey"], given["survey"]
+    if survey["box_m"] is not None:
+        for axis, low, high in zip("xyz", *survey["box_m"], strict=True):
+            if low > high:
+                faults.add("survey.box_m", f"{axis} goes from {low:g} down to {high:g}; swap them")
+    for row, normal in enumerate(survey["normals"] or ()):
+        if math.hypot(*normal) < 1e-9:
+            faults.add(f"survey.normals[{row}]", "is zero; give a direction")
+    by_ball = [key for key in ("ball_in_m_s", "ball_out_m_s") if key in written]
+    by_face = [key for key in ("normals", "face_tilts_deg", "bearings_deg") if key in written]
+    if len(by_ball) == 1:
+        faults.add(f"survey.{by_ball[0]}", "needs both ball_in_m_s and ball_out_m_s")
+    if by_ball and (by_face or "paddle_speed_m_s" in written):
+        faults.add(
+            f"survey.{by_ball[0]}", "fixes normal and paddle speed; drop those, or the ball's velocities"
+        )
+    if "normals" in written and len(by_face) > 1:
+        faults.add("survey.normals", "stands beside face_tilts_deg or bearings_deg; keep one way")
+    if "bearings_deg" in written and "face_tilts_deg" not in written:
+        faults.add("survey.bearings_deg", "needs face_tilts_deg")
+
+
+def check_room(joints: tuple[Joint, ...], margins: Margins, cell: FaultList) -> None:
+    """A joint's travel must exceed what the margins take from its two ends."""
+    for joint in joints:
+        bound = joint.limits.position
+        key = "position_m" if joint.sliding else "position_rad"
+        margin = getattr(margins, key)
+        if bound is not None and bound.hi - bound.lo <= 2 * margin:
+            cell.add(
+                f"margins.{key}",
+                f"{margin:g} from both ends leaves joint {joint.name} no room in "
+                f"[{bound.lo:g}, {bound.hi:g}] ({bound.source}); lower the margin, or make the joint fixed",
+            )

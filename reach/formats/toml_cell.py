@@ -1,0 +1,157 @@
+"""A cell file and all it names, made into one checked Cell; every fault of every file comes at once."""
+
+from __future__ import annotations
+
+import math
+import os
+import re
+from collections.abc import Mapping
+from typing import Any
+
+from reach.cell import Accept, Ball, Cell, Contact, Drive, Follow, Margins, Paddle, Part, SolverSpec, Tool
+from reach.errors import Fault, FaultList, InputError, nearest
+from reach.formats.cross_checks import check_ball, check_contact, check_paddle, check_room, check_sections
+from reach.formats.files import MAX_LOG_BYTES, MAX_TEXT_BYTES, Reading, beside
+from reach.formats.presets import BALLS
+from reach.formats.readers import READERS
+from reach.formats.schema import ACCEPT, CELL, CONTROL, MARGINS, SOLVER
+from reach.formats.toml_arm import pose_of, read_arm
+from reach.formats.toml_text import parse_toml
+
+
+def load_cell(path: str | os.PathLike[str], need_follow: bool = False) -> Cell:
+    """Read a cell file with its URDF, limits file and command log.
+
+    Parameters
+    ----------
+    path : str or path
+    need_follow : bool
+        Without a [follow] table the cell is then a fault.
+
+    Returns
+    -------
+    Cell
+        Checked, in SI units and radians.
+
+    Raises
+    ------
+    InputError
+        With the faults of all files, ordered by file and place.
+    """
+    name = os.fspath(path)
+    reading = Reading()
+    faults = FaultList(name)
+    text = reading.read_text(name, MAX_TEXT_BYTES)
+    document = None if text is None else parse_toml(text, faults)
+    cell = None if document is None else _cell(document, need_follow, faults, reading)
+    found = [*reading.faults, *faults.faults]
+    if found or cell is None:
+        raise InputError(sorted(dict.fromkeys(found), key=_in_order))
+    return cell
+
+
+def _in_order(fault: Fault) -> tuple[str, list[tuple[int, str]], str]:
+    """Sort key by file, then place with its numbers read as numbers."""
+    parts = re.findall(r"\d+|\D+", fault.where)
+    return fault.file, [(int(p), "") if p.isdecimal() else (-1, p) for p in parts], fault.what
+
+
+def _cell(document: Mapping[str, Any], need_follow: bool, faults: FaultList, reading: Reading) -> Cell | None:
+    read = CELL.read(document, "", faults)
+    quiet = FaultList(faults.file)
+    given = {key: table if isinstance(table, dict) else {} for key, table in document.items()}
+    margins = Margins(**(read["margins"] or MARGINS.read({}, "", quiet)))
+    accept = _accept(read["accept"] or ACCEPT.read({}, "", quiet))
+    arm = paddle = None
+    if read["arm"]:
+        torque_counts = "torque" in accept.require or "torque rate" in accept.require
+        arm = read_arm(read["arm"], given["arm"], torque_counts, faults, reading)
+    if read["paddle"]:
+        check_paddle(read["paddle"], given["paddle"], faults, reading.notes)
+    ball = _ball(read["ball"], given["ball"], faults) if read["ball"] else None
+    if read["contact"]:
+        check_contact(read["contact"], given["contact"], faults)
+    check_sections(read, given, faults)
+    if "follow" not in document and need_follow:
+        faults.add("follow", "missing; name the command log and how to read it in a table [follow]")
+    follow = _follow(read["follow"], faults, reading) if read["follow"] else None
+    if "start" in given.get("arm", {}) and not _log_may_be_posed(follow, "follow" in document):
+        faults.add("arm.start", '"auto" needs a command log with pose columns; give start_rad instead')
+    if arm is not None:
+        check_room(arm.joints, margins, faults)
+    if faults.faults or reading.faults or arm is None:
+        return None
+    paddle = _paddle(read["paddle"])
+    return Cell(
+        path=faults.file,
+        arm=arm,
+        paddle=paddle,
+        period_s=(read["control"] or CONTROL.read({}, "", quiet))["period_s"],
+        tool=Tool(**read["tool"]) if read["tool"] else None,
+        ball=ball,
+        contact=Contact(**read["contact"]) if read["contact"] else None,
+        drive=Drive(**read["drive"]) if read["drive"] is not None else None,
+        solver=SolverSpec(**(read["solver"] or SOLVER.read({}, "", quiet))),
+        margins=margins,
+        accept=accept,
+        follow=follow,
+        inputs=tuple(reading.inputs),
+        notes=tuple(reading.notes),
+    )
+
+
+def _accept(table: Mapping[str, Any]) -> Accept:
+    values = dict(table)
+    values["strike_tilt_error_rad"] = math.radians(values.pop("strike_tilt_error_deg"))
+    return Accept(**values)
+
+
+def _paddle(table: Mapping[str, Any]) -> Paddle:
+    values = dict(table)
+    parts = tuple(Part(**part) for part in values.pop("part"))
+    return Paddle(mount=pose_of(values.pop("mount")), parts=parts, **values)
+
+
+def _ball(table: Mapping[str, Any], given: Mapping[str, Any], faults: FaultList) -> Ball | None:
+    """The ball by its preset, by its values, or by a preset with some values of the cell's own."""
+    check_ball(table, given, faults)
+    preset = BALLS.get(table["preset"] or "")
+    values = {key: value for key, value in table.items() if key != "preset"}
+    if preset is None:
+        return Ball(**values) if None not in values.values() else None
+    own = [key for key in ("mass_kg", "radius_m") if key in given]
+    for key in ("mass_kg", "radius_m"):
+        values[key] = getattr(preset, key) if values[key] is None else values[key]
+    source = preset.source + (f"; {', '.join(own)} from the cell" if own else "")
+    return Ball(**values, source=source)
+
+
+def _follow(table: Mapping[str, Any], faults: FaultList, reading: Reading) -> Follow | None:
+    """The log, read by the reader of its suffix, and how to follow it."""
+    values = dict(table)
+    named, max_gap_s, time_faults = (values.pop(key) for key in ("commands", "max_gap_s", "time_faults"))
+    if not named:
+        return None
+    path = beside(faults.file, named)
+    suffix = os.path.splitext(path)[1].lower()
+    reader = READERS.get(suffix)
+    if reader is None:
+        faults.add("follow.commands", f'no reader for "{suffix}" files{nearest(suffix, READERS)}')
+        return None
+    content = reading.read(path, MAX_LOG_BYTES, f"follow.commands in {faults.file}")
+    if content is None:
+        return None
+    try:
+        commands = reader(content, path, max_gap_s, time_faults)
+    except InputError as error:
+        reading.faults.extend(error.faults)
+        return None
+    reading.notes.extend(f"{path}: {mend}" for mend in commands.mends)
+    return Follow(commands=commands, **values)
+
+
+def _log_may_be_posed(follow: Follow | None, has_table: bool) -> bool:
+    """Whether the log has poses; a log that could not be read has its own fault already."""
+    if follow is None:
+        return has_table
+    return follow.commands.pose is not None

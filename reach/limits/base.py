@@ -1,0 +1,138 @@
+"""The contract of a limit kind, and the state that its rows are made for."""
+
+from __future__ import annotations
+
+from abc import ABC, abstractmethod
+from dataclasses import dataclass
+from typing import ClassVar, Literal, NamedTuple
+
+import numpy as np
+from numpy.typing import NDArray
+
+from reach.arm import State
+from reach.cell import Array, Cell
+
+Family = Literal["joint", "torque", "tool", "none"]
+
+# What a plan keeps for the drift inside one period, where the margin keeps less: torque moves while the rows hold
+# its value at the period's start. Measured on bench7 and a published arm: up to 0.5 % of the limit.
+DRIFT_SHARE = 0.01
+
+
+class Brake(NamedTuple):
+    """What all joints can do together: deceleration (n,) per s², its rate (n,) per s³; `top` what one alone may."""
+
+    deceleration: Array
+    rate: Array
+    top: Array
+
+
+class Now(NamedTuple):
+    """What a step knows: q, v (n,), the acceleration and torque (n,) of the period before, the arm's state."""
+
+    q: Array
+    v: Array
+    a: Array
+    torque: Array
+    state: State
+    brake: Brake
+    period_s: float
+
+
+@dataclass(frozen=True, eq=False)
+class Fine:
+    """A finished motion on the fine grid, with what its limits are measured from.
+
+    Attributes
+    ----------
+    t_s : (f,) ; q, v, a, torque : (f, n) ; twist : (f, 6) of the strike point, world axes
+    per_period : fine samples a control period
+    a_before, torque_before : (n,) in the period before the first
+    period_s : control period
+    """
+
+    t_s: Array
+    q: Array
+    v: Array
+    a: Array
+    torque: Array
+    twist: Array
+    per_period: int
+    a_before: Array
+    torque_before: Array
+    period_s: float
+
+    def change(self, values: Array, before: Array) -> Array:
+        """Change (f, n) of values (f, n) over one control period, per second; the first period against `before`."""
+        shifted = np.vstack([np.broadcast_to(before, (self.per_period, values.shape[1])), values])
+        return np.asarray((values - shifted[: len(values)]) / self.period_s)
+
+
+class Limit(ABC):
+    """One limit kind for all joints of an arm.
+
+    A kind must
+
+    1. set `name`, `family` and `field` (its field in JointLimits; empty for one of the tool);
+    2. read what is stated in `__init__`: arrays `lo`, `hi` (n,), ±inf where nothing is known, and `known`
+       (n,) bool; `keep` takes the margin off and leaves the result in `kept_lo`, `kept_hi`;
+    3. in `rows`, write into `lo` and `hi` what a step may do: for the family "joint" the change of each joint's
+       velocity over the period (n,), for "torque" each joint's torque (n,) at the period's start, for
+       "tool" nothing, but `coefficients` gives rows on the velocity change of all joints (see tool_speed.py);
+    4. in `measure`, give the exact values (f, n) of a finished motion in the limit's own unit, lo <= value <= hi
+       being what the limit means; whatever `rows` allows must lie inside.
+
+    Attributes
+    ----------
+    sources : where each joint's limit was stated
+    """
+
+    name: ClassVar[str]
+    family: ClassVar[Family]
+    field: ClassVar[str] = ""
+    margin: ClassVar[str] = ""
+    units: ClassVar[tuple[str, str]]
+    least_margin: ClassVar[float] = 0.0
+
+    lo: Array
+    hi: Array
+    known: NDArray[np.bool_]
+    kept_lo: Array
+    kept_hi: Array
+    sources: tuple[str, ...]
+
+    def __init__(self, cell: Cell):
+        joints = cell.arm.joints
+        bounds = [getattr(joint.limits, self.field) for joint in joints]
+        self.known = np.array([bound is not None for bound in bounds])
+        self.lo = np.array([bound.lo if bound else -np.inf for bound in bounds])
+        self.hi = np.array([bound.hi if bound else np.inf for bound in bounds])
+        self.sources = tuple(bound.source if bound else "unknown" for bound in bounds)
+        self.joints: tuple[str | None, ...] = tuple(joint.name for joint in joints)
+        self.joint_units = tuple(self.units[joint.sliding] for joint in joints)
+        self.keep(cell)
+
+    def keep(self, cell: Cell) -> None:
+        """Take the cell's margin off the stated limit, but at least what the drift inside a period needs."""
+        share = max(getattr(cell.margins, self.margin) if self.margin else 0.0, self.least_margin)
+        self.kept_lo, self.kept_hi = self.lo * (1 - share), self.hi * (1 - share)
+
+    @abstractmethod
+    def rows(self, now: Now, lo: Array, hi: Array) -> None:
+        """Write the step's bounds for the state `now` into lo and hi."""
+
+    @abstractmethod
+    def measure(self, fine: Fine) -> Array:
+        """Values (f, n) of a finished motion, in the limit's own unit."""
+
+    def percent(self, now: Now) -> Array:
+        """How far (n,) one per cent more of the limit loosens the step's bound (for reasons)."""
+        span = np.where(self.known, np.minimum(np.abs(self.lo), np.abs(self.hi)), 0.0)
+        return np.asarray(0.01 * np.where(np.isfinite(span), span, 0.0))
+
+    def utilisation(self, values: Array) -> Array:
+        """Share (f, n) of the limit that values (f, n) use; 1 is at the limit, nan where it is unknown."""
+        with np.errstate(divide="ignore", invalid="ignore"):
+            share = np.where(values >= 0, values / self.hi, values / self.lo)
+        share = np.where(values == 0, 0.0, share)
+        return np.where(self.known, share, np.nan)

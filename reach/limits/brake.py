@@ -1,0 +1,101 @@
+"""How fast all joints together can slow down, and how soon: what position and velocity bounds rest on.
+
+A brake takes time to build up under torque-rate and jerk limits (45 to 90 ms at 1,000 N·m/s), so the stopping distance is
+that of a third-order motion. Viability in discrete time for the second-order case: Del Prete, IEEE RA-L 3(1) 2018;
+braking distance as a compatibility term: Rubrecht et al., Auton. Robots 32 (2012); Decré et al., ICRA 2009. The
+third-order form and its factor are our own and are tested by adversarial roll-outs.
+"""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+
+from reach.arm import State
+from reach.cell import Array
+from reach.limits.base import Brake
+
+BRAKE_SHARE = 0.5  # of what torque and acceleration allow; 0.5 held in 1,000 adversarial roll-outs
+DRIFT_CAP = 0.7  # largest share of the torque rate that gravity and Coriolis drift may claim
+UNLIMITED = 1e9  # stands for "no limit known" in rad/s² and rad/s³, where infinity would give 0 * inf
+STANDSTILL_SHARE = 1e-3  # of the acceleration that is left where the static load takes all the torque
+
+
+class BrakeModel:
+    """Braking ability from kept-back limits.
+
+    Parameters
+    ----------
+    acceleration, jerk, torque, torque_rate : (n,)
+        The lesser of both sides of each kept-back limit, inf where unknown.
+    mass : (n, n)
+        Inertia at the start, which scales accelerations where none is stated.
+    """
+
+    def __init__(self, acceleration: Array, jerk: Array, torque: Array, torque_rate: Array, mass: Array):
+        self._torque = np.minimum(torque, 1e15)
+        self._rate = np.minimum(torque_rate, 1e15)
+        by_torque = np.minimum(torque / np.diagonal(mass), UNLIMITED)
+        self._acceleration = np.where(np.isfinite(acceleration), acceleration, by_torque)
+        self._jerk = np.minimum(BRAKE_SHARE * jerk, UNLIMITED)
+
+    def at(self, state: State, bias_rate: Array) -> Brake:
+        """Ability at a state; bias_rate (n,) is how fast the torque at zero acceleration changes, N·m/s."""
+        share = np.abs(state.mass) @ self._acceleration
+        spare = ((self._torque - np.abs(state.bias)) / share).min()
+        drift = np.minimum(np.abs(bias_rate), DRIFT_CAP * self._rate)
+        speed = ((self._rate - drift) / share).min()
+        deceleration = (BRAKE_SHARE * min(1.0, max(spare, STANDSTILL_SHARE))) * self._acceleration
+        rate = np.minimum((BRAKE_SHARE * speed) * self._acceleration, self._jerk)
+        return Brake(deceleration, rate, self._acceleration)
+
+
+def stopping_distance(v: float, a: float, deceleration: float, rate: float) -> float:
+    """Distance that a joint at speed v and acceleration a still travels forward before it can stand.
+
+    The acceleration falls at `rate` to at most -`deceleration` and stays there. Zero where it does not move forward.
+    """
+    square = a * a + 2 * rate * v
+    if (v <= 0 and a <= 0) or square <= 0:
+        return 0.0
+    if a <= -deceleration:
+        return v * v / (2 * deceleration)
+    root = math.sqrt(square)
+    if root <= deceleration:
+        t = (a + root) / rate
+        return v * t + a * t * t / 2 - rate * t**3 / 6
+    t = (a + deceleration) / rate
+    left = v + (a * a - deceleration * deceleration) / (2 * rate)
+    return v * t + a * t * t / 2 - rate * t**3 / 6 + left * left / (2 * deceleration)
+
+
+def largest_velocity(
+    room: float, v: float, ceiling: float, deceleration: float, rate: float, period_s: float
+) -> float:
+    """The largest next velocity, at most `ceiling`, from which the joint still stops inside `room`.
+
+    Exact for constant acceleration in the period: (v + v⁺) dt / 2 + stopping distance <= room. The left side
+    grows with v⁺; bisection to one part in 2^40 of the bracket.
+    """
+
+    def over(candidate: float) -> bool:
+        travel = (v + candidate) * period_s / 2
+        stop = stopping_distance(candidate, (candidate - v) / period_s, deceleration, rate)
+        return travel + stop > room
+
+    if not over(ceiling):
+        return ceiling
+    low = min(v, ceiling) - max(4 * deceleration * period_s, 1e-6)
+    while over(low):
+        low -= 4 * (ceiling - low)
+        if low < -1e6:
+            return low
+    high = ceiling
+    for _ in range(40):
+        middle = (low + high) / 2
+        if over(middle):
+            high = middle
+        else:
+            low = middle
+    return low

@@ -1,0 +1,66 @@
+"""A maker's cap on the speed of the tool."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from reach.cell import Array, Cell
+from reach.limits.base import Fine, Limit, Now
+
+# Share of the cap that a step may turn the velocity aside; the rest, sqrt(1 - share²), is left along it. At 1.7 m/s
+# and 1 ms that is 120 m/s² sideways, beyond any arm, for half a per cent of the cap.
+ASIDE_SHARE = 0.1
+NEAR_SHARE = 0.5  # below this share of the cap no step can reach it: rows are left out
+
+
+class ToolSpeed(Limit):
+    """Speed of the strike point, m/s, against the cell's [tool] table."""
+
+    name = "tool speed"
+    family = "tool"
+    units = ("m/s", "m/s")
+
+    def __init__(self, cell: Cell):
+        cap = cell.tool.speed_m_s if cell.tool else np.inf
+        self.known = np.array([cell.tool is not None])
+        self.lo, self.hi = np.array([-cap]), np.array([cap])
+        self.sources = (cell.tool.source if cell.tool else "unknown",)
+        self.joints, self.joint_units = (None,), ("m/s",)
+        share = cell.margins.velocity_share
+        self.kept_lo, self.kept_hi = self.lo * (1 - share), self.hi * (1 - share)
+
+    def rows(self, now: Now, lo: Array, hi: Array) -> None:
+        """No bounds of its own: see `coefficients`."""
+
+    def coefficients(self, now: Now) -> tuple[Array, Array] | None:
+        """Rows (5, n) and bounds (5,) on the velocity change, or None where the cap is out of reach.
+
+        The ball |v| <= cap is replaced by a box inside it that is turned along the present velocity: along it up to
+        sqrt(1 - ASIDE_SHARE²) of the cap, aside up to ASIDE_SHARE / √2 on two axes, both ways. Along it, as
+        for a joint's velocity, the acceleration must still be taken back in time.
+        """
+        cap = self.kept_hi[0]
+        rows = now.state.jacobian[:3]
+        velocity = rows @ now.v
+        speed = float(np.sqrt(velocity @ velocity))
+        if speed < NEAR_SHARE * cap:
+            return None
+        along = velocity / speed
+        across = np.cross(along, np.eye(3)[np.argmin(np.abs(along))])
+        across /= np.linalg.norm(across)
+        box = np.array([along, across, np.cross(along, across)]) @ rows
+        ahead = now.state.drift[:3] * now.period_s
+        gaining = float(along @ (rows @ now.a))
+        room = cap * np.sqrt(1 - ASIDE_SHARE**2) - speed - float(along @ ahead)
+        if gaining > 0:
+            slowest = float(np.max(np.abs(now.a) / now.brake.rate))
+            step = gaining / slowest * now.period_s**2
+            room = min(room, step * (np.sqrt(1 + 2 * max(room, 0.0) / step) - 1)) if room > 0 else room
+        aside = cap * ASIDE_SHARE / np.sqrt(2)
+        return (
+            np.vstack([box, -box[1:]]),
+            np.array([room, aside, aside, aside, aside]),
+        )
+
+    def measure(self, fine: Fine) -> Array:
+        return np.asarray(np.linalg.norm(fine.twist[:, :3], axis=1)[:, None])

@@ -1,0 +1,26 @@
+"""Joint torque."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from reach.cell import Array
+from reach.limits.base import DRIFT_SHARE, Fine, Limit, Now
+
+
+class Torque(Limit):
+    """Joint torque, N·m, or force of a sliding joint, N."""
+
+    name = "torque"
+    family = "torque"
+    field = "torque"
+    margin = "torque_share"
+    units = ("N·m", "N")
+    least_margin = DRIFT_SHARE
+
+    def rows(self, now: Now, lo: Array, hi: Array) -> None:
+        np.copyto(lo, self.kept_lo)
+        np.copyto(hi, self.kept_hi)
+
+    def measure(self, fine: Fine) -> Array:
+        return fine.torque

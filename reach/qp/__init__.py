@@ -1,0 +1,1 @@
+"""Small dense quadratic programs: the problem, its solution, and a check that trusts no solver's word."""

@@ -1,0 +1,110 @@
+"""The verdict on evidence. Pure: knows no robot, runs nothing."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+from reach.cell import Accept
+from reach.evidence.record import Evidence, Use
+
+ROUNDING = 1e-6  # of a limit: a use above 1 by less is rounding
+
+DELIVERABLE = "deliverable"
+NOT_DELIVERABLE = "not deliverable"
+UNDECIDED = "undecided"
+
+EXIT_CODES = {DELIVERABLE: 0, NOT_DELIVERABLE: 1, UNDECIDED: 3}
+
+
+@dataclass(frozen=True)
+class Verdict:
+    """The verdict, its sentence with what was not checked inside, and the grounds it rests on, in words."""
+
+    verdict: str
+    sentence: str
+    grounds: tuple[str, ...]
+
+    @property
+    def exit_code(self) -> int:
+        """What the command line returns."""
+        return EXIT_CODES[self.verdict]
+
+
+def broken_limits(evidence: Evidence) -> list[Use]:
+    """Uses above their stated limit."""
+    return [use for use in evidence.uses if use.utilisation is not None and use.utilisation > 1 + ROUNDING]
+
+
+def judge(evidence: Evidence, accept: Accept) -> Verdict:
+    """Judge a followed log.
+
+    Not deliverable: too many strikes missed (with no strike: judged throughout), a stated limit broken, no
+    motion at all, or no stand at the end. Undecided: a required limit unknown, contacts only guessed, or a step
+    that no solver answered. Deliverable otherwise.
+    """
+    failures = _failures(evidence, accept)
+    doubts = _doubts(evidence, accept)
+    if failures:
+        verdict, grounds = NOT_DELIVERABLE, failures
+        if evidence.failed_steps:
+            verdict, grounds = UNDECIDED, doubts
+    elif doubts:
+        verdict, grounds = UNDECIDED, doubts
+    else:
+        verdict, grounds = DELIVERABLE, _merits(evidence)
+    return Verdict(verdict, _sentence(verdict, grounds, evidence), tuple(grounds))
+
+
+def strikes_needed(evidence: Evidence, accept: Accept) -> int:
+    """How many strikes must be delivered."""
+    return math.ceil(accept.strikes_share * len(evidence.strikes) - 1e-9)
+
+
+def _failures(evidence: Evidence, accept: Accept) -> list[str]:
+    found = list(evidence.blocked)
+    for use in broken_limits(evidence):
+        assert use.utilisation is not None
+        where = f" of {use.joint}" if use.joint else ""
+        found.append(f"{use.limit}{where} at {100 * use.utilisation:.1f} % of its limit at {use.time_s:.3f} s")
+    if evidence.motion is None:
+        return found or ["there is no motion"]
+    hit = sum(strike.delivered for strike in evidence.strikes)
+    if evidence.strikes and accept.at == "strikes" and hit < strikes_needed(evidence, accept):
+        found.append(f"{len(evidence.strikes) - hit} of {len(evidence.strikes)} strikes not delivered")
+    found.extend(evidence.throughout_faults)
+    if not evidence.stopped:
+        found.append("the arm does not come to a stand after the command's end")
+    return found
+
+
+def _doubts(evidence: Evidence, accept: Accept) -> list[str]:
+    found = []
+    if evidence.failed_steps:
+        found.append(f"{evidence.failed_steps} steps that no solver answered")
+    for limit in accept.require:
+        joints = [joint for name, joint in evidence.unknown if name == limit]
+        if joints:
+            named = ", ".join(str(joint) for joint in joints if joint)
+            found.append(f"{limit} unknown" + (f" for {named}" if named else ""))
+    if evidence.guessed:
+        found.append('contacts guessed from the command\'s peaks; accept them with strikes = "guessed-ok"')
+    return found
+
+
+def _merits(evidence: Evidence) -> list[str]:
+    if evidence.strikes:
+        hit = sum(strike.delivered for strike in evidence.strikes)
+        return [f"{hit} of {len(evidence.strikes)} strikes delivered"]
+    return ["tracked throughout"]
+
+
+def _sentence(verdict: str, grounds: list[str], evidence: Evidence) -> str:
+    kinds = list(dict.fromkeys(use.limit for use in evidence.uses))
+    unknown = {limit for limit, _ in evidence.unknown}
+    checked = [kind for kind in kinds if kind not in unknown]
+    counted = f" on {len(checked)} of {len(kinds)} limits" if kinds else ""
+    text = f"{verdict}{counted}: {'; '.join(grounds)}"
+    if evidence.not_checked:
+        text += f"; not checked: {', '.join(evidence.not_checked)}"
+    return text
