@@ -1,1 +1,44 @@
-"""Paddle strikes and juggling on jointed arms: what an arm can deliver, and what keeps it from more."""
+"""Will this arm deliver these paddle twists?
+
+    import reach
+
+    cell = reach.load_cell("cell.toml")
+    result = reach.follow_commands(cell)
+    print(result.verdict.sentence)
+
+Nothing heavy is imported until a name is first used.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from reach.api import describe_cell as describe_cell
+    from reach.api import follow_commands as follow_commands
+    from reach.api import write_results as write_results
+    from reach.cell import Cell as Cell
+    from reach.errors import InputError as InputError
+    from reach.formats import load_cell as load_cell
+    from reach.result import FollowResult as FollowResult
+
+__version__ = "0.1.0"
+
+_HOMES = {
+    "Cell": "reach.cell",
+    "FollowResult": "reach.result",
+    "InputError": "reach.errors",
+    "describe_cell": "reach.api",
+    "follow_commands": "reach.api",
+    "load_cell": "reach.formats",
+    "write_results": "reach.api",
+}
+
+__all__ = sorted(_HOMES)
+
+
+def __getattr__(name: str) -> object:
+    if name not in _HOMES:
+        raise AttributeError(f"module 'reach' has no attribute {name!r}; it has {', '.join(__all__)}")
+    return getattr(import_module(_HOMES[name]), name)

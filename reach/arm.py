@@ -103,6 +103,13 @@ class Arm:
         matrix = pin.getFrameJacobian(self._model, self._scratch, self._frame, WORLD_AXES)
         return placement.translation.copy(), placement.rotation.copy(), matrix
 
+    def twist_terms(self, q: Array, v: Array) -> tuple[Array, Array]:
+        """Jacobian (6, n) and its drift J̇ v (6,) at posture q (n,) and joint velocity v (n,)."""
+        pin.computeJointJacobiansTimeVariation(self._model, self._scratch, q, v)
+        pin.updateFramePlacement(self._model, self._scratch, self._frame)
+        change = pin.getFrameJacobianTimeVariation(self._model, self._scratch, self._frame, WORLD_AXES)
+        return pin.getFrameJacobian(self._model, self._scratch, self._frame, WORLD_AXES), change @ v
+
     def torque(self, q: Array, v: Array, a: Array) -> Array:
         """Joint torques (m, n) in N·m of m states at once, friction, damping and rotor inertia included.
 

@@ -165,6 +165,6 @@ class _Columns:
             self.kinds.add(
                 "quaternion not of length 1",
                 self.place(int(row), POSE_COLUMNS[3]),
-                f"the quaternion has length {lengths[row]:.4g}, not 1; give qw, qx, qy, qz of a unit quaternion",
+                f"the quaternion has length {lengths[row]:.4g}; give qw, qx, qy, qz of length 1",
             )
         return np.hstack([poses[:, :3], poses[:, 3:] / np.where(lengths > 0, lengths, 1)[:, None]])

@@ -34,7 +34,11 @@ def check_paddle(
     bodies = [("paddle", paddle)] + [(f"paddle.part[{i}]", part) for i, part in enumerate(paddle["part"])]
     for where, body in bodies:
         mass, six = body["mass_kg"], body["inertia_kg_m2"]
-        if mass is None or six is None or not any(six):
+        if mass is None or six is None:
+            continue
+        if not any(six):
+            if body is paddle:
+                faults.add(f"{where}.inertia_kg_m2", "is zero, as of a point; give the paddle's own inertia")
             continue
         fault, note = inertia.judge(mass, inertia.matrix(six))
         if fault:

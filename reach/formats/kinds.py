@@ -16,6 +16,7 @@ from typing import Any, Protocol
 from reach.errors import FaultList, nearest
 
 INF = math.inf
+MAX_UNKNOWN = 20  # unknown keys of one table that are told one by one
 _BARE_KEY = re.compile(r"[A-Za-z0-9_-]+")
 
 
@@ -215,9 +216,11 @@ class Table:
         if not isinstance(value, dict):
             faults.add(where, f"is {shown(value)}; give a table, such as [{where}]")
             return {key: spec.default for key, spec in self.keys.items()}
-        for key in value:
-            if key not in self.keys:
-                faults.add(dotted(where, key), f"unknown key{nearest(key, self.keys)}")
+        unknown = [key for key in value if key not in self.keys]
+        for key in unknown[:MAX_UNKNOWN]:
+            faults.add(dotted(where, key), f"unknown key{nearest(key, self.keys)}")
+        if len(unknown) > MAX_UNKNOWN:
+            faults.add(where or "file", f"… and {len(unknown) - MAX_UNKNOWN} more unknown keys")
         read: dict[str, Any] = {}
         for key, spec in self.keys.items():
             if key in value:

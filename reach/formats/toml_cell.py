@@ -18,6 +18,9 @@ from reach.formats.schema import ACCEPT, CELL, CONTROL, MARGINS, SOLVER
 from reach.formats.toml_arm import pose_of, read_arm
 from reach.formats.toml_text import parse_toml
 
+LONGEST_MESSAGE = 800  # characters; a fault is to fit a screen
+_CONTROL = re.compile(r"[\x00-\x1f\x7f-\x9f\u2028\u2029]")
+
 
 def load_cell(path: str | os.PathLike[str], need_follow: bool = False) -> Cell:
     """Read a cell file with its URDF, limits file and command log.
@@ -46,8 +49,15 @@ def load_cell(path: str | os.PathLike[str], need_follow: bool = False) -> Cell:
     cell = None if document is None else _cell(document, need_follow, faults, reading)
     found = [*reading.faults, *faults.faults]
     if found or cell is None:
-        raise InputError(sorted(dict.fromkeys(found), key=_in_order))
+        plain = dict.fromkeys(Fault(*map(_one_line, (f.file, f.where, f.what))) for f in found)
+        raise InputError(sorted(plain, key=_in_order))
     return cell
+
+
+def _one_line(text: str) -> str:
+    """The text with control characters (a file may hold any) escaped, and cut where it leads nowhere."""
+    escaped = _CONTROL.sub(lambda found: f"\\u{ord(found[0]):04x}", text)
+    return escaped if len(escaped) <= LONGEST_MESSAGE else escaped[:LONGEST_MESSAGE] + "…"
 
 
 def _in_order(fault: Fault) -> tuple[str, list[tuple[int, str]], str]:
@@ -96,7 +106,7 @@ def _cell(document: Mapping[str, Any], need_follow: bool, faults: FaultList, rea
         accept=accept,
         follow=follow,
         inputs=tuple(reading.inputs),
-        notes=tuple(reading.notes),
+        notes=tuple(map(_one_line, reading.notes)),
     )
 
 

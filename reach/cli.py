@@ -1,0 +1,121 @@
+"""The command line: arguments, one library call, errors to exit codes."""
+
+from __future__ import annotations
+
+import os
+
+for _name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS"):
+    os.environ.setdefault(_name, "1")  # matrices here are small: more threads only cost; read as numpy loads
+
+import argparse
+import sys
+import traceback
+from collections.abc import Callable, Sequence
+from pathlib import Path
+
+from reach import __version__
+from reach.errors import ReachError
+
+EXITS = """exit codes:
+  0  deliverable          1  not deliverable      2  bad input, nothing written
+  3  undecided            4  the program or a solver failed
+"""
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run the command; returns its exit code."""
+    options = _parser().parse_args(arguments)
+    try:
+        return int(options.run(options))
+    except ReachError as error:
+        print(error, file=sys.stderr)
+        return error.exit_code
+    except KeyboardInterrupt:
+        print("stopped; nothing was written", file=sys.stderr)
+        return 4
+    except BrokenPipeError:
+        sys.stderr.close()
+        return 4
+    except Exception:  # noqa: BLE001 - a fault of this program, said so
+        print("strikecheck failed, by a fault of its own; please report this with the lines above it:", file=sys.stderr)
+        traceback.print_exc()
+        return 4
+
+
+def _parser() -> argparse.ArgumentParser:
+    parser = argparse.ArgumentParser(
+        prog="strikecheck",
+        description="Will this arm deliver these paddle commands? Answered before anything moves.",
+        epilog=EXITS,
+        formatter_class=argparse.RawDescriptionHelpFormatter,
+    )
+    parser.add_argument("--version", action="version", version=f"strikecheck {__version__}")
+    commands = parser.add_subparsers(title="commands", metavar="COMMAND", required=True)
+    describe = commands.add_parser("describe", help="what did you understand of this cell?")
+    describe.add_argument("cell", metavar="CELL", help="the cell file (TOML)")
+    describe.set_defaults(run=_describe)
+    follow = commands.add_parser(
+        "follow",
+        help="can this arm deliver these paddle commands? if not: what, when, which limit, what would help",
+        epilog=EXITS,
+        formatter_class=argparse.RawDescriptionHelpFormatter,
+    )
+    follow.add_argument("cell", metavar="CELL", help="the cell file (TOML), with a [follow] table")
+    follow.add_argument("--no-advice", action="store_true", help="leave out headroom, needs and remedies")
+    _common(follow, "follow")
+    follow.set_defaults(run=_follow)
+    return parser
+
+
+def _common(parser: argparse.ArgumentParser, command: str) -> None:
+    """Options that every command with a verdict has."""
+    parser.add_argument("--out", metavar="DIR", default=f"out/{command}", help="folder for the results (default: %(default)s)")
+    parser.add_argument("--json", action="store_true", help="the verdict as JSON on standard output, nothing else there")
+    parser.add_argument("--quiet", action="store_true", help="no summary and no progress")
+    parser.add_argument(
+        "--workers", metavar="N", type=_count, default=min(2, os.cpu_count() or 1), help="processes (default: %(default)s)"
+    )
+    parser.add_argument("--junit", metavar="FILE", help="also write a JUnit XML file")
+
+
+def _count(text: str) -> int:
+    number = int(text)
+    if not 1 <= number <= 256:
+        raise argparse.ArgumentTypeError("must be between 1 and 256")
+    return number
+
+
+def _describe(options: argparse.Namespace) -> int:
+    from reach import describe_cell, load_cell
+
+    print(describe_cell(load_cell(options.cell)), end="")
+    return 0
+
+
+def _follow(options: argparse.Namespace) -> int:
+    from reach import follow_commands, load_cell, write_results
+    from reach.report import WRITERS, write_files
+
+    cell = load_cell(options.cell, need_follow=True)
+    progress = _progress(options.quiet)
+    result = follow_commands(cell, workers=options.workers, advice=not options.no_advice, progress=progress)
+    written = write_results(result, options.out)
+    if options.junit:
+        write_files({Path(options.junit): WRITERS["junit"](result)})
+    if options.json:
+        print(WRITERS["json"](result))
+    elif not options.quiet:
+        print(WRITERS["text"](result), end="")
+        print(f"\nwritten: {', '.join(str(path) for path in written)}")
+    return 4 if result.evidence.failed_steps else result.verdict.exit_code
+
+
+def _progress(quiet: bool) -> Callable[[str], None] | None:
+    """Lines of progress to standard error; on a terminal each takes the place of the one before."""
+    if quiet:
+        return None
+    if not sys.stderr.isatty():
+        return lambda text: print(text, file=sys.stderr)
+    return lambda text: print(f"\r\033[K{text} …", end="", file=sys.stderr, flush=True)
+
+

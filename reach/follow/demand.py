@@ -1,0 +1,44 @@
+"""The demand: what exact tracking would ask of each joint, with no limit in the way."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from reach.arm import Arm
+from reach.cell import Array, Cell
+from reach.evidence.motion import Motion
+from reach.follow.reference import Reference
+from reach.follow.step import POSTURE_WEIGHT, task_weight
+
+RUNAWAY = 1e3  # rad/s or m/s: a demand beyond it (at a singularity) is cut there, which is far past any joint
+
+
+def demanded_motion(cell: Cell, arm: Arm, reference: Reference, start: Array) -> Motion:
+    """The joint motion (from rest at `start`) that tracks the command exactly, as far as the posture lets it.
+
+    Each period's end velocity is the damped least-squares answer for the commanded twist, the same cost as the
+    step's without its limits. Damping and the null-space return are the step's own.
+    """
+    dt, n = cell.period_s, arm.n
+    weight = task_weight(cell)
+    commanded = int(np.ceil((reference.end_s - reference.t_s[0]) / dt - 1e-6))
+    targets = reference.targets(dt, commanded)
+    gain, diagonal = cell.solver.posture_gain_per_s, np.arange(n)
+    q, v = start.copy(), np.zeros(n)
+    rows_q, rows_v = [q], [v]
+    for target in targets:
+        jacobian, drift = arm.twist_terms(q, v)
+        task = jacobian * weight[:, None]
+        matrix = task.T @ task
+        share = POSTURE_WEIGHT / n * matrix.trace()
+        matrix[diagonal, diagonal] += share
+        wanted = (weight * (target - drift * dt)) @ task + (share * gain) * (start - q)
+        next_v = np.linalg.solve(matrix, wanted)
+        np.clip(next_v, -RUNAWAY, RUNAWAY, out=next_v)
+        q = q + (v + next_v) * (dt / 2)
+        v = next_v
+        rows_q.append(q)
+        rows_v.append(v)
+    speeds = np.array(rows_v)
+    accelerations = np.vstack([np.diff(speeds, axis=0) / dt, np.zeros((1, n))])
+    return Motion(float(reference.t_s[0]), dt, np.array(rows_q), speeds, accelerations)

@@ -1,0 +1,37 @@
+"""How much all limits but position could shrink together with the verdict still deliverable."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from reach.cell import Cell
+from reach.follow.search import Runner, least_passing
+from reach.follow.variants import scaled_limits
+
+# Factors on every limit but position that are tried, rising; the answer is refined to RESOLUTION of the factor.
+SCAN = (0.1, 0.2, 0.3, 0.4, 0.5, 0.6, 0.7, 0.8, 0.9, 1.0, 1.1, 1.2, 1.35, 1.5, 1.75, 2.0, 2.5, 3.0, 4.0, 6.0, 10.0)
+RESOLUTION = 0.01
+
+
+def headroom(cell: Cell, runs: Runner, passes_as_is: bool) -> tuple[float | None, str]:
+    """The share by which all limits together could shrink beyond the margins, and the same in words.
+
+    Found by scan and re-run, since a greedy step need not be monotone in its limits; negative where they must
+    grow, None where not even ten times the limits would do. Unknown limits stay unlimited.
+    """
+    runs.say("headroom: all limits together")
+    split = SCAN.index(1.0)
+    scan = SCAN[: split + 1] if passes_as_is else SCAN[split:]
+
+    def passes(factors: Sequence[float]) -> list[bool]:
+        return runs.passes([scaled_limits(cell, f) for f in factors])
+
+    least = least_passing(passes, scan, RESOLUTION)
+    if least is None:
+        return None, f"not deliverable even with {scan[-1]:g} times every limit but position"
+    share = 1.0 - least
+    if share > 0:
+        return share, f"still deliverable with every limit but position {100 * share:.0f} % lower"
+    if share < 0:
+        return share, f"every limit but position would have to be {-100 * share:.0f} % higher"
+    return 0.0, "no limit to spare: a few per cent less of every limit but position and it fails"

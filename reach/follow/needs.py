@@ -1,0 +1,149 @@
+"""What an unknown or failing limit would have to be, each value re-run before it is claimed."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from reach.cell import Cell
+from reach.evidence.record import Need
+from reach.follow.bench import Run, run
+from reach.follow.reasons import deciding as deciding_keys
+from reach.follow.reasons import reasons
+from reach.follow.search import Runner, least_passing
+from reach.follow.variants import with_bounds
+
+Key = tuple[str, str | None]
+
+RESOLUTION = 0.05  # relative, of a needed value
+SHRINK_SCAN = (0.02, 0.05, 0.1, 0.2, 0.4, 0.7, 1.0)  # shares of the peak that are tried
+GROW_SCAN = (1.0, 1.15, 1.35, 1.6, 2.0, 2.8, 4.0, 8.0)  # multiples of a stated limit that are tried
+SPARE = 1.02  # a motion planned below the peak by its margin needs this much more than that margin
+LAYERS = 3  # how often lifting the limits in the way may bring up others
+ALONE = "alone would do"
+NEVER_SEARCHED = ("duty", "position")  # measured only, or a question of travel
+
+
+def needs(cell: Cell, base: Run, deciding: Sequence[Key], runs: Runner) -> tuple[Need, ...]:
+    """Needs of every unknown limit and of every limit that decides the verdict.
+
+    *sufficient*: a motion was planned under it and passed. *necessary*: the least value at which the command still passes with
+    the other unknown (or failing) limits unlimited.
+    """
+    units = {(use.limit, use.joint): use.unit for use in base.evidence.uses}
+    found = _unknown_needs(cell, base, runs, units)
+    return (*found, *_failing_needs(cell, deciding, runs, units, base))
+
+
+def _unknown_needs(cell: Cell, base: Run, runs: Runner, units: dict[Key, str]) -> list[Need]:
+    unknown = [k for k in base.evidence.unknown if k in units and k[0] not in NEVER_SEARCHED and k[1]]
+    peaks = {(u.limit, u.joint): abs(u.peak) for u in base.evidence.uses}
+    if not base.passed or not unknown:
+        return []
+    runs.say("what the unknown limits would need")
+    wanted = [k for k in unknown if k[0] in cell.accept.require]
+    enough = _smallest_set(cell, wanted, peaks, runs)
+    found = []
+    for key in unknown:
+        limit, joint = key
+        unit, peak = units[key], peaks[key]
+        if key not in wanted:
+            text = f"{joint}: the motion peaks at {peak:.4g} {unit} of {limit}; not required, not searched"
+            found.append(Need(joint, limit, None, peak, unit, text))
+            continue
+        least = _least(cell, key, peak, runs)
+        sufficient = enough.get(key)
+        text = f"{joint}: deliverable if {limit} is at least {_number(sufficient)} {unit}"
+        if least is not None:
+            text += f"; below {_number(least)} {unit} it fails whatever the others are"
+        found.append(Need(joint, limit, least, sufficient, unit, text + ": ask the maker"))
+    return found
+
+
+def _smallest_set(cell: Cell, keys: list[Key], peaks: dict[Key, float], runs: Runner) -> dict[Key, float]:
+    """Values for all unknown limits at once, in proportion to their peaks, under which the command passes."""
+
+    def passes(shares: Sequence[float]) -> list[bool]:
+        return runs.passes([with_bounds(cell, {k: _spared(cell, k, s * peaks[k]) for k in keys}, "search") for s in shares])
+
+    share = least_passing(passes, (*SHRINK_SCAN, SPARE), RESOLUTION) if keys else None
+    return {} if share is None else {k: _spared(cell, k, share * peaks[k]) for k in keys}
+
+
+def _least(cell: Cell, key: Key, peak: float, runs: Runner) -> float | None:
+    def passes(shares: Sequence[float]) -> list[bool]:
+        return runs.passes([with_bounds(cell, {key: _spared(cell, key, s * peak)}, "search") for s in shares])
+
+    share = least_passing(passes, (*SHRINK_SCAN, SPARE), RESOLUTION)
+    return None if share is None else _spared(cell, key, share * peak)
+
+
+def _spared(cell: Cell, key: Key, value: float) -> float:
+    """The stated value whose kept-back part is `value`."""
+    margins = {
+        "velocity": cell.margins.velocity_share,
+        "acceleration": cell.margins.acceleration_share,
+        "jerk": cell.margins.jerk_share,
+        "torque": cell.margins.torque_share,
+        "torque rate": cell.margins.torque_rate_share,
+    }
+    return max(value, 1e-6) / (1 - margins.get(key[0], 0.0))
+
+
+def _failing_needs(
+    cell: Cell, deciding: Sequence[Key], runs: Runner, units: dict[Key, str], base: Run
+) -> list[Need]:
+    stated = {(u.limit, u.joint): max(abs(u.lo or 0.0), abs(u.hi or 0.0)) for u in base.evidence.uses if u.known}
+    first = [k for k in deciding if k in stated and k[0] not in NEVER_SEARCHED]
+    if not first:
+        return []
+    runs.say("what the failing limits would need")
+    keys = _all_in_the_way(cell, first, stated)
+
+    def least(key: Key, others: dict[Key, float | None]) -> float | None:
+        def passes(factors: Sequence[float]) -> list[bool]:
+            return runs.passes([with_bounds(cell, {**others, key: f * stated[key]}, "search") for f in factors])
+
+        factor = least_passing(passes, GROW_SCAN, RESOLUTION)
+        return None if factor is None else factor * stated[key]
+
+    def together(factors: Sequence[float]) -> list[bool]:
+        return runs.passes([with_bounds(cell, {k: f * stated[k] for k in keys}, "search") for f in factors])
+
+    common = least_passing(together, GROW_SCAN, RESOLUTION) if len(keys) > 1 else None
+    found = []
+    for key in keys:
+        limit, joint = key
+        unit, name = units[key], joint or "the tool"
+        alone = least(key, {}) if len(first) == 1 and key == first[0] else None
+        necessary = least(key, {k: None for k in keys if k != key}) if len(keys) > 1 else alone
+        sufficient = alone
+        text = f"{name}: {limit} of {_number(alone)} {unit} {ALONE} (now {_number(stated[key])})"
+        if alone is None and common is not None:
+            sufficient = common * stated[key]
+            text = (
+                f"{name}: {limit} of {_number(sufficient)} {unit} (now {_number(stated[key])}) "
+                f"would do together with the other {len(keys) - 1} named here, all grown alike"
+            )
+        elif alone is None:
+            text = f"{name}: no {limit} up to {GROW_SCAN[-1]:g} times the stated one is enough"
+        found.append(Need(joint, limit, necessary, sufficient, unit, text))
+    return found
+
+
+def _all_in_the_way(cell: Cell, first: list[Key], stated: dict[Key, float]) -> list[Key]:
+    """The deciding limits, and those that decide once these are lifted."""
+    keys = list(first)
+    for _ in range(LAYERS):
+        lifted = run(with_bounds(cell, dict.fromkeys(keys), "search"))
+        if lifted.passed:
+            break
+        found, _ = reasons(lifted, None)
+        new = [k for k in deciding_keys(found) if k in stated and k not in keys and k[0] not in NEVER_SEARCHED]
+        if not new:
+            break
+        keys += new
+    return keys
+
+
+def _number(value: float | None) -> str:
+    return "an unknown value" if value is None else f"{value:,.3g}" if value < 1000 else f"{value:,.0f}"

@@ -1,0 +1,119 @@
+"""Re-runs for searches: many changed cells at once, on this process or on workers, the answer the same."""
+
+from __future__ import annotations
+
+import math
+import os
+from collections.abc import Callable, Iterator, Sequence
+from concurrent.futures import Executor, ProcessPoolExecutor
+from contextlib import contextmanager
+from dataclasses import dataclass
+from functools import partial
+from multiprocessing import get_context
+
+from reach.cell import Cell
+from reach.follow.bench import run
+
+BATCH = 2  # values tried at once, one a worker on a two-core machine
+THREAD_VARIABLES = ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS")
+
+
+@dataclass(frozen=True)
+class Outcome:
+    """What a search needs of one run: whether it passed, how many strikes it delivered, and each use's peak.
+
+    A quick run ends at its first miss, so `delivered` counts only up to there.
+    """
+
+    passed: bool
+    delivered: int
+
+
+def outcome(cell: Cell, quick: bool = True) -> Outcome:
+    """Run a changed cell and keep what a search needs."""
+    done = run(cell, quick)
+    return Outcome(done.passed, sum(s.delivered for s in done.evidence.strikes))
+
+
+class Runner:
+    """Runs changed cells, counts them, and lets a caller show how far it is.
+
+    Parameters
+    ----------
+    pool : where to run, None for this process
+    progress : called with one line of what is being tried
+    """
+
+    def __init__(self, pool: Executor | None = None, progress: Callable[[str], None] | None = None):
+        self._pool = pool
+        self._progress = progress
+        self.runs = 0
+
+    def say(self, text: str) -> None:
+        """Pass a line on to whoever watches."""
+        if self._progress:
+            self._progress(text)
+
+    def outcomes(self, cells: Sequence[Cell], quick: bool = True) -> list[Outcome]:
+        """Outcomes in the order of the cells."""
+        self.runs += len(cells)
+        if self._pool is None or len(cells) < 2:
+            return [outcome(cell, quick) for cell in cells]
+        return list(self._pool.map(partial(outcome, quick=quick), cells))
+
+    def passes(self, cells: Sequence[Cell]) -> list[bool]:
+        """Whether each of some changed cells passes."""
+        return [found.passed for found in self.outcomes(cells)]
+
+
+@contextmanager
+def runner(workers: int, progress: Callable[[str], None] | None = None) -> Iterator[Runner]:
+    """A Runner with its workers, spawned so that no thread or lock of this process is copied."""
+    if workers < 2:
+        yield Runner(None, progress)
+        return
+    kept = {name: os.environ.get(name) for name in THREAD_VARIABLES}
+    os.environ.update(dict.fromkeys(THREAD_VARIABLES, "1"))  # read by a worker's numpy as it loads
+    try:
+        with ProcessPoolExecutor(workers, mp_context=get_context("spawn")) as pool:
+            yield Runner(pool, progress)
+    finally:
+        for name, value in kept.items():
+            if value is None:
+                os.environ.pop(name, None)
+            else:
+                os.environ[name] = value
+
+
+def least_passing(
+    passes: Callable[[Sequence[float]], list[bool]], scan: Sequence[float], resolution: float
+) -> float | None:
+    """The least value that passes, to a relative resolution; None where none of the scan does.
+
+    A greedy step need not be monotone in a limit or a speed, so the scan goes up value by value to the first
+    that passes, and the gap below it is then divided. Every value returned was run and passed.
+
+    Parameters
+    ----------
+    passes : tells for several values at once whether each passes
+    scan : rising values, all > 0
+    """
+    low = high = None
+    for k in range(0, len(scan), BATCH):
+        tried = scan[k : k + BATCH]
+        verdicts = passes(tried)
+        if True in verdicts:
+            first = k + verdicts.index(True)
+            low, high = (scan[first - 1] if first else None), scan[first]
+            break
+    if high is None or low is None:
+        return high
+    while high / low - 1 > resolution:
+        ratio = math.log(high / low) / (BATCH + 1)
+        tried = [low * math.exp(ratio * (k + 1)) for k in range(BATCH)]
+        for value, ok in zip(tried, passes(tried), strict=True):
+            if ok:
+                high = value
+                break
+            low = value
+    return high

@@ -1,0 +1,204 @@
+"""report.html: one file that needs no network and no script."""
+
+from __future__ import annotations
+
+from reach.evidence.record import Reason, Strike, Use
+from reach.report.cautions import cautions
+from reach.report.document import tracking, versions
+from reach.report.figures import pictures
+from reach.report.page import bullets, esc, page, paragraph, picture, section, table
+from reach.report.wording import (
+    NOTHING,
+    both_sides,
+    fixed,
+    force_unit,
+    number,
+    outcome,
+    owner,
+    percent,
+    solver_line,
+    tilt_meaning,
+    unknown_limits,
+)
+from reach.result import FollowResult
+from reach.verdict import DELIVERABLE, NOT_DELIVERABLE, broken_limits
+
+
+def write(result: FollowResult) -> str:
+    """Return the report as one HTML page."""
+    return page(
+        f"{result.verdict.verdict}: {result.cell.path}",
+        (
+            f"<h1>Can this arm deliver these paddle commands? {esc(result.cell.path)}</h1>",
+            _verdict(result),
+            section("What decides", _reasons([reason for reason in result.reasons if reason.decides])),
+            section("What would help", _remedies(result)),
+            section("What the limits would have to be", _needs(result)),
+            section("Strikes", _strikes(result), paragraph(tilt_meaning(result) or "")),
+            section("Figures", *_pictures(result)),
+            section("Limits", _limits(result), _unknown(result)),
+            section("What else fell short", _reasons([reason for reason in result.reasons if not reason.decides])),
+            section("The motion", _motion(result)),
+            section("How the log was read", paragraph(result.reading)),
+            section("Not checked", bullets(result.evidence.not_checked)),
+            section("Notes", bullets([*result.notes, *result.cell.notes])),
+            section("Inputs", table(("file", "SHA-256"), [(i.path, i.sha256) for i in result.cell.inputs])),
+            section("Versions", table(("program", "version"), _versions())),
+            section("Caution", f'<div class="caution">{bullets(cautions(result))}</div>'),
+        ),
+    )
+
+
+def _verdict(result: FollowResult) -> str:
+    verdict = result.verdict.verdict
+    look = {DELIVERABLE: "good", NOT_DELIVERABLE: "bad"}.get(verdict, "open")
+    lines = [result.verdict.sentence, f"Without margins: {result.without_margins}."]
+    if result.without_pose_gain is not None:
+        lines.append(f"Without pose feedback: {result.without_pose_gain}.")
+    lines.append(f"Headroom: {result.headroom_text}")
+    return f'<div class="verdict {look}"><strong>{esc(verdict)}</strong>{"".join(map(paragraph, lines))}</div>'
+
+
+def _reasons(reasons: list[Reason]) -> str:
+    header = ("what", "limit", "joint", "phase", "#from s", "#to s", "#value", "#bound", "unit", "basis")
+    rows = [
+        (
+            reason.text,
+            reason.limit,
+            reason.joint or NOTHING,
+            reason.phase or NOTHING,
+            fixed(reason.time_s, 3),
+            fixed(reason.until_s, 3),
+            number(reason.value),
+            number(reason.bound),
+            reason.unit,
+            reason.basis,
+        )
+        for reason in reasons
+    ]
+    return table(header, rows)
+
+
+def _remedies(result: FollowResult) -> str:
+    texts = (
+        f"{r.change}: {r.effect} ({'verified by a run' if r.verified else 'not verified'})" for r in result.remedies
+    )
+    return bullets(texts, "ol")
+
+
+def _needs(result: FollowResult) -> str:
+    header = ("what", "limit", "joint", "#necessary", "#sufficient", "unit")
+    rows = [
+        (n.text, n.limit, n.joint or NOTHING, number(n.necessary), number(n.sufficient), n.unit)
+        for n in result.needs
+    ]
+    return table(header, rows)
+
+
+def _strikes(result: FollowResult) -> str:
+    strikes = result.evidence.strikes
+    header = (
+        "#at s",
+        "contact",
+        "#commanded m/s",
+        "#delivered m/s",
+        "#share %",
+        "#lateral m/s",
+        "#tilt error °",
+        "#position error mm",
+        "#moves next contact mm",
+        "result",
+        "basis",
+    )
+    return table(header, [_strike(strike) for strike in strikes], [not strike.delivered for strike in strikes])
+
+
+def _strike(strike: Strike) -> tuple[str, ...]:
+    shift = strike.next_contact_shift_m
+    return (
+        fixed(strike.time_s, 3),
+        "marked" if strike.marked else "guessed",
+        fixed(strike.commanded_m_s, 3),
+        fixed(strike.delivered_m_s, 3),
+        percent(strike.delivered_share),
+        fixed(strike.lateral_m_s, 3),
+        fixed(strike.tilt_error_deg, 2),
+        fixed(1000 * strike.position_error_m, 2),
+        fixed(None if shift is None else 1000 * shift, 1),
+        outcome(strike),
+        strike.basis,
+    )
+
+
+def _pictures(result: FollowResult) -> list[str]:
+    drawn = pictures(result)
+    return [picture(*drawing) for drawing in drawn] or [paragraph("There is no motion to draw.")]
+
+
+def _limits(result: FollowResult) -> str:
+    header = (
+        "limit",
+        "joint",
+        "#stated",
+        "#planned with",
+        "unit",
+        "#peak",
+        "#use %",
+        "#at s",
+        "#asked for",
+        "stated in",
+    )
+    uses = result.evidence.uses
+    broken = broken_limits(result.evidence)
+    return table(header, [_use(use, use in broken) for use in uses], [use in broken for use in uses])
+
+
+def _use(use: Use, broken: bool) -> tuple[str, ...]:
+    return (
+        use.limit,
+        owner(use),
+        both_sides(use.lo, use.hi),
+        both_sides(use.kept_lo, use.kept_hi),
+        use.unit,
+        number(use.peak),
+        percent(use.utilisation) + (" broken" if broken else ""),
+        fixed(use.time_s, 3),
+        number(use.demand_peak),
+        use.source,
+    )
+
+
+def _unknown(result: FollowResult) -> str:
+    found = unknown_limits(result)
+    if not found:
+        return ""
+    return paragraph("Unknown, because nobody stated them:") + bullets(f"{kind}: {joints}" for kind, joints in found)
+
+
+def _motion(result: FollowResult) -> str:
+    evidence = result.evidence
+    if evidence.track is None:
+        return paragraph("There is no motion.") + bullets(evidence.blocked)
+    errors = tracking(evidence.track)
+    position = errors["position_peak_m"]
+    rows = [
+        ("velocity error, RMS", number(errors["velocity_rms_m_s"]), "m/s"),
+        ("velocity error, peak", number(errors["velocity_peak_m_s"]), "m/s"),
+        ("position error, peak", number(None if position is None else 1000 * position), "mm"),
+        ("tilt error, peak", number(errors["tilt_peak_deg"]), "°"),
+    ]
+    if evidence.base_load is not None:
+        rows += [
+            ("peak force of the moving part on the stand", number(evidence.base_load.force_peak_n), "N"),
+            ("peak moment on the stand, about the base origin", number(evidence.base_load.moment_peak_nm), "N·m"),
+        ]
+    if evidence.rms_torque is not None:
+        rows += [
+            (f"RMS torque of {joint.name}", number(value), force_unit(joint))
+            for joint, value in zip(result.cell.arm.joints, evidence.rms_torque, strict=True)
+        ]
+    return table(("what", "#value", "unit"), rows) + paragraph(f"Solver: {solver_line(result)}.")
+
+
+def _versions() -> list[tuple[str, str]]:
+    return [(name, version or "not installed") for name, version in versions().items()]
