@@ -266,7 +266,7 @@ def test_manipulability_of_two_links():
         assert w == pytest.approx(0.7 * 0.4 * abs(np.sin(elbow)), abs=1e-8)  # √ of a rounding of 1e-17
 
 
-NO_PADDLE_TOML = """
+DISC_TOML = """
 [paddle]
 mount = { xyz_m = [0.03, 0.0, 0.05], rpy_deg = [0.0, 0.0, 0.0] }
 shape = "disc"
@@ -301,7 +301,8 @@ def link2_closed_form(q, v, a, mass, centre, inertia):
 def test_link2_with_disc_against_closed_forms():
     # Two-link formulas as in any textbook of robot dynamics, robots/link2/ORIGIN.md; the disc is added to link 2
     # by the parallel-axis theorem: a solid cylinder's m(3r² + t²)/12 across, its centre t/2 behind its face.
-    arm = Arm(robot_cell("link2", paddle=NO_PADDLE_TOML).arm, robot_cell("link2", paddle=NO_PADDLE_TOML).paddle)
+    cell = robot_cell("link2", paddle=DISC_TOML)
+    arm = Arm(cell.arm, cell.paddle)
     disc, centre = 0.3, np.array([0.4 + 0.03, 0.05 - 0.01])
     across = disc * (3 * 0.08**2 + 0.02**2) / 12
     mass = 1.2 + disc
@@ -318,7 +319,8 @@ def test_link2_with_disc_against_closed_forms():
 
 def test_link2_jacobian_closed_form():
     # Derivatives of x = l1 c1 + l2 c12, z = l1 s1 + l2 s12 for the strike point, (0.43, 0.05) in link 2.
-    arm = Arm(robot_cell("link2", paddle=NO_PADDLE_TOML).arm, robot_cell("link2", paddle=NO_PADDLE_TOML).paddle)
+    cell = robot_cell("link2", paddle=DISC_TOML)
+    arm = Arm(cell.arm, cell.paddle)
     for q1, q2 in np.random.default_rng(2).uniform(-2.0, 2.0, (10, 2)):
         s, c = np.sin(q1 + q2), np.cos(q1 + q2)
         outer = np.array([-0.43 * s - 0.05 * c, 0, 0.43 * c - 0.05 * s, 0, -1, 0])
@@ -343,19 +345,16 @@ def cells(n: int) -> np.ndarray:
 
 
 def test_disc_against_its_own_solid():
-    # Sunflower-free grid: rings of equal area at their mean-square radius, so that the sum over r² is exact.
-    radius, thickness, mass, rings = 0.085, 0.012, 0.25, 400
+    # Rings of equal area, each at its mean-square radius: exact in r². Layers by the midpoint rule.
+    radius, thickness, mass, rings = 0.085, 0.012, 0.25, 20
     square = (np.arange(rings) + 0.5) / rings * radius**2
-    angle = 2 * np.pi * (cells(24) + 0.5)
-    layer = thickness * cells(400) - thickness / 2
-    s, a, z = (x.ravel() for x in np.meshgrid(square[::8], angle, layer, indexing="ij"))
-    square_mean = square[::8].mean()
-    s = s * (radius**2 / 2) / square_mean
+    layer = thickness * cells(200) - thickness / 2
+    s, a, z = (x.ravel() for x in np.meshgrid(square, 2 * np.pi * cells(24), layer, indexing="ij"))
     points = np.column_stack([np.sqrt(s) * np.cos(a), np.sqrt(s) * np.sin(a), z])
     body = paddle_mass(Paddle(Pose(), mass, "disc", radius_m=radius, thickness_m=thickness))
     centre, inertia = solid(points, mass)
     np.testing.assert_allclose(body.com_m, centre, atol=1e-12)
-    np.testing.assert_allclose(body.inertia_kg_m2, inertia, rtol=1e-5, atol=1e-12)  # midpoint rule, 400 layers
+    np.testing.assert_allclose(body.inertia_kg_m2, inertia, rtol=1e-5, atol=1e-12)  # midpoint rule, 200 layers
 
 
 def test_plate_against_its_own_solid():
@@ -506,7 +505,7 @@ def test_gravity_stays_in_the_world_when_the_base_turns():
 def test_base_load_at_rest_is_the_weight():
     # By hand: the moving bodies of robots/link2 (2.4, 1.2 kg) and the disc (0.3 kg) in posture (0.4, 0.7).
     base = Pose((0.2, 0.3, 0.5), (0.3, -0.2, 0.4))
-    cell = robot_cell("link2", paddle=NO_PADDLE_TOML)
+    cell = robot_cell("link2", paddle=DISC_TOML)
     arm = Arm(replace(cell.arm, base=base), cell.paddle)
     q = np.array([[0.4, 0.7]])
     torque, wrench = arm.torque_and_base_load(q, np.zeros((1, 2)), np.zeros((1, 2)))

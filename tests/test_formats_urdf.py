@@ -355,7 +355,7 @@ def chain_of(source: Path, tip: str) -> list[str]:
         parent, child = joint.find("parent"), joint.find("child")
         assert parent is not None and child is not None
         above[child.get("link")] = (parent.get("link"), joint.get("name"), joint.get("type"))
-    names = []
+    names: list[str] = []
     link: str | None = tip
     while link in above:
         link, name, kind = above[link]

@@ -5,12 +5,8 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass
 
-import numpy as np
-
-from reach.cell import Array
 from reach.errors import FaultList, nearest
-from reach.formats import inertia
-from reach.formats.urdf import HELD_AS_DRAWN, MOVING, Urdf, UrdfJoint, UrdfLink, turned
+from reach.formats.urdf import HELD_AS_DRAWN, MOVING, Urdf, UrdfJoint, UrdfLink
 
 MOVABLE_KG_M2 = (
     1e-9  # inertia about its joint below which a body counts as having none; a servo horn has 1e-7
@@ -149,81 +145,3 @@ def _fit_for_chain(joint: UrdfJoint, faults: FaultList) -> None:
             f'it mimics "{joint.mimics}" on the way to the tip; coupled joints are not supported: '
             "make it fixed, or a joint of its own",
         )
-
-
-def check_inertias(
-    tree: Tree, held: Mapping[str, float], torque_counts: bool, faults: FaultList
-) -> tuple[str, ...]:
-    """Check the inertia of every link that moves with the chain, before anything is merged.
-
-    For each chain joint the body it carries (up to the next chain joint) must have inertia about the
-    joint's own axis, which makes the mass matrix positive definite in every posture: in any motion the
-    first joint that moves then already gives kinetic energy. The tip's body may owe it to the paddle.
-
-    Parameters
-    ----------
-    held : value in rad or m by name, of joints beside the chain
-    torque_counts : without torque in the acceptance an absent inertia is a note, not a fault
-
-    Returns
-    -------
-    Notes.
-    """
-    links = {link.name: link for link in tree.urdf.links}
-    notes: list[str] = []
-    inertias: dict[str, float] = {}
-    # link -> (chain joint that carries it, placement in that joint's frame)
-    carried: dict[str, tuple[UrdfJoint, Array, Array]] = {}
-    chain = {joint.name for joint in tree.chain}
-    for joint in tree.order:
-        if joint.name in chain:
-            placed = joint, np.eye(3), np.zeros(3)
-        elif joint.parent in carried:
-            carrier, rotation, shift = carried[joint.parent]
-            own_rotation, own_shift = turned(joint.origin, joint.kind, joint.axis, held.get(joint.name, 0.0))
-            placed = carrier, rotation @ own_rotation, shift + rotation @ own_shift
-        else:
-            continue
-        carried[joint.child] = placed
-        carrier = placed[0]
-        inertias[carrier.name] = inertias.get(carrier.name, 0.0) + _about_axis(
-            links[joint.child], placed, faults, notes
-        )
-    tip_body = carried[tree.tip][0].name
-    for joint in tree.chain:
-        least = MOVABLE_KG if joint.kind == "prismatic" else MOVABLE_KG_M2
-        if inertias[joint.name] > least:
-            continue
-        bodies = ", ".join(name for name, (carrier, _, _) in carried.items() if carrier is joint)
-        lack = f"what it moves ({bodies}) has no inertia about its axis"
-        if joint.name == tip_body:
-            notes.append(f"{faults.file}: {joint.place}: {lack} but the paddle's")
-        elif torque_counts:
-            faults.add(joint.place, f"{lack}, so its torque would come out too small; add <inertial> there")
-        else:
-            notes.append(f"{faults.file}: {joint.place}: {lack}; torque would come out too small")
-    return tuple(notes)
-
-
-def _about_axis(
-    link: UrdfLink, placed: tuple[UrdfJoint, Array, Array], faults: FaultList, notes: list[str]
-) -> float:
-    """Inertia of one link about the axis of the joint that carries it (its mass for a sliding joint)."""
-    if link.inertial is None:
-        return 0.0
-    joint, rotation, shift = placed
-    own, place = link.inertial, f"line {link.inertial.line}, link {link.name}"
-    tensor = inertia.matrix(own.inertia)
-    fault, note = inertia.judge(own.mass_kg, tensor)
-    if not fault and float(np.linalg.norm(own.origin.xyz_m)) > inertia.FAR_COM_M:
-        fault = f"centre of mass {own.origin.xyz_m} m lies far off the link; is it in mm?"
-    if fault:
-        faults.add(place, fault)
-    if note:
-        notes.append(f"{faults.file}: {place}: {note}")
-    if joint.kind == "prismatic":
-        return own.mass_kg
-    axis = np.array(joint.axis)
-    turn = rotation @ own.origin.rotation
-    arm = np.cross(axis, shift + rotation @ np.array(own.origin.xyz_m))
-    return float(axis @ turn @ tensor @ turn.T @ axis + own.mass_kg * arm @ arm)

@@ -8,7 +8,8 @@ from typing import Any
 
 from reach.cell import ArmSpec, HeldJoint, Joint, Pose
 from reach.errors import FaultList, nearest
-from reach.formats.chain import Tree, check_inertias, read_tree
+from reach.formats.bodies import check_inertias
+from reach.formats.chain import Tree, read_tree
 from reach.formats.files import MAX_TEXT_BYTES, Reading, beside
 from reach.formats.kinds import dotted
 from reach.formats.limits_toml import merge, read_limits

@@ -5,9 +5,7 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass, field, replace
 
-import numpy as np
-
-from reach.cell import Array, Bound, JointLimits, Pose, Vec3
+from reach.cell import Bound, JointLimits, Pose, Vec3
 from reach.errors import FaultList, nearest
 from reach.formats.xml_tree import Element, parse
 
@@ -46,7 +44,7 @@ class UrdfJoint:
     kind: str
     parent: str
     child: str
-    origin: Pose = Pose()
+    origin: Pose = field(default_factory=Pose)
     axis: Vec3 = (1.0, 0.0, 0.0)
     limits: JointLimits = field(default_factory=JointLimits)
     mimics: str | None = None
@@ -286,19 +284,3 @@ def _finite(text: str) -> float | None:
     except ValueError:
         return None
     return value if math.isfinite(value) and "_" not in text else None
-
-
-def turned(pose: Pose, kind: str, axis: Vec3, value: float) -> tuple[Array, Array]:
-    """Rotation (3, 3) and translation (3,) across a joint at `value`: its origin, then its own motion.
-
-    The turn about the axis is Rodrigues' formula.
-    """
-    rotation, shift = pose.rotation, np.array(pose.xyz_m)
-    direction = np.array(axis)
-    if kind == "prismatic":
-        return rotation, shift + rotation @ direction * value
-    if kind in ("revolute", "continuous"):
-        x, y, z = axis
-        cross = np.array([[0, -z, y], [z, 0, -x], [-y, x, 0]])
-        rotation = rotation @ (np.eye(3) + math.sin(value) * cross + (1 - math.cos(value)) * cross @ cross)
-    return rotation, shift

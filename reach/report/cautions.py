@@ -6,13 +6,14 @@ import numpy as np
 
 from reach.result import FollowResult
 
-REDUCED_SPEED_M_S = 0.250  # ISO 10218-1:2011, 5.6.2, reduced speed control at the tool centre point; from memory
+# ISO 10218-1:2011, 5.6.2, reduced speed control at the tool centre point; quoted from memory.
+REDUCED_SPEED_M_S = 0.250
 
 
 def cautions(result: FollowResult) -> tuple[str, ...]:
     """Return the cautions for a result, a sentence or two each."""
     return (
-        "These results are simulation on the limits that were stated. They are no permission to run anything.",
+        "These results are simulation on the limits that were stated. They are no permission to run an arm.",
         _speed(peak_tool_speed(result)),
         "Keep people out of the cell whenever the arm can move.",
         "Local codes, the maker's manual and a competent person's risk assessment decide what may run.",

@@ -57,7 +57,7 @@ def shorten(text: str, columns: int) -> str:
     return text if width(text) <= columns else _head(text, columns - 1) + "…"
 
 
-def table(header: Sequence[str], rows: Sequence[Sequence[str]], left: int = 0, indent: str = "  ") -> list[str]:
+def table(header: Sequence[str], rows: Sequence[Sequence[str]], left: int = 0) -> list[str]:
     """Lay rows out under a header, two spaces apart; the last column wraps.
 
     Parameters
@@ -70,7 +70,7 @@ def table(header: Sequence[str], rows: Sequence[Sequence[str]], left: int = 0, i
     lines: list[str] = []
     for row in (header, *rows):
         cells = [_pad(row[i], widths[i], i < left) for i in range(count)]
-        lines += [line.rstrip() for line in wrap(row[count], indent + "".join(f"{cell}  " for cell in cells))]
+        lines += [line.rstrip() for line in wrap(row[count], "  " + "".join(f"{cell}  " for cell in cells))]
     return lines
 
 

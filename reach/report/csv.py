@@ -19,9 +19,9 @@ TIME_DIGITS = 15  # keeps a millisecond apart even where the log's zero is decad
 def write(result: FollowResult) -> str:
     """Return the motion as CSV; the header alone where there is no motion."""
     joints = [encodable(joint.name) for joint in result.cell.arm.joints]
-    header = ["t_s", *(f"{kind}_{joint}" for kind in ("q", "v", "a", "tau") for joint in joints), *PLACE, *TWIST]
+    states = [f"{kind}_{joint}" for kind in ("q", "v", "a", "tau") for joint in joints]
     out = io.StringIO()
-    csv.writer(out, lineterminator="\n").writerow(header)
+    csv.writer(out, lineterminator="\n").writerow(["t_s", *states, *PLACE, *TWIST])
     table = _table(result)
     if table is not None:
         row_format = ",".join([f"%.{TIME_DIGITS}g"] + [f"%.{DIGITS}g"] * (table.shape[1] - 1)) + "\n"
@@ -49,7 +49,7 @@ def quaternions(rotation: Array) -> Array:
     largest = product[np.arange(len(rotation)), np.argmax(square, axis=1)]
     unit = largest / np.linalg.norm(largest, axis=1, keepdims=True)
     if len(unit) == 0:
-        return unit
+        return np.asarray(unit)
     turns = np.sum(unit[1:] * unit[:-1], axis=1) < 0
     first = -1.0 if unit[0, 0] < 0 else 1.0
     sign = first * np.cumprod(np.append(1.0, np.where(turns, -1.0, 1.0)))

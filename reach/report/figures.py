@@ -9,7 +9,6 @@ from __future__ import annotations
 import io
 import math
 import warnings
-from collections.abc import Callable
 from typing import Any, NamedTuple
 
 import matplotlib as mpl
@@ -20,6 +19,7 @@ from matplotlib.figure import Figure
 
 from reach.cell import Array
 from reach.evidence.record import Strike, Track, Use
+from reach.report.captions import Caption, of_errors, of_path, of_peaks, of_speed, of_uses
 from reach.report.columns import shorten
 from reach.report.series import keep, kept_share, shares, worst_per_bin
 from reach.report.wording import owner
@@ -34,6 +34,7 @@ PANEL_POINTS = 400  # a line in one of many panels, at most
 CLOSE_UPS = 4
 CLOSE_UP_S = 0.08  # drawn before and after the contact
 MOST_SHARE = 2.0  # of a limit, the top of a panel
+FAR_SHARE = 10 * MOST_SHARE  # shares are drawn as this at most, infinite ones too
 FAR_TIMES = 30.0  # the tolerance: from here errors are drawn on a scale that bends
 FAR_ZERO_S = 1e5  # logs that start later than this are drawn from zero
 NAME_COLUMNS = 34
@@ -50,7 +51,20 @@ KIND_STYLES: dict[str, tuple[str, str | tuple[int, tuple[float, ...]]]] = {
 OTHER_STYLE = (SKY, (0, (2, 1)))  # a kind that has no style of its own
 MEANS = ("duty",)  # kinds that are one number for the whole motion: no line over time
 
-STYLE: dict[str, Any] = {
+COMMANDED_STYLE: dict[str, Any] = {"color": INK, "linestyle": (0, (4, 2)), "label": "commanded", "zorder": 3}
+DELIVERED_STYLE: dict[str, Any] = {"color": BLUE, "linewidth": 1.6, "label": "delivered"}
+MARK: dict[str, Any] = {"linestyle": "", "markersize": 7, "zorder": 5}
+STRIKE_STYLES: dict[bool, dict[str, Any]] = {  # by whether it was delivered
+    True: {**MARK, "marker": "o", "color": GREEN, "label": "strike delivered"},
+    False: {**MARK, "marker": "X", "color": ORANGE, "label": "strike missed"},
+}
+START_STYLE = {**MARK, "marker": "s", "color": "white", "markeredgecolor": INK, "label": "start"}
+WINDOW_STYLES: dict[bool, dict[str, Any]] = {
+    True: {"facecolor": "#bfe0d3"},
+    False: {"facecolor": "#f6c7a5", "hatch": "////"},
+}
+
+STYLE: Any = {
     "svg.fonttype": "none",  # the reader's own fonts: any script can be shown
     "svg.hashsalt": "strikecheck",
     "text.parse_math": False,  # a name is never mathematics
@@ -77,11 +91,9 @@ STYLE: dict[str, Any] = {
 
 
 class Picture(NamedTuple):
-    """A drawing with its title, what it shows, and the same for who can't see it."""
+    """A drawing and its caption."""
 
-    title: str
-    caption: str
-    alt: str
+    caption: Caption
     svg: bytes
 
 
@@ -104,7 +116,8 @@ def pictures(result: FollowResult) -> list[Picture]:
 
 def _svg(figure: Figure) -> bytes:
     out = io.BytesIO()
-    FigureCanvasSVG(figure).print_svg(out, metadata={"Date": None, "Creator": None})
+    FigureCanvasSVG(figure)
+    figure.savefig(out, format="svg", metadata={"Date": None, "Creator": None})
     return out.getvalue()
 
 
@@ -127,10 +140,11 @@ def _speed(result: FollowResult, track: Track) -> Picture:
     ranked = sorted(strikes, key=lambda s: (s.delivered, -abs(1 - (s.delivered_share or 0.0))))[:CLOSE_UPS]
     close = sorted(ranked, key=lambda strike: strike.time_s)
     figure = Figure(figsize=(WIDTH_IN, 6.2 if close else 3.4))
-    grid = figure.add_gridspec(2 if close else 1, max(len(close), 1), height_ratios=[1.25, 1][: 2 if close else 1])
+    heights = [1.25, 1.0] if close else [1.0]
+    grid = figure.add_gridspec(len(heights), max(len(close), 1), height_ratios=heights)
     clock = _Clock.of(track)
     whole = figure.add_subplot(grid[0, :])
-    _speed_lines(whole, track, clock, np.arange(len(track.t_s)))
+    _speed_lines(whole, track, clock)
     _strike_marks(whole, result, strikes, clock)
     whole.set(xlabel=clock.label, ylabel="speed along the normal, m/s", title="whole motion")
     whole.legend(loc="lower left", bbox_to_anchor=(0.15, 1.0), ncols=4, borderaxespad=0.2)
@@ -139,40 +153,26 @@ def _speed(result: FollowResult, track: Track) -> Picture:
         _close_up(axes, result, track, strike)
         if place == 0:
             axes.set_ylabel("m/s")
-    hit = sum(strike.delivered for strike in strikes)
-    caption = (
-        "Speed of the strike point along the commanded face normal. A filled circle is a strike delivered, a cross "
-        "one missed; the bar at it is the speed that would be accepted. "
-    )
-    if close:
-        caption += (
-            "Below, the strikes that miss most or come closest to it: the box is the window around the contact by "
-            "the speed accepted."
-        )
-    return Picture("Commanded and delivered speed", caption, f"{hit} of {len(strikes)} strikes delivered.", _svg(figure))
+    return Picture(of_speed(result), _svg(figure))
 
 
-def _speed_lines(axes: Axes, track: Track, clock: _Clock, rows: np.ndarray) -> None:
-    pair = np.column_stack([track.commanded_normal, track.delivered_normal])[rows]
-    shown = rows[keep(pair, POINTS)]
+def _speed_lines(axes: Axes, track: Track, clock: _Clock) -> None:
+    shown = keep(np.column_stack([track.commanded_normal, track.delivered_normal]), POINTS)
     t = track.t_s[shown] - clock.zero_s
-    axes.plot(t, track.commanded_normal[shown], color=INK, linestyle=(0, (4, 2)), label="commanded", zorder=3)
-    axes.plot(t, track.delivered_normal[shown], color=BLUE, linewidth=1.6, label="delivered")
+    axes.plot(t, track.commanded_normal[shown], **COMMANDED_STYLE)
+    axes.plot(t, track.delivered_normal[shown], **DELIVERED_STYLE)
 
 
 def _strike_marks(axes: Axes, result: FollowResult, strikes: tuple[Strike, ...], clock: _Clock) -> None:
     share = result.cell.accept.strike_speed_error_share
-    for delivered, style in (
-        (True, {"marker": "o", "color": GREEN, "label": "strike delivered"}),
-        (False, {"marker": "X", "color": ORANGE, "label": "strike missed"}),
-    ):
+    for delivered, style in STRIKE_STYLES.items():
         some = [strike for strike in strikes if strike.delivered is delivered]
         if some:
             t = [strike.time_s - clock.zero_s for strike in some]
             commanded = np.array([strike.commanded_m_s for strike in some])
             band = share * np.abs(commanded)
             axes.errorbar(t, commanded, yerr=band, fmt="none", ecolor=INK, capsize=3, elinewidth=1, zorder=4)
-            axes.plot(t, [s.delivered_m_s for s in some], linestyle="", markersize=7, zorder=5, **style)
+            axes.plot(t, [s.delivered_m_s for s in some], **style)
 
 
 def _close_up(axes: Axes, result: FollowResult, track: Track, strike: Strike) -> None:
@@ -184,12 +184,12 @@ def _close_up(axes: Axes, result: FollowResult, track: Track, strike: Strike) ->
     band = accept.strike_speed_error_share * abs(strike.commanded_m_s)
     low, high = strike.commanded_m_s - band, strike.commanded_m_s + band
     axes.fill_between([-half, half], low, high, facecolor="#cfe3d4", edgecolor=GREEN, linewidth=1)
-    axes.plot(since[rows], track.commanded_normal[rows], color=INK, linestyle=(0, (4, 2)), zorder=3)
-    axes.plot(since[rows], track.delivered_normal[rows], color=BLUE, linewidth=1.6)
-    marker, colour = ("o", GREEN) if strike.delivered else ("X", ORANGE)
-    axes.plot([0], [strike.delivered_m_s], marker=marker, color=colour, markersize=7, zorder=5)
+    axes.plot(since[rows], track.commanded_normal[rows], **COMMANDED_STYLE)
+    axes.plot(since[rows], track.delivered_normal[rows], **DELIVERED_STYLE)
+    axes.plot([0], [strike.delivered_m_s], **STRIKE_STYLES[strike.delivered])
     word = "delivered" if strike.delivered else "missed"
-    axes.set(title=f"{strike.time_s:.3f} s: {word}", xlabel="ms from contact", xlim=(-1000 * CLOSE_UP_S, 1000 * CLOSE_UP_S))
+    axes.set(title=f"{strike.time_s:.3f} s: {word}", xlabel="ms from contact")
+    axes.set_xlim(-1000 * CLOSE_UP_S, 1000 * CLOSE_UP_S)
 
 
 def _peaks(result: FollowResult) -> Picture:
@@ -208,12 +208,7 @@ def _peaks(result: FollowResult) -> Picture:
     axes.tick_params(length=0, labeltop=True, labelbottom=False)
     axes.grid(False)
     axes.spines[:].set_visible(False)
-    broken = [use for use in uses if _breaks(use.utilisation)]
-    caption = (
-        "Peak use of each limit in per cent of the stated value, and in brackets what exact tracking would have asked "
-        "for. Darker is more; a thick frame with an exclamation mark is a broken limit."
-    )
-    return Picture("Use of each limit", caption, f"{len(broken)} limits broken; the table below has the numbers.", _svg(figure))
+    return Picture(of_peaks(result), _svg(figure))
 
 
 def _name(uses: tuple[Use, ...], joint: str) -> str:
@@ -236,7 +231,7 @@ def _peak_cell(axes: Axes, use: Use, x: int, y: int) -> None:
         text, colour = "no limit", GREY
     else:
         demand = float(shares(use, np.array([use.demand_peak]))[0])
-        text = f"{100 * share:.0f}" + (f"  ({_short(demand)})" if math.isfinite(demand) else "")
+        text = f"{100 * share:.0f}" + (f" ({_short(demand)})" if math.isfinite(demand) else "")
         depth = min(share, 1.0)
         box["facecolor"] = tuple(1 - depth**1.5 * (1 - np.array([0.0, 0.447, 0.698])) * 0.9)
         colour = "white" if depth > 0.75 else INK
@@ -279,25 +274,23 @@ def _uses(result: FollowResult, track: Track) -> Picture:
         axes.tick_params(labelbottom=True)
     if entries:
         figure.legend(entries.values(), entries.keys(), loc="outside upper left", ncols=len(entries))
-    caption = (
-        "Share of each stated limit over time; the dark line is the limit, a short dash in a line's colour at the right "
-        "edge what the plan leaves of it after its margin, a cross a break. Limits that are unknown or one number "
-        f"for the whole motion have no line; a panel ends at {100 * MOST_SHARE:.0f} %."
-    )
-    alt = "The table of limits has the peaks and their instants."
-    return Picture("Use of the limits over time", caption, alt, _svg(figure))
+    return Picture(of_uses(MOST_SHARE), _svg(figure))
 
 
 def _use_line(axes: Axes, use: Use, t: Array) -> Any:
     colour, dash = KIND_STYLES.get(use.limit, OTHER_STYLE)
-    times, values = worst_per_bin(t, shares(use), PANEL_POINTS)
+    times, values = worst_per_bin(t, np.minimum(shares(use), FAR_SHARE), PANEL_POINTS)
     (line,) = axes.plot(times, values, color=colour, linestyle=dash, label=use.limit)
     kept = kept_share(use)
     if kept is not None:
         axes.axhline(kept, color=colour, linestyle="--", linewidth=0.9, alpha=0.7, xmin=0.94)
     over = values > 1 + ROUNDING
+    top = np.maximum(values, 1)
+    axes.fill_between(times, 1, top, where=over.tolist(), facecolor=colour, alpha=0.35, linewidth=0)
     if over.any():
-        axes.plot(times[over], np.minimum(values[over], 0.97 * MOST_SHARE), "x", color=colour, markersize=5, zorder=4)
+        peak = int(np.argmax(values))
+        height = min(float(values[peak]), 0.97 * MOST_SHARE)
+        axes.plot(times[peak], height, "X", color=colour, markersize=7, markeredgecolor=INK, zorder=4)
     return line
 
 
@@ -306,10 +299,11 @@ def _errors(result: FollowResult, track: Track) -> Picture:
     accept = result.cell.accept
     figure = Figure(figsize=(WIDTH_IN, 5.6))
     clock = _Clock.of(track)
+    tilt_deg = math.degrees(accept.strike_tilt_error_rad)
     columns: tuple[tuple[str, Array, float, str], ...] = (
-        ("velocity error, m/s", track.velocity_error, accept.strike_lateral_m_s, "lateral, at a strike"),
-        ("position error, mm", 1000 * track.position_error, 1000 * accept.strike_position_m, "at a strike"),
-        ("tilt error, °", np.degrees(track.tilt_error), math.degrees(accept.strike_tilt_error_rad), "at a strike"),
+        ("velocity error, m/s", track.velocity_error, accept.strike_lateral_m_s, "tolerance, lateral"),
+        ("position error, mm", 1000 * track.position_error, 1000 * accept.strike_position_m, "tolerance"),
+        ("tilt error, °", np.degrees(track.tilt_error), tilt_deg, "tolerance"),
     )
     panels = figure.subplots(3, 1, sharex=True)
     rows = keep(np.column_stack([values for _, values, _, _ in columns]), POINTS)
@@ -317,60 +311,47 @@ def _errors(result: FollowResult, track: Track) -> Picture:
     for axes, (label, values, tolerance, where) in zip(panels, columns, strict=True):
         _shade(axes, result, track, clock)
         axes.plot(t, values[rows], color=BLUE)
-        axes.axhline(tolerance, color=ORANGE, linestyle=(0, (5, 2)), linewidth=1.1, label=f"tolerance {where}")
+        axes.axhline(tolerance, color=ORANGE, linestyle=(0, (5, 2)), linewidth=1.1, label=where)
         if values.max() > FAR_TIMES * tolerance > 0:
             axes.set_yscale("symlog", linthresh=tolerance)
             axes.yaxis.set_major_formatter(lambda value, _: f"{value:g}")
-        axes.set_ylim(0, None)
+        axes.set_ylim(0, 1.3 * max(tolerance, float(values.max())))
         axes.set_ylabel(label)
         axes.legend(loc="upper right")
     panels[-1].set_xlabel(clock.label)
-    caption = (
-        "Tracking errors of the strike point. Upright bars are the windows around the strikes, widened where they would "
-        "be too thin to see; the tolerances hold there"
-        + (", here throughout." if accept.at == "throughout" else ".")
-        + " The grey part at the right is after the command's end."
-    )
-    alt = "The section on the motion has the peaks."
-    return Picture("Tracking errors", caption, alt, _svg(figure))
+    return Picture(of_errors(result), _svg(figure))
 
 
 def _shade(axes: Axes, result: FollowResult, track: Track, clock: _Clock) -> None:
-    least = (track.t_s[-1] - track.t_s[0]) / 400
-    half = max(result.cell.accept.strike_window_s, least) / 2
+    t = track.t_s - clock.zero_s
+    half = max(result.cell.accept.strike_window_s, (t[-1] - t[0]) / 400) / 2
     for strike in result.evidence.strikes:
         middle = strike.time_s - clock.zero_s
-        colour, hatch = ("#bfe0d3", None) if strike.delivered else ("#f6c7a5", "////")
-        axes.axvspan(middle - half, middle + half, facecolor=colour, edgecolor="white", linewidth=0, hatch=hatch)
+        style = WINDOW_STYLES[strike.delivered]
+        axes.axvspan(middle - half, middle + half, edgecolor="white", linewidth=0, **style)
     after = np.flatnonzero(~track.during)
     if len(after):
-        axes.axvspan(track.t_s[after[0]] - clock.zero_s, track.t_s[-1] - clock.zero_s, facecolor="#eeeeee", linewidth=0)
+        axes.axvspan(t[after[0]], t[-1], facecolor="#eeeeee", linewidth=0)
 
 
 def _path(result: FollowResult, track: Track) -> Picture:
     """The strike point's way from the side and from above."""
     figure = Figure(figsize=(WIDTH_IN, 4.6))
-    rows = keep(np.column_stack([track.position, track.wanted_position]), POINTS)
     strikes = result.evidence.strikes
-    nearest: Callable[[Strike], int] = lambda strike: int(np.argmin(np.abs(track.t_s - strike.time_s)))  # noqa: E731
+    place_of = {strike: int(np.argmin(np.abs(track.t_s - strike.time_s))) for strike in strikes}
     for place, (title, across, up) in enumerate((("from the side", 0, 2), ("from above", 0, 1)), start=1):
         axes = figure.add_subplot(1, 2, place)
         wanted, done = track.wanted_position, track.position
-        axes.plot(done[rows, across], done[rows, up], color=BLUE, linewidth=1.6, label="delivered")
-        axes.plot(wanted[rows, across], wanted[rows, up], color=INK, linestyle=(0, (4, 2)), label="commanded")
-        for delivered, style in (
-            (True, {"marker": "o", "color": GREEN, "label": "strike delivered"}),
-            (False, {"marker": "X", "color": ORANGE, "label": "strike missed"}),
-        ):
-            at = [nearest(strike) for strike in strikes if strike.delivered is delivered]
+        for way, style in ((done, DELIVERED_STYLE), (wanted, COMMANDED_STYLE)):
+            rows = keep(way[:, [across, up]], POINTS)
+            axes.plot(way[rows, across], way[rows, up], **style)
+        for delivered, style in STRIKE_STYLES.items():
+            at = [row for strike, row in place_of.items() if strike.delivered is delivered]
             if at:
-                axes.plot(done[at, across], done[at, up], linestyle="", markersize=7, zorder=5, **style)
-        axes.plot(done[:1, across], done[:1, up], marker="s", color="white", markeredgecolor=INK, linestyle="", label="start")
+                axes.plot(done[at, across], done[at, up], **style)
+        axes.plot(done[:1, across], done[:1, up], **START_STYLE)
         axes.set(title=title, xlabel=f"{'xyz'[across]}, m", ylabel=f"{'xyz'[up]}, m")
         axes.set_aspect("equal", adjustable="datalim")
         axes.locator_params(nbins=6)
     figure.legend(*figure.axes[0].get_legend_handles_labels(), loc="outside upper left", ncols=5)
-    caption = "The way of the strike point in world axes, both scales equal. The commanded way is the command integrated."
-    span = np.ptp(track.position, axis=0)
-    alt = f"It spans {span[0]:.3f} m in x, {span[1]:.3f} m in y and {span[2]:.3f} m in z."
-    return Picture("The strike point's path", caption, alt, _svg(figure))
+    return Picture(of_path(track), _svg(figure))

@@ -16,6 +16,7 @@ from reach.report.wording import (
     outcome,
     owner,
     percent,
+    remedy_line,
     solver_line,
     tilt_meaning,
     unknown_limits,
@@ -26,18 +27,20 @@ from reach.verdict import DELIVERABLE, NOT_DELIVERABLE, broken_limits
 
 def write(result: FollowResult) -> str:
     """Return the report as one HTML page."""
+    deciding = [reason for reason in result.reasons if reason.decides]
+    others = [reason for reason in result.reasons if not reason.decides]
     return page(
         f"{result.verdict.verdict}: {result.cell.path}",
         (
             f"<h1>Can this arm deliver these paddle commands? {esc(result.cell.path)}</h1>",
             _verdict(result),
-            section("What decides", _reasons([reason for reason in result.reasons if reason.decides])),
+            section("What decides", _reasons(deciding)),
             section("What would help", _remedies(result)),
             section("What the limits would have to be", _needs(result)),
             section("Strikes", _strikes(result), paragraph(tilt_meaning(result) or "")),
             section("Figures", *_pictures(result)),
             section("Limits", _limits(result), _unknown(result)),
-            section("What else fell short", _reasons([reason for reason in result.reasons if not reason.decides])),
+            section("What else fell short", _reasons(others)),
             section("The motion", _motion(result)),
             section("How the log was read", paragraph(result.reading)),
             section("Not checked", bullets(result.evidence.not_checked)),
@@ -56,16 +59,16 @@ def _verdict(result: FollowResult) -> str:
     if result.without_pose_gain is not None:
         lines.append(f"Without pose feedback: {result.without_pose_gain}.")
     lines.append(f"Headroom: {result.headroom_text}")
-    return f'<div class="verdict {look}"><strong>{esc(verdict)}</strong>{"".join(map(paragraph, lines))}</div>'
+    content = "".join(paragraph(line) for line in lines)
+    return f'<div class="verdict {look}"><strong>{esc(verdict)}</strong>{content}</div>'
 
 
 def _reasons(reasons: list[Reason]) -> str:
-    header = ("what", "limit", "joint", "phase", "#from s", "#to s", "#value", "#bound", "unit", "basis")
+    header = ("what", "limit", "phase", "#from s", "#to s", "#value", "#bound", "unit", "basis")
     rows = [
         (
             reason.text,
-            reason.limit,
-            reason.joint or NOTHING,
+            f"{reason.limit} of {reason.joint}" if reason.joint else reason.limit,
             reason.phase or NOTHING,
             fixed(reason.time_s, 3),
             fixed(reason.until_s, 3),
@@ -80,10 +83,7 @@ def _reasons(reasons: list[Reason]) -> str:
 
 
 def _remedies(result: FollowResult) -> str:
-    texts = (
-        f"{r.change}: {r.effect} ({'verified by a run' if r.verified else 'not verified'})" for r in result.remedies
-    )
-    return bullets(texts, "ol")
+    return bullets((remedy_line(remedy) for remedy in result.remedies), "ol")
 
 
 def _needs(result: FollowResult) -> str:
@@ -99,25 +99,25 @@ def _strikes(result: FollowResult) -> str:
     strikes = result.evidence.strikes
     header = (
         "#at s",
-        "contact",
         "#commanded m/s",
         "#delivered m/s",
         "#share %",
         "#lateral m/s",
-        "#tilt error °",
-        "#position error mm",
-        "#moves next contact mm",
+        "#tilt off °",
+        "#position off mm",
+        "#next contact off mm",
         "result",
-        "basis",
     )
-    return table(header, [_strike(strike) for strike in strikes], [not strike.delivered for strike in strikes])
+    missed = [not strike.delivered for strike in strikes]
+    guessed = any(not strike.marked for strike in strikes)
+    source = paragraph("The contacts are guessed from the command's peaks.") if guessed else ""
+    return table(header, [_strike(strike) for strike in strikes], missed) + source
 
 
 def _strike(strike: Strike) -> tuple[str, ...]:
     shift = strike.next_contact_shift_m
     return (
         fixed(strike.time_s, 3),
-        "marked" if strike.marked else "guessed",
         fixed(strike.commanded_m_s, 3),
         fixed(strike.delivered_m_s, 3),
         percent(strike.delivered_share),
@@ -126,13 +126,14 @@ def _strike(strike: Strike) -> tuple[str, ...]:
         fixed(1000 * strike.position_error_m, 2),
         fixed(None if shift is None else 1000 * shift, 1),
         outcome(strike),
-        strike.basis,
     )
 
 
 def _pictures(result: FollowResult) -> list[str]:
     drawn = pictures(result)
-    return [picture(*drawing) for drawing in drawn] or [paragraph("There is no motion to draw.")]
+    if not drawn:
+        return [paragraph("There is no motion to draw.")]
+    return [picture(*drawing.caption, drawing.svg) for drawing in drawn]
 
 
 def _limits(result: FollowResult) -> str:
@@ -172,7 +173,8 @@ def _unknown(result: FollowResult) -> str:
     found = unknown_limits(result)
     if not found:
         return ""
-    return paragraph("Unknown, because nobody stated them:") + bullets(f"{kind}: {joints}" for kind, joints in found)
+    texts = (f"{kind}: {joints}" for kind, joints in found)
+    return paragraph("Unknown, because nobody stated them:") + bullets(texts)
 
 
 def _motion(result: FollowResult) -> str:
@@ -187,10 +189,11 @@ def _motion(result: FollowResult) -> str:
         ("position error, peak", number(None if position is None else 1000 * position), "mm"),
         ("tilt error, peak", number(errors["tilt_peak_deg"]), "°"),
     ]
-    if evidence.base_load is not None:
+    load = evidence.base_load
+    if load is not None:
         rows += [
-            ("peak force of the moving part on the stand", number(evidence.base_load.force_peak_n), "N"),
-            ("peak moment on the stand, about the base origin", number(evidence.base_load.moment_peak_nm), "N·m"),
+            ("peak force of the moving part on the stand", number(load.force_peak_n), "N"),
+            ("peak moment on the stand, about the base origin", number(load.moment_peak_nm), "N·m"),
         ]
     if evidence.rms_torque is not None:
         rows += [

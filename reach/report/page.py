@@ -13,9 +13,10 @@ POLICY = "default-src 'none'; img-src data:; style-src 'unsafe-inline'"
 CSS = """
 :root { color-scheme: light; }
 body { margin: 0 auto; padding: 1.5rem; max-width: 59rem; background: #fff; color: #222;
-  font: 15px/1.5 system-ui, "Segoe UI", "DejaVu Sans", "Noto Sans", sans-serif; overflow-wrap: anywhere; }
+  font: 15px/1.5 system-ui, "Segoe UI", "DejaVu Sans", "Noto Sans", sans-serif; overflow-wrap: break-word; }
 h1 { font-size: 1.15rem; font-weight: 600; margin: 0 0 1rem; }
-h2 { font-size: 1.1rem; font-weight: 600; margin: 2rem 0 .5rem; padding-bottom: .2rem; border-bottom: 1px solid #ccc; }
+h2 { font-size: 1.1rem; font-weight: 600; margin: 2rem 0 .5rem; padding-bottom: .2rem;
+  border-bottom: 1px solid #ccc; }
 h3 { font-size: 1rem; font-weight: 600; margin: 1.4rem 0 .3rem; }
 p { margin: .4rem 0; }
 ul, ol { margin: .4rem 0; padding-left: 1.4rem; }
@@ -28,15 +29,16 @@ ul, ol { margin: .4rem 0; padding-left: 1.4rem; }
 table { border-collapse: collapse; width: 100%; font-size: .87rem; font-variant-numeric: tabular-nums; }
 th, td { padding: .22rem .5rem; text-align: left; vertical-align: top; border-bottom: 1px solid #e2e2e2; }
 th { font-weight: 600; border-bottom: 2px solid #999; vertical-align: bottom; }
-td.n, th.n { text-align: right; white-space: nowrap; }
-tr.marked td { background: #fdf1e8; font-weight: 600; }
+td.n, th.n { text-align: right; }
+td.n { white-space: nowrap; }
+tr.marked td { background: #fdf1e8; }
 figure { margin: 1rem 0 1.6rem; }
 figure img { display: block; width: 100%; height: auto; }
 figcaption { font-size: .9rem; color: #444; }
-code { font: .85em ui-monospace, "DejaVu Sans Mono", monospace; }
 .caution { border-left: 6px solid #222; padding-left: 1rem; }
 @media print { body { max-width: none; padding: 0; font-size: 10pt; } figure, tr { break-inside: avoid; }
-  h2, h3 { break-after: avoid; } thead { display: table-header-group; } .scroll { overflow: visible; } }
+  h2, h3 { break-after: avoid; } thead { display: table-header-group; }
+  .scroll { overflow: visible; } td { overflow-wrap: anywhere; } }
 """
 
 
@@ -82,13 +84,15 @@ def table(header: Sequence[str], rows: Sequence[Sequence[str]], marked: Sequence
     if not rows:
         return ""
     numeric = [' class="n"' if name.startswith("#") else "" for name in header]
-    head = "".join(f"<th{c}>{esc(name.removeprefix('#'))}</th>" for c, name in zip(numeric, header, strict=True))
+    names = [name.removeprefix("#") for name in header]
+    head = "".join(f"<th{c}>{esc(name)}</th>" for c, name in zip(numeric, names, strict=True))
     lines = []
     for place, row in enumerate(rows):
         cells = "".join(f"<td{c}>{esc(cell)}</td>" for c, cell in zip(numeric, row, strict=True))
-        lines.append(f'<tr{" class=marked" if place < len(marked) and marked[place] else ""}>{cells}</tr>')
+        lines.append(f"<tr{' class=marked' if place < len(marked) and marked[place] else ''}>{cells}</tr>")
     body = "\n".join(lines)
-    return f'<div class="scroll"><table>\n<thead><tr>{head}</tr></thead>\n<tbody>\n{body}\n</tbody></table></div>'
+    rows_html = f"<thead><tr>{head}</tr></thead>\n<tbody>\n{body}\n</tbody>"
+    return f'<div class="scroll"><table>\n{rows_html}</table></div>'
 
 
 def picture(title: str, caption: str, alt: str, svg: bytes) -> str:

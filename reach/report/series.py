@@ -10,7 +10,7 @@ from reach.evidence.record import Use
 
 
 def keep(values: Array, points: int) -> NDArray[np.int_]:
-    """Return at most `points` rows of values (m, k) worth drawing: the ends, and each column's extremes per bin."""
+    """Return at most `points` rows of values (m, k) to draw: the ends, and each column's extremes per bin."""
     count, columns = values.shape
     if count <= points:
         return np.arange(count)
@@ -19,12 +19,13 @@ def keep(values: Array, points: int) -> NDArray[np.int_]:
     padded = np.concatenate([values, np.repeat(values[-1:], bins * size - count, axis=0)])
     binned = padded.reshape(bins, size, columns)
     starts = size * np.arange(bins)[:, None]
-    chosen = [starts + np.argmin(binned, axis=1), starts + np.argmax(binned, axis=1), [[0, count - 1]]]
-    return np.unique(np.minimum(np.concatenate([rows.ravel() for rows in map(np.asarray, chosen)]), count - 1))
+    lowest, highest = starts + np.argmin(binned, axis=1), starts + np.argmax(binned, axis=1)
+    chosen = np.concatenate([lowest.ravel(), highest.ravel(), [0, count - 1]])
+    return np.unique(np.minimum(chosen, count - 1))
 
 
 def shares(use: Use, values: Array | None = None) -> Array:
-    """Return the share of its stated limit that a use's series takes (or `values`, in its unit); 1 is at the limit.
+    """Return the share of its stated limit that a use's series takes, or `values`; 1 is at the limit.
 
     For a position, the distance from the middle of its range over half the range; 0 where there is no limit.
     """

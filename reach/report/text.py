@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import math
+
 from reach.evidence.record import Reason, Strike, Use
 from reach.report.cautions import cautions
 from reach.report.columns import shorten, table, wrap
@@ -15,6 +17,7 @@ from reach.report.wording import (
     owner,
     percent,
     plain,
+    remedy_line,
     solver_line,
     stated,
     tilt_meaning,
@@ -107,8 +110,12 @@ def _other_reasons(result: FollowResult) -> list[str]:
 
 
 def _limits(result: FollowResult) -> list[str]:
-    known = [use for use in result.evidence.uses if use.utilisation is not None]
-    worst = sorted(known, key=lambda use: -(use.utilisation or 0.0))[:WORST_LIMITS]
+    used = [
+        (use.utilisation, use)
+        for use in result.evidence.uses
+        if use.utilisation is not None and not math.isnan(use.utilisation)
+    ]
+    worst = [use for _, use in sorted(used, key=lambda pair: -pair[0])[:WORST_LIMITS]]
     if not worst:
         return []
     header = ("limit", "joint", "peak", "limit", "%", "at s", "asked for", "unit")
@@ -135,8 +142,7 @@ def _unknown(result: FollowResult) -> list[str]:
 def _remedies(result: FollowResult) -> list[str]:
     lines = []
     for place, remedy in enumerate(result.remedies, start=1):
-        how = "verified by a run" if remedy.verified else "not verified"
-        lines += wrap(f"{plain(remedy.change)}: {plain(remedy.effect)} ({how})", f"  {place}. ")
+        lines += wrap(plain(remedy_line(remedy)), f"  {place}. ")
     return lines
 
 

@@ -6,7 +6,7 @@ import math
 import unicodedata
 
 from reach.cell import Joint
-from reach.evidence.record import Strike, Use
+from reach.evidence.record import Remedy, Strike, Use
 from reach.result import FollowResult
 
 NOTHING = "–"
@@ -84,6 +84,11 @@ def outcome(strike: Strike) -> str:
     if strike.limit:
         text += f" ({strike.limit}{f' of {plain(strike.joint)}' if strike.joint else ''})"
     return f"missed: {text}"
+
+
+def remedy_line(remedy: Remedy) -> str:
+    """Return a change, what it does, and whether a run has shown it."""
+    return f"{remedy.change}: {remedy.effect} ({'verified by a run' if remedy.verified else 'not verified'})"
 
 
 def tilt_meaning(result: FollowResult) -> str | None:

@@ -1,4 +1,4 @@
-"""WRITERS lists the outputs: a kind is a file of its name beside this one, with a `write`, and a line in KINDS."""
+"""WRITERS lists the outputs: a kind is a file of its name here, with a `write`, and a line in KINDS."""
 
 from __future__ import annotations
 
