@@ -23,16 +23,12 @@ class State(NamedTuple):
 
     Attributes
     ----------
-    position : (3,) strike point in the world, m
-    rotation : (3, 3) paddle axes in the world; column 2 is the face normal
     jacobian : (6, n) linear then angular rows, world axes, about the strike point
     drift : (6,) J̇ v, classical acceleration of the strike point at zero joint acceleration
     mass : (n, n) joint-space inertia with reflected rotor inertia, kg·m²
     bias : (n,) torque at zero joint acceleration: Coriolis, gravity, damping, dry friction, N·m
     """
 
-    position: Array
-    rotation: Array
     jacobian: Array
     drift: Array
     mass: Array
@@ -61,6 +57,7 @@ class Arm:
         limits = [joint.limits for joint in spec.joints]
         self.damping = np.array([item.damping or 0.0 for item in limits])
         self.friction = np.array([item.friction or 0.0 for item in limits])
+        self._rubs = bool(self.friction.any())
         self._friction_width = np.where(self.sliding, FRICTION_WIDTH_M_S, FRICTION_WIDTH_RAD_S)
         self._model = _reduced_model(spec)
         self._model.armature = np.array([item.armature or 0.0 for item in limits])
@@ -79,11 +76,9 @@ class Arm:
         """Everything a control step needs at posture q (n,) and joint velocity v (n,)."""
         model, data, frame = self._model, self._data, self._frame
         pin.computeAllTerms(model, data, q, v)
-        placement = pin.updateFramePlacement(model, data, frame)
-        bias = data.nle + self.damping * v + self.friction * np.tanh(v / self._friction_width)
+        pin.updateFramePlacement(model, data, frame)
+        bias = data.nle + self._losses(v)
         return State(
-            placement.translation,
-            placement.rotation,
             pin.getFrameJacobian(model, data, frame, WORLD_AXES),
             pin.getFrameJacobianTimeVariation(model, data, frame, WORLD_AXES) @ v,
             data.M,
@@ -122,11 +117,11 @@ class Arm:
         pin.rneaInParallel(1, pin.ModelPool(self._model, 1), *columns, out)
         return np.asarray(out.T + self._losses(v))
 
-    def torque_and_base_load(self, q: Array, v: Array, a: Array) -> tuple[Array, Array]:
-        """Joint torques (m, n) and the wrench (m, 6) that the stand must give to the arm's moving part.
+    def base_wrench(self, q: Array, v: Array, a: Array) -> Array:
+        """The wrench (m, 6) that the stand must give to the arm's moving part in m states (m, n).
 
-        The wrench is force in N, then moment in N·m about the base origin, base axes. The base is made a body
-        on a six-axis joint that is held still; its first six generalised forces are the wrench.
+        Force in N, then moment in N·m about the base origin, base axes. The base is made a body on a six-axis joint that
+        is held still; its first six generalised forces are the wrench.
         """
         if self._floating is None:
             self._floating = _on_held_base(self._model)
@@ -139,11 +134,9 @@ class Arm:
             np.asfortranarray(np.vstack([head, x.T])) for head, x in ((still, q), (rest, v), (rest, a))
         ]
         pin.rneaInParallel(1, pin.ModelPool(self._floating, 1), *columns, out)
-        wrench = out[:6].T
-        base = self.spec.base
-        force = wrench[:, :3]
-        moment = wrench[:, 3:] - np.cross(np.array(base.xyz_m), force)
-        return np.asarray(out[6:].T + self._losses(v)), np.hstack([force @ base.rotation, moment @ base.rotation])
+        force, base = out[:3].T, self.spec.base
+        moment = out[3:6].T - np.cross(np.array(base.xyz_m), force)
+        return np.hstack([force @ base.rotation, moment @ base.rotation])
 
     def static_torque(self, q: Array) -> Array:
         """Torque (n,) in N·m that holds posture q (n,) still."""
@@ -171,7 +164,10 @@ class Arm:
         return float(sum(inertias)), float(inertias[-1])
 
     def _losses(self, v: Array) -> Array:
-        return np.asarray(self.damping * v + self.friction * np.tanh(v / self._friction_width))
+        losses = self.damping * v
+        if self._rubs:
+            losses += self.friction * np.tanh(v / self._friction_width)
+        return losses
 
 
 def _reduced_model(spec: ArmSpec) -> pin.Model:

@@ -6,9 +6,9 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from builders import NO_MARGINS, fer_cell, following, robot_cell
+from builders import fer_cell, following, robot_cell
 from reach.arm import Arm
-from reach.cell import Cell
+from reach.cell import Cell, Margins
 from reach.evidence.measure import measure
 from reach.follow.bench import build_limits
 from reach.follow.reference import build_reference
@@ -42,7 +42,7 @@ def test_second_order_viability_then_stops_at_the_end():
 
 
 def test_free_joint_gets_its_ceiling():
-    assert largest_velocity(10.0, 0.5, 0.7, 20.0, 500.0, 0.001) == 0.7
+    assert largest_velocity(10.0, 0.5, 0.52, 20.0, 500.0, 0.001) == 0.52
 
 
 # --- The third-order stop -----------------------------------------------------------------------------------------
@@ -113,8 +113,10 @@ def test_largest_velocity_is_the_edge():
 # In planning, 1,000 such roll-outs never passed a position limit by more than 3.2e-6 rad (measured, unpublished); the
 # integrator is exact, so what is left is what torque's drift inside a period takes from the brake.
 POSITION_RAD = 1e-5
-SHARE = 0.01  # of velocity, torque and torque rate: the drift that the limit kinds keep back (DRIFT_SHARE)
-ROLLS = 25  # a robot in the default run; the whole campaign is 500
+VELOCITY_SHARE = 1e-6  # of the limit; the row is exact, the solver's check is not
+TORQUE_SHARE = 0.01  # of torque and torque rate, beside the margins that a plan keeps
+ROLLS = 16  # a robot in the default run; the whole campaign is 1,000
+HARD_ENDS = Margins(position_rad=0.0, position_m=0.0, velocity_share=0.0)  # the stated ends, ordinary torque margins
 
 
 def adversary(cell: Cell, arm: Arm, rng: np.random.Generator) -> Cell:
@@ -170,29 +172,29 @@ def worst_uses(cell: Cell, rolls: int, seed: int) -> dict[str, float]:
 
 def check(worst: dict[str, float], rolls: int) -> None:
     assert worst["position"] <= POSITION_RAD
-    assert worst["velocity"] <= 1 + SHARE
-    assert worst["torque"] <= 1 + SHARE
-    assert worst["torque rate"] <= 1 + SHARE
+    assert worst["velocity"] <= 1 + VELOCITY_SHARE
+    assert worst["torque"] <= 1 + TORQUE_SHARE
+    assert worst["torque rate"] <= 1 + TORQUE_SHARE
     # and they were adversarial: limits were met
     assert worst["near"] >= rolls / 4
-    assert worst["velocity"] > 0.95 and worst["torque rate"] > 0.95
+    assert worst["velocity"] > 0.99 and worst["torque rate"] > 0.94
 
 
 def test_roll_outs_stay_inside_bench7():
-    check(worst_uses(replace(robot_cell("bench7"), margins=NO_MARGINS), ROLLS, 1), ROLLS)
+    check(worst_uses(replace(robot_cell("bench7"), margins=HARD_ENDS), ROLLS, 1), ROLLS)
 
 
 def test_roll_outs_stay_inside_published_limits(tmp_path):
-    check(worst_uses(replace(fer_cell(tmp_path), margins=NO_MARGINS), ROLLS, 2), ROLLS)
+    check(worst_uses(replace(fer_cell(tmp_path), margins=HARD_ENDS), ROLLS, 2), ROLLS)
 
 
 @pytest.mark.campaign
 @pytest.mark.parametrize("seed", range(10))
 def test_campaign_bench7(seed):
-    check(worst_uses(replace(robot_cell("bench7"), margins=NO_MARGINS), 50, 100 + seed), 50)
+    check(worst_uses(replace(robot_cell("bench7"), margins=HARD_ENDS), 50, 100 + seed), 50)
 
 
 @pytest.mark.campaign
 @pytest.mark.parametrize("seed", range(10))
 def test_campaign_published(seed, tmp_path):
-    check(worst_uses(replace(fer_cell(tmp_path), margins=NO_MARGINS), 50, 200 + seed), 50)
+    check(worst_uses(replace(fer_cell(tmp_path), margins=HARD_ENDS), 50, 200 + seed), 50)

@@ -38,30 +38,31 @@ class Measured:
     rms_torque: Array
 
 
-def refine(arm: Arm, chain: Chain, motion: Motion) -> tuple[Fine, Array, Array, Array]:
-    """The fine grid of a motion, with strike points (f, 3), paddle axes (f, 3, 3) and base wrench (f, 6)."""
-    t, q, v, a = motion.fine()
-    torque, wrench = arm.torque_and_base_load(q, v, a)
-    position, rotation, twist = chain.twists(q, v)
-    before = arm.torque(motion.q[:1], motion.v[:1], np.zeros((1, arm.n)))[0]
-    fine = Fine(t, q, v, a, torque, twist, FINE, np.zeros(arm.n), before, motion.period_s)
-    return fine, position, rotation, wrench
-
-
 def measure(arm: Arm, chain: Chain, limits: dict[str, Limit], motion: Motion) -> Measured:
     """Measure a finished motion.
 
-    Every limit kind gives its values on the fine grid; each joint's peak is the value of largest use. Base
-    load is that of the moving part on the stand, the opposite of what holds it.
+    Every limit kind gives its values on the fine grid; each joint's peak is the value of largest use. Base load, at
+    the motion's rows, is that of the moving part on the stand.
     """
-    fine, position, rotation, wrench = refine(arm, chain, motion)
-    uses = tuple(use for limit in limits.values() for use in limit_uses(limit, fine, len(motion.q)))
-    load = BaseLoad(
-        float(np.linalg.norm(wrench[:, :3], axis=1).max()), float(np.linalg.norm(wrench[:, 3:], axis=1).max())
+    t, q, v, a = motion.fine()
+    torque = arm.torque(q, v, a)
+    before = arm.torque(motion.q[:1], motion.v[:1], np.zeros((1, arm.n)))[0]
+    position, rotation, twist = chain.twists(motion.q, motion.v)
+    fine = Fine(
+        t, q, v, a, torque, _speed(chain, limits, q, v, twist), FINE, np.zeros(arm.n), before, motion.period_s
     )
+    uses = tuple(use for limit in limits.values() for use in limit_uses(limit, fine, len(motion.q)))
+    wrench = arm.base_wrench(motion.q, motion.v, motion.a)
+    load = BaseLoad(*(float(np.sqrt((part**2).sum(1).max())) for part in (wrench[:, :3], wrench[:, 3:])))
     rms = np.sqrt(np.mean(fine.torque**2, axis=0))
-    rows = slice(None, None, FINE)
-    return Measured(fine, fine.torque[rows], position[rows], rotation[rows], fine.twist[rows], uses, load, rms)
+    return Measured(fine, fine.torque[::FINE], position, rotation, twist, uses, load, rms)
+
+
+def _speed(chain: Chain, limits: dict[str, Limit], q: Array, v: Array, twist: Array) -> Array:
+    """Speed (f,) of the strike point on the fine grid; where no cap is stated, that of each row for its period."""
+    if not limits["tool speed"].known.any():
+        return np.repeat(np.linalg.norm(twist[:, :3], axis=1), FINE)[: len(q)]
+    return np.asarray(np.linalg.norm(chain.twists(q, v)[2][:, :3], axis=1))
 
 
 def limit_uses(limit: Limit, fine: Fine, rows: int) -> list[Use]:

@@ -118,7 +118,7 @@ def _roll_notes(rolled: Roll | None) -> list[str]:
     for limit in dict.fromkeys(item.limit for item in rolled.gave_way):
         steps = sorted({item.step for item in rolled.gave_way if item.limit == limit})
         most = max(item.amount for item in rolled.gave_way if item.limit == limit)
-        at = rolled.motion.start_s + steps[0] * rolled.motion.period_s
+        at = rolled.sent.start_s + steps[0] * rolled.sent.period_s
         found.append(
             f"{limit} could not be kept inside its margin in {len(steps)} steps, first at {at:.3f} s (by up to {most:.2g} "
             "of velocity change a period); the measured motion says whether the stated limit held"

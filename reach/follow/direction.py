@@ -11,53 +11,61 @@ import numpy as np
 
 from reach.cell import Array
 from reach.follow.step import POSTURE_WEIGHT, Step, Stepper
-from reach.limits.base import Now
 from reach.qp.problem import QpProblem, QpStatus
 
 EXACT_M_S = 1e-7  # shortfall below which the closest step is already all three levels' answer
 RANK_SHARE = 1e-6  # singular values below this share of the largest count as zero
+LEVEL_TOLERANCE = 1e-9  # a level's own rounding, given to the next one in every row
 
 
-def same_direction(stepper: Stepper, now: Now, target: Array, posture_velocity: Array) -> Step:
-    """The step whose twist keeps the direction of the target (6,) best and then its size."""
-    first = stepper.closest(now, target, posture_velocity)
+def same_direction(stepper: Stepper, problem: QpProblem, slot: int, target: Array) -> Step:
+    """The step whose twist keeps the direction of the target (6,) best and then its size.
+
+    Parameters
+    ----------
+    problem : from `Stepper.prepare` for the same slot
+    """
+    first = stepper.careful(problem)
+    task, error = stepper.task[slot], stepper.error[slot]
     wanted = stepper.weight * target
     size = float(np.linalg.norm(wanted))
-    if first.status != "solved" or first.shortfall < EXACT_M_S or size < EXACT_M_S:
+    if first.status != "solved" or size < EXACT_M_S or np.linalg.norm(error + task @ first.change) < EXACT_M_S:
         return first
-    problem = stepper.rows.fill(now)
-    stepper.cost(now.state, now.v, target, posture_velocity, problem)
     along = wanted / size
-    # The twist reached is task @ change + reached0; error is that less what is wanted.
-    reached = stepper.error + wanted
+    reached = error + wanted  # the twist without a change of velocity, weighted
     aside = np.eye(6) - np.outer(along, along)
-    change, fell_back = np.zeros(len(now.q)), first.fell_back
-    free = np.eye(len(now.q))
-    solution = first.solution
-    levels = [(aside @ stepper.task, aside @ reached), ((along @ stepper.task)[None], np.array([along @ reached - size]))]
+    levels = (
+        (aside @ task, aside @ reached),
+        ((along @ task)[None], np.array([along @ reached - size])),
+    )
+    n = len(problem.q)
+    change, free, fell_back = np.zeros(n), np.eye(n), first.fell_back
     for rows, offset in levels:
-        level = _level(problem, rows @ free, offset + rows @ change, free, change, now, posture_velocity)
-        answer = stepper.solver.solve(level)
+        answer = stepper.solver.solve(_level(problem, rows @ free, offset + rows @ change, free, change))
         if answer.status is not QpStatus.SOLVED:
             return first
         change, fell_back = change + free @ answer.x, fell_back or answer.fell_back
         free = free @ _null_space(rows @ free)
         if free.shape[1] == 0:
             break
-    return stepper.outcome(change, "solved", solution, None, fell_back)
+    else:
+        last = _level(problem, np.zeros((0, free.shape[1])), np.zeros(0), free, change)
+        last.P, last.q = free.T @ problem.P @ free, (problem.q + problem.P @ change) @ free
+        answer = stepper.solver.solve(last)
+        if answer.status is QpStatus.SOLVED:
+            change = change + free @ answer.x
+    return first._replace(change=change, fell_back=fell_back)
 
 
-def _level(
-    problem: QpProblem, rows: Array, offset: Array, free: Array, change: Array, now: Now, posture: Array
-) -> QpProblem:
-    """Least squares ‖rows y + offset‖² in the directions still free, all limits kept."""
-    share = POSTURE_WEIGHT / len(problem.q) * np.trace(problem.P)
-    P = rows.T @ rows + share * np.eye(free.shape[1])
-    q = offset @ rows + share * (now.v + change - posture) @ free
+def _level(problem: QpProblem, rows: Array, offset: Array, free: Array, change: Array) -> QpProblem:
+    """Least squares ‖rows y + offset‖² in the directions still free, all limits kept, small in the posture's cost."""
+    gradient = problem.q + problem.P @ change
+    P = rows.T @ rows + POSTURE_WEIGHT * (free.T @ problem.P @ free) + 1e-9 * np.eye(free.shape[1])
+    q = offset @ rows + POSTURE_WEIGHT * (gradient @ free)
     G = np.vstack([problem.G @ free, free, -free])
     h = np.concatenate([problem.h - problem.G @ change, problem.ub - change, change - problem.lb])
     wide = np.full(free.shape[1], 1e3)
-    return QpProblem(P, q, G, np.maximum(h, 0.0) if not change.any() else h, -wide, wide)
+    return QpProblem(P, q, G, h + LEVEL_TOLERANCE, -wide, wide)
 
 
 def _null_space(rows: Array) -> Array:

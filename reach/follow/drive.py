@@ -33,7 +33,7 @@ class DriveState:
         self._decay = math.exp(-period_s / drive.lag_s) if drive.lag_s > 0 else 0.0
 
     def advance(self, sent: Array) -> Array:
-        """Take the velocity (n,) sent for the period's end; returns the acceleration (n,) of the joints in it."""
+        """Take the velocity (n,) sent for the period's end; returns the joints' change of velocity (n,) in it."""
         self._line.insert(0, sent.copy())
         self._line.pop()
         new, old = self._line[-2], self._line[-1]
@@ -46,10 +46,10 @@ class DriveState:
         else:
             reached = delayed
         self._input = delayed
-        acceleration = (reached - self.v) / self._period_s
+        change = reached - self.v
         self.q = self.q + (self.v + reached) * self._period_s / 2
         self.v = reached
-        return np.asarray(acceleration)
+        return np.asarray(change)
 
     def settled(self, tolerance: float) -> bool:
         """Whether the joints and all that is still on its way to them are at rest, to a tolerance in rad/s."""

@@ -12,7 +12,7 @@ from reach.arm import Arm
 from reach.evidence.measure import Measured
 from reach.evidence.record import Reason, Strike, Use
 from reach.follow.bench import Run
-from reach.follow.roll import BLAME_FROM_M_S, Blame
+from reach.follow.blame import BLAME_FROM_M_S, Blame, Blames
 from reach.follow.step import task_weight
 from reach.verdict import broken_limits
 
@@ -68,19 +68,17 @@ class _Book:
         self.arm = Arm(run.cell.arm, run.cell.paddle)
         self.uses = {(u.limit, u.joint): u for u in run.evidence.uses}
         self.demand = {(u.limit, u.joint): u for u in demand.uses} if demand else {}
-        self.by_step: dict[int, list[Blame]] = defaultdict(list)
-        for blame in self.roll.blames:
-            self.by_step[blame.step].append(blame)
+        self.blames = Blames(self.cell, self.arm, self.roll)
         self.short = np.flatnonzero(self.roll.shortfall > BLAME_FROM_M_S)
         self.names = self.arm.names
 
     def time(self, row: int) -> float:
-        return float(self.roll.motion.start_s + row * self.cell.period_s)
+        return float(self.roll.sent.start_s + row * self.cell.period_s)
 
     def of_strike(self, strike: Strike) -> list[Reason]:
         """Reasons of one missed strike: its own episode, or whatever came before where the pose error is old."""
         half = self.cell.accept.strike_window_s / 2
-        end = int(np.ceil((strike.time_s + half - self.roll.motion.start_s) / self.cell.period_s))
+        end = int(np.ceil((strike.time_s + half - self.roll.sent.start_s) / self.cell.period_s))
         text = f"strike at {strike.time_s:.3f} s: {', '.join(strike.faults)}" + self._own_step(strike)
         episode = self._episode_before(end)
         found = self.of_episode(episode, True, text, strike) if episode else []
@@ -114,7 +112,7 @@ class _Book:
         gains: dict[tuple[str, int], float] = defaultdict(float)
         spans: dict[tuple[str, int], list[int]] = {}
         for step in range(episode.first, episode.last + 1):
-            for blame in self.by_step.get(step, ()):
+            for blame in self.blames.of(step):
                 key = (blame.limit, blame.joint)
                 gains[key] += blame.gain * self.roll.shortfall[step]
                 spans.setdefault(key, [step, step])[1] = step
@@ -131,7 +129,7 @@ class _Book:
         top = max(gains.values())
         ordered = sorted((k for k in gains if gains[k] >= MINOR_SHARE * top), key=lambda k: -gains[k])
         worst = max(
-            (s for s in range(episode.first, episode.last + 1) if self.by_step.get(s)),
+            (s for s in range(episode.first, episode.last + 1) if self.blames.of(s)),
             key=lambda s: float(self.roll.shortfall[s]),
         )
         any_of = self._not_unique(worst)
@@ -187,7 +185,7 @@ class _Book:
         if not rows:
             return None
         worst = max(rows, key=lambda s: float(self.roll.shortfall[s]))
-        q = self.roll.motion.q[worst]
+        q = self.roll.sent.q[worst]
         weight = task_weight(self.cell)
         task = self.arm.jacobian(q)[2] * weight[:, None]
         wanted = weight * self.roll.targets[worst]
@@ -206,8 +204,8 @@ class _Book:
 
     def _not_unique(self, step: int) -> bool:
         """Whether the active rows of a step depend on each other, so that their multipliers are not unique."""
-        blames = self.by_step[step]
-        state = self.arm.at(self.roll.motion.q[step], self.roll.motion.v[step])
+        blames: list[Blame] = self.blames.of(step)
+        state = self.arm.at(self.roll.sent.q[step], self.roll.sent.v[step])
         rows = [
             state.mass[b.joint] if b.limit in ("torque", "torque rate") else np.eye(self.arm.n)[b.joint]
             for b in blames

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import NamedTuple
 
@@ -14,25 +14,16 @@ from reach.evidence.motion import Motion
 from reach.follow.direction import same_direction
 from reach.follow.drive import DriveState
 from reach.follow.reference import Reference
-from reach.follow.rows import Rows
-from reach.follow.step import GAVE_WAY, Step, Stepper
+from reach.follow.step import BLOCK, Step, Stepper
 from reach.kinematics import logarithm
-from reach.limits.base import Limit, Now
+from reach.limits.base import Brake, Limit, Now
 from reach.limits.brake import BrakeModel
 
 POSTURE_SPEED = 0.2  # rad/s or m/s: cap of the slow return toward the start posture
-BLAME_FROM_M_S = 1e-3  # shortfall of a step from which its multipliers are kept
 REST_SPEED = 1e-7  # rad/s or m/s: below it the arm stands
 STOP_WITHIN_S = 5.0  # an arm that does not stand this long after the command's end counts as not stopping
-
-
-class Blame(NamedTuple):
-    """A limit that held a step back: by how much the shortfall (m/s) shrinks for one per cent more of it."""
-
-    step: int
-    limit: str
-    joint: int
-    gain: float
+GAVE_WAY = 1e-6  # smaller slack is rounding
+LOOK_EVERY = 5  # steps between looks at the braking ability and at which joints come near a bound
 
 
 class GaveWay(NamedTuple):
@@ -46,24 +37,32 @@ class GaveWay(NamedTuple):
 
 @dataclass(frozen=True, eq=False)
 class Roll:
-    """A rolled-out motion and what happened on the way.
+    """A rolled-out motion and what happened on the way; k steps.
 
     Attributes
     ----------
-    motion : Motion of the joints as sent; `delivered` behind the drive, the same object where there is none
+    sent : Motion of the joints as sent; `delivered` behind the drive, the same object where there is none
     targets : (k, 6) twist each step went for, pose feedback included
-    shortfall : (k,) m/s, by which it missed
-    blames, gave_way : what held steps back, and what could not be kept
+    shortfall : (k,) m/s, by which it missed: ‖W (J v⁺ + J̇ v dt − ν)‖
+    torque : (k, n) at each step's start
+    z, z_box : (k, 2m), (k, n) multipliers of each step's torque rows and box, zero where it was not plainly solved
+    z_tool : (k,) the largest of the tool's rows
+    brakes : braking ability that each step was planned with
+    gave_way : what could not be kept
     elastic_steps, failed_steps, fallback_steps : int
     stopped : whether the arm stood at the end
     end_row : first row after the command's end
     """
 
-    motion: Motion
+    sent: Motion
     delivered: Motion
     targets: Array
     shortfall: Array
-    blames: tuple[Blame, ...]
+    torque: Array
+    z: Array
+    z_box: Array
+    z_tool: Array
+    brakes: tuple[Brake, ...]
     gave_way: tuple[GaveWay, ...]
     elastic_steps: int
     failed_steps: int
@@ -72,20 +71,7 @@ class Roll:
     end_row: int
 
 
-class _Record:
-    """Growing lists of a roll; turned into a frozen Roll at the end."""
-
-    def __init__(self) -> None:
-        self.q: list[Array] = []
-        self.v: list[Array] = []
-        self.a: list[Array] = []
-        self.real: list[tuple[Array, Array, Array]] = []
-        self.targets: list[Array] = []
-        self.shortfall: list[float] = []
-        self.blames: list[Blame] = []
-        self.gave_way: list[GaveWay] = []
-        self.counts = {"elastic": 0, "failed": 0, "solved": 0}
-        self.fallbacks = 0
+GiveUp = Callable[[int, Array, Array], bool]
 
 
 def roll(
@@ -95,170 +81,282 @@ def roll(
     reference: Reference,
     start: Array,
     pose_gain_per_s: float,
-    give_up: Callable[[int, Array, Array], bool] | None = None,
+    give_up: GiveUp | None = None,
 ) -> Roll:
     """Follow a reference from a start posture (n,), under limits, until the arm stands.
 
     Parameters
     ----------
     pose_gain_per_s : 0 replays the log as sent; above it the pose error is fed back
-    give_up : called with the row and the state (q, v) at its start; True ends the roll there (for searches that only ask
-        whether the verdict holds)
+    give_up : called with the row and the joints' state (q, v) at its start; True ends the roll there (for
+        searches that only ask whether the verdict holds)
 
     Notes
     -----
     Integration is exact for constant acceleration in a period. Torque rate counts from the torque that holds
     the start state; the stop at the end is part of the motion.
     """
-    assert cell.follow is not None
-    dt, n = cell.period_s, arm.n
-    solve = same_direction if cell.follow.shortfall == "same-direction" else Stepper.closest
-    stepper = Stepper(cell, limits)
-    q, v, a = start.copy(), _start_velocity(cell, n), np.zeros(n)
-    state = arm.at(q, v)
-    brake = BrakeModel(*(_tighter(limits[k]) for k in BRAKED_BY), state.mass.copy())
-    torque, bias, bias_rate = state.bias.copy(), state.bias, np.zeros(n)
-    commanded = int(np.ceil((reference.end_s - reference.t_s[0]) / dt - 1e-6))
-    targets = reference.targets(dt, commanded)
-    _, wanted_position, wanted_rotation = reference.at(reference.t_s[0] + dt * np.arange(commanded))
-    drive = DriveState(cell.drive, q, v, dt) if cell.drive else None
-    record, rest, zero = _Record(), np.zeros(6), np.zeros(n)
-    posture_gain = cell.solver.posture_gain_per_s
-    last = commanded + int(STOP_WITHIN_S / dt)
-    stopped = False
-    for k in range(last):
-        real_q, real_v = (drive.q, drive.v) if drive else (q, v)
-        if give_up is not None and give_up(k, real_q, real_v):
-            break
-        if k < commanded:
-            target, posture_velocity = targets[k], posture_gain * (start - q)
-            np.clip(posture_velocity, -POSTURE_SPEED, POSTURE_SPEED, out=posture_velocity)
-            if pose_gain_per_s > 0:
-                position, rotation = arm.pose(real_q) if drive else (state.position, state.rotation)
-                turn = logarithm(wanted_rotation[k] @ rotation.T)
-                target = target + pose_gain_per_s * np.concatenate([wanted_position[k] - position, turn])
+    return _Roller(cell, arm, limits, reference, start, pose_gain_per_s, give_up).run()
+
+
+class _Roller:
+    """State of a roll under way. Lists grow a row a step; nothing of it leaves but the frozen Roll."""
+
+    def __init__(
+        self,
+        cell: Cell,
+        arm: Arm,
+        limits: dict[str, Limit],
+        reference: Reference,
+        start: Array,
+        gain: float,
+        give_up: GiveUp | None,
+    ):
+        assert cell.follow is not None
+        self.cell, self.arm, self.reference, self.gain, self.give_up = cell, arm, reference, gain, give_up
+        self.dt, self.start = cell.period_s, start
+        self.keeps_direction = cell.follow.shortfall == "same-direction"
+        self.stepper = Stepper(cell, limits)
+        tighter = [limits[k].tighter for k in ("acceleration", "jerk", "torque", "torque rate")]
+        self.brakes = BrakeModel(*tighter, LOOK_EVERY * self.dt)
+        self.commanded = int(np.ceil((reference.end_s - reference.t_s[0]) / self.dt - 1e-6))
+        self.targets = reference.targets(self.dt, self.commanded)
+        if gain > 0:
+            instants = reference.t_s[0] + self.dt * np.arange(self.commanded)
+            _, self.wanted_position, self.wanted_rotation = reference.at(instants)
+        v = np.array(cell.arm.start_velocity) if cell.arm.start_velocity else np.zeros(arm.n)
+        self.drive = DriveState(cell.drive, start, v, self.dt) if cell.drive else None
+        self.q: list[Array] = [start.copy()]
+        self.v: list[Array] = [v]
+        self.change: list[Array] = []
+        self.real: list[tuple[Array, Array]] = []
+        self.real_change: list[Array] = []
+        self.target: list[Array] = []
+        self.torque: list[Array] = []
+        self.brake_of: list[Brake] = []
+        self.noted: dict[int, Step] = {}  # steps that were checked at once, with what they say
+        self.shortfall: list[Array] = []
+        self.z: list[Array] = []
+        self.z_box: list[Array] = []
+        self.checked = 0
+        self.careful_at = -1
+        self.state = arm.at(start, v)
+        self.bias_before = self.state.bias
+        self.last_change, self.last_torque = np.zeros(arm.n), self.state.bias
+
+    def run(self) -> Roll:
+        last = self.commanded + int(STOP_WITHIN_S / self.dt)
+        stopped, k, look = False, 0, True
+        while True:
+            ended = k >= last or (self.give_up is not None and self._gives_up(k))
+            stopped = not ended and k >= self.commanded and self._at_rest()
+            if ended or stopped or k - self.checked == BLOCK:
+                if (bad := self._settle(k)) is not None:
+                    k, look = self._back_to(bad), True
+                    continue
+                if ended or stopped:
+                    break
+            look = look or k % LOOK_EVERY == 0 or k == self.commanded
+            self._step(k, look)
+            k, look = k + 1, False
+        return self._finish(stopped)
+
+    def _gives_up(self, k: int) -> bool:
+        assert self.give_up is not None
+        q, v = (self.drive.q, self.drive.v) if self.drive else (self.q[k], self.v[k])
+        return self.give_up(k, q, v)
+
+    def _at_rest(self) -> bool:
+        still = np.abs(self.v[-1]).max() <= REST_SPEED and np.abs(self.last_change).max() <= REST_SPEED
+        return bool(still) and (self.drive is None or self.drive.settled(REST_SPEED))
+
+    def _step(self, k: int, look: bool) -> None:
+        """Solve and apply step k."""
+        q, v, state, dt = self.q[k], self.v[k], self.state, self.dt
+        if look:
+            self.brake = self.brakes.at(state, (state.bias - self.bias_before) / dt)
+            self.posture_velocity = self._posture_velocity(k, q)
+        target = self._target(k)
+        now = Now(q, v, self.last_change, self.last_torque, state, self.brake, dt)
+        if look:
+            self.stepper.rows.look(now)
+        change = self._solve(k, now, target)
+        self.last_torque = state.mass @ (change / dt)
+        self.last_torque += state.bias
+        next_v = v + change
+        next_q = (v + next_v) * (dt / 2)
+        next_q += q
+        self.q.append(next_q)
+        self.v.append(next_v)
+        self.change.append(change)
+        self.target.append(target)
+        self.torque.append(self.last_torque)
+        self.brake_of.append(self.brake)
+        if self.drive:
+            self.real.append((self.drive.q, self.drive.v))
+            self.real_change.append(self.drive.advance(next_v))
+        self.last_change, self.bias_before = change, state.bias
+        self.state = self.arm.at(next_q, next_v)
+
+    def _posture_velocity(self, k: int, q: Array) -> Array:
+        """Slow return toward the start posture; nothing while stopping."""
+        if k >= self.commanded:
+            return np.zeros(self.arm.n)
+        wanted = self.cell.solver.posture_gain_per_s * (self.start - q)
+        return np.clip(wanted, -POSTURE_SPEED, POSTURE_SPEED)
+
+    def _target(self, k: int) -> Array:
+        """The twist (6,) to go for: the command's, with the pose error fed back, or zero while stopping."""
+        if k >= self.commanded:
+            return np.zeros(6)
+        target = self.targets[k]
+        if self.gain > 0:
+            position, rotation = self.arm.pose(self.drive.q if self.drive else self.q[k])
+            turn = logarithm(self.wanted_rotation[k] @ rotation.T)
+            target = target + self.gain * np.concatenate([self.wanted_position[k] - position, turn])
+        return target
+
+    def _solve(self, k: int, now: Now, target: Array) -> Array:
+        """The change of velocity of step k: unchecked where the block checks it, else checked and noted."""
+        slot = k - self.checked
+        problem = self.stepper.prepare(now, target, self.posture_velocity, slot)
+        if self.keeps_direction:
+            step = same_direction(self.stepper, problem, slot, target)
         else:
-            target, posture_velocity = rest, zero
-            moving = np.abs(v).max() > REST_SPEED or np.abs(a).max() * dt > REST_SPEED
-            if not moving and (drive is None or drive.settled(REST_SPEED)):
-                stopped = True
-                break
-        now = Now(q, v, a, torque, state, brake.at(state, bias_rate), dt)
-        step = solve(stepper, now, target, posture_velocity)
-        a = step.change / dt
-        record.q.append(q)
-        record.v.append(v)
-        record.a.append(a)
-        record.targets.append(target)
-        record.shortfall.append(step.shortfall)
-        _note(record, k, step, now, stepper.rows)
-        torque = state.mass @ a + state.bias
-        next_v = v + step.change
-        q = q + (v + next_v) * (dt / 2)
-        v = next_v
-        if drive:
-            record.real.append((real_q, real_v, drive.advance(v)))
-        state = arm.at(q, v)
-        bias_rate = (state.bias - bias) / dt
-        bias = state.bias
-    final = (drive.q, drive.v) if drive else (q, v)
-    return _finish(record, cell, reference, (q, v), final, stopped, min(commanded, len(record.q)))
+            plain = problem is self.stepper.block.problems[slot] and k != self.careful_at
+            change = self.stepper.quick(problem, slot) if plain else None
+            if change is not None:
+                return change
+            step = self.stepper.careful(problem)
+        self.noted[k] = step
+        block = self.stepper.block
+        block.x[slot] = step.change
+        m = self.stepper.rows.count
+        block.z[slot] = 0.0 if step.z is None else step.z[:m]
+        block.z_box[slot] = 0.0 if step.z_box is None else step.z_box
+        return step.change
 
+    def _settle(self, k: int) -> int | None:
+        """Check the block's answers up to step k and keep what they say; the first bad step, or None."""
+        count = k - self.checked
+        if count == 0:
+            return None
+        block, bad = self.stepper.block, None
+        unchecked = [s for s in range(count) if self.checked + s not in self.noted]
+        if len(unchecked) == count:
+            bad = block.first_bad(count)
+        elif unchecked:
+            bad = next((s for s in unchecked if block.first_bad(s + 1) == s), None)
+        good = count if bad is None else bad
+        x = block.x[:good]
+        error = self.stepper.error[:good] + (self.stepper.task[:good] @ x[..., None])[..., 0]
+        self.shortfall.append(np.sqrt(np.einsum("ki,ki->k", error, error)))
+        self.z.append(block.z[:good].copy())
+        self.z_box.append(block.z_box[:good].copy())
+        self.checked += good
+        return None if bad is None else self.checked
 
-BRAKED_BY = ("acceleration", "jerk", "torque", "torque rate")
+    def _back_to(self, k: int) -> int:
+        """Undo steps k and later, so that step k is solved again with care."""
+        for rows in (self.change, self.target, self.torque, self.brake_of):
+            del rows[k:]
+        del self.q[k + 1 :], self.v[k + 1 :]
+        for step in [s for s in self.noted if s >= k]:
+            del self.noted[step]
+        self.careful_at = k
+        before = max(k - 1, 0)
+        self.bias_before = self.arm.at(self.q[before], self.v[before]).bias
+        self.state = self.arm.at(self.q[k], self.v[k])
+        self.last_change = self.change[-1] if k else np.zeros(self.arm.n)
+        self.last_torque = self.torque[-1] if k else self.state.bias
+        if self.cell.drive:
+            self.drive = DriveState(self.cell.drive, self.start, self.v[0], self.dt)
+            del self.real[k:], self.real_change[k:]
+            for v in self.v[1 : k + 1]:
+                self.drive.advance(v)
+        return k
 
-
-def _tighter(limit: Limit) -> Array:
-    return np.minimum(np.abs(limit.kept_lo), np.abs(limit.kept_hi))
-
-
-def _start_velocity(cell: Cell, n: int) -> Array:
-    return np.array(cell.arm.start_velocity) if cell.arm.start_velocity else np.zeros(n)
-
-
-def _note(record: _Record, k: int, step: Step, now: Now, rows: Rows) -> None:
-    """Keep what a step says beyond its motion: who held it back, what gave way, which solver answered."""
-    record.counts[step.status] += 1
-    record.fallbacks += step.fell_back
-    if step.solution is not None and step.shortfall > BLAME_FROM_M_S:
-        z, z_box = step.solution.z, step.solution.z_box
-        if z.any() or z_box.any():
-            record.blames.extend(_blames(k, z, z_box, step.shortfall, now, rows))
-    elif step.slack is not None:
-        record.gave_way.extend(_what_gave_way(k, step.slack, rows))
-
-
-def _blames(k: int, z: Array, z_box: Array, shortfall: float, now: Now, rows: Rows) -> list[Blame]:
-    """Active limits of a step, each with what one per cent more of it would gain, from the multipliers."""
-    found = []
-    for i in np.flatnonzero(np.abs(z_box) > 0):
-        lanes = rows.joint_hi[:, i] if z_box[i] > 0 else -rows.joint_lo[:, i]
-        if len(lanes) and lanes.min() < 1e3:
-            kind = rows.joint_kinds[int(np.argmin(lanes))]
-            found.append(Blame(k, kind.name, int(i), abs(z_box[i]) * kind.percent(now)[i] / shortfall))
-    m = len(rows.limited)
-    for row in np.flatnonzero(z[: 2 * m] > 0):
-        i = rows.limited[row % m]
-        lanes = rows.torque_hi[:, i] if row < m else -rows.torque_lo[:, i]
-        kind = rows.torque_kinds[int(np.argmin(lanes))]
-        scaled = kind.percent(now)[i] * rows.torque_scale[i]
-        found.append(Blame(k, kind.name, int(i), z[row] * scaled / shortfall))
-    if len(z) > 2 * m and rows.tool is not None and z[2 * m] > 0:
-        found.append(Blame(k, rows.tool.name, 0, z[2 * m] * rows.tool.percent(now)[0] / shortfall))
-    return [blame for blame in found if blame.gain > 0]
-
-
-def _what_gave_way(k: int, slack: Array, rows: Rows) -> list[GaveWay]:
-    n = len(rows.box_lo)
-    found = []
-    for i in np.flatnonzero(slack[:n] > GAVE_WAY):
-        upper, lower = rows.joint_hi[:, i], -rows.joint_lo[:, i]
-        lanes = np.minimum(upper, lower)
-        found.append(GaveWay(k, rows.joint_kinds[int(np.argmin(lanes))].name, int(i), float(slack[i])))
-    for j in range(n, len(slack)):
-        if slack[j] > GAVE_WAY:
-            is_tool = rows.tool is not None and j == n and len(slack) > n and rows.tool_rows_active
-            found.append(GaveWay(k, "tool speed" if is_tool else "torque", -1, float(slack[j])))
-    return found
-
-
-def _finish(
-    record: _Record,
-    cell: Cell,
-    reference: Reference,
-    sent: tuple[Array, Array],
-    final: tuple[Array, Array],
-    stopped: bool,
-    end_row: int,
-) -> Roll:
-    n = len(sent[0])
-    rest = [np.zeros(n)]
-    begin, dt = float(reference.t_s[0]), cell.period_s
-    at_rest = np.zeros(n) if stopped else sent[1]
-    motion = Motion(
-        begin,
-        dt,
-        np.array([*record.q, sent[0]]),
-        np.array([*record.v, at_rest]),
-        np.array([*record.a, *rest]),
-    )
-    delivered = motion
-    if record.real:
-        q, v, a = (np.array(x) for x in zip(*record.real, strict=True))
-        at_rest = np.zeros(n) if stopped else final[1]
-        delivered = Motion(
-            begin, dt, np.vstack([q, final[0]]), np.vstack([v, at_rest]), np.vstack([a, np.zeros((1, n))])
+    def _finish(self, stopped: bool) -> Roll:
+        dt, steps = self.dt, len(self.change)
+        begin = float(self.reference.t_s[0])
+        sent = _motion(begin, dt, self.q, self.v, self.change, stopped)
+        delivered = sent
+        if self.drive:
+            q = [*(pair[0] for pair in self.real), self.drive.q]
+            v = [*(pair[1] for pair in self.real), self.drive.v]
+            delivered = _motion(begin, dt, q, v, self.real_change, stopped)
+        n, m = self.arm.n, self.stepper.rows.count
+        z_tool = np.zeros(steps)
+        for k, step in self.noted.items():
+            if step.tool and step.z is not None:
+                z_tool[k] = step.z[m:].max()
+        steps_noted = self.noted.values()
+        return Roll(
+            sent=sent,
+            delivered=delivered,
+            targets=np.array(self.target).reshape(-1, 6),
+            shortfall=np.concatenate(self.shortfall) if self.shortfall else np.zeros(0),
+            torque=np.array(self.torque).reshape(-1, n),
+            z=np.vstack(self.z) if self.z else np.zeros((0, m)),
+            z_box=np.vstack(self.z_box) if self.z_box else np.zeros((0, n)),
+            z_tool=z_tool,
+            brakes=tuple(self.brake_of),
+            gave_way=tuple(self._gave_way()),
+            elastic_steps=sum(step.status == "elastic" for step in steps_noted),
+            failed_steps=sum(step.status == "failed" for step in steps_noted),
+            fallback_steps=sum(step.fell_back for step in steps_noted),
+            stopped=stopped,
+            end_row=min(self.commanded, steps),
         )
-    return Roll(
-        motion,
-        delivered,
-        np.array(record.targets).reshape(-1, 6),
-        np.array(record.shortfall),
-        tuple(record.blames),
-        tuple(record.gave_way),
-        record.counts["elastic"],
-        record.counts["failed"],
-        record.fallbacks,
-        stopped,
-        end_row,
-    )
+
+    def _gave_way(self) -> list[GaveWay]:
+        """What elastic steps could not keep, each joint's box named by its tightest lane then."""
+        found = []
+        n = self.arm.n
+        for k, step in self.noted.items():
+            if step.slack is None:
+                continue
+            kinds = [self._tightest(k, i) for i in range(n)]
+            kinds += ["tool speed"] * step.tool
+            kinds += ["torque"] * (len(step.slack) - len(kinds))
+            for i, (kind, amount) in enumerate(zip(kinds, step.slack, strict=True)):
+                if amount > GAVE_WAY:
+                    found.append(GaveWay(k, kind, i if i < n else -1, float(amount)))
+        return found
+
+    def _tightest(self, k: int, joint: int) -> str:
+        lanes = self.stepper.rows.joint
+        now = self._now(k)
+        lanes.look(now)
+        lanes.fill(now)
+        sides = lanes.values[:, [joint, joint + self.arm.n]]
+        return lanes.kinds[int(np.argmin(sides.min(axis=1)))].name if lanes.kinds else "acceleration"
+
+    def _now(self, k: int) -> Now:
+        return now_at(self.arm, self.q[k], self.v[k], self.change, self.torque, self.brake_of[k], k, self.dt)
+
+
+def now_at(
+    arm: Arm,
+    q: Array,
+    v: Array,
+    changes: Sequence[Array] | Array,
+    torques: Sequence[Array] | Array,
+    brake: Brake,
+    k: int,
+    dt: float,
+) -> Now:
+    """What step k knew: the state (q, v) and what the step before did."""
+    state = arm.at(q, v)
+    change = changes[k - 1] if k else np.zeros(arm.n)
+    torque = torques[k - 1] if k else state.bias
+    return Now(q, v, change, torque, state, brake, dt)
+
+
+def _motion(begin: float, dt: float, q: list[Array], v: list[Array], change: list[Array], stopped: bool) -> Motion:
+    speeds = np.array(v)
+    if stopped:
+        speeds[-1] = 0.0
+    n = speeds.shape[1]
+    accelerations = np.vstack([np.array(change).reshape(-1, n) / dt, np.zeros((1, n))])
+    return Motion(begin, dt, np.array(q), speeds, accelerations)

@@ -12,6 +12,41 @@ from reach.qp.problem import QpProblem
 FREE = 1e3  # rad/s or m/s: stands for "no bound" on a change of velocity, and binds nowhere
 
 
+class Lanes:
+    """The bounds of one family of kinds, one lane (2n,) each, and the tightest of them.
+
+    Attributes
+    ----------
+    kinds : tuple of Limit in lane order
+    values : (k, 2n) how far a step may go, positive directions first
+    """
+
+    def __init__(self, limits: dict[str, Limit], family: str, n: int, period_s: float):
+        self.kinds = tuple(k for k in limits.values() if k.family == family and k.known.any())
+        self.values = np.full((len(self.kinds), 2 * n), np.inf)
+        self._views = list(zip(self.kinds, self.values, strict=True))
+        self._asked: list[tuple[Limit, Array]] = []
+        self._fresh = True
+
+    def look(self, now: Now) -> None:
+        """Ask each kind whether it has anything to say until the next look."""
+        self._asked = []
+        for kind, lane in self._views:
+            if kind.constant:
+                if self._fresh:
+                    kind.rows(now, lane)
+            elif kind.look(now):
+                self._asked.append((kind, lane))
+            else:
+                lane.fill(np.inf)
+        self._fresh = False
+
+    def fill(self, now: Now) -> None:
+        """Write the lanes for a state."""
+        for kind, lane in self._asked:
+            kind.rows(now, lane)
+
+
 class Rows:
     """Joint boxes, torque rows and tool rows of a step.
 
@@ -21,71 +56,71 @@ class Rows:
 
     Attributes
     ----------
-    joint_kinds, torque_kinds : tuple of Limit
-        Lane order in the arrays `joint_lo`, `joint_hi` (k, n) and `torque_lo`, `torque_hi`.
-    box_lo, box_hi : (n,) the tightest lanes
-    problem : QpProblem with the torque rows, two a limited joint: upper ones first
+    joint, torque : Lanes
+    limited : joints that have torque rows, two each: upper ones first
+    scale : (n,) factor on each joint's torque rows
     """
 
     def __init__(self, limits: dict[str, Limit], n: int, period_s: float):
-        self.joint_kinds = tuple(k for k in limits.values() if k.family == "joint" and k.known.any())
-        self.torque_kinds = tuple(k for k in limits.values() if k.family == "torque" and k.known.any())
+        self.joint = Lanes(limits, "joint", n, period_s)
+        self.torque = Lanes(limits, "torque", n, period_s)
         tool = [k for k in limits.values() if isinstance(k, ToolSpeed) and k.known.any()]
         self.tool = tool[0] if tool else None
-        self.joint_lo, self.joint_hi = np.empty((2, len(self.joint_kinds), n))
-        self.torque_lo, self.torque_hi = np.empty((2, len(self.torque_kinds), n))
-        self._lo_views = list(zip(self.joint_kinds, self.joint_lo, self.joint_hi, strict=True))
-        self._torque_views = list(zip(self.torque_kinds, self.torque_lo, self.torque_hi, strict=True))
-        self.box_lo, self.box_hi = np.full((2, n), FREE)
-        self.box_lo *= -1
-        self.period_s = period_s
-        known = [k.known for k in self.torque_kinds] or [np.zeros(n, bool)]
+        known = [k.known for k in self.torque.kinds] or [np.zeros(n, bool)]
         self.limited = np.flatnonzero(np.any(known, axis=0))
-        self.torque_scale = self._scale(n, period_s)
-        m = len(self.limited)
-        self._all = m == n
-        self.tool_rows_active = False
-        self.problem = QpProblem(
-            np.eye(n), np.zeros(n), np.zeros((2 * m, n)), np.zeros(2 * m), self.box_lo, self.box_hi
-        )
+        self.scale = self._scale(n, period_s)
+        self._n, self._all = n, len(self.limited) == n
+        self._both = np.concatenate([self.limited, self.limited + n])
+        self._matrix_scale = (self.scale / period_s)[:, None]
+        self._scale_twice = np.concatenate([self.scale, self.scale])
+        self._bias = np.empty(2 * n)
 
-    def fill(self, now: Now) -> QpProblem:
-        """Write the rows for a state; the cost is the caller's. Returns the problem to solve."""
-        for kind, lo, hi in self._lo_views:
-            kind.rows(now, lo, hi)
-        if self._lo_views:
-            np.maximum.reduce(self.joint_lo, axis=0, out=self.box_lo)
-            np.minimum.reduce(self.joint_hi, axis=0, out=self.box_hi)
-            np.maximum(self.box_lo, -FREE, out=self.box_lo)
-            np.minimum(self.box_hi, FREE, out=self.box_hi)
-        if self._torque_views:
-            self._fill_torque(now)
+    @property
+    def count(self) -> int:
+        """Torque rows of a step."""
+        return 2 * len(self.limited)
+
+    def look(self, now: Now) -> None:
+        """Let the kinds look ahead, with a new brake."""
+        self.joint.look(now)
+        self.torque.look(now)
+
+    def fill(self, now: Now, p: QpProblem) -> QpProblem:
+        """Write the rows for a state into a problem; the cost is the caller's.
+
+        Returns that problem, or where the tool's cap is near another one with its rows added.
+        """
+        n = self._n
+        self.joint.fill(now)
+        most = np.minimum.reduce(self.joint.values, axis=0, initial=FREE)
+        p.ub[:] = most[:n]
+        np.negative(most[n:], out=p.lb)
+        if self.limited.size:
+            self._fill_torque(now, p)
         extra = self.tool.coefficients(now) if self.tool else None
-        self.tool_rows_active = extra is not None
         if extra is None:
-            return self.problem
-        p = self.problem
+            return p
         return QpProblem(p.P, p.q, np.vstack([p.G, extra[0]]), np.append(p.h, extra[1]), p.lb, p.ub)
 
-    def _fill_torque(self, now: Now) -> None:
-        for kind, lo, hi in self._torque_views:
-            kind.rows(now, lo, hi)
-        m, p = len(self.limited), self.problem
-        bias, mass, scale = now.state.bias, now.state.mass, self.torque_scale
-        high = (np.minimum.reduce(self.torque_hi, axis=0) - bias) * scale
-        low = (bias - np.maximum.reduce(self.torque_lo, axis=0)) * scale
+    def _fill_torque(self, now: Now, p: QpProblem) -> None:
+        self.torque.fill(now)
+        n, m, bias = self._n, len(self.limited), self._bias
+        bias[:n] = now.state.bias
+        np.negative(now.state.bias, out=bias[n:])
+        most = np.minimum.reduce(self.torque.values, axis=0)
+        most -= bias
         if self._all:
-            np.multiply(mass, (scale / self.period_s)[:, None], out=p.G[:m])
-            p.h[:m], p.h[m:] = high, low
+            np.multiply(most, self._scale_twice, out=p.h)
+            np.multiply(now.state.mass, self._matrix_scale, out=p.G[:m])
         else:
-            p.G[:m] = (mass * (scale / self.period_s)[:, None])[self.limited]
-            p.h[:m], p.h[m:] = high[self.limited], low[self.limited]
+            p.h[:] = (most * self._scale_twice)[self._both]
+            p.G[:m] = (now.state.mass * self._matrix_scale)[self.limited]
         np.negative(p.G[:m], out=p.G[m:])
 
     def _scale(self, n: int, period_s: float) -> Array:
         scale = np.ones(n)
-        for kind in reversed(self.torque_kinds):
-            reach = np.minimum(np.abs(kind.kept_lo), np.abs(kind.kept_hi))
-            reach = reach * period_s if kind.name == "torque rate" else reach
-            scale = np.where(kind.known & np.isfinite(reach) & (reach > 0), 1 / np.maximum(reach, 1e-12), scale)
+        for kind in reversed(self.torque.kinds):
+            reach = kind.tighter * (period_s if kind.name == "torque rate" else 1.0)
+            usable = kind.known & np.isfinite(reach) & (reach > 0)
+            scale = np.where(usable, 1 / np.where(usable, reach, 1.0), scale)
         return np.asarray(scale)

@@ -2,25 +2,23 @@
 
 from __future__ import annotations
 
-import math
 from typing import NamedTuple
 
 import numpy as np
 
-from reach.arm import State
 from reach.cell import Array, Cell
 from reach.follow.rows import Rows
 from reach.limits.base import Limit, Now
 from reach.paddle import paddle_radius
 from reach.qp.backends import Solver
-from reach.qp.problem import QpProblem, QpSolution, QpStatus
+from reach.qp.problem import QpBlock, QpProblem, QpStatus
 
 # Weight of the null-space return relative to the mean squared gain of the task. It biases the twist by about this
 # share at good postures and stands in for damping near singular ones.
 POSTURE_WEIGHT = 1e-6
 ELASTIC_WEIGHT = 1e-6  # what tracking is worth beside keeping limits, in the elastic solve
 SLACK_CURVATURE = 1e-3  # keeps the elastic cost strictly convex; its linear part (weight 1) decides
-GAVE_WAY = 1e-6  # of a limit: smaller slack is rounding
+BLOCK = 64  # steps whose answers are checked together
 
 
 class Step(NamedTuple):
@@ -30,17 +28,18 @@ class Step(NamedTuple):
     ----------
     change : (n,) change of joint velocity over the period
     status : "solved", "elastic" (some limit gave way), "failed" (no solver answered)
-    solution : QpSolution of the solve that gave `change`, or None
-    slack : (k,) by how much soft rows gave way, joint boxes first, then the tool's rows, then torque; or None
-    shortfall : ‖W (J v⁺ + J̇ v dt − ν)‖ in m/s
+    z, z_box : multipliers of the torque (and tool) rows and of the box, None unless solved
+    slack : (k,) by how much soft rows gave way: joint boxes, then the tool's rows if `tool`, then torque rows; or None
+    tool : whether the tool's rows were there
     fell_back : whether the second solver was needed
     """
 
     change: Array
     status: str
-    solution: QpSolution | None
+    z: Array | None
+    z_box: Array | None
     slack: Array | None
-    shortfall: float
+    tool: bool
     fell_back: bool
 
 
@@ -50,37 +49,58 @@ class Stepper:
     minimise ‖W (J v⁺ + J̇ v dt − ν)‖² + ρ ‖v⁺ − v_posture‖² under the rows of every known limit. The J̇ term makes
     the twist right at the period's end. W weighs rotation by a length, so both parts are speeds of points.
 
-    Parameters
+    Steps live in the slots of a block. `quick` takes the first solver's word and leaves the check to the block; `careful` checks
+    at once, falls back to the second solver and, where all rows together have no point, lets soft ones give way.
+
+    Attributes
     ----------
-    cell : Cell
-    limits : dict of Limit by name
+    task : (BLOCK, 6, n) W J of each slot; error : (BLOCK, 6) W (J v + J̇ v dt − ν)
     """
 
     def __init__(self, cell: Cell, limits: dict[str, Limit]):
-        self.rows = Rows(limits, len(cell.arm.joints), cell.period_s)
+        n = len(cell.arm.joints)
+        self.rows = Rows(limits, n, cell.period_s)
         self.solver = Solver(cell.solver.name, cell.solver.fallback)
-        self.period_s = cell.period_s
+        self.block = QpBlock(BLOCK, n, self.rows.count)
+        self.task, self.error = np.empty((BLOCK, 6, n)), np.empty((BLOCK, 6))
+        self._slots = list(zip(self.block.problems, self.task, self.error, strict=True))
+        self._diagonals = [P.reshape(-1)[:: n + 1] for P in self.block.P]
+        self._period_s = cell.period_s
         self.weight = task_weight(cell)
-        self._diagonal = np.arange(len(cell.arm.joints))
-        self.task = np.zeros((6, len(cell.arm.joints)))
-        self.error = np.zeros(6)
+        self._weight_column = self.weight[:, None]
+        self._share = POSTURE_WEIGHT / n
 
-    def cost(self, state: State, v: Array, target: Array, posture_velocity: Array, problem: QpProblem) -> None:
-        """Write the tracking cost in the change of velocity into a problem's P and q."""
-        self.task = state.jacobian * self.weight[:, None]
-        self.error = self.weight * (state.drift * self.period_s - target) + self.task @ v
-        np.matmul(self.task.T, self.task, out=problem.P)
-        share = POSTURE_WEIGHT / len(v) * problem.P.trace()
-        problem.P[self._diagonal, self._diagonal] += share
-        np.add(self.error @ self.task, share * (v - posture_velocity), out=problem.q)
+    def prepare(self, now: Now, target: Array, posture_velocity: Array, slot: int) -> QpProblem:
+        """Rows and cost of a step toward a twist (6,), written into a slot; returns the problem to solve."""
+        problem, task, error = self._slots[slot]
+        np.multiply(now.state.jacobian, self._weight_column, out=task)
+        np.multiply(now.state.drift, self._period_s, out=error)
+        error -= target
+        error *= self.weight
+        error += task @ now.v
+        np.matmul(task.T, task, out=problem.P)
+        diagonal = self._diagonals[slot]
+        share = self._share * np.add.reduce(diagonal)
+        diagonal += share
+        np.matmul(error, task, out=problem.q)
+        problem.q += share * (now.v - posture_velocity)
+        return self.rows.fill(now, problem)
 
-    def closest(self, now: Now, target: Array, posture_velocity: Array) -> Step:
-        """The step that comes closest to a twist (6,)."""
-        problem = self.rows.fill(now)
-        self.cost(now.state, now.v, target, posture_velocity, problem)
+    def quick(self, problem: QpProblem, slot: int) -> Array | None:
+        """The change of velocity by the first solver's word, noted in the block; None where it has no answer."""
+        answer = self.solver.first(problem)
+        if answer is None:
+            return None
+        block = self.block
+        block.x[slot], block.z[slot], block.z_box[slot] = answer
+        return answer[0]
+
+    def careful(self, problem: QpProblem) -> Step:
+        """A step checked at once, elastic where it has to be."""
         solution = self.solver.solve(problem)
         if solution.status is QpStatus.SOLVED:
-            return self.outcome(solution.x, "solved", solution, None, solution.fell_back)
+            tool = len(problem.h) > self.rows.count
+            return Step(solution.x, "solved", solution.z, solution.z_box, None, tool, solution.fell_back)
         return self.elastic(problem)
 
     def elastic(self, problem: QpProblem) -> Step:
@@ -88,20 +108,13 @@ class Stepper:
 
         If even the torque rows have no common point (a static load above the limit) they give way too.
         """
-        n, torque_rows = len(problem.q), 2 * len(self.rows.limited)
+        n, tool = len(problem.q), len(problem.h) > self.rows.count
         for soft_torque in (False, True):
-            solution = self.solver.solve(_with_slack(problem, torque_rows, soft_torque))
+            solution = self.solver.solve(_with_slack(problem, self.rows.count, soft_torque))
             if solution.status is QpStatus.SOLVED:
                 slack = np.maximum(solution.x[n:], 0.0)
-                return self.outcome(solution.x[:n], "elastic", None, slack, solution.fell_back)
-        return self.outcome(np.zeros(n), "failed", None, None, True)
-
-    def outcome(
-        self, change: Array, status: str, solution: QpSolution | None, slack: Array | None, fell_back: bool
-    ) -> Step:
-        """A Step with its shortfall."""
-        short = self.error + self.task @ change
-        return Step(change, status, solution, slack, math.sqrt(short @ short), fell_back)
+                return Step(solution.x[:n], "elastic", None, None, slack, tool, solution.fell_back)
+        return Step(np.zeros(n), "failed", None, None, None, tool, True)
 
 
 def task_weight(cell: Cell) -> Array:

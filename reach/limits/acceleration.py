@@ -16,13 +16,13 @@ class Acceleration(Limit):
     field = "acceleration"
     margin = "acceleration_share"
     units = ("rad/s²", "m/s²")
+    constant = True
 
-    def rows(self, now: Now, lo: Array, hi: Array) -> None:
-        np.multiply(self.kept_lo, now.period_s, out=lo)
-        np.multiply(self.kept_hi, now.period_s, out=hi)
+    def rows(self, now: Now, most: Array) -> None:
+        np.multiply(self.kept, now.period_s, out=most)
 
     def measure(self, fine: Fine) -> Array:
         return fine.a
 
-    def percent(self, now: Now) -> Array:
-        return super().percent(now) * now.period_s
+    def percent(self, period_s: float) -> Array:
+        return super().percent(period_s) * period_s

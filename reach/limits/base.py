@@ -20,19 +20,25 @@ DRIFT_SHARE = 0.01
 
 
 class Brake(NamedTuple):
-    """What all joints can do together: deceleration (n,) per s², its rate (n,) per s³; `top` what one alone may."""
+    """What the joints can do until the next look, `horizon_s` ahead; (n,) each.
+
+    deceleration (per s²) and its rate (per s³) that all joints can have together; top: the acceleration that one
+    may have by itself; gain: the most speed it still gains while its acceleration is taken back.
+    """
 
     deceleration: Array
     rate: Array
     top: Array
+    gain: Array
+    horizon_s: float
 
 
 class Now(NamedTuple):
-    """What a step knows: q, v (n,), the acceleration and torque (n,) of the period before, the arm's state."""
+    """What a step knows: q, v (n,), velocity change and torque (n,) of the period before, the arm's state."""
 
     q: Array
     v: Array
-    a: Array
+    change: Array
     torque: Array
     state: State
     brake: Brake
@@ -45,7 +51,7 @@ class Fine:
 
     Attributes
     ----------
-    t_s : (f,) ; q, v, a, torque : (f, n) ; twist : (f, 6) of the strike point, world axes
+    t_s : (f,) ; q, v, a, torque : (f, n) ; speed : (f,) of the strike point, m/s
     per_period : fine samples a control period
     a_before, torque_before : (n,) in the period before the first
     period_s : control period
@@ -56,7 +62,7 @@ class Fine:
     v: Array
     a: Array
     torque: Array
-    twist: Array
+    speed: Array
     per_period: int
     a_before: Array
     torque_before: Array
@@ -64,8 +70,12 @@ class Fine:
 
     def change(self, values: Array, before: Array) -> Array:
         """Change (f, n) of values (f, n) over one control period, per second; the first period against `before`."""
-        shifted = np.vstack([np.broadcast_to(before, (self.per_period, values.shape[1])), values])
-        return np.asarray((values - shifted[: len(values)]) / self.period_s)
+        out = np.empty_like(values)
+        first = self.per_period
+        np.subtract(values[:first], before, out=out[:first])
+        np.subtract(values[first:], values[:-first], out=out[first:])
+        out /= self.period_s
+        return out
 
 
 class Limit(ABC):
@@ -73,18 +83,22 @@ class Limit(ABC):
 
     A kind must
 
-    1. set `name`, `family` and `field` (its field in JointLimits; empty for one of the tool);
+    1. set `name`, `family` and `field` (its field in JointLimits; empty for one of the tool), `margin` (its field in
+       Margins) and `units` (of a turning and of a sliding joint);
     2. read what is stated in `__init__`: arrays `lo`, `hi` (n,), ±inf where nothing is known, and `known`
        (n,) bool; `keep` takes the margin off and leaves the result in `kept_lo`, `kept_hi`;
-    3. in `rows`, write into `lo` and `hi` what a step may do: for the family "joint" the change of each joint's
-       velocity over the period (n,), for "torque" each joint's torque (n,) at the period's start, for
-       "tool" nothing, but `coefficients` gives rows on the velocity change of all joints (see tool_speed.py);
+    3. in `rows`, write into `most` (2n,) how far a step may go: the largest value in each joint's positive
+       direction, then in its negative one. The value is, for the family "joint", the change of each joint's
+       velocity over the period, for "torque" its torque at the period's start. A kind whose rows never
+       change sets `constant`; one that need not be asked until the next look says so in `look`. The family
+       "tool" gives rows on the change of all joints instead (see tool_speed.py);
     4. in `measure`, give the exact values (f, n) of a finished motion in the limit's own unit, lo <= value <= hi
        being what the limit means; whatever `rows` allows must lie inside.
 
     Attributes
     ----------
     sources : where each joint's limit was stated
+    joints, joint_units : a name (None: the tool) and a unit for each column of `measure`
     """
 
     name: ClassVar[str]
@@ -92,6 +106,7 @@ class Limit(ABC):
     field: ClassVar[str] = ""
     margin: ClassVar[str] = ""
     units: ClassVar[tuple[str, str]]
+    constant: ClassVar[bool] = False
     least_margin: ClassVar[float] = 0.0
 
     lo: Array
@@ -111,28 +126,40 @@ class Limit(ABC):
         self.joints: tuple[str | None, ...] = tuple(joint.name for joint in joints)
         self.joint_units = tuple(self.units[joint.sliding] for joint in joints)
         self.keep(cell)
+        self.kept = np.concatenate([self.kept_hi, -self.kept_lo])  # (2n,), as in `rows`
 
     def keep(self, cell: Cell) -> None:
         """Take the cell's margin off the stated limit, but at least what the drift inside a period needs."""
         share = max(getattr(cell.margins, self.margin) if self.margin else 0.0, self.least_margin)
         self.kept_lo, self.kept_hi = self.lo * (1 - share), self.hi * (1 - share)
 
+    @property
+    def tighter(self) -> Array:
+        """The lesser side (n,) of each kept-back limit, inf where unknown."""
+        return np.minimum(-self.kept_lo, self.kept_hi)
+
+    def look(self, now: Now) -> bool:
+        """Whether `rows` has anything to say before the next look; called when `now.brake` is new."""
+        return True
+
     @abstractmethod
-    def rows(self, now: Now, lo: Array, hi: Array) -> None:
-        """Write the step's bounds for the state `now` into lo and hi."""
+    def rows(self, now: Now, most: Array) -> None:
+        """Write how far a step from `now` may go into most (2n,)."""
 
     @abstractmethod
     def measure(self, fine: Fine) -> Array:
         """Values (f, n) of a finished motion, in the limit's own unit."""
 
-    def percent(self, now: Now) -> Array:
-        """How far (n,) one per cent more of the limit loosens the step's bound (for reasons)."""
+    def percent(self, period_s: float) -> Array:
+        """How far (n,) one per cent more of the limit loosens a step's rows (for reasons)."""
         span = np.where(self.known, np.minimum(np.abs(self.lo), np.abs(self.hi)), 0.0)
         return np.asarray(0.01 * np.where(np.isfinite(span), span, 0.0))
 
     def utilisation(self, values: Array) -> Array:
         """Share (f, n) of the limit that values (f, n) use; 1 is at the limit, nan where it is unknown."""
         with np.errstate(divide="ignore", invalid="ignore"):
-            share = np.where(values >= 0, values / self.hi, values / self.lo)
-        share = np.where(values == 0, 0.0, share)
-        return np.where(self.known, share, np.nan)
+            above, below = 1 / self.hi, 1 / self.lo
+            share = np.where(values >= 0, values * above, values * below)
+        share[values == 0] = 0.0
+        share[:, ~self.known] = np.nan
+        return share

@@ -29,26 +29,39 @@ class BrakeModel:
     ----------
     acceleration, jerk, torque, torque_rate : (n,)
         The lesser of both sides of each kept-back limit, inf where unknown.
-    mass : (n, n)
-        Inertia at the start, which scales accelerations where none is stated.
+    horizon_s : float
+        How long an answer serves: until the next look.
     """
 
-    def __init__(self, acceleration: Array, jerk: Array, torque: Array, torque_rate: Array, mass: Array):
+    def __init__(
+        self, acceleration: Array, jerk: Array, torque: Array, torque_rate: Array, horizon_s: float
+    ):
         self._torque = np.minimum(torque, 1e15)
         self._rate = np.minimum(torque_rate, 1e15)
-        by_torque = np.minimum(torque / np.diagonal(mass), UNLIMITED)
-        self._acceleration = np.where(np.isfinite(acceleration), acceleration, by_torque)
+        self._stated = np.isfinite(acceleration)
+        self._acceleration = acceleration
         self._jerk = np.minimum(BRAKE_SHARE * jerk, UNLIMITED)
+        self._horizon_s = horizon_s
 
     def at(self, state: State, bias_rate: Array) -> Brake:
         """Ability at a state; bias_rate (n,) is how fast the torque at zero acceleration changes, N·m/s."""
-        share = np.abs(state.mass) @ self._acceleration
-        spare = ((self._torque - np.abs(state.bias)) / share).min()
+        load = np.abs(state.bias)
+        own, top = self._acceleration, self._acceleration
+        if not self._stated.all():
+            own, top = self._by_torque(state, load)
+        share = np.abs(state.mass) @ own
+        spare = ((self._torque - load) / share).min()
         drift = np.minimum(np.abs(bias_rate), DRIFT_CAP * self._rate)
         speed = ((self._rate - drift) / share).min()
-        deceleration = (BRAKE_SHARE * min(1.0, max(spare, STANDSTILL_SHARE))) * self._acceleration
-        rate = np.minimum((BRAKE_SHARE * speed) * self._acceleration, self._jerk)
-        return Brake(deceleration, rate, self._acceleration)
+        deceleration = (BRAKE_SHARE * min(1.0, max(spare, STANDSTILL_SHARE))) * own
+        rate = np.minimum((BRAKE_SHARE * speed) * own, self._jerk)
+        return Brake(deceleration, rate, top, top * top / (2 * rate), self._horizon_s)
+
+    def _by_torque(self, state: State, load: Array) -> tuple[Array, Array]:
+        """Accelerations where none is stated: the share that torque leaves each joint, and the most it can have."""
+        alone = np.minimum(self._torque / np.diagonal(state.mass), UNLIMITED)
+        most = np.minimum(np.abs(np.linalg.inv(state.mass)) @ (self._torque + load), UNLIMITED)
+        return np.where(self._stated, self._acceleration, alone), np.where(self._stated, self._acceleration, most)
 
 
 def stopping_distance(v: float, a: float, deceleration: float, rate: float) -> float:

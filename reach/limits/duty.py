@@ -16,7 +16,7 @@ class Duty(Limit):
     field = "torque_continuous"
     units = ("N·m", "N")
 
-    def rows(self, now: Now, lo: Array, hi: Array) -> None:
+    def rows(self, now: Now, most: Array) -> None:
         """Nothing: a step can't see the mean over a motion."""
 
     def measure(self, fine: Fine) -> Array:

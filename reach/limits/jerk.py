@@ -17,13 +17,14 @@ class Jerk(Limit):
     margin = "jerk_share"
     units = ("rad/s³", "m/s³")
 
-    def rows(self, now: Now, lo: Array, hi: Array) -> None:
-        dt = now.period_s
-        np.multiply(now.a + self.kept_lo * dt, dt, out=lo)
-        np.multiply(now.a + self.kept_hi * dt, dt, out=hi)
+    def rows(self, now: Now, most: Array) -> None:
+        np.multiply(self.kept, now.period_s**2, out=most)
+        n = len(now.change)
+        most[:n] += now.change
+        most[n:] -= now.change
 
     def measure(self, fine: Fine) -> Array:
         return fine.change(fine.a, fine.a_before)
 
-    def percent(self, now: Now) -> Array:
-        return super().percent(now) * now.period_s**2
+    def percent(self, period_s: float) -> Array:
+        return super().percent(period_s) * period_s**2

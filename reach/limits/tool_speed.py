@@ -28,8 +28,9 @@ class ToolSpeed(Limit):
         self.joints, self.joint_units = (None,), ("m/s",)
         share = cell.margins.velocity_share
         self.kept_lo, self.kept_hi = self.lo * (1 - share), self.hi * (1 - share)
+        self.kept = np.concatenate([self.kept_hi, -self.kept_lo])
 
-    def rows(self, now: Now, lo: Array, hi: Array) -> None:
+    def rows(self, now: Now, most: Array) -> None:
         """No bounds of its own: see `coefficients`."""
 
     def coefficients(self, now: Now) -> tuple[Array, Array] | None:
@@ -50,10 +51,10 @@ class ToolSpeed(Limit):
         across /= np.linalg.norm(across)
         box = np.array([along, across, np.cross(along, across)]) @ rows
         ahead = now.state.drift[:3] * now.period_s
-        gaining = float(along @ (rows @ now.a))
+        gaining = float(along @ (rows @ now.change)) / now.period_s
         room = cap * np.sqrt(1 - ASIDE_SHARE**2) - speed - float(along @ ahead)
         if gaining > 0:
-            slowest = float(np.max(np.abs(now.a) / now.brake.rate))
+            slowest = float(np.max(np.abs(now.change) / now.brake.rate) / now.period_s)
             step = gaining / slowest * now.period_s**2
             room = min(room, step * (np.sqrt(1 + 2 * max(room, 0.0) / step) - 1)) if room > 0 else room
         aside = cap * ASIDE_SHARE / np.sqrt(2)
@@ -63,4 +64,4 @@ class ToolSpeed(Limit):
         )
 
     def measure(self, fine: Fine) -> Array:
-        return np.asarray(np.linalg.norm(fine.twist[:, :3], axis=1)[:, None])
+        return fine.speed[:, None]

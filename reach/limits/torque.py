@@ -16,11 +16,11 @@ class Torque(Limit):
     field = "torque"
     margin = "torque_share"
     units = ("N·m", "N")
+    constant = True
     least_margin = DRIFT_SHARE
 
-    def rows(self, now: Now, lo: Array, hi: Array) -> None:
-        np.copyto(lo, self.kept_lo)
-        np.copyto(hi, self.kept_hi)
+    def rows(self, now: Now, most: Array) -> None:
+        np.copyto(most, self.kept)
 
     def measure(self, fine: Fine) -> Array:
         return fine.torque

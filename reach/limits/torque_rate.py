@@ -22,12 +22,14 @@ class TorqueRate(Limit):
     units = ("N·m/s", "N/s")
     least_margin = DRIFT_SHARE
 
-    def rows(self, now: Now, lo: Array, hi: Array) -> None:
-        np.add(now.torque, self.kept_lo * now.period_s, out=lo)
-        np.add(now.torque, self.kept_hi * now.period_s, out=hi)
+    def rows(self, now: Now, most: Array) -> None:
+        np.multiply(self.kept, now.period_s, out=most)
+        n = len(now.torque)
+        most[:n] += now.torque
+        most[n:] -= now.torque
 
     def measure(self, fine: Fine) -> Array:
         return fine.change(fine.torque, fine.torque_before)
 
-    def percent(self, now: Now) -> Array:
-        return super().percent(now) * now.period_s
+    def percent(self, period_s: float) -> Array:
+        return super().percent(period_s) * period_s

@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import math
+
 import numpy as np
 
-from reach.cell import Array
+from reach.cell import Array, Cell
 from reach.limits.base import Fine, Limit, Now
 
 
@@ -17,13 +19,27 @@ class Velocity(Limit):
     margin = "velocity_share"
     units = ("rad/s", "m/s")
 
-    def rows(self, now: Now, lo: Array, hi: Array) -> None:
+    def __init__(self, cell: Cell):
+        super().__init__(cell)
+        self._near: list[int] = []
+
+    def look(self, now: Now) -> bool:
+        brake = now.brake
+        reach = brake.gain + brake.top * (brake.horizon_s + now.period_s)
+        fast = np.concatenate([now.v + reach, reach - now.v])
+        self._near = np.flatnonzero(fast > self.kept).tolist()
+        return bool(self._near)
+
+    def rows(self, now: Now, most: Array) -> None:
         # While the acceleration falls at rate β from a to zero the joint gains a²/2β more speed. Hence
         # a⁺ <= β dt (√(1 + 2 (v_max − v)/(β dt²)) − 1), the largest a⁺ with v + a⁺ dt + a⁺²/2β <= v_max.
-        step = now.brake.rate * now.period_s**2
-        for room, out, sign in ((self.kept_hi - now.v, hi, 1.0), (now.v - self.kept_lo, lo, -1.0)):
-            gain = step * (np.sqrt(1 + np.maximum(room, 0.0) * (2 / step)) - 1)
-            np.multiply(sign, np.where(room < 0, room, gain), out=out)
+        most.fill(np.inf)
+        n = len(now.v)
+        for row in self._near:
+            i = row % n
+            room = float(self.kept[row] - (now.v[i] if row < n else -now.v[i]))
+            step = float(now.brake.rate[i]) * now.period_s**2
+            most[row] = step * (math.sqrt(1 + 2 * room / step) - 1) if room > 0 else room
 
     def measure(self, fine: Fine) -> Array:
         return fine.v

@@ -7,7 +7,6 @@ must pass.
 
 from __future__ import annotations
 
-
 import numpy as np
 import qpsolvers
 
@@ -20,6 +19,8 @@ BACKENDS: dict[str, dict[str, object]] = {
     "piqp": {"eps_abs": 1e-10, "eps_rel": 0.0},
     "clarabel": {"tol_gap_abs": 1e-10, "tol_gap_rel": 1e-10, "tol_feas": 1e-10},
 }
+
+Answer = tuple[Array, Array, Array]  # x, z, z_box
 
 
 class Solver:
@@ -42,39 +43,40 @@ class Solver:
                 found = ", ".join(s for s in qpsolvers.available_solvers if s in BACKENDS)
                 raise SolverFailure(f'solver "{wanted}" is not installed (found: {found}); pip install {wanted}')
         self.names = (name, fallback)
-        self._problems: dict[int, qpsolvers.Problem] = {}
 
     def solve(self, problem: QpProblem) -> QpSolution:
         """Solve, check, and where the check fails ask the second solver.
 
-        INFEASIBLE is claimed only where both agree that there is no feasible point; anything else that fails the check
-        is FAILED.
+        INFEASIBLE is claimed only where both find no feasible point; anything else that fails the check is FAILED.
         """
         none_found = 0
         for attempt, name in enumerate(self.names):
-            found, x, z, z_box = self.attempt(problem, name)
-            if found:
-                primal, kkt = residuals(problem, x, z, z_box)
-                if primal <= PRIMAL_TOLERANCE and kkt <= KKT_TOLERANCE:
-                    return QpSolution(x, z, z_box, QpStatus.SOLVED, attempt > 0)
-            else:
+            answer = self.attempt(problem, name)
+            if answer is None:
                 none_found += 1
-        empty = np.full(len(problem.q), np.nan)
+                continue
+            primal, kkt = residuals(problem, *answer)
+            if primal <= PRIMAL_TOLERANCE and kkt <= KKT_TOLERANCE:
+                return QpSolution(*answer, QpStatus.SOLVED, attempt > 0)
+        n = len(problem.q)
         status = QpStatus.INFEASIBLE if none_found == len(self.names) else QpStatus.FAILED
-        return QpSolution(empty, np.zeros(len(problem.h)), np.zeros(len(problem.q)), status, True)
+        return QpSolution(np.full(n, np.nan), np.zeros(len(problem.h)), np.zeros(n), status, True)
 
-    def attempt(self, problem: QpProblem, name: str) -> tuple[bool, Array, Array, Array]:
-        """One solver's raw answer: whether it says it found one, x, z, z_box."""
-        held = self._problems.get(id(problem))
-        if held is None or held.G is not problem.G:
-            held = qpsolvers.Problem(
+    def first(self, problem: QpProblem) -> Answer | None:
+        """The first solver's answer, not yet checked; None where it has none."""
+        return self.attempt(problem, self.names[0])
+
+    def attempt(self, problem: QpProblem, name: str) -> Answer | None:
+        """One solver's raw answer, None where it says that it found none."""
+        form = problem.form
+        if form is None:
+            form = problem.form = qpsolvers.Problem(
                 problem.P, problem.q, problem.G, problem.h, None, None, problem.lb, problem.ub
             )
-            self._problems[id(problem)] = held
         try:
-            answer = qpsolvers.solve_problem(held, name, **BACKENDS[name])
+            answer = qpsolvers.solve_problem(form, name, **BACKENDS[name])
         except Exception:  # noqa: BLE001 - whatever a backend throws counts as "it gave no answer"
-            return False, problem.q, problem.h, problem.q
+            return None
         if not answer.found or answer.x is None:
-            return False, problem.q, problem.h, problem.q
-        return True, answer.x, answer.z, answer.z_box
+            return None
+        return answer.x, answer.z, answer.z_box

@@ -1,4 +1,4 @@
-"""A quadratic program and its answer, which re-checks itself."""
+"""A quadratic program and its answer, and the check that trusts no solver's word."""
 
 from __future__ import annotations
 
@@ -23,12 +23,12 @@ class QpStatus(Enum):
     FAILED = "neither solver gave an answer that passes the check; please report the problem"
 
 
-@dataclass(eq=False)
+@dataclass(eq=False, slots=True)
 class QpProblem:
     """minimise ½ xᵀ P x + qᵀ x subject to G x <= h and lb <= x <= ub.
 
     P (n, n) positive definite, q (n,), G (m, n), h (m,), lb, ub (n,), all finite. The arrays are a workspace: a
-    step writes them anew, so that nothing is allocated in the loop.
+    step writes them anew, so that nothing is allocated in the loop. `form` is the backend's own view of them.
     """
 
     P: Array
@@ -37,9 +37,10 @@ class QpProblem:
     h: Array
     lb: Array
     ub: Array
+    form: object = None
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, slots=True)
 class QpSolution:
     """Answer to a QpProblem.
 
@@ -59,17 +60,45 @@ class QpSolution:
     fell_back: bool = False
 
 
-def residuals(p: QpProblem, x: Array, z: Array, z_box: Array) -> tuple[float, float]:
+class QpBlock:
+    """Many problems of one size side by side, solved one by one and checked together.
+
+    The check of one answer costs as much as half a solve; of a whole block it costs next to nothing.
+
+    Attributes
+    ----------
+    problems : list of QpProblem, views into the block's arrays
+    x, z, z_box : (size, …) the answers, to be written by whoever solved
+    """
+
+    def __init__(self, size: int, n: int, m: int):
+        self.P, self.q = np.empty((size, n, n)), np.empty((size, n))
+        self.G, self.h = np.empty((size, m, n)), np.empty((size, m))
+        self.lb, self.ub = np.empty((size, n)), np.empty((size, n))
+        self.x, self.z, self.z_box = np.empty((size, n)), np.empty((size, m)), np.empty((size, n))
+        arrays = (self.P, self.q, self.G, self.h, self.lb, self.ub)
+        self.problems = [QpProblem(*(array[k] for array in arrays)) for k in range(size)]
+
+    def first_bad(self, count: int) -> int | None:
+        """Index of the first of `count` answers that fails the check, None where all pass."""
+        part = [a[:count] for a in (self.P, self.q, self.G, self.h, self.lb, self.ub)]
+        primal, kkt = residuals(QpProblem(*part), self.x[:count], self.z[:count], self.z_box[:count])
+        good = (primal <= PRIMAL_TOLERANCE) & (kkt <= KKT_TOLERANCE)
+        return None if good.all() else int(np.argmin(good))
+
+
+def residuals(p: QpProblem, x: Array, z: Array, z_box: Array) -> tuple[Array, Array]:
     """Largest primal violation, and largest residual of the other KKT conditions, nan where x is not finite.
 
     Stationarity P x + q + Gᵀz + z_box, signs of z, complementarity of each multiplier and its slack; relative to
-    one plus the largest entry of q.
+    one plus the largest entry of q. Leading axes of all arrays run over problems.
     """
-    slack = p.h - p.G @ x
+    slack = p.h - (p.G @ x[..., None])[..., 0]
     above, below = p.ub - x, x - p.lb
-    primal = -min(slack.min(initial=0.0), above.min(), below.min())
-    stationarity = np.abs(p.P @ x + p.q + z @ p.G + z_box).max()
-    sign = -z.min(initial=0.0)
-    gap = np.abs(z @ np.maximum(slack, 0.0)) + np.maximum(z_box, 0) @ np.maximum(above, 0)
-    gap -= np.minimum(z_box, 0) @ np.maximum(below, 0)
-    return float(primal), float(max(stationarity, sign, gap) / (1 + np.abs(p.q).max()))
+    primal = -np.minimum(np.minimum(above, below).min(-1), slack.min(-1, initial=0.0))
+    gradient = (p.P @ x[..., None])[..., 0] + p.q + (z[..., None, :] @ p.G)[..., 0, :] + z_box
+    sign = -z.min(-1, initial=0.0)
+    gap = np.abs(z * np.maximum(slack, 0.0)).sum(-1)
+    gap += (np.maximum(z_box, 0) * np.maximum(above, 0) - np.minimum(z_box, 0) * np.maximum(below, 0)).sum(-1)
+    worst = np.maximum(np.maximum(np.abs(gradient).max(-1), sign), gap)
+    return np.maximum(primal, 0.0), worst / (1 + np.abs(p.q).max(-1))

@@ -50,8 +50,8 @@ def of_uses(most_share: float) -> Caption:
     text = (
         "Share of each stated limit over time. The dark line is the limit; short dashes at the right edge, "
         "in the colour of their line, are what the plan leaves of it after its margin; filled parts are "
-        "breaks, with a cross at the worst. Limits that are unknown, or one number for the whole motion, have "
-        f"no line. A panel ends at {100 * most_share:.0f} % at most."
+        "breaks, with a cross at the worst. Limits that are unknown, or one number for the whole motion, "
+        f"have no line. A panel ends at {100 * most_share:.0f} % at most."
     )
     alt = "The table of limits has the peaks and their instants."
     return Caption("Use of the limits over time", text, alt)
@@ -61,9 +61,10 @@ def of_errors(result: FollowResult) -> Caption:
     """Caption of the tracking errors."""
     where = "throughout" if result.cell.accept.at == "throughout" else "there"
     text = (
-        "Tracking errors of the strike point. Upright bars are the windows around the strikes, hatched where "
-        f"missed, and widened where they would be too thin to see; the tolerances hold {where}. Grey is the "
-        "time after the command's end."
+        "Tracking errors of the strike point; the dashed line is the tolerance, for velocity that across the "
+        "normal. Upright bars are the windows around the strikes, hatched where missed, and widened where "
+        f"they would be too thin to see; the tolerances hold {where}. Grey is the time after the command's "
+        "end."
     )
     return Caption("Tracking errors", text, "The section on the motion has the peaks.")
 

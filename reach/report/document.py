@@ -64,8 +64,9 @@ def document(result: FollowResult) -> dict[str, Any]:
     return tidy
 
 
-def strict(value: Any, key: str = "", digits: int = DIGITS) -> Any:
-    """Return the value as strict JSON allows it: no infinity and no nan (None instead), floats rounded.
+def strict(value: Any, key: str = "", digits: int | None = DIGITS) -> Any:
+    """Return the value as strict JSON allows it: no infinity and no nan (None instead), floats rounded
+    to so many significant digits, instants to nanoseconds; with `digits` None nothing is rounded.
 
     Lone surrogates, which file names may hold and UTF-8 does not, become escapes.
     """
@@ -115,9 +116,11 @@ def versions() -> dict[str, str | None]:
     return {**found, "python": platform.python_version()}
 
 
-def _rounded(value: float, key: str, digits: int) -> float | None:
+def _rounded(value: float, key: str, digits: int | None) -> float | None:
     if not math.isfinite(value):
         return None
+    if digits is None:
+        return value
     rounded = round(value, TIME_DECIMALS) if key in TIMES else float(f"{value:.{digits}g}")
     return rounded + 0.0  # no negative zero
 

@@ -12,7 +12,6 @@ from reach.report.document import strict
 from reach.result import FollowResult
 
 SCHEMA = "strikecheck/evidence/1"
-FULL_DIGITS = 17  # reads back to the same double
 
 
 def evidence_files(result: FollowResult) -> dict[str, bytes | None]:
@@ -66,5 +65,5 @@ def _cell(result: FollowResult) -> bytes:
         "strikes": [asdict(strike) for strike in result.evidence.strikes],
         "inputs": [asdict(source) for source in cell.inputs],
     }
-    tidy = strict(content, digits=FULL_DIGITS)
+    tidy = strict(content, digits=None)
     return (json.dumps(tidy, ensure_ascii=False, allow_nan=False, indent=1) + "\n").encode()

@@ -1,8 +1,4 @@
-"""The report's drawings, as SVG. The only module that imports the drawing library.
-
-Colours are the colour-blind safe ones of Okabe and Ito (2008); whatever a colour says, a shape, a dash or a
-number says too.
-"""
+"""The report's drawings, as SVG. The only module that imports the drawing library."""
 
 from __future__ import annotations
 
@@ -21,13 +17,27 @@ from reach.cell import Array
 from reach.evidence.record import Strike, Track, Use
 from reach.report.captions import Caption, of_errors, of_path, of_peaks, of_speed, of_uses
 from reach.report.columns import shorten
+from reach.report.looks import (
+    BLUE,
+    COMMANDED_STYLE,
+    DELIVERED_STYLE,
+    GREEN,
+    GREY,
+    INK,
+    KIND_STYLES,
+    ORANGE,
+    OTHER_STYLE,
+    PALE,
+    START_STYLE,
+    STRIKE_STYLES,
+    STYLE,
+    WINDOW_STYLES,
+)
 from reach.report.series import keep, kept_share, shares, worst_per_bin
 from reach.report.wording import owner
 from reach.result import FollowResult
 from reach.verdict import ROUNDING
 
-BLUE, ORANGE, GREEN, PURPLE = "#0072b2", "#d55e00", "#009e73", "#aa4499"
-SKY, YELLOW, INK, GREY, PALE = "#56b4e9", "#b8860b", "#222222", "#7a7a7a", "#e9edf1"
 WIDTH_IN = 9.8  # 940 px at 96 px an inch: the page's width
 POINTS = 2000  # a line, at most
 PANEL_POINTS = 400  # a line in one of many panels, at most
@@ -38,56 +48,7 @@ FAR_SHARE = 10 * MOST_SHARE  # shares are drawn as this at most, infinite ones t
 FAR_TIMES = 30.0  # the tolerance: from here errors are drawn on a scale that bends
 FAR_ZERO_S = 1e5  # logs that start later than this are drawn from zero
 NAME_COLUMNS = 34
-
-KIND_STYLES: dict[str, tuple[str, str | tuple[int, tuple[float, ...]]]] = {
-    "position": (GREY, "-"),
-    "velocity": (BLUE, "-"),
-    "acceleration": (GREEN, (0, (5, 1.5))),
-    "jerk": (PURPLE, (0, (1, 1.2))),
-    "torque": (ORANGE, "-"),
-    "torque rate": (YELLOW, (0, (4, 1.2, 1, 1.2))),
-    "tool speed": (INK, "-"),
-}
-OTHER_STYLE = (SKY, (0, (2, 1)))  # a kind that has no style of its own
 MEANS = ("duty",)  # kinds that are one number for the whole motion: no line over time
-
-COMMANDED_STYLE: dict[str, Any] = {"color": INK, "linestyle": (0, (4, 2)), "label": "commanded", "zorder": 3}
-DELIVERED_STYLE: dict[str, Any] = {"color": BLUE, "linewidth": 1.6, "label": "delivered"}
-MARK: dict[str, Any] = {"linestyle": "", "markersize": 7, "zorder": 5}
-STRIKE_STYLES: dict[bool, dict[str, Any]] = {  # by whether it was delivered
-    True: {**MARK, "marker": "o", "color": GREEN, "label": "strike delivered"},
-    False: {**MARK, "marker": "X", "color": ORANGE, "label": "strike missed"},
-}
-START_STYLE = {**MARK, "marker": "s", "color": "white", "markeredgecolor": INK, "label": "start"}
-WINDOW_STYLES: dict[bool, dict[str, Any]] = {
-    True: {"facecolor": "#bfe0d3"},
-    False: {"facecolor": "#f6c7a5", "hatch": "////"},
-}
-
-STYLE: Any = {
-    "svg.fonttype": "none",  # the reader's own fonts: any script can be shown
-    "svg.hashsalt": "strikecheck",
-    "text.parse_math": False,  # a name is never mathematics
-    "font.family": "sans-serif",
-    "font.sans-serif": ["DejaVu Sans"],
-    "font.size": 9.5,
-    "axes.titlesize": 10,
-    "axes.labelsize": 9.5,
-    "legend.fontsize": 9,
-    "xtick.labelsize": 9,
-    "ytick.labelsize": 9,
-    "axes.spines.top": False,
-    "axes.spines.right": False,
-    "axes.edgecolor": GREY,
-    "axes.formatter.useoffset": False,
-    "axes.titlelocation": "left",
-    "axes.grid": True,
-    "grid.color": "#e3e3e3",
-    "grid.linewidth": 0.6,
-    "lines.linewidth": 1.2,
-    "legend.frameon": False,
-    "figure.constrained_layout.use": True,
-}
 
 
 class Picture(NamedTuple):
@@ -300,35 +261,44 @@ def _errors(result: FollowResult, track: Track) -> Picture:
     figure = Figure(figsize=(WIDTH_IN, 5.6))
     clock = _Clock.of(track)
     tilt_deg = math.degrees(accept.strike_tilt_error_rad)
-    columns: tuple[tuple[str, Array, float, str], ...] = (
-        ("velocity error, m/s", track.velocity_error, accept.strike_lateral_m_s, "tolerance, lateral"),
-        ("position error, mm", 1000 * track.position_error, 1000 * accept.strike_position_m, "tolerance"),
-        ("tilt error, °", np.degrees(track.tilt_error), tilt_deg, "tolerance"),
+    columns: tuple[tuple[str, Array, float], ...] = (
+        ("velocity error, m/s", track.velocity_error, accept.strike_lateral_m_s),
+        ("position error, mm", 1000 * track.position_error, 1000 * accept.strike_position_m),
+        ("tilt error, °", np.degrees(track.tilt_error), tilt_deg),
     )
     panels = figure.subplots(3, 1, sharex=True)
-    rows = keep(np.column_stack([values for _, values, _, _ in columns]), POINTS)
+    rows = keep(np.column_stack([values for _, values, _ in columns]), POINTS)
     t = track.t_s[rows] - clock.zero_s
-    for axes, (label, values, tolerance, where) in zip(panels, columns, strict=True):
+    for axes, (label, values, tolerance) in zip(panels, columns, strict=True):
         _shade(axes, result, track, clock)
-        axes.plot(t, values[rows], color=BLUE)
-        axes.axhline(tolerance, color=ORANGE, linestyle=(0, (5, 2)), linewidth=1.1, label=where)
+        axes.plot(t, values[rows], color=BLUE, label="error")
+        axes.axhline(tolerance, color=ORANGE, linestyle=(0, (5, 2)), linewidth=1.1, label="tolerance")
         if values.max() > FAR_TIMES * tolerance > 0:
             axes.set_yscale("symlog", linthresh=tolerance)
-            axes.yaxis.set_major_formatter(lambda value, _: f"{value:g}")
+            decades = np.arange(np.ceil(np.log10(values.max() / tolerance)))
+            axes.set_yticks([0.0, *(tolerance * 10.0**decades)])
+            axes.minorticks_off()
+            axes.yaxis.set_major_formatter(lambda value, _: f"{value:.3g}")
         axes.set_ylim(0, 1.3 * max(tolerance, float(values.max())))
         axes.set_ylabel(label)
-        axes.legend(loc="upper right")
     panels[-1].set_xlabel(clock.label)
+    figure.legend(*panels[-1].get_legend_handles_labels(), loc="outside upper left", ncols=4)
     return Picture(of_errors(result), _svg(figure))
 
 
 def _shade(axes: Axes, result: FollowResult, track: Track, clock: _Clock) -> None:
     t = track.t_s - clock.zero_s
     half = max(result.cell.accept.strike_window_s, (t[-1] - t[0]) / 400) / 2
+    named: set[bool] = set()
     for strike in result.evidence.strikes:
         middle = strike.time_s - clock.zero_s
         style = WINDOW_STYLES[strike.delivered]
-        axes.axvspan(middle - half, middle + half, edgecolor="white", linewidth=0, **style)
+        # A label that begins with an underscore keeps out of the legend: one entry a style.
+        label = "_" if strike.delivered in named else style["label"]
+        named.add(strike.delivered)
+        axes.axvspan(
+            middle - half, middle + half, edgecolor="white", linewidth=0, **{**style, "label": label}
+        )
     after = np.flatnonzero(~track.during)
     if len(after):
         axes.axvspan(t[after[0]], t[-1], facecolor="#eeeeee", linewidth=0)

@@ -1,0 +1,61 @@
+"""Colours, dashes and marks of the figures.
+
+The colours stay apart in the common kinds of colour blindness, and whatever a colour says, a shape, a dash or
+a number says too.
+"""
+
+from __future__ import annotations
+
+from typing import Any
+
+BLUE, ORANGE, GREEN, PURPLE = "#0072b2", "#d55e00", "#009e73", "#aa4499"
+SKY, YELLOW, INK, GREY, PALE = "#56b4e9", "#b8860b", "#222222", "#7a7a7a", "#e9edf1"
+
+KIND_STYLES: dict[str, tuple[str, str | tuple[int, tuple[float, ...]]]] = {
+    "position": (GREY, "-"),
+    "velocity": (BLUE, "-"),
+    "acceleration": (GREEN, (0, (5, 1.5))),
+    "jerk": (PURPLE, (0, (1, 1.2))),
+    "torque": (ORANGE, "-"),
+    "torque rate": (YELLOW, (0, (4, 1.2, 1, 1.2))),
+    "tool speed": (INK, "-"),
+}
+OTHER_STYLE = (SKY, (0, (2, 1)))  # a kind that has no style of its own
+
+COMMANDED_STYLE: dict[str, Any] = {"color": INK, "linestyle": (0, (4, 2)), "label": "commanded", "zorder": 3}
+DELIVERED_STYLE: dict[str, Any] = {"color": BLUE, "linewidth": 1.6, "label": "delivered"}
+MARK: dict[str, Any] = {"linestyle": "", "markersize": 7, "zorder": 5}
+STRIKE_STYLES: dict[bool, dict[str, Any]] = {  # by whether it was delivered
+    True: {**MARK, "marker": "o", "color": GREEN, "label": "strike delivered"},
+    False: {**MARK, "marker": "X", "color": ORANGE, "label": "strike missed"},
+}
+START_STYLE = {**MARK, "marker": "s", "color": "white", "markeredgecolor": INK, "label": "start"}
+WINDOW_STYLES: dict[bool, dict[str, Any]] = {
+    True: {"facecolor": "#bfe0d3", "label": "strike delivered"},
+    False: {"facecolor": "#f6c7a5", "hatch": "////", "label": "strike missed"},
+}
+
+STYLE: Any = {
+    "svg.fonttype": "none",  # the reader's own fonts: any script can be shown
+    "svg.hashsalt": "strikecheck",
+    "text.parse_math": False,  # a name is never mathematics
+    "font.family": "sans-serif",
+    "font.sans-serif": ["DejaVu Sans"],
+    "font.size": 9.5,
+    "axes.titlesize": 10,
+    "axes.labelsize": 9.5,
+    "legend.fontsize": 9,
+    "xtick.labelsize": 9,
+    "ytick.labelsize": 9,
+    "axes.spines.top": False,
+    "axes.spines.right": False,
+    "axes.edgecolor": GREY,
+    "axes.formatter.useoffset": False,
+    "axes.titlelocation": "left",
+    "axes.grid": True,
+    "grid.color": "#e3e3e3",
+    "grid.linewidth": 0.6,
+    "lines.linewidth": 1.2,
+    "legend.frameon": False,
+    "figure.constrained_layout.use": True,
+}

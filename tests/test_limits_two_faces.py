@@ -1,0 +1,174 @@
+"""Every limit kind's two faces: what its rows allow a step, its measure must accept."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from functools import cache
+
+import numpy as np
+import pytest
+from builders import NO_MARGINS, following, robot_cell
+from reach.arm import Arm, State
+from reach.cell import Cell, Margins
+from reach.evidence.measure import refine
+from reach.evidence.motion import FINE, Motion
+from reach.follow.bench import build_limits
+from reach.follow.reference import build_reference
+from reach.follow.roll import BRAKED_BY, roll
+from reach.follow.rows import Rows
+from reach.kinematics import Chain
+from reach.limits import LIMITS
+from reach.limits.base import Fine, Now
+from reach.limits.brake import BrakeModel
+from scipy.optimize import linprog
+
+PLANNED = [name for name, kind in LIMITS.items() if kind.family != "none"]
+# Rows hold to the solver's check of them (1e-6 of a limit); drift inside a period is covered by what a kind keeps back.
+ROUNDING = 2e-6
+MARGINS = {"ordinary margins": Margins(), "no margins": NO_MARGINS}
+STARTS, OBJECTIVES = 4, 3
+
+
+@dataclass(frozen=True, eq=False)
+class Moment:
+    """A legal state inside a motion: the period before it (q, v, a) and what the step knows."""
+
+    q: np.ndarray
+    v: np.ndarray
+    a: np.ndarray
+    now: Now
+
+
+@cache
+def setting(margins: str) -> tuple[Cell, Arm, list[Moment]]:
+    """bench7 with a tool cap, and states of violent motions on it, so that every limit is met somewhere."""
+    capped = robot_cell("bench7", rest='[tool]\nspeed_m_s = 1.2\nsource = "test"\n')
+    cell = replace(capped, margins=MARGINS[margins])
+    arm, limits = Arm(cell.arm, cell.paddle), build_limits(cell)
+    rng = np.random.default_rng(31)
+    lo, hi = limits["position"].lo, limits["position"].hi
+    moments: list[Moment] = []
+    for number in range(STARTS):
+        share = rng.uniform(0.3, 0.7, arm.n) if number % 2 else np.where(rng.random(arm.n) < 0.5, 0.04, 0.96)
+        start = lo + share * (hi - lo)
+        twists = np.repeat(rng.normal(size=(4, 6)) * np.repeat([2.0, 6.0], 3), 50, axis=0)
+        tried = following(replace(cell, arm=replace(cell.arm, start=tuple(start))), np.arange(200) * 0.001, twists)
+        reference = build_reference(tried, tried.follow, *arm.pose(start))
+        motion = roll(tried, arm, limits, reference, start, 0.0).motion
+        brake = BrakeModel(
+            *(np.minimum(np.abs(limits[k].kept_lo), np.abs(limits[k].kept_hi)) for k in BRAKED_BY),
+            arm.at(motion.q[0], motion.v[0]).mass.copy(),
+        )
+        last = len(motion.q) - 2
+        rows = np.unique(np.r_[1, 2, np.linspace(3, last, 12).astype(int)])
+        moments += [moment(cell, arm, brake, motion, int(k)) for k in rows]
+    return cell, arm, moments
+
+
+def moment(cell: Cell, arm: Arm, brake: BrakeModel, motion: Motion, k: int) -> Moment:
+    """Row k of a motion as the step after it sees it."""
+    before, state = (State(*(x.copy() for x in arm.at(motion.q[i], motion.v[i]))) for i in (k - 1, k))
+    torque = before.mass @ motion.a[k - 1] + before.bias
+    ability = brake.at(state, (state.bias - before.bias) / cell.period_s)
+    now = Now(motion.q[k], motion.v[k], motion.a[k - 1], torque, state, ability, cell.period_s)
+    return Moment(motion.q[k - 1], motion.v[k - 1], motion.a[k - 1], now)
+
+
+def second_period(arm: Arm, item: Moment, change: np.ndarray) -> Fine:
+    """The two periods around a state as a motion, measured."""
+    dt = item.now.period_s
+    q, v = item.now.q, item.now.v
+    end = v + change
+    motion = Motion(
+        0.0,
+        dt,
+        np.array([item.q, q, q + (v + end) * dt / 2]),
+        np.array([item.v, v, end]),
+        np.array([item.a, change / dt, np.zeros(arm.n)]),
+    )
+    return refine(arm, Chain.of(arm), motion)[0]
+
+
+def allowed(rows: Rows, now: Now, box: tuple[np.ndarray, np.ndarray]) -> tuple[np.ndarray, ...]:
+    """Polytope (G, h, lo, hi) of a step's rows within a box."""
+    problem = rows.fill(now)
+    return problem.G.copy(), problem.h.copy(), np.maximum(problem.lb, box[0]), np.minimum(problem.ub, box[1])
+
+
+def corner(polytope: tuple[np.ndarray, ...], objective: np.ndarray) -> np.ndarray:
+    """The point of a polytope that is farthest along an objective."""
+    G, h, lo, hi = polytope
+    answer = linprog(-objective, G if len(G) else None, h if len(h) else None, bounds=np.column_stack([lo, hi]))
+    assert answer.status == 0, answer.message
+    return np.asarray(answer.x)
+
+
+@cache
+def largest_uses(margins: str, alone: str | None) -> dict[str, float]:
+    """Largest use of each kind over corners of what the rows allow, all kinds' rows or one kind's alone.
+
+    A kind alone still has the acceleration limits around it: without them a period of 1 ms may hold any motion at all.
+    """
+    cell, arm, moments = setting(margins)
+    limits = build_limits(cell)
+    rows = Rows(limits if alone is None else {alone: limits[alone]}, arm.n, cell.period_s)
+    most = limits["acceleration"].hi * cell.period_s
+    rng = np.random.default_rng(32)
+    worst = dict.fromkeys(PLANNED, 0.0)
+    for item in moments:
+        polytope = allowed(rows, item.now, (-most, most))
+        objectives = rng.normal(size=(OBJECTIVES, arm.n))
+        speed = item.now.state.jacobian[:3] @ item.now.v
+        objectives[0] = speed @ item.now.state.jacobian[:3]
+        for objective in objectives:
+            fine = second_period(arm, item, corner(polytope, objective))
+            for name in PLANNED if alone is None else [alone]:
+                share = limits[name].utilisation(limits[name].measure(fine))
+                worst[name] = max(worst[name], float(share[FINE : 2 * FINE].max()))
+    return worst
+
+
+@pytest.mark.parametrize("margins", MARGINS)
+@pytest.mark.parametrize("name", PLANNED)
+def test_measure_accepts_what_all_rows_allow(name, margins):
+    assert largest_uses(margins, None)[name] <= 1 + ROUNDING
+
+
+@pytest.mark.parametrize("margins", MARGINS)
+@pytest.mark.parametrize("name", PLANNED)
+def test_measure_accepts_what_a_kinds_own_rows_allow(name, margins):
+    assert largest_uses(margins, name)[name] <= 1 + ROUNDING
+
+
+@pytest.mark.parametrize("name", PLANNED)
+def test_rows_reach_what_they_may(name):
+    # Rows that allow nothing would pass the tests above: without margins some corner comes near each limit.
+    assert max(largest_uses("no margins", None)[name], largest_uses("no margins", name)[name]) > 0.9
+
+
+@pytest.mark.parametrize("name", LIMITS)
+def test_kept_back_lies_inside_stated(name):
+    for margins in MARGINS.values():
+        limit = LIMITS[name](replace(setting("no margins")[0], margins=margins))
+        assert limit.name == name
+        assert limit.known.all()
+        assert np.all(limit.kept_hi <= limit.hi) and np.all(limit.kept_lo >= limit.lo)
+        assert len(limit.sources) == len(limit.joints) == len(limit.joint_units) == len(limit.known)
+
+
+@pytest.mark.parametrize("name", LIMITS)
+def test_unknown_is_neither_zero_nor_used(name):
+    cell = setting("no margins")[0]
+    bare = tuple(replace(j, limits=type(j.limits)()) for j in cell.arm.joints)
+    limit = LIMITS[name](replace(cell, tool=None, arm=replace(cell.arm, joints=bare)))
+    assert not limit.known.any()
+    assert np.isinf(limit.hi).all() and np.isinf(limit.lo).all()
+    assert np.isnan(limit.utilisation(np.ones((2, len(limit.known))))).all()
+
+
+@pytest.mark.parametrize("name", LIMITS)
+def test_use_is_one_at_either_end(name):
+    limit = LIMITS[name](setting("no margins")[0])
+    for end in (limit.lo, limit.hi):
+        np.testing.assert_allclose(limit.utilisation(end[None]), 1.0, rtol=1e-12)
+        assert np.all(limit.utilisation(end[None] + 0.01 * (limit.hi - limit.lo) * np.sign(end - limit.lo - 1e-9)) > 0)
