@@ -10,16 +10,16 @@ import pytest
 from builders import NO_MARGINS, following, robot_cell
 from reach.arm import Arm, State
 from reach.cell import Cell, Margins
-from reach.evidence.measure import refine
+from reach.evidence.measure import measure
 from reach.evidence.motion import FINE, Motion
 from reach.follow.bench import build_limits
 from reach.follow.reference import build_reference
-from reach.follow.roll import BRAKED_BY, roll
+from reach.follow.roll import Roll, now_at, roll
 from reach.follow.rows import Rows
 from reach.kinematics import Chain
 from reach.limits import LIMITS
-from reach.limits.base import Fine, Now
-from reach.limits.brake import BrakeModel
+from reach.limits.base import Fine, Limit, Now
+from reach.qp.problem import QpProblem
 from scipy.optimize import linprog
 
 PLANNED = [name for name, kind in LIMITS.items() if kind.family != "none"]
@@ -54,27 +54,23 @@ def setting(margins: str) -> tuple[Cell, Arm, list[Moment]]:
         twists = np.repeat(rng.normal(size=(4, 6)) * np.repeat([2.0, 6.0], 3), 50, axis=0)
         tried = following(replace(cell, arm=replace(cell.arm, start=tuple(start))), np.arange(200) * 0.001, twists)
         reference = build_reference(tried, tried.follow, *arm.pose(start))
-        motion = roll(tried, arm, limits, reference, start, 0.0).motion
-        brake = BrakeModel(
-            *(np.minimum(np.abs(limits[k].kept_lo), np.abs(limits[k].kept_hi)) for k in BRAKED_BY),
-            arm.at(motion.q[0], motion.v[0]).mass.copy(),
-        )
-        last = len(motion.q) - 2
+        rolled = roll(tried, arm, limits, reference, start, 0.0)
+        last = len(rolled.sent.q) - 2
         rows = np.unique(np.r_[1, 2, np.linspace(3, last, 12).astype(int)])
-        moments += [moment(cell, arm, brake, motion, int(k)) for k in rows]
+        moments += [moment(arm, rolled, int(k)) for k in rows]
     return cell, arm, moments
 
 
-def moment(cell: Cell, arm: Arm, brake: BrakeModel, motion: Motion, k: int) -> Moment:
-    """Row k of a motion as the step after it sees it."""
-    before, state = (State(*(x.copy() for x in arm.at(motion.q[i], motion.v[i]))) for i in (k - 1, k))
-    torque = before.mass @ motion.a[k - 1] + before.bias
-    ability = brake.at(state, (state.bias - before.bias) / cell.period_s)
-    now = Now(motion.q[k], motion.v[k], motion.a[k - 1], torque, state, ability, cell.period_s)
-    return Moment(motion.q[k - 1], motion.v[k - 1], motion.a[k - 1], now)
+def moment(arm: Arm, rolled: Roll, k: int) -> Moment:
+    """Step k of a roll as the step saw it."""
+    q, v, a = rolled.sent.q, rolled.sent.v, rolled.sent.a
+    dt = rolled.sent.period_s
+    now = now_at(arm, q[k], v[k], a * dt, rolled.torque, rolled.brakes[k], k, dt)
+    state = State(*(part.copy() for part in now.state))
+    return Moment(q[k - 1], v[k - 1], a[k - 1], now._replace(state=state))
 
 
-def second_period(arm: Arm, item: Moment, change: np.ndarray) -> Fine:
+def second_period(arm: Arm, limits: dict[str, Limit], item: Moment, change: np.ndarray) -> Fine:
     """The two periods around a state as a motion, measured."""
     dt = item.now.period_s
     q, v = item.now.q, item.now.v
@@ -86,12 +82,15 @@ def second_period(arm: Arm, item: Moment, change: np.ndarray) -> Fine:
         np.array([item.v, v, end]),
         np.array([item.a, change / dt, np.zeros(arm.n)]),
     )
-    return refine(arm, Chain.of(arm), motion)[0]
+    return measure(arm, Chain.of(arm), limits, motion).fine
 
 
 def allowed(rows: Rows, now: Now, box: tuple[np.ndarray, np.ndarray]) -> tuple[np.ndarray, ...]:
     """Polytope (G, h, lo, hi) of a step's rows within a box."""
-    problem = rows.fill(now)
+    n = len(now.q)
+    blank = QpProblem(np.eye(n), np.zeros(n), np.zeros((rows.count, n)), np.zeros(rows.count), *np.zeros((2, n)))
+    rows.look(now)
+    problem = rows.fill(now, blank)
     return problem.G.copy(), problem.h.copy(), np.maximum(problem.lb, box[0]), np.minimum(problem.ub, box[1])
 
 
@@ -121,7 +120,7 @@ def largest_uses(margins: str, alone: str | None) -> dict[str, float]:
         speed = item.now.state.jacobian[:3] @ item.now.v
         objectives[0] = speed @ item.now.state.jacobian[:3]
         for objective in objectives:
-            fine = second_period(arm, item, corner(polytope, objective))
+            fine = second_period(arm, limits, item, corner(polytope, objective))
             for name in PLANNED if alone is None else [alone]:
                 share = limits[name].utilisation(limits[name].measure(fine))
                 worst[name] = max(worst[name], float(share[FINE : 2 * FINE].max()))
@@ -153,7 +152,9 @@ def test_kept_back_lies_inside_stated(name):
         assert limit.name == name
         assert limit.known.all()
         assert np.all(limit.kept_hi <= limit.hi) and np.all(limit.kept_lo >= limit.lo)
-        assert len(limit.sources) == len(limit.joints) == len(limit.joint_units) == len(limit.known)
+        n = len(limit.known)
+        np.testing.assert_array_equal(limit.kept, np.r_[limit.kept_hi, -limit.kept_lo])
+        assert n == len(limit.sources) == len(limit.joints) == len(limit.joint_units)
 
 
 @pytest.mark.parametrize("name", LIMITS)

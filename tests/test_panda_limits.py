@@ -76,7 +76,7 @@ def test_torque_ramp_takes_its_time(cell, torque, joint, ramp_s):
         still = np.zeros_like(values)
         before = np.zeros(7)
         before[joint] = torque[0]
-        fine = Fine(t, still, still, still, values, np.zeros((len(t), 6)), 4, np.zeros(7), before, 0.001)
+        fine = Fine(t, still, still, still, values, np.zeros(len(t)), 4, np.zeros(7), before, 0.001)
         rate, size = limits["torque rate"], limits["torque"]
         return tuple(float(k.utilisation(k.measure(fine))[:, joint].max()) for k in (rate, size))
 

@@ -159,7 +159,7 @@ def worst_uses(cell: Cell, rolls: int, seed: int) -> dict[str, float]:
         reference = build_reference(tried, tried.follow, *arm.pose(start))
         rolled = roll(tried, arm, limits, reference, start, 0.0)
         assert rolled.failed_steps == 0 and rolled.stopped
-        fine = measure(arm, chain, limits, rolled.motion).fine
+        fine = measure(arm, chain, limits, rolled.sent).fine
         position = limits["position"]
         past = np.maximum(fine.q - position.hi, position.lo - fine.q).max()
         worst["position"] = max(worst["position"], float(past))
