@@ -80,7 +80,7 @@ class Arm:
         bias = data.nle + self._losses(v)
         return State(
             pin.getFrameJacobian(model, data, frame, WORLD_AXES),
-            pin.getFrameJacobianTimeVariation(model, data, frame, WORLD_AXES) @ v,
+            pin.getFrameJacobianTimeVariation(model, data, frame, WORLD_AXES).dot(v),
             data.M,
             bias,
         )
@@ -103,7 +103,7 @@ class Arm:
         pin.computeJointJacobiansTimeVariation(self._model, self._scratch, q, v)
         pin.updateFramePlacement(self._model, self._scratch, self._frame)
         change = pin.getFrameJacobianTimeVariation(self._model, self._scratch, self._frame, WORLD_AXES)
-        return pin.getFrameJacobian(self._model, self._scratch, self._frame, WORLD_AXES), change @ v
+        return pin.getFrameJacobian(self._model, self._scratch, self._frame, WORLD_AXES), change.dot(v)
 
     def torque(self, q: Array, v: Array, a: Array) -> Array:
         """Joint torques (m, n) in N·m of m states at once, friction, damping and rotor inertia included.

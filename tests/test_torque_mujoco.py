@@ -43,7 +43,8 @@ def engine(cell: Cell) -> mujoco.MjModel:
     face.add_geom(pos=[0, 0, -paddle.thickness_m / 2], mass=paddle.mass_kg, **size)
     for part in paddle.parts:
         point = face.add_body(pos=part.com_m)
-        point.mass, point.inertia, point.explicitinertial = part.mass_kg, [1e-15] * 3, True
+        point.mass, point.ipos, point.inertia = part.mass_kg, [0.0] * 3, [1e-15] * 3
+        point.explicitinertial = True
     spec.option.gravity = cell.arm.gravity_m_s2
     model = spec.compile()
     model.opt.disableflags |= mujoco.mjtDisableBit.mjDSBL_CONSTRAINT

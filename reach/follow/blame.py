@@ -61,7 +61,7 @@ class Blames:
         """One blame for each row with a multiplier, on the kind whose lane is tightest there."""
         if not lanes.kinds:
             return []
-        lanes.fill(now)
+        lanes.tightest(now)
         n, found = self._arm.n, []
         for row in np.flatnonzero(multipliers > ACTIVE):
             joint = int(row % n)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import numpy as np
+from scipy.linalg.lapack import dposv
 
 from reach.arm import Arm
 from reach.cell import Array, Cell
@@ -23,18 +24,21 @@ def demanded_motion(cell: Cell, arm: Arm, reference: Reference, start: Array) ->
     weight = task_weight(cell)
     commanded = int(np.ceil((reference.end_s - reference.t_s[0]) / dt - 1e-6))
     targets = reference.targets(dt, commanded)
-    gain, diagonal = cell.solver.posture_gain_per_s, np.arange(n)
+    gain, column = cell.solver.posture_gain_per_s, weight[:, None]
+    task, matrix = np.empty((6, n)), np.empty((n, n))
+    flat, diagonal = task.reshape(-1), matrix.reshape(-1)[:: n + 1]
     q, v = start.copy(), np.zeros(n)
     rows_q, rows_v = [q], [v]
     for target in targets:
         jacobian, drift = arm.twist_terms(q, v)
-        task = jacobian * weight[:, None]
-        matrix = task.T @ task
-        share = POSTURE_WEIGHT / n * matrix.trace()
-        matrix[diagonal, diagonal] += share
-        wanted = (weight * (target - drift * dt)) @ task + (share * gain) * (start - q)
-        next_v = np.linalg.solve(matrix, wanted)
-        np.clip(next_v, -RUNAWAY, RUNAWAY, out=next_v)
+        np.multiply(jacobian, column, out=task)
+        np.dot(task.T, task, out=matrix)
+        share = POSTURE_WEIGHT / n * flat.dot(flat)  # of the trace
+        diagonal += share
+        wanted = (weight * (target - drift * dt)).dot(task)
+        wanted += (share * gain) * (start - q)
+        _, next_v, _ = dposv(matrix, wanted)
+        np.minimum(np.maximum(next_v, -RUNAWAY, out=next_v), RUNAWAY, out=next_v)
         q = q + (v + next_v) * (dt / 2)
         v = next_v
         rows_q.append(q)

@@ -120,7 +120,8 @@ class _Roller:
         tighter = [limits[k].tighter for k in ("acceleration", "jerk", "torque", "torque rate")]
         self.brakes = BrakeModel(*tighter, LOOK_EVERY * self.dt)
         self.commanded = int(np.ceil((reference.end_s - reference.t_s[0]) / self.dt - 1e-6))
-        self.targets = reference.targets(self.dt, self.commanded)
+        self.targets = list(reference.targets(self.dt, self.commanded))
+        self.rest = np.zeros(6)
         if gain > 0:
             instants = reference.t_s[0] + self.dt * np.arange(self.commanded)
             _, self.wanted_position, self.wanted_rotation = reference.at(instants)
@@ -181,7 +182,7 @@ class _Roller:
         if look:
             self.stepper.rows.look(now)
         change = self._solve(k, now, target)
-        self.last_torque = state.mass @ (change / dt)
+        self.last_torque = state.mass.dot(change / dt)
         self.last_torque += state.bias
         next_v = v + change
         next_q = (v + next_v) * (dt / 2)
@@ -208,7 +209,7 @@ class _Roller:
     def _target(self, k: int) -> Array:
         """The twist (6,) to go for: the command's, with the pose error fed back, or zero while stopping."""
         if k >= self.commanded:
-            return np.zeros(6)
+            return self.rest
         target = self.targets[k]
         if self.gain > 0:
             position, rotation = self.arm.pose(self.drive.q if self.drive else self.q[k])
@@ -328,7 +329,7 @@ class _Roller:
         lanes = self.stepper.rows.joint
         now = self._now(k)
         lanes.look(now)
-        lanes.fill(now)
+        lanes.tightest(now)
         sides = lanes.values[:, [joint, joint + self.arm.n]]
         return lanes.kinds[int(np.argmin(sides.min(axis=1)))].name if lanes.kinds else "acceleration"
 

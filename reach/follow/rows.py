@@ -21,30 +21,37 @@ class Lanes:
     values : (k, 2n) how far a step may go, positive directions first
     """
 
-    def __init__(self, limits: dict[str, Limit], family: str, n: int, period_s: float):
+    def __init__(self, limits: dict[str, Limit], family: str, n: int, widest: float):
         self.kinds = tuple(k for k in limits.values() if k.family == family and k.known.any())
         self.values = np.full((len(self.kinds), 2 * n), np.inf)
         self._views = list(zip(self.kinds, self.values, strict=True))
         self._asked: list[tuple[Limit, Array]] = []
+        self._constant = np.full(2 * n, widest)
+        self._most = np.empty(2 * n)
         self._fresh = True
 
     def look(self, now: Now) -> None:
-        """Ask each kind whether it has anything to say until the next look."""
+        """Ask each kind whether it has anything to say until the next look; constant ones once for all."""
         self._asked = []
         for kind, lane in self._views:
             if kind.constant:
                 if self._fresh:
                     kind.rows(now, lane)
+                    np.minimum(self._constant, lane, out=self._constant)
             elif kind.look(now):
                 self._asked.append((kind, lane))
             else:
                 lane.fill(np.inf)
         self._fresh = False
 
-    def fill(self, now: Now) -> None:
-        """Write the lanes for a state."""
+    def tightest(self, now: Now) -> Array:
+        """Write the lanes for a state; the tightest of each row (2n,), to be read before the next call."""
+        most = self._most
+        np.copyto(most, self._constant)
         for kind, lane in self._asked:
             kind.rows(now, lane)
+            np.minimum(most, lane, out=most)
+        return most
 
 
 class Rows:
@@ -62,8 +69,8 @@ class Rows:
     """
 
     def __init__(self, limits: dict[str, Limit], n: int, period_s: float):
-        self.joint = Lanes(limits, "joint", n, period_s)
-        self.torque = Lanes(limits, "torque", n, period_s)
+        self.joint = Lanes(limits, "joint", n, FREE)
+        self.torque = Lanes(limits, "torque", n, np.inf)
         tool = [k for k in limits.values() if isinstance(k, ToolSpeed) and k.known.any()]
         self.tool = tool[0] if tool else None
         known = [k.known for k in self.torque.kinds] or [np.zeros(n, bool)]
@@ -73,7 +80,6 @@ class Rows:
         self._both = np.concatenate([self.limited, self.limited + n])
         self._matrix_scale = (self.scale / period_s)[:, None]
         self._scale_twice = np.concatenate([self.scale, self.scale])
-        self._bias = np.empty(2 * n)
 
     @property
     def count(self) -> int:
@@ -91,8 +97,7 @@ class Rows:
         Returns that problem, or where the tool's cap is near another one with its rows added.
         """
         n = self._n
-        self.joint.fill(now)
-        most = np.minimum.reduce(self.joint.values, axis=0, initial=FREE)
+        most = self.joint.tightest(now)
         p.ub[:] = most[:n]
         np.negative(most[n:], out=p.lb)
         if self.limited.size:
@@ -103,12 +108,10 @@ class Rows:
         return QpProblem(p.P, p.q, np.vstack([p.G, extra[0]]), np.append(p.h, extra[1]), p.lb, p.ub)
 
     def _fill_torque(self, now: Now, p: QpProblem) -> None:
-        self.torque.fill(now)
-        n, m, bias = self._n, len(self.limited), self._bias
-        bias[:n] = now.state.bias
-        np.negative(now.state.bias, out=bias[n:])
-        most = np.minimum.reduce(self.torque.values, axis=0)
-        most -= bias
+        n, m, bias = self._n, len(self.limited), now.state.bias
+        most = self.torque.tightest(now)
+        most[:n] -= bias
+        most[n:] += bias
         if self._all:
             np.multiply(most, self._scale_twice, out=p.h)
             np.multiply(now.state.mass, self._matrix_scale, out=p.G[:m])

@@ -63,8 +63,9 @@ class Stepper:
         self.solver = Solver(cell.solver.name, cell.solver.fallback)
         self.block = QpBlock(BLOCK, n, self.rows.count)
         self.task, self.error = np.empty((BLOCK, 6, n)), np.empty((BLOCK, 6))
-        self._slots = list(zip(self.block.problems, self.task, self.error, strict=True))
-        self._diagonals = [P.reshape(-1)[:: n + 1] for P in self.block.P]
+        flat = [task.reshape(-1) for task in self.task]
+        diagonals = [P.reshape(-1)[:: n + 1] for P in self.block.P]
+        self._slots = list(zip(self.block.problems, self.task, self.error, flat, diagonals, strict=True))
         self._period_s = cell.period_s
         self.weight = task_weight(cell)
         self._weight_column = self.weight[:, None]
@@ -72,17 +73,16 @@ class Stepper:
 
     def prepare(self, now: Now, target: Array, posture_velocity: Array, slot: int) -> QpProblem:
         """Rows and cost of a step toward a twist (6,), written into a slot; returns the problem to solve."""
-        problem, task, error = self._slots[slot]
+        problem, task, error, flat, diagonal = self._slots[slot]
         np.multiply(now.state.jacobian, self._weight_column, out=task)
         np.multiply(now.state.drift, self._period_s, out=error)
         error -= target
         error *= self.weight
-        error += task @ now.v
-        np.matmul(task.T, task, out=problem.P)
-        diagonal = self._diagonals[slot]
-        share = self._share * np.add.reduce(diagonal)
+        error += task.dot(now.v)
+        np.dot(task.T, task, out=problem.P)
+        share = self._share * flat.dot(flat)  # trace of P
         diagonal += share
-        np.matmul(error, task, out=problem.q)
+        np.dot(error, task, out=problem.q)
         problem.q += share * (now.v - posture_velocity)
         return self.rows.fill(now, problem)
 
