@@ -120,8 +120,8 @@ class Arm:
     def base_wrench(self, q: Array, v: Array, a: Array) -> Array:
         """The wrench (m, 6) that the stand must give to the arm's moving part in m states (m, n).
 
-        Force in N, then moment in N·m about the base origin, base axes. The base is made a body on a six-axis joint that
-        is held still; its first six generalised forces are the wrench.
+        Force in N, then moment in N·m about the base origin, base axes. The base is made a body
+        on a six-axis joint that is held still; its first six generalised forces are the wrench.
         """
         if self._floating is None:
             self._floating = _on_held_base(self._model)

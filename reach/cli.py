@@ -2,12 +2,9 @@
 
 from __future__ import annotations
 
-import os
-
-for _name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS"):
-    os.environ.setdefault(_name, "1")  # matrices here are small: more threads only cost; read as numpy loads
-
 import argparse
+import io
+import os
 import sys
 import traceback
 from collections.abc import Callable, Sequence
@@ -24,6 +21,11 @@ EXITS = """exit codes:
 
 def main(arguments: Sequence[str] | None = None) -> int:
     """Run the command; returns its exit code."""
+    for name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS"):
+        os.environ.setdefault(name, "1")  # matrices here are small; read by numpy, which is not loaded yet
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="backslashreplace")  # a terminal that lacks a sign still shows the rest
     options = _parser().parse_args(arguments)
     try:
         return int(options.run(options))
@@ -36,8 +38,11 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except BrokenPipeError:
         sys.stderr.close()
         return 4
-    except Exception:  # noqa: BLE001 - a fault of this program, said so
-        print("strikecheck failed, by a fault of its own; please report this with the lines above it:", file=sys.stderr)
+    except Exception:  # a fault of this program, said so
+        print(
+            "strikecheck failed, by a fault of its own; please report this with the lines above it:",
+            file=sys.stderr,
+        )
         traceback.print_exc()
         return 4
 
@@ -69,11 +74,19 @@ def _parser() -> argparse.ArgumentParser:
 
 def _common(parser: argparse.ArgumentParser, command: str) -> None:
     """Options that every command with a verdict has."""
-    parser.add_argument("--out", metavar="DIR", default=f"out/{command}", help="folder for the results (default: %(default)s)")
-    parser.add_argument("--json", action="store_true", help="the verdict as JSON on standard output, nothing else there")
+    parser.add_argument(
+        "--out", metavar="DIR", default=f"out/{command}", help="folder for the results (default: %(default)s)"
+    )
+    parser.add_argument(
+        "--json", action="store_true", help="the verdict as JSON on standard output, nothing else there"
+    )
     parser.add_argument("--quiet", action="store_true", help="no summary and no progress")
     parser.add_argument(
-        "--workers", metavar="N", type=_count, default=min(2, os.cpu_count() or 1), help="processes (default: %(default)s)"
+        "--workers",
+        metavar="N",
+        type=_count,
+        default=min(2, os.cpu_count() or 1),
+        help="processes (default: %(default)s)",
     )
     parser.add_argument("--junit", metavar="FILE", help="also write a JUnit XML file")
 
@@ -103,7 +116,7 @@ def _follow(options: argparse.Namespace) -> int:
     if options.junit:
         write_files({Path(options.junit): WRITERS["junit"](result)})
     if options.json:
-        print(WRITERS["json"](result))
+        print(WRITERS["json"](result), end="")
     elif not options.quiet:
         print(WRITERS["text"](result), end="")
         print(f"\nwritten: {', '.join(str(path) for path in written)}")
@@ -117,5 +130,3 @@ def _progress(quiet: bool) -> Callable[[str], None] | None:
     if not sys.stderr.isatty():
         return lambda text: print(text, file=sys.stderr)
     return lambda text: print(f"\r\033[K{text} …", end="", file=sys.stderr, flush=True)
-
-

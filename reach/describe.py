@@ -41,7 +41,8 @@ def _arm_lines(cell: Cell, arm: Arm) -> list[str]:
         f"Arm        {spec.urdf_path}",
         f"Chain      {arm.n} joints to {spec.tip}: " + ", ".join(f"{j.name} ({j.kind})" for j in spec.joints),
         *([f"Held       off the chain: {held}"] if held else []),
-        f"Base       at {_vector(spec.base.xyz_m)} m, roll pitch yaw {_vector(np.degrees(spec.base.rpy_rad))}° in the world",
+        f"Base       at {_vector(spec.base.xyz_m)} m in the world, roll pitch yaw "
+        f"{_vector(np.degrees(spec.base.rpy_rad))}°",
         f"Gravity    {_vector(gravity)} m/s² in the base's axes",
         f"Mass       {moving:.2f} kg moves, {last:.2f} kg of it behind the last joint, paddle included",
         f"Control    every {1000 * cell.period_s:g} ms, solver {cell.solver.name}, else {cell.solver.fallback}",
@@ -100,14 +101,19 @@ def _paddle_lines(cell: Cell) -> list[str]:
     if cell.ball is not None:
         drag = f"drag coefficient {cell.ball.drag_coefficient:g}" if cell.ball.drag_coefficient else "no drag"
         lines.append(
-            f"Ball       {1000 * cell.ball.mass_kg:g} g, radius {1000 * cell.ball.radius_m:g} mm, {drag}, {cell.ball.source}"
+            f"Ball       {1000 * cell.ball.mass_kg:g} g, radius {1000 * cell.ball.radius_m:g} mm, "
+            f"{drag}, {cell.ball.source}"
         )
     if cell.contact is not None:
-        lines.append(f"Contact    restitution {cell.contact.restitution:g}, friction {cell.contact.friction:g}, {cell.contact.source}")
+        lines.append(
+            f"Contact    restitution {cell.contact.restitution:g}, friction {cell.contact.friction:g}, "
+            f"{cell.contact.source}"
+        )
     if cell.drive is not None:
         drive = cell.drive
         lines.append(
-            f"Drive      delay {1000 * drive.delay_s:g} ms, lag {1000 * drive.lag_s:g} ms, jitter ±{1000 * drive.jitter_s:g} ms"
+            f"Drive      delay {1000 * drive.delay_s:g} ms, lag {1000 * drive.lag_s:g} ms, "
+            f"jitter ±{1000 * drive.jitter_s:g} ms"
         )
     return lines
 
@@ -124,7 +130,9 @@ def _log_lines(cell: Cell, arm: Arm, start: Array | None) -> list[str]:
     found = contacts(follow, reference)
     origin = "marked" if found.marked else "guessed from peaks"
     times = ", ".join(f"{t:.3f}" for t in found.t_s[:12]) + (", …" if len(found.t_s) > 12 else "")
-    lines.append(f"Strikes    {len(found.t_s)} {origin}" + (f", at {times} s" if times else ": judged throughout"))
+    lines.append(
+        f"Strikes    {len(found.t_s)} {origin}" + (f", at {times} s" if times else ": judged throughout")
+    )
     if better := better_reading(cell):
         lines.append(f"           {better}")
     lines += [f"           mended: {mend}" for mend in follow.commands.mends]
@@ -146,7 +154,9 @@ def _gap_lines(cell: Cell, limits: dict[str, Limit]) -> list[str]:
     unknown = [name for name in cell.accept.require if not limits[name].known.all()]
     lines = [f"Unchecked  {', '.join(not_checked(cell, limits))}"]
     if unknown:
-        lines.append(f"           undecided at best, since these must be known and are not: {', '.join(unknown)}")
+        lines.append(
+            f"           undecided at best, since these must be known and are not: {', '.join(unknown)}"
+        )
     return lines
 
 

@@ -35,7 +35,9 @@ class Chain:
     def of(arm: Arm) -> Chain:
         """The chain of an arm."""
         rotations, offsets, axes = zip(*arm.chain(), strict=True)
-        return Chain(np.array(rotations), np.array(offsets), np.array(axes), arm.sliding, *arm.face_placement())
+        return Chain(
+            np.array(rotations), np.array(offsets), np.array(axes), arm.sliding, *arm.face_placement()
+        )
 
     def placements(self, q: Array) -> tuple[Array, Array, Array, Array]:
         """Strike points, paddle axes, and each joint's origin and axis, for m postures.
@@ -94,7 +96,9 @@ def turns(axis: Array, angle: Array) -> Array:
     x, y, z = axis
     cross = np.array([[0.0, -z, y], [z, 0.0, -x], [-y, x, 0.0]])
     return np.asarray(
-        np.eye(3) + np.sin(angle)[:, None, None] * cross + (1 - np.cos(angle))[:, None, None] * (cross @ cross)
+        np.eye(3)
+        + np.sin(angle)[:, None, None] * cross
+        + (1 - np.cos(angle))[:, None, None] * (cross @ cross)
     )
 
 
@@ -106,7 +110,9 @@ def exponential(rotation_vector: Array) -> Array:
     zero = np.zeros_like(x)
     cross = np.array([[zero, -z, y], [z, zero, -x], [-y, x, zero]]).transpose(2, 0, 1)
     return np.asarray(
-        np.eye(3) + np.sin(angle)[:, None, None] * cross + (1 - np.cos(angle))[:, None, None] * (cross @ cross)
+        np.eye(3)
+        + np.sin(angle)[:, None, None] * cross
+        + (1 - np.cos(angle))[:, None, None] * (cross @ cross)
     )
 
 

@@ -72,7 +72,13 @@ def postures(
     lo, hi, middle = _ranges(arm)
     rng = np.random.default_rng(seed)
     guesses = [np.clip(near if near is not None else middle, lo, hi)]
-    guesses += list(rng.uniform(np.maximum(lo, middle - WIDE_RANGE_RAD), np.minimum(hi, middle + WIDE_RANGE_RAD), (starts - 1, arm.n)))
+    guesses += list(
+        rng.uniform(
+            np.maximum(lo, middle - WIDE_RANGE_RAD),
+            np.minimum(hi, middle + WIDE_RANGE_RAD),
+            (starts - 1, arm.n),
+        )
+    )
     scale = np.r_[np.ones(3), np.full(3, max(length, 0.1))]
 
     def errors(q: Array) -> Array:
@@ -85,7 +91,9 @@ def postures(
     found: list[Array] = []
     for guess in guesses:
         inside = np.clip(guess, lo + 1e-9, hi - 1e-9)
-        answer = least_squares(errors, inside, slopes, bounds=(lo, hi), xtol=1e-14, ftol=1e-14, gtol=1e-14, max_nfev=200)
+        answer = least_squares(
+            errors, inside, slopes, bounds=(lo, hi), xtol=1e-14, ftol=1e-14, gtol=1e-14, max_nfev=200
+        )
         miss = errors(answer.x) / scale
         if np.abs(miss[:3]).max() < POSITION_TOLERANCE_M and np.abs(miss[3:]).max() < TILT_TOLERANCE_RAD:
             if all(np.abs(answer.x - other).max() > SAME_POSTURE_RAD for other in found):

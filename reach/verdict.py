@@ -66,7 +66,8 @@ def _failures(evidence: Evidence, accept: Accept) -> list[str]:
     for use in broken_limits(evidence):
         assert use.utilisation is not None
         where = f" of {use.joint}" if use.joint else ""
-        found.append(f"{use.limit}{where} at {100 * use.utilisation:.1f} % of its limit at {use.time_s:.3f} s")
+        when = "" if use.time_s is None else f" at {use.time_s:.3f} s"
+        found.append(f"{use.limit}{where} at {100 * use.utilisation:.1f} % of its limit{when}")
     if evidence.motion is None:
         return found or ["there is no motion"]
     hit = sum(strike.delivered for strike in evidence.strikes)

@@ -1,4 +1,4 @@
-"""Cells and arms for tests: from Denavit-Hartenberg rows, from screws, from the project's robots, from published URDFs."""
+"""Cells and arms for tests: from Denavit-Hartenberg rows, screws, the project's robots and published URDFs."""
 
 from __future__ import annotations
 
@@ -10,6 +10,7 @@ from functools import cache
 from pathlib import Path
 
 import numpy as np
+
 from reach.cell import ArmSpec, Array, Cell, CommandLog, Follow, Joint, JointLimits, Margins, Paddle, Pose
 from reach.formats import load_cell
 

@@ -23,6 +23,7 @@ from builders import (
     standard_dh,
     turn,
 )
+
 from reach.arm import FRICTION_WIDTH_RAD_S, Arm
 from reach.cell import Joint, JointLimits, Paddle, Part, Pose
 from reach.kinematics import Chain
@@ -33,12 +34,12 @@ NEWTON = 1e-9  # N·m, rad·m and the like: rounding of double precision in shor
 X, Y, Z = np.eye(3)
 
 
-# --- PUMA 560 -----------------------------------------------------------------------------------------------------
+# --- PUMA 560
 # Corke & Armstrong-Hélouvry, ICRA 1994, pp 1608-1613, as tabulated in robotics-toolbox-python @a9ed8d4,
 # models/DH/Puma560.py; expected values from its tests/test_DHRobot.py where marked T. g = 9.81 m/s².
 PUMA_QN = np.array([0, np.pi / 4, np.pi, 0, np.pi / 4, 0])
-PUMA_ARMATURE = (
-    np.array([-62.6111, 107.815, -53.7063, 76.0364, 71.923, 76.686]) ** 2 * np.repeat([200e-6, 33e-6], 3)
+PUMA_ARMATURE = np.array([-62.6111, 107.815, -53.7063, 76.0364, 71.923, 76.686]) ** 2 * np.repeat(
+    [200e-6, 33e-6], 3
 )
 
 
@@ -113,7 +114,7 @@ def test_puma_directional_mass(armature, expected):
     np.testing.assert_allclose(1 / np.diag(inverse), expected, atol=HALF_DIGIT)
 
 
-# --- Lynch & Park, Modern Robotics: the three-link example --------------------------------------------------------
+# --- Lynch & Park, Modern Robotics: the three-link example
 # NxRLab/ModernRobotics @cbd41fd, core.py, docstrings of InverseDynamics, MassMatrix and their neighbours. g = 9.8 m/s².
 # The first screw (1, 0, 1, 0, 1, 0) is no unit screw: |ω| = √2, so that joint's values are scaled by √2.
 MR_SCALE = np.array([np.sqrt(2), 1.0, 1.0])
@@ -147,9 +148,7 @@ def modern_robotics_3() -> Arm:
     before, bodies = np.zeros(3), []
     for (omega, v), (axes, origin), mass, moment in zip(screws, frames, masses, moments, strict=False):
         axis, point, _ = screw(omega, v)
-        bodies.append(
-            Body(point - before, axis, mass, origin - point, np.diag(moment), np.eye(3), axes)
-        )
+        bodies.append(Body(point - before, axis, mass, origin - point, np.diag(moment), np.eye(3), axes))
         before = point
     axes, origin = frames[-1]
     return Arm(chain_arm(bodies, origin - before, axes, gravity_m_s2=(0, 0, -9.8)), WEIGHTLESS)
@@ -191,7 +190,7 @@ def test_three_link_forward_dynamics():
     np.testing.assert_allclose(answer, (-0.97392907, 25.58466784, -32.91499212), **MR_DIGITS)
 
 
-# --- Lynch & Park, Modern Robotics, examples 4.5 and 4.7: link data in public ports, results from memory ----------
+# --- Lynch & Park, Modern Robotics, examples 4.5 and 4.7: link data in public ports, results from memory
 def test_ur5_example_4_5():
     w1, w2, l1, l2, h1, h2 = 0.109, 0.082, 0.425, 0.392, 0.089, 0.095
     screws = (
@@ -230,7 +229,7 @@ def test_wam_example_4_7():
     np.testing.assert_allclose(rotation, [[0, 0, -1], [0, 1, 0], [1, 0, 0]], atol=NEWTON)
 
 
-# --- Two links in a plane: closed forms ---------------------------------------------------------------------------
+# --- Two links in a plane: closed forms
 @pytest.mark.parametrize(
     ("q", "v", "a", "expected"),
     [
@@ -331,7 +330,7 @@ def test_link2_jacobian_closed_form():
         np.testing.assert_allclose(position, expected, atol=NEWTON)
 
 
-# --- The paddle as a solid ----------------------------------------------------------------------------------------
+# --- The paddle as a solid
 def solid(points: np.ndarray, mass_kg: float) -> tuple[np.ndarray, np.ndarray]:
     """Centre (3,) and inertia (3, 3) about it of equal small masses at points (k, 3)."""
     centre = points.mean(axis=0)
@@ -354,7 +353,9 @@ def test_disc_against_its_own_solid():
     body = paddle_mass(Paddle(Pose(), mass, "disc", radius_m=radius, thickness_m=thickness))
     centre, inertia = solid(points, mass)
     np.testing.assert_allclose(body.com_m, centre, atol=1e-12)
-    np.testing.assert_allclose(body.inertia_kg_m2, inertia, rtol=1e-5, atol=1e-12)  # midpoint rule, 200 layers
+    np.testing.assert_allclose(
+        body.inertia_kg_m2, inertia, rtol=1e-5, atol=1e-12
+    )  # midpoint rule, 200 layers
 
 
 def test_plate_against_its_own_solid():
@@ -363,7 +364,9 @@ def test_plate_against_its_own_solid():
     body = paddle_mass(Paddle(Pose(), mass, "plate", size_m=size, thickness_m=thickness))
     centre, inertia = solid(np.column_stack([x.ravel(), y.ravel(), z.ravel()]), mass)
     np.testing.assert_allclose(body.com_m, centre, atol=1e-12)
-    np.testing.assert_allclose(body.inertia_kg_m2, inertia, rtol=3e-4, atol=1e-12)  # midpoint rule: 1/n² = 2.8e-4
+    np.testing.assert_allclose(
+        body.inertia_kg_m2, inertia, rtol=3e-4, atol=1e-12
+    )  # midpoint rule: 1/n² = 2.8e-4
 
 
 def test_thin_disc_and_thin_plate_handbook_values():
@@ -395,7 +398,7 @@ def test_part_inertia_in_face_axes():
     np.testing.assert_allclose(together.inertia_kg_m2, expected, atol=1e-15)
 
 
-# --- A published seven-axis model, read from its URDF -------------------------------------------------------------
+# --- A published seven-axis model, read from its URDF
 # Franka Emika FER ("Panda"), maker's Denavit-Hartenberg table (frankarobotics/docs @5f28326); positions recomputed.
 @pytest.mark.parametrize(
     ("mount", "q", "expected", "digit"),
@@ -413,7 +416,7 @@ def test_fer_forward_kinematics(tmp_path, mount, q, expected, digit):
     np.testing.assert_allclose(arm.pose(np.array(q, dtype=float))[0], expected, atol=digit)
 
 
-# --- The two kinematics, and derivatives --------------------------------------------------------------------------
+# --- The two kinematics, and derivatives
 HANGING = "base = { xyz_m = [0.3, -0.2, 1.9], rpy_deg = [180.0, 20.0, 30.0] }"
 
 
@@ -451,9 +454,7 @@ def test_jacobian_and_its_drift_by_differences(tmp_path):
             q, v = rng.uniform(-2, 2, arm.n), rng.uniform(-2, 2, arm.n)
             state = arm.at(q, v)
             ahead, behind = arm.jacobian(q + h * v), arm.jacobian(q - h * v)
-            np.testing.assert_allclose(
-                state.jacobian[:3] @ v, (ahead[0] - behind[0]) / (2 * h), atol=1e-7
-            )
+            np.testing.assert_allclose(state.jacobian[:3] @ v, (ahead[0] - behind[0]) / (2 * h), atol=1e-7)
             spin = (ahead[1] - behind[1]) / (2 * h) @ arm.pose(q)[1].T
             turning = np.array([spin[2, 1], spin[0, 2], spin[1, 0]])
             np.testing.assert_allclose(state.jacobian[3:] @ v, turning, atol=1e-7)
@@ -462,7 +463,7 @@ def test_jacobian_and_its_drift_by_differences(tmp_path):
                 np.testing.assert_allclose(mine, theirs, atol=1e-12)
 
 
-# --- Torque's parts -----------------------------------------------------------------------------------------------
+# --- Torque's parts
 def test_torque_needs_mass_bias_and_losses():
     cell = robot_cell("bench7")
     arm = Arm(cell.arm, cell.paddle)
@@ -479,10 +480,10 @@ def test_torque_needs_mass_bias_and_losses():
     np.testing.assert_allclose(arm.torque(q, v, a) - without.torque(q, v, a), expected, atol=1e-10)
     for row in range(6):
         state = arm.at(q[row], v[row])
+        np.testing.assert_allclose(state.mass @ a[row] + state.bias, arm.torque(q, v, a)[row], atol=1e-10)
         np.testing.assert_allclose(
-            state.mass @ a[row] + state.bias, arm.torque(q, v, a)[row], atol=1e-10
+            arm.static_torque(q[row]), without.torque(q, 0 * v, 0 * a)[row], atol=1e-10
         )
-        np.testing.assert_allclose(arm.static_torque(q[row]), without.torque(q, 0 * v, 0 * a)[row], atol=1e-10)
 
 
 def test_gravity_stays_in_the_world_when_the_base_turns():
@@ -501,7 +502,7 @@ def test_gravity_stays_in_the_world_when_the_base_turns():
     assert np.abs(upright.static_torque(q[0])).max() > 1.0
 
 
-# --- What the stand carries ---------------------------------------------------------------------------------------
+# --- What the stand carries
 def test_base_load_at_rest_is_the_weight():
     # By hand: the moving bodies of robots/link2 (2.4, 1.2 kg) and the disc (0.3 kg) in posture (0.4, 0.7).
     base = Pose((0.2, 0.3, 0.5), (0.3, -0.2, 0.4))
@@ -541,7 +542,7 @@ def test_base_load_in_motion_is_momentum_change():
     np.testing.assert_allclose(wrench[0, 3:], moment, atol=1e-10)
 
 
-# --- Joints beside the chain --------------------------------------------------------------------------------------
+# --- Joints beside the chain
 def camera_text(held: float) -> str:
     """bench7 with its tip on link6, so that j7 and the camera bracket are both beside the chain."""
     start = {name: q for name, q in WORKING["bench7"].items() if name != "j7"}
@@ -568,7 +569,9 @@ def test_held_joint_moves_its_mass():
 def test_held_joint_is_the_joint_welded_there(tmp_path):
     text = (ROBOTS / "bench7" / "bench7.urdf").read_text(encoding="utf-8")
     welded = text.replace('name="wrist_cam" type="revolute"', 'name="wrist_cam" type="fixed"')
-    welded = welded.replace('<origin xyz="0.095 0 0.02" rpy="0 0 0"/>', '<origin xyz="0.095 0 0.02" rpy="0 0.5 0"/>')
+    welded = welded.replace(
+        '<origin xyz="0.095 0 0.02" rpy="0 0 0"/>', '<origin xyz="0.095 0 0.02" rpy="0 0.5 0"/>'
+    )
     assert welded.count('rpy="0 0.5 0"') == 1 and welded.count('type="fixed"') == 1
     path = tmp_path / "welded.urdf"
     path.write_text(welded, encoding="utf-8")

@@ -8,6 +8,8 @@ from functools import cache
 import numpy as np
 import pytest
 from builders import NO_MARGINS, following, robot_cell
+from scipy.optimize import linprog
+
 from reach.arm import Arm, State
 from reach.cell import Cell, Joint, Margins
 from reach.evidence.measure import measure
@@ -20,7 +22,6 @@ from reach.kinematics import Chain
 from reach.limits import LIMITS
 from reach.limits.base import Fine, Limit, Now
 from reach.qp.problem import QpProblem
-from scipy.optimize import linprog
 
 PLANNED = [name for name, kind in LIMITS.items() if kind.family != "none"]
 # Rows hold to the solver's check of them (1e-6 of a limit); drift inside a period is covered by what a kind keeps back.
@@ -44,14 +45,18 @@ def weaker(joint: Joint) -> Joint:
     """The joint with half its torque, so that torque limits are met before all others."""
     torque = joint.limits.torque
     assert torque is not None
-    return replace(joint, limits=replace(joint.limits, torque=replace(torque, lo=torque.lo / 2, hi=torque.hi / 2)))
+    return replace(
+        joint, limits=replace(joint.limits, torque=replace(torque, lo=torque.lo / 2, hi=torque.hi / 2))
+    )
 
 
 @cache
 def setting(margins: str, variant: str) -> tuple[Cell, Arm, list[Moment]]:
     """bench7 and states of violent motions on it; between the variants every limit is met somewhere."""
     speed = 1.2 if variant == "slow tool" else 20.0
-    cell = replace(robot_cell("bench7", rest=f'[tool]\nspeed_m_s = {speed}\nsource = "test"\n'), margins=MARGINS[margins])
+    cell = replace(
+        robot_cell("bench7", rest=f'[tool]\nspeed_m_s = {speed}\nsource = "test"\n'), margins=MARGINS[margins]
+    )
     if variant == "weak motors":
         cell = replace(cell, arm=replace(cell.arm, joints=tuple(weaker(j) for j in cell.arm.joints)))
     arm, limits = Arm(cell.arm, cell.paddle), build_limits(cell)
@@ -70,8 +75,9 @@ def setting(margins: str, variant: str) -> tuple[Cell, Arm, list[Moment]]:
         reference = build_reference(tried, tried.follow, *arm.pose(start))
         rolled = roll(tried, arm, limits, reference, start, 0.0)
         last = len(rolled.sent.q) - 2
-        rows = np.unique(np.r_[1, 2, np.linspace(3, last, 12).astype(int)])
-        moments += [moment(arm, rolled, int(k)) for k in rows]
+        rows = set(np.r_[1, 2, np.linspace(3, last, 8).astype(int)].tolist())
+        rows -= {what.step for what in rolled.gave_way}  # there the rows had no common point
+        moments += [moment(arm, rolled, k) for k in sorted(rows)]
     return cell, arm, moments
 
 
@@ -102,7 +108,9 @@ def second_period(arm: Arm, limits: dict[str, Limit], item: Moment, change: np.n
 def allowed(rows: Rows, now: Now, box: tuple[np.ndarray, np.ndarray]) -> tuple[np.ndarray, ...]:
     """Polytope (G, h, lo, hi) of a step's rows within a box."""
     n = len(now.q)
-    blank = QpProblem(np.eye(n), np.zeros(n), np.zeros((rows.count, n)), np.zeros(rows.count), *np.zeros((2, n)))
+    blank = QpProblem(
+        np.eye(n), np.zeros(n), np.zeros((rows.count, n)), np.zeros(rows.count), *np.zeros((2, n))
+    )
     rows.look(now)
     problem = rows.fill(now, blank)
     return problem.G.copy(), problem.h.copy(), np.maximum(problem.lb, box[0]), np.minimum(problem.ub, box[1])
@@ -111,7 +119,9 @@ def allowed(rows: Rows, now: Now, box: tuple[np.ndarray, np.ndarray]) -> tuple[n
 def corner(polytope: tuple[np.ndarray, ...], objective: np.ndarray) -> np.ndarray:
     """The point of a polytope that is farthest along an objective."""
     G, h, lo, hi = polytope
-    answer = linprog(-objective, G if len(G) else None, h if len(h) else None, bounds=np.column_stack([lo, hi]))
+    answer = linprog(
+        -objective, G if len(G) else None, h if len(h) else None, bounds=np.column_stack([lo, hi])
+    )
     assert answer.status == 0, answer.message
     return np.asarray(answer.x)
 
@@ -149,13 +159,13 @@ def _largest_uses(margins: str, variant: str, alone: str | None) -> dict[str, fl
 @pytest.mark.parametrize("margins", MARGINS)
 @pytest.mark.parametrize("name", PLANNED)
 def test_measure_accepts_what_all_rows_allow(name, margins):
-    assert largest_uses(margins, None)[name] <= 1 + ROUNDING
+    assert largest_uses(margins, None)[name] <= 1 + LIMITS[name].least_margin + ROUNDING
 
 
 @pytest.mark.parametrize("margins", MARGINS)
 @pytest.mark.parametrize("name", PLANNED)
 def test_measure_accepts_what_a_kinds_own_rows_allow(name, margins):
-    assert largest_uses(margins, name)[name] <= 1 + ROUNDING
+    assert largest_uses(margins, name)[name] <= 1 + LIMITS[name].least_margin + ROUNDING
 
 
 @pytest.mark.parametrize("name", PLANNED)
@@ -191,4 +201,6 @@ def test_use_is_one_at_either_end(name):
     limit = LIMITS[name](setting("no margins", "slow tool")[0])
     for end in (limit.lo, limit.hi):
         np.testing.assert_allclose(limit.utilisation(end[None]), 1.0, rtol=1e-12)
-        assert np.all(limit.utilisation(end[None] + 0.01 * (limit.hi - limit.lo) * np.sign(end - limit.lo - 1e-9)) > 0)
+        assert np.all(
+            limit.utilisation(end[None] + 0.01 * (limit.hi - limit.lo) * np.sign(end - limit.lo - 1e-9)) > 0
+        )

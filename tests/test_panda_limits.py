@@ -7,6 +7,7 @@ from dataclasses import replace
 import numpy as np
 import pytest
 from builders import FER, NO_MARGINS, fer_cell, following
+
 from reach.cell import Bound, Cell
 from reach.follow.bench import build_limits, run
 from reach.limits.base import Fine

@@ -7,6 +7,8 @@ from dataclasses import dataclass, replace
 import numpy as np
 import pytest
 from builders import NO_MARGINS, robot_cell
+from scipy.optimize import linprog, lsq_linear
+
 from reach.arm import Arm, State
 from reach.cell import Bound, Cell, Joint, JointLimits, SolverSpec
 from reach.errors import SolverFailure
@@ -16,7 +18,6 @@ from reach.follow.step import POSTURE_WEIGHT, Step, Stepper, task_weight
 from reach.limits.base import Brake, Now
 from reach.qp.backends import BACKENDS, Solver
 from reach.qp.problem import KKT_TOLERANCE, PRIMAL_TOLERANCE, QpBlock, QpProblem, QpStatus, residuals
-from scipy.optimize import linprog, lsq_linear
 
 ANSWER = 1e-6  # of a variable of order one
 
@@ -50,9 +51,7 @@ PROBLEMS = {
         qp(np.eye(3), [-2, -2, -2], [[1, 1, 1]], [2.5], ub=[0.5, 9, 9], lb=-9), (0.5, 1, 1), (1,), (0.5, 0, 0)
     ),
     # linear programs, kept strictly convex by a curvature that moves no vertex
-    "linear program": Known(
-        qp(1e-3 * np.eye(2), [-1, -2], [[1, 1], [-1, 2]], [4, 2], lb=0, ub=10), (2, 2)
-    ),
+    "linear program": Known(qp(1e-3 * np.eye(2), [-1, -2], [[1, 1], [-1, 2]], [4, 2], lb=0, ub=10), (2, 2)),
     "linear program, one vertex five rows": Known(
         qp(1e-3 * np.eye(2), [-1, -1], [[1, 0], [0, 1], [1, 1], [2, 1], [1, 2]], [1, 1, 2, 3, 3]), (1, 1)
     ),
@@ -99,7 +98,7 @@ def test_backend_on_random_problems_against_least_squares(name):
         np.testing.assert_allclose(solution.x, expected, atol=ANSWER)
 
 
-# --- The check itself ---------------------------------------------------------------------------------------------
+# --- The check itself
 HALF = PROBLEMS["projection on a half-plane"].problem
 RIGHT = (np.array([0.5, 0.5]), np.array([0.5]), np.zeros(2))
 WRONG = {
@@ -157,7 +156,7 @@ def test_residuals_measure_what_is_wrong():
     assert primal == 0.0 and kkt == pytest.approx(0.5 / 1.25, abs=1e-15)
 
 
-# --- Two solvers and the check between them -----------------------------------------------------------------------
+# --- Two solvers and the check between them
 def answering(monkeypatch, answers):
     """Make each solver give a fixed raw answer: (x, z, z_box), None for none, or "real" for its own."""
     real = Solver.attempt
@@ -232,16 +231,15 @@ def test_workspace_is_read_anew():
     np.testing.assert_allclose(solver.solve(problem).x, (2.5, -0.5), atol=ANSWER)
 
 
-# --- Steps: scaled twists, and the closest one --------------------------------------------------------------------
+# --- Steps: scaled twists, and the closest one
 PERIOD_S = 0.001
-# Brakes so sharp that only |v| <= limit is left of the velocity rows, and every joint is watched.
-AT_ONCE = Brake(*(np.full(7, size) for size in (1e9, 1e13, 1e9, 1e5)), PERIOD_S)
 
 
 def velocity_cell(speeds) -> Cell:
     """A cell whose joints have velocity limits and nothing else."""
     joints = tuple(
-        Joint(f"j{i + 1}", "revolute", JointLimits(velocity=Bound(-s, s, "test"))) for i, s in enumerate(speeds)
+        Joint(f"j{i + 1}", "revolute", JointLimits(velocity=Bound(-s, s, "test")))
+        for i, s in enumerate(speeds)
     )
     cell = robot_cell("bench7")
     return replace(cell, arm=replace(cell.arm, joints=joints), margins=NO_MARGINS, period_s=PERIOD_S)
@@ -257,11 +255,15 @@ def standing(jacobian) -> Now:
 
 
 def brake(n: int) -> Brake:
-    """AT_ONCE for n joints."""
-    return Brake(*(part[:n] for part in AT_ONCE[:4]), PERIOD_S)
+    """Brakes so sharp that only |v| <= limit is left of the velocity rows, and every joint is watched."""
+    sizes = dict.fromkeys(Brake._fields, 1e5) | {"deceleration": 1e9, "rate": 1e13, "top": 1e9}
+    fields = {name: np.full(n, size) for name, size in sizes.items()}
+    return Brake(**(fields | {"horizon_s": PERIOD_S}))
 
 
-def solved(cell: Cell, now: Now, target, posture_velocity, keep_direction: bool = False) -> tuple[Step, Stepper]:
+def solved(
+    cell: Cell, now: Now, target, posture_velocity, keep_direction: bool = False
+) -> tuple[Step, Stepper]:
     """One step from a state."""
     stepper = Stepper(cell, build_limits(cell))
     stepper.rows.look(now)
@@ -289,7 +291,9 @@ def test_same_direction_on_hand_solved_arms(jacobian, task, expected):
     cell = velocity_cell((1.0, 1.0, 1.0))
     target = np.zeros(6)
     target[: len(task)] = task
-    step, _ = solved(cell, standing(np.array(jacobian, dtype=float)), target, np.zeros(3), keep_direction=True)
+    step, _ = solved(
+        cell, standing(np.array(jacobian, dtype=float)), target, np.zeros(3), keep_direction=True
+    )
     assert step.status == "solved"
     # The slow return to the posture weighs 1e-6 of the task, and the velocity row keeps about 5e-5 / (β dt²) back.
     np.testing.assert_allclose(step.change, expected, atol=2e-5)
@@ -334,7 +338,7 @@ def test_closest_step_is_bounded_least_squares():
     for _ in range(60):
         q, v = rng.uniform(-1.5, 1.5, 7), rng.uniform(-0.9, 0.9, 7) * limits["velocity"].hi
         state = arm.at(q, v)
-        now = Now(q, v, np.zeros(7), np.zeros(7), state, AT_ONCE, PERIOD_S)
+        now = Now(q, v, np.zeros(7), np.zeros(7), state, brake(7), PERIOD_S)
         target = state.jacobian @ v + rng.normal(size=6) * rng.choice([0.002, 0.05])
         posture = rng.uniform(-0.2, 0.2, 7)
         step, stepper = solved(cell, now, target, posture)

@@ -168,6 +168,7 @@ def made_strikes(track: Track, count: int = 2) -> tuple[Strike, ...]:
                 "torque" if missed else None,
                 NAMES[1] if missed else None,
                 next_contact_shift_m=0.012 + 0.001 * k,
+                shift_per_degree_m=0.02 + 0.001 * k,
             )
         )
     return tuple(strikes)
@@ -611,7 +612,7 @@ def test_wrap_counts_wide_characters_and_cuts_long_words() -> None:
 
 
 def test_tilt_meaning_needs_an_apex(result: FollowResult) -> None:
-    strikes = tuple(replace(strike, next_contact_shift_m=None) for strike in result.evidence.strikes)
+    strikes = tuple(replace(strike, shift_per_degree_m=None) for strike in result.evidence.strikes)
     assert tilt_meaning(replace(result, evidence=replace(result.evidence, strikes=strikes))) is None
 
 

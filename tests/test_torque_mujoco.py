@@ -1,18 +1,19 @@
-"""Torques of whole motions against another dynamics engine, which reads the URDF itself and gets the paddle its own way."""
+"""Torques of whole motions against another dynamics engine, with its own way to the URDF and the paddle."""
 
 from __future__ import annotations
 
 import mujoco
 import numpy as np
 import pytest
-from builders import PADDLE_TOML, ROBOTS, following, robot_cell
+from builders import PADDLE_TOML, following, robot_cell
+
 from reach.arm import FRICTION_WIDTH_RAD_S
 from reach.cell import Cell, Pose
 from reach.follow.bench import run
 
-# Both engines work in double precision with the same rigid bodies. The other one turns every inertia to principal axes, and
-# so loses a few digits to an eigenvalue decomposition: 1e-6 of the largest torque is wide of that, and far below any effect
-# of a wrong mass, axis, offset or sign.
+# Both engines work in double precision with the same rigid bodies. The other one turns every inertia to principal
+# axes, and so loses a few digits to an eigenvalue decomposition: 1e-6 of the largest torque is wide of that, and
+# far below any effect of a wrong mass, axis, offset or sign.
 TORQUE_SHARE = 1e-6
 
 HANGING = "base = { xyz_m = [0.1, 0.2, 1.5], rpy_deg = [180.0, 0.0, 25.0] }"
@@ -27,7 +28,7 @@ def swaying(cell: Cell) -> Cell:
 
 
 def engine(cell: Cell) -> mujoco.MjModel:
-    """The arm from its URDF with disc or plate and its part as bodies of their own, the stand at the cell's base pose."""
+    """The arm from its URDF, disc or plate and its part as bodies of their own, the stand at the base pose."""
     spec = mujoco.MjSpec.from_file(cell.arm.urdf_path)
     spec.compiler.fusestatic = False
     for body in spec.worldbody.bodies:
@@ -83,7 +84,6 @@ def inverse_dynamics(cell: Cell, q: np.ndarray, v: np.ndarray, a: np.ndarray) ->
     ],
 )
 def test_torque_of_a_followed_motion(robot, arm, paddle):
-    assert (ROBOTS / robot / f"{robot}.urdf").exists()
     cell = swaying(robot_cell(robot, arm, paddle))
     done = run(cell)
     assert done.measured is not None and done.roll is not None and done.roll.stopped

@@ -7,6 +7,7 @@ from dataclasses import replace
 import numpy as np
 import pytest
 from builders import fer_cell, following, robot_cell
+
 from reach.arm import Arm
 from reach.cell import Cell, Margins
 from reach.evidence.measure import measure
@@ -19,7 +20,7 @@ from reach.limits.brake import largest_velocity, stopping_distance
 NO_DELAY = 1e13  # rad/s³: a brake that is there at once, the second-order case
 
 
-# --- The second-order case ----------------------------------------------------------------------------------------
+# --- The second-order case
 @pytest.mark.parametrize(
     ("q", "v", "expected", "digit"),
     [
@@ -45,7 +46,7 @@ def test_free_joint_gets_its_ceiling():
     assert largest_velocity(10.0, 0.5, 0.52, 20.0, 500.0, 0.001) == 0.52
 
 
-# --- The third-order stop -----------------------------------------------------------------------------------------
+# --- The third-order stop
 def stop_by_integration(v: float, a: float, deceleration: float, rate: float) -> float:
     """Travel until the joint stands, the acceleration falling at `rate` down to -`deceleration`, in 20,000 steps."""
     longest = (abs(a) + deceleration) / rate + (abs(v) + a * a / rate) / deceleration + 0.01
@@ -109,14 +110,15 @@ def test_largest_velocity_is_the_edge():
     assert 30 < inside < 300
 
 
-# --- Adversarial roll-outs ----------------------------------------------------------------------------------------
-# In planning, 1,000 such roll-outs never passed a position limit by more than 3.2e-6 rad (measured, unpublished); the
+# --- Adversarial roll-outs
+# Earlier, 1,000 such roll-outs never passed a position limit by more than 3.2e-6 rad (measured, unpublished). The
 # integrator is exact, so what is left is what torque's drift inside a period takes from the brake.
 POSITION_RAD = 1e-5
 VELOCITY_SHARE = 1e-6  # of the limit; the row is exact, the solver's check is not
 TORQUE_SHARE = 0.01  # of torque and torque rate, beside the margins that a plan keeps
 ROLLS = 16  # a robot in the default run; the whole campaign is 1,000
-HARD_ENDS = Margins(position_rad=0.0, position_m=0.0, velocity_share=0.0)  # the stated ends, ordinary torque margins
+# The stated ends and speeds, ordinary margins on torque and acceleration.
+HARD_ENDS = Margins(position_rad=0.0, position_m=0.0, velocity_share=0.0)
 
 
 def adversary(cell: Cell, arm: Arm, rng: np.random.Generator) -> Cell:
@@ -152,7 +154,7 @@ def worst_uses(cell: Cell, rolls: int, seed: int) -> dict[str, float]:
     while done < rolls:
         tried = adversary(cell, arm, rng)
         start = np.array(tried.arm.start)
-        held = np.abs(arm.static_torque(start)) / np.minimum(limits["torque"].kept_hi, -limits["torque"].kept_lo)
+        held = np.abs(arm.static_torque(start)) / limits["torque"].tighter
         if held.max() > 0.9:
             continue  # no start: holding it alone takes the torque
         done += 1

@@ -70,7 +70,6 @@ def limit_uses(limit: Limit, fine: Fine, rows: int) -> list[Use]:
     values = limit.measure(fine)
     share = limit.utilisation(values)
     strength = np.where(np.isnan(share), np.abs(values), share)
-    starts = np.minimum(np.arange(rows) * fine.per_period, len(values) - 1)
     uses = []
     for i, joint in enumerate(limit.joints):
         at = int(np.argmax(strength[:, i]))
@@ -82,16 +81,16 @@ def limit_uses(limit: Limit, fine: Fine, rows: int) -> list[Use]:
                 limit.name,
                 joint,
                 limit.joint_units[i],
-                *(
-                    float(bound[i]) if known else None
-                    for bound in (limit.lo, limit.hi, limit.kept_lo, limit.kept_hi)
-                ),
-                limit.sources[i],
-                float(values[at, i]),
-                float(fine.t_s[at]),
-                None if not known else 0.0 if unbounded else float(share[at, i]),
-                np.nan,
-                worst[: len(starts)],
+                lo=float(limit.lo[i]) if known else None,
+                hi=float(limit.hi[i]) if known else None,
+                kept_lo=float(limit.kept_lo[i]) if known else None,
+                kept_hi=float(limit.kept_hi[i]) if known else None,
+                source=limit.sources[i],
+                peak=float(values[at, i]),
+                time_s=None if limit.family == "none" else float(fine.t_s[at]),
+                utilisation=None if not known else 0.0 if unbounded else float(share[at, i]),
+                demand_peak=np.nan,
+                series=worst,
             )
         )
     return uses

@@ -35,7 +35,7 @@ class Motion:
     @property
     def t_s(self) -> Array:
         """Times of the rows, shape (m,)."""
-        return self.start_s + self.period_s * np.arange(len(self.q))
+        return np.asarray(self.start_s + self.period_s * np.arange(len(self.q)), dtype=np.float64)
 
     def at(self, t_s: Array) -> tuple[Array, Array, Array]:
         """Joint position, velocity and acceleration at times (k,): three arrays (k, n).

@@ -18,7 +18,8 @@ class Use:
     ----------
     lo, hi : stated limit in `unit`, None where unknown; kept_lo, kept_hi: less the margin
     source : where it was stated
-    peak : the value that used most of it (unknown limits: the largest in size); at `time_s`
+    peak : the value that used most of it (unknown limits: the largest in size)
+    time_s : when; None for a mean over the motion (duty)
     utilisation : share of the stated limit at the peak, None where unknown; above 1 it is broken
     demand_peak : the value exact tracking would have asked for, in `unit`
     series : (m,) value of largest use in each control period, aligned with the motion's rows
@@ -33,7 +34,7 @@ class Use:
     kept_hi: float | None
     source: str
     peak: float
-    time_s: float
+    time_s: float | None
     utilisation: float | None
     demand_peak: float
     series: Array
@@ -79,7 +80,8 @@ class Strike:
     faults : which acceptance items fail, in words; empty where the strike is delivered
     limit, joint : what stopped it, None where nothing did or it is not known
     basis : "demonstrated"
-    next_contact_shift_m : how far the tilt error moves the next contact, None where the apex is not known
+    next_contact_shift_m : how far the tilt error moves the next contact, None where the apex is not known;
+        shift_per_degree_m : what 1° would
     """
 
     time_s: float
@@ -95,6 +97,7 @@ class Strike:
     joint: str | None = None
     basis: str = "demonstrated"
     next_contact_shift_m: float | None = None
+    shift_per_degree_m: float | None = None
 
     @property
     def delivered(self) -> bool:

@@ -32,9 +32,7 @@ class Errors:
     tilt: Array
 
 
-def compare(
-    wanted: tuple[Array, Array, Array], twist: Array, position: Array, rotation: Array
-) -> Errors:
+def compare(wanted: tuple[Array, Array, Array], twist: Array, position: Array, rotation: Array) -> Errors:
     """Errors of delivered twists (k, 6), points (k, 3) and axes (k, 3, 3) against the commanded ones."""
     wanted_twist, wanted_position, wanted_rotation = wanted
     normal = wanted_rotation[:, :, 2]
@@ -109,6 +107,7 @@ def judge_strike(
         position_error_m=float(errors.position.max()),
         faults=strike_faults(errors, accept),
         next_contact_shift_m=next_contact_shift(commanded, tilt, contact),
+        shift_per_degree_m=next_contact_shift(commanded, float(np.radians(1.0)), contact),
     )
 
 
@@ -125,7 +124,9 @@ def next_contact_shift(speed_m_s: float, tilt_rad: float, contact: Contact | Non
     return float(8 * apex * tilt_rad)
 
 
-def track(motion: Motion, wanted: Wanted, position: Array, rotation: Array, twist: Array, end_row: int) -> Track:
+def track(
+    motion: Motion, wanted: Wanted, position: Array, rotation: Array, twist: Array, end_row: int
+) -> Track:
     """Commanded beside delivered at every row of a motion."""
     asked = wanted(motion.t_s)
     errors = compare(asked, twist, position, rotation)

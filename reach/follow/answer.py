@@ -9,10 +9,10 @@ import numpy as np
 
 from reach.arm import Arm
 from reach.cell import Cell
-from reach.evidence.measure import Measured, measure
+from reach.evidence.measure import measure
 from reach.evidence.record import Evidence, Need, Remedy, SolverCount, Use
 from reach.follow.bench import Run, build_limits, run
-from reach.follow.demand import demanded_motion
+from reach.follow.demand import Demand, demanded_motion
 from reach.follow.headroom import headroom
 from reach.follow.needs import needs
 from reach.follow.reading import better_reading, reading_in_words
@@ -50,7 +50,8 @@ def answer(
     SolverFailure
         When a named solver is not installed.
     """
-    assert cell.follow is not None
+    follow = cell.follow
+    assert follow is not None, "the cell has no log to follow"
     if progress:
         progress("following the log")
     base = run(cell)
@@ -59,11 +60,11 @@ def answer(
     found, strikes = reasons(base, demand)
     evidence = replace(base.evidence, strikes=strikes, uses=_with_demand(base.evidence, demand))
     verdict = judge(evidence, cell.accept)
-    notes = [*cell.notes, *(cell.follow.commands.mends), REPLAYED, *_roll_notes(base.roll)]
+    notes = [*cell.notes, REPLAYED, *_roll_notes(base.roll)]
     if better := better_reading(cell):
         notes.insert(0, better)
     plain = None
-    if cell.follow.pose_gain_per_s > 0 and base.roll is not None:
+    if follow.pose_gain_per_s > 0 and base.roll is not None:
         plain = run(without_pose_gain(cell)).verdict.verdict
         if plain != verdict.verdict:
             notes.insert(0, f"the verdict rests on the pose feedback: replayed as sent it is {plain}")
@@ -78,7 +79,7 @@ def answer(
             helps = remedies(cell, base, wanted, deciding(found), runs)
     return FollowResult(
         cell=cell,
-        reading=reading_in_words(cell.follow),
+        reading=reading_in_words(follow),
         evidence=evidence,
         verdict=verdict,
         without_margins=bare,
@@ -93,20 +94,20 @@ def answer(
     )
 
 
-def _demand(base: Run) -> Measured | None:
+def _demand(base: Run) -> Demand | None:
     """The demanded motion, measured like the delivered one; None where there is no start posture."""
     cell = base.cell
     if base.reference is None or cell.arm.start is None:
         return None
     arm = Arm(cell.arm, cell.paddle)
     motion = demanded_motion(cell, arm, base.reference, np.array(cell.arm.start))
-    return measure(arm, Chain.of(arm), build_limits(cell), motion)
+    return Demand(motion, measure(arm, Chain.of(arm), build_limits(cell), motion))
 
 
-def _with_demand(evidence: Evidence, demand: Measured | None) -> tuple[Use, ...]:
+def _with_demand(evidence: Evidence, demand: Demand | None) -> tuple[Use, ...]:
     if demand is None:
         return evidence.uses
-    peaks = {(use.limit, use.joint): use.peak for use in demand.uses}
+    peaks = {(use.limit, use.joint): use.peak for use in demand.measured.uses}
     return tuple(replace(use, demand_peak=peaks[(use.limit, use.joint)]) for use in evidence.uses)
 
 
@@ -120,8 +121,8 @@ def _roll_notes(rolled: Roll | None) -> list[str]:
         most = max(item.amount for item in rolled.gave_way if item.limit == limit)
         at = rolled.sent.start_s + steps[0] * rolled.sent.period_s
         found.append(
-            f"{limit} could not be kept inside its margin in {len(steps)} steps, first at {at:.3f} s (by up to {most:.2g} "
-            "of velocity change a period); the measured motion says whether the stated limit held"
+            f"{limit} could not be kept inside its margin in {len(steps)} steps, first at {at:.3f} s (by up to "
+            f"{most:.2g} of velocity change a period); the measured motion says whether the stated limit held"
         )
     return found
 
@@ -138,5 +139,3 @@ def _solver(cell: Cell, rolled: Roll | None) -> SolverCount:
         rolled.failed_steps,
         rolled.fallback_steps,
     )
-
-

@@ -62,21 +62,22 @@ def run(cell: Cell, quick: bool = False) -> Run:
     ----------
     quick : end at the first strike that misses; for searches that only ask whether the verdict holds
     """
-    assert cell.follow is not None
+    follow = cell.follow
+    assert follow is not None, "the cell has no log to follow"
     arm = Arm(cell.arm, cell.paddle)
     limits = build_limits(cell)
     cell, blocked = _with_start(cell, arm)
     if cell.arm.start is None:
-        found = contacts(cell.follow, None)
+        found = contacts(follow, None)
         evidence = _no_motion(cell, limits, found, blocked)
         return Run(cell, found, None, None, None, evidence, judge(evidence, cell.accept))
     start = np.array(cell.arm.start)
-    reference = build_reference(cell, cell.follow, *_first_pose(cell, arm, start))
-    found = contacts(cell.follow, reference)
+    reference = build_reference(cell, follow, *_first_pose(cell, arm, start))
+    found = contacts(follow, reference)
     blocked = blocked + _static_overload(cell, arm, start)
     accept = cell.accept
     watch = _Watch(cell, arm, reference, found, accept) if quick else None
-    rolled = roll(cell, arm, limits, reference, start, cell.follow.pose_gain_per_s, watch)
+    rolled = roll(cell, arm, limits, reference, start, follow.pose_gain_per_s, watch)
     chain = Chain.of(arm)
     measured = measure(arm, chain, limits, rolled.delivered)
     evidence = _evidence(cell, limits, chain, reference, found, rolled, measured, blocked)
@@ -137,7 +138,9 @@ def _static_overload(cell: Cell, arm: Arm, start: Array) -> tuple[str, ...]:
         bound = joint.limits.torque
         if bound is not None and not bound.lo <= torque <= bound.hi:
             limit = bound.hi if torque > 0 else -bound.lo
-            found.append(f"torque: holding {joint.name} at the start takes {abs(torque):.1f}, its limit is {limit:.1f}")
+            found.append(
+                f"torque: holding {joint.name} at the start takes {abs(torque):.1f}, its limit is {limit:.1f}"
+            )
     return tuple(found)
 
 
@@ -146,6 +149,7 @@ class _Watch:
 
     def __init__(self, cell: Cell, arm: Arm, reference: Reference, found: Contacts, accept: Accept):
         self.missed = False
+        self._misses: set[int] = set()
         self._arm, self._accept = Arm(arm.spec, cell.paddle), accept
         begin, dt = reference.t_s[0], cell.period_s
         self._begin, self._dt, self._reference = begin, dt, reference
@@ -161,8 +165,8 @@ class _Watch:
         position, rotation, jacobian = self._arm.jacobian(q)
         errors = compare(wanted, (jacobian @ v)[None], position[None], rotation[None])
         if strike_faults(errors, self._accept):
-            self._allowed -= 1
-            self.missed = self._allowed < 0
+            self._misses.add(row)
+            self.missed = len(self._misses) > self._allowed
         return self.missed
 
 

@@ -44,7 +44,14 @@ class Blames:
         found = []
         if (np.abs(z_box) > ACTIVE).any() or (z > ACTIVE).any():
             now = now_at(
-                self._arm, roll.sent.q[step], roll.sent.v[step], roll.sent.a * self._dt, roll.torque, roll.brakes[step], step, self._dt
+                self._arm,
+                roll.sent.q[step],
+                roll.sent.v[step],
+                roll.sent.a * self._dt,
+                roll.torque,
+                roll.brakes[step],
+                step,
+                self._dt,
             )
             self._rows.look(now)
             box = np.concatenate([np.maximum(z_box, 0.0), np.maximum(-z_box, 0.0)])
@@ -57,7 +64,9 @@ class Blames:
             found.append(Blame("tool speed", 0, float(gain)))
         return [blame for blame in found if blame.gain > 0]
 
-    def _tightest(self, lanes: Lanes, now: Now, multipliers: np.ndarray, scale: np.ndarray, step: int) -> list[Blame]:
+    def _tightest(
+        self, lanes: Lanes, now: Now, multipliers: np.ndarray, scale: np.ndarray, step: int
+    ) -> list[Blame]:
         """One blame for each row with a multiplier, on the kind whose lane is tightest there."""
         if not lanes.kinds:
             return []

@@ -41,7 +41,7 @@ def contacts(follow: Follow, reference: Reference | None) -> Contacts:
     even = np.arange(log.t_s[0], reference.end_s, period)
     twist, _, axes = reference.at(even)
     speed = np.einsum("ki,ki->k", twist[:, :3], axes[:, :, 2])
-    apart = max(int(round(follow.strike_min_gap_s / period)), 1)
+    apart = max(round(follow.strike_min_gap_s / period), 1)
     peaks, _ = find_peaks(
         speed, height=follow.strike_min_m_s, prominence=follow.strike_min_m_s, distance=apart
     )

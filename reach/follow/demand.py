@@ -2,16 +2,27 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+
 import numpy as np
 from scipy.linalg.lapack import dposv
 
 from reach.arm import Arm
 from reach.cell import Array, Cell
+from reach.evidence.measure import Measured
 from reach.evidence.motion import Motion
 from reach.follow.reference import Reference
 from reach.follow.step import POSTURE_WEIGHT, task_weight
 
 RUNAWAY = 1e3  # rad/s or m/s: a demand beyond it (at a singularity) is cut there, which is far past any joint
+
+
+@dataclass(frozen=True, eq=False)
+class Demand:
+    """The demanded motion and its measures."""
+
+    motion: Motion
+    measured: Measured
 
 
 def demanded_motion(cell: Cell, arm: Arm, reference: Reference, start: Array) -> Motion:

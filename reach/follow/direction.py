@@ -29,7 +29,11 @@ def same_direction(stepper: Stepper, problem: QpProblem, slot: int, target: Arra
     task, error = stepper.task[slot], stepper.error[slot]
     wanted = stepper.weight * target
     size = float(np.linalg.norm(wanted))
-    if first.status != "solved" or size < EXACT_M_S or np.linalg.norm(error + task @ first.change) < EXACT_M_S:
+    if (
+        first.status != "solved"
+        or size < EXACT_M_S
+        or np.linalg.norm(error + task @ first.change) < EXACT_M_S
+    ):
         return first
     along = wanted / size
     reached = error + wanted  # the twist without a change of velocity, weighted

@@ -7,6 +7,20 @@ import math
 import numpy as np
 
 from reach.cell import Array, Drive
+from reach.evidence.motion import Motion
+
+
+def behind(drive: Drive, sent: Motion) -> Motion:
+    """What the joints do of a motion that is sent to them."""
+    state = DriveState(drive, sent.q[0], sent.v[0], sent.period_s)
+    q, v = [state.q], [state.v]
+    for velocity in sent.v[1:]:
+        state.advance(velocity)
+        q.append(state.q)
+        v.append(state.v)
+    speeds = np.array(v)
+    accelerations = np.vstack([np.diff(speeds, axis=0) / sent.period_s, np.zeros((1, speeds.shape[1]))])
+    return Motion(sent.start_s, sent.period_s, np.array(q), speeds, accelerations)
 
 
 class DriveState:

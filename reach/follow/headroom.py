@@ -9,7 +9,29 @@ from reach.follow.search import Runner, least_passing
 from reach.follow.variants import scaled_limits
 
 # Factors on every limit but position that are tried, rising; the answer is refined to RESOLUTION of the factor.
-SCAN = (0.1, 0.2, 0.3, 0.4, 0.5, 0.6, 0.7, 0.8, 0.9, 1.0, 1.1, 1.2, 1.35, 1.5, 1.75, 2.0, 2.5, 3.0, 4.0, 6.0, 10.0)
+SCAN = (
+    0.1,
+    0.2,
+    0.3,
+    0.4,
+    0.5,
+    0.6,
+    0.7,
+    0.8,
+    0.9,
+    1.0,
+    1.1,
+    1.2,
+    1.35,
+    1.5,
+    1.75,
+    2.0,
+    2.5,
+    3.0,
+    4.0,
+    6.0,
+    10.0,
+)
 RESOLUTION = 0.01
 
 

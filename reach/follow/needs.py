@@ -14,10 +14,12 @@ from reach.follow.variants import with_bounds
 
 Key = tuple[str, str | None]
 
-RESOLUTION = 0.05  # relative, of a needed value
-SHRINK_SCAN = (0.02, 0.05, 0.1, 0.2, 0.4, 0.7, 1.0)  # shares of the peak that are tried
+RESOLUTION = 0.1  # relative, of a needed value
+SCAN = (0.02, 0.1, 0.4, 1.02, 2.0, 4.0)  # of a joint's measure (below) that are tried for an unknown limit
 GROW_SCAN = (1.0, 1.15, 1.35, 1.6, 2.0, 2.8, 4.0, 8.0)  # multiples of a stated limit that are tried
-SPARE = 1.02  # a motion planned below the peak by its margin needs this much more than that margin
+# The measure of an unknown limit is the peak of the motion with the limit unknown, but at least this share of the
+# largest peak among the joints: a joint that hardly moves still has to brake along with the others.
+LEAST_SHARE = 0.2
 LAYERS = 3  # how often lifting the limits in the way may bring up others
 ALONE = "alone would do"
 NEVER_SEARCHED = ("duty", "position")  # measured only, or a question of travel
@@ -26,8 +28,8 @@ NEVER_SEARCHED = ("duty", "position")  # measured only, or a question of travel
 def needs(cell: Cell, base: Run, deciding: Sequence[Key], runs: Runner) -> tuple[Need, ...]:
     """Needs of every unknown limit and of every limit that decides the verdict.
 
-    *sufficient*: a motion was planned under it and passed. *necessary*: the least value at which the command still passes with
-    the other unknown (or failing) limits unlimited.
+    *sufficient*: a motion was planned under it and passed. *necessary*: the least value at which the command still
+    passes with the other unknown (or failing) limits unlimited.
     """
     units = {(use.limit, use.joint): use.unit for use in base.evidence.uses}
     found = _unknown_needs(cell, base, runs, units)
@@ -36,45 +38,53 @@ def needs(cell: Cell, base: Run, deciding: Sequence[Key], runs: Runner) -> tuple
 
 def _unknown_needs(cell: Cell, base: Run, runs: Runner, units: dict[Key, str]) -> list[Need]:
     unknown = [k for k in base.evidence.unknown if k in units and k[0] not in NEVER_SEARCHED and k[1]]
-    peaks = {(u.limit, u.joint): abs(u.peak) for u in base.evidence.uses}
     if not base.passed or not unknown:
         return []
     runs.say("what the unknown limits would need")
+    peaks = {(u.limit, u.joint): abs(u.peak) for u in base.evidence.uses}
     wanted = [k for k in unknown if k[0] in cell.accept.require]
-    enough = _smallest_set(cell, wanted, peaks, runs)
+    measures = _measures(wanted, peaks)
+    common = _least(cell, measures, runs)
     found = []
-    for key in unknown:
+    for key in wanted:
         limit, joint = key
-        unit, peak = units[key], peaks[key]
+        unit = units[key]
+        least = _least(cell, {key: measures[key]}, runs)
+        if common is not None:
+            sufficient = _spared(cell, key, common * measures[key])
+            text = f"{joint}: deliverable if {limit} is at least {_number(sufficient)} {unit}"
+            text += ", with the others named here" if len(wanted) > 1 else ""
+        else:
+            sufficient = peaks[key]
+            text = f"{joint}: the motion that passes takes {_number(sufficient)} {unit} of {limit}"
+        necessary = None if least is None else _spared(cell, key, least * measures[key])
+        if necessary is not None:
+            text += f"; with less than {_number(necessary)} {unit} it fails even if the others are unlimited"
+        found.append(Need(joint, limit, necessary, sufficient, unit, text + ": ask the maker"))
+    for key in unknown:
         if key not in wanted:
-            text = f"{joint}: the motion peaks at {peak:.4g} {unit} of {limit}; not required, not searched"
-            found.append(Need(joint, limit, None, peak, unit, text))
-            continue
-        least = _least(cell, key, peak, runs)
-        sufficient = enough.get(key)
-        text = f"{joint}: deliverable if {limit} is at least {_number(sufficient)} {unit}"
-        if least is not None:
-            text += f"; below {_number(least)} {unit} it fails whatever the others are"
-        found.append(Need(joint, limit, least, sufficient, unit, text + ": ask the maker"))
+            limit, joint = key
+            text = f"{joint}: the motion takes {_number(peaks[key])} {units[key]} of {limit}; not required, not searched"
+            found.append(Need(joint, limit, None, peaks[key], units[key], text))
     return found
 
 
-def _smallest_set(cell: Cell, keys: list[Key], peaks: dict[Key, float], runs: Runner) -> dict[Key, float]:
-    """Values for all unknown limits at once, in proportion to their peaks, under which the command passes."""
+def _measures(keys: list[Key], peaks: dict[Key, float]) -> dict[Key, float]:
+    """What each unknown limit is tried in multiples of."""
+    largest: dict[str, float] = {}
+    for limit, joint in keys:
+        largest[limit] = max(largest.get(limit, 0.0), peaks[(limit, joint)])
+    return {key: max(peaks[key], LEAST_SHARE * largest[key[0]], 1e-9) for key in keys}
+
+
+def _least(cell: Cell, measures: dict[Key, float], runs: Runner) -> float | None:
+    """The least multiple of some limits' measures, all at once, under which the command passes."""
 
     def passes(shares: Sequence[float]) -> list[bool]:
-        return runs.passes([with_bounds(cell, {k: _spared(cell, k, s * peaks[k]) for k in keys}, "search") for s in shares])
+        stated = [{k: _spared(cell, k, s * measure) for k, measure in measures.items()} for s in shares]
+        return runs.passes([with_bounds(cell, values, "search") for values in stated])
 
-    share = least_passing(passes, (*SHRINK_SCAN, SPARE), RESOLUTION) if keys else None
-    return {} if share is None else {k: _spared(cell, k, share * peaks[k]) for k in keys}
-
-
-def _least(cell: Cell, key: Key, peak: float, runs: Runner) -> float | None:
-    def passes(shares: Sequence[float]) -> list[bool]:
-        return runs.passes([with_bounds(cell, {key: _spared(cell, key, s * peak)}, "search") for s in shares])
-
-    share = least_passing(passes, (*SHRINK_SCAN, SPARE), RESOLUTION)
-    return None if share is None else _spared(cell, key, share * peak)
+    return least_passing(passes, SCAN, RESOLUTION) if measures else None
 
 
 def _spared(cell: Cell, key: Key, value: float) -> float:
@@ -92,7 +102,9 @@ def _spared(cell: Cell, key: Key, value: float) -> float:
 def _failing_needs(
     cell: Cell, deciding: Sequence[Key], runs: Runner, units: dict[Key, str], base: Run
 ) -> list[Need]:
-    stated = {(u.limit, u.joint): max(abs(u.lo or 0.0), abs(u.hi or 0.0)) for u in base.evidence.uses if u.known}
+    stated = {
+        (u.limit, u.joint): max(abs(u.lo or 0.0), abs(u.hi or 0.0)) for u in base.evidence.uses if u.known
+    }
     first = [k for k in deciding if k in stated and k[0] not in NEVER_SEARCHED]
     if not first:
         return []
@@ -101,7 +113,9 @@ def _failing_needs(
 
     def least(key: Key, others: dict[Key, float | None]) -> float | None:
         def passes(factors: Sequence[float]) -> list[bool]:
-            return runs.passes([with_bounds(cell, {**others, key: f * stated[key]}, "search") for f in factors])
+            return runs.passes(
+                [with_bounds(cell, {**others, key: f * stated[key]}, "search") for f in factors]
+            )
 
         factor = least_passing(passes, GROW_SCAN, RESOLUTION)
         return None if factor is None else factor * stated[key]
@@ -138,7 +152,9 @@ def _all_in_the_way(cell: Cell, first: list[Key], stated: dict[Key, float]) -> l
         if lifted.passed:
             break
         found, _ = reasons(lifted, None)
-        new = [k for k in deciding_keys(found) if k in stated and k not in keys and k[0] not in NEVER_SEARCHED]
+        new = [
+            k for k in deciding_keys(found) if k in stated and k not in keys and k[0] not in NEVER_SEARCHED
+        ]
         if not new:
             break
         keys += new

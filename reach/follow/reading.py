@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from dataclasses import replace
 from itertools import product
+from typing import Literal
 
 import numpy as np
 
@@ -58,9 +59,11 @@ def better_reading(cell: Cell) -> str | None:
     chosen = fit_to_pose(cell, follow)
     if chosen < WORTH_M:
         return None
+    frames: tuple[Literal["world", "base", "paddle"], ...] = ("world", "base", "paddle")
+    points: tuple[Literal["strike", "tip"], ...] = ("strike", "tip")
     others = [
         replace(follow, frame=frame, point=point)
-        for frame, point in product(("world", "base", "paddle"), ("strike", "tip"))
+        for frame, point in product(frames, points)
         if (frame, point) != (follow.frame, follow.point)
     ]
     fits = [fit_to_pose(cell, other) for other in others]
@@ -81,5 +84,6 @@ def stamp_statistics(t_s: Array) -> str:
     off = np.abs(gaps - median)
     return (
         f"{len(t_s)} samples over {t_s[-1] - t_s[0]:.3f} s, {1 / median:.1f} per s; jitter "
-        f"p50 {1000 * np.percentile(off, 50):.3f}, p99 {1000 * np.percentile(off, 99):.3f}, max {1000 * off.max():.3f} ms"
+        f"p50 {1000 * np.percentile(off, 50):.3f}, p99 {1000 * np.percentile(off, 99):.3f}, "
+        f"max {1000 * off.max():.3f} ms"
     )

@@ -9,11 +9,14 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from reach.arm import Arm
-from reach.evidence.measure import Measured
 from reach.evidence.record import Reason, Strike, Use
+from reach.evidence.strikes import judge_strike
 from reach.follow.bench import Run
 from reach.follow.blame import BLAME_FROM_M_S, Blame, Blames
+from reach.follow.demand import Demand
+from reach.follow.drive import behind
 from reach.follow.step import task_weight
+from reach.kinematics import Chain
 from reach.verdict import broken_limits
 
 CALM_S = 0.05  # a shortfall this long ago, with none since, belongs to an earlier episode
@@ -31,7 +34,7 @@ class Episode:
     last: int
 
 
-def reasons(run: Run, demand: Measured | None) -> tuple[tuple[Reason, ...], tuple[Strike, ...]]:
+def reasons(run: Run, demand: Demand | None) -> tuple[tuple[Reason, ...], tuple[Strike, ...]]:
     """Reasons of a run, deciding ones first, and its strikes with limit and joint filled in."""
     evidence = run.evidence
     blocked = [_blocked(text) for text in evidence.blocked]
@@ -49,7 +52,9 @@ def reasons(run: Run, demand: Measured | None) -> tuple[tuple[Reason, ...], tupl
         limit, joint = (mine[0].limit, mine[0].joint) if mine else (None, None)
         strikes.append(replace(strike, limit=limit, joint=joint))
     if evidence.throughout_faults:
-        found.extend(book.of_episode(Episode(0, run.roll.end_row), True, "; ".join(evidence.throughout_faults)))
+        found.extend(
+            book.of_episode(Episode(0, run.roll.end_row), True, "; ".join(evidence.throughout_faults))
+        )
     decides = bool(blocked or evidence.throughout_faults or broken_limits(evidence)) or any(
         not s.delivered for s in evidence.strikes
     )
@@ -62,12 +67,15 @@ def reasons(run: Run, demand: Measured | None) -> tuple[tuple[Reason, ...], tupl
 class _Book:
     """Blames of a roll, ordered by step, with what the demand asked beside them."""
 
-    def __init__(self, run: Run, demand: Measured | None):
+    def __init__(self, run: Run, demand: Demand | None):
         assert run.roll is not None and run.reference is not None
         self.run, self.roll, self.cell = run, run.roll, run.cell
         self.arm = Arm(run.cell.arm, run.cell.paddle)
         self.uses = {(u.limit, u.joint): u for u in run.evidence.uses}
-        self.demand = {(u.limit, u.joint): u for u in demand.uses} if demand else {}
+        self.demand = {(u.limit, u.joint): u for u in demand.measured.uses} if demand else {}
+        self.through_drive = None
+        if demand is not None and self.cell.drive is not None:
+            self.through_drive = behind(self.cell.drive, demand.motion)
         self.blames = Blames(self.cell, self.arm, self.roll)
         self.short = np.flatnonzero(self.roll.shortfall > BLAME_FROM_M_S)
         self.names = self.arm.names
@@ -84,7 +92,43 @@ class _Book:
         found = self.of_episode(episode, True, text, strike) if episode else []
         if not found and len(self.short) and self.short[0] < end:
             found = self.of_episode(Episode(int(self.short[0]), end), True, text, strike)
+        if self._drive_alone_misses(strike):
+            drive = self.cell.drive
+            assert drive is not None
+            words = f"delay {1000 * drive.delay_s:g} ms, lag {1000 * drive.lag_s:g} ms, jitter ±{1000 * drive.jitter_s:g} ms"
+            words = f"{text}: even exact tracking misses behind the drive ({words})"
+            found.insert(0, self._without_limit("drive tracking", strike, words))
+        if not found:
+            words = f"no limit held the arm back; the command changes within one control period of {self.cell.period_s:g} s"
+            found = [self._without_limit("control period", strike, f"{text}: {words}")]
         return found
+
+    def _drive_alone_misses(self, strike: Strike) -> bool:
+        """Whether the demanded motion, seen through the drive, misses a strike too."""
+        if self.through_drive is None or self.cell.drive is None or self.run.reference is None:
+            return False
+        chain, accept = Chain.of(self.arm), self.cell.accept
+        jitter, wanted = self.cell.drive.jitter_s, self.run.reference.at
+        seen = judge_strike(
+            strike.time_s, strike.marked, chain, self.through_drive, wanted, accept, jitter, None
+        )
+        return not seen.delivered
+
+    @staticmethod
+    def _without_limit(limit: str, strike: Strike, text: str) -> Reason:
+        return Reason(
+            decides=True,
+            limit=limit,
+            joint=None,
+            phase="impact",
+            time_s=strike.time_s,
+            until_s=strike.time_s,
+            value=None,
+            bound=None,
+            unit="",
+            basis="demonstrated",
+            text=text,
+        )
 
     def _own_step(self, strike: Strike) -> str:
         """Say when the command itself jumps inside the strike's window."""
@@ -122,7 +166,19 @@ class _Book:
             phase = self._phase(where, strike)
             row = self.time(where)
             return [
-                Reason(decides, "singularity", None, phase, row, row, value, None, "", "demonstrated", f"{text}: {words}")
+                Reason(
+                    decides,
+                    "singularity",
+                    None,
+                    phase,
+                    row,
+                    row,
+                    value,
+                    None,
+                    "",
+                    "demonstrated",
+                    f"{text}: {words}",
+                )
             ]
         if not gains:
             return []
@@ -134,7 +190,8 @@ class _Book:
         )
         any_of = self._not_unique(worst)
         return [
-            self._reason(key, spans[key], decides, text, strike, any_of and len(ordered) > 1) for key in ordered
+            self._reason(key, spans[key], decides, text, strike, any_of and len(ordered) > 1)
+            for key in ordered
         ]
 
     def _reason(
@@ -249,7 +306,17 @@ def _broken(use: Use, book: _Book) -> Reason:
     assert use.utilisation is not None
     text = f"{use.limit} of {use.joint or 'the tool'} reaches {100 * use.utilisation:.1f} % of its limit"
     return Reason(
-        True, use.limit, use.joint, None, use.time_s, use.time_s, use.peak, bound, use.unit, "demonstrated", text
+        True,
+        use.limit,
+        use.joint,
+        None,
+        use.time_s,
+        use.time_s,
+        use.peak,
+        bound,
+        use.unit,
+        "demonstrated",
+        text,
     )
 
 
@@ -280,4 +347,3 @@ def _merged(found: Iterable[Reason]) -> list[Reason]:
 def deciding(found: Iterable[Reason]) -> list[tuple[str, str | None]]:
     """(limit, joint) of the reasons that decide."""
     return [(r.limit, r.joint) for r in found if r.decides]
-

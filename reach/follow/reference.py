@@ -138,7 +138,7 @@ def _point_offset(cell: Cell, follow: Follow) -> Array:
     if follow.point == "strike":
         return np.zeros(3)
     if follow.point == "tip":
-        return -cell.paddle.mount.rotation.T @ np.array(cell.paddle.mount.xyz_m)
+        return np.asarray(-cell.paddle.mount.rotation.T @ np.array(cell.paddle.mount.xyz_m))
     return np.array(follow.point)
 
 
@@ -159,4 +159,4 @@ def _body_translation(twist: Array, span: Array) -> Array:
     first = np.where(small, 0.5, (1 - np.cos(safe)) / safe**2)[:, None]
     second = np.where(small, 1 / 6, (safe - np.sin(safe)) / safe**3)[:, None]
     cross = np.cross(w, v)
-    return np.asarray(v + first * cross + second * np.cross(w, cross))
+    return np.asarray(v + first * cross + second * np.cross(w, cross), dtype=np.float64)

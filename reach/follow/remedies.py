@@ -118,7 +118,7 @@ def _limit(need: Need) -> Remedy | None:
     """A limit raised, where that alone was re-run and passed."""
     if need.sufficient is None or ALONE not in need.text:
         return None
-    change = f"a {need.limit} of {need.sufficient:.4g} {need.unit} at {need.joint or 'the tool'}"
+    change = f"{need.limit} of {need.sufficient:.4g} {need.unit} at {need.joint or 'the tool'}"
     return Remedy(change, "deliverable", True)
 
 

@@ -117,8 +117,7 @@ class _Roller:
         self.dt, self.start = cell.period_s, start
         self.keeps_direction = cell.follow.shortfall == "same-direction"
         self.stepper = Stepper(cell, limits)
-        tighter = [limits[k].tighter for k in ("acceleration", "jerk", "torque", "torque rate")]
-        self.brakes = BrakeModel(*tighter, LOOK_EVERY * self.dt)
+        self.brakes = BrakeModel(limits, (LOOK_EVERY + 1) * self.dt)
         self.commanded = int(np.ceil((reference.end_s - reference.t_s[0]) / self.dt - 1e-6))
         self.targets = list(reference.targets(self.dt, self.commanded))
         self.rest = np.zeros(6)
@@ -175,7 +174,7 @@ class _Roller:
         """Solve and apply step k."""
         q, v, state, dt = self.q[k], self.v[k], self.state, self.dt
         if look:
-            self.brake = self.brakes.at(state, (state.bias - self.bias_before) / dt)
+            self.brake = self.brakes.at(state, v, (state.bias - self.bias_before) / dt)
             self.posture_velocity = self._posture_velocity(k, q)
         target = self._target(k)
         now = Now(q, v, self.last_change, self.last_torque, state, self.brake, dt)
@@ -204,13 +203,13 @@ class _Roller:
         if k >= self.commanded:
             return np.zeros(self.arm.n)
         wanted = self.cell.solver.posture_gain_per_s * (self.start - q)
-        return np.clip(wanted, -POSTURE_SPEED, POSTURE_SPEED)
+        return np.asarray(np.clip(wanted, -POSTURE_SPEED, POSTURE_SPEED))
 
     def _target(self, k: int) -> Array:
         """The twist (6,) to go for: the command's, with the pose error fed back, or zero while stopping."""
         if k >= self.commanded:
             return self.rest
-        target = self.targets[k]
+        target: Array = self.targets[k]
         if self.gain > 0:
             position, rotation = self.arm.pose(self.drive.q if self.drive else self.q[k])
             turn = logarithm(self.wanted_rotation[k] @ rotation.T)
@@ -354,7 +353,9 @@ def now_at(
     return Now(q, v, change, torque, state, brake, dt)
 
 
-def _motion(begin: float, dt: float, q: list[Array], v: list[Array], change: list[Array], stopped: bool) -> Motion:
+def _motion(
+    begin: float, dt: float, q: list[Array], v: list[Array], change: list[Array], stopped: bool
+) -> Motion:
     speeds = np.array(v)
     if stopped:
         speeds[-1] = 0.0

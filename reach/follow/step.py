@@ -49,8 +49,9 @@ class Stepper:
     minimise ‖W (J v⁺ + J̇ v dt − ν)‖² + ρ ‖v⁺ − v_posture‖² under the rows of every known limit. The J̇ term makes
     the twist right at the period's end. W weighs rotation by a length, so both parts are speeds of points.
 
-    Steps live in the slots of a block. `quick` takes the first solver's word and leaves the check to the block; `careful` checks
-    at once, falls back to the second solver and, where all rows together have no point, lets soft ones give way.
+    Steps live in the slots of a block. `quick` takes the first solver's word and leaves the check to the block;
+    `careful` checks at once, falls back to the second solver and, where all rows together have no point, lets soft
+    ones give way.
 
     Attributes
     ----------

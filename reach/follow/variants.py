@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import replace
+from typing import Any
 
 from reach.cell import Bound, Cell, JointLimits, Margins, Pose
 
@@ -29,7 +30,7 @@ def scaled_limits(cell: Cell, factor: float) -> Cell:
     """Every limit but position times a factor, the tool's cap too."""
 
     def scaled(limits: JointLimits) -> JointLimits:
-        changed = {}
+        changed: dict[str, Any] = {}
         for name in FIELDS.values():
             bound = getattr(limits, name)
             if bound is not None and name != "position":
@@ -44,7 +45,7 @@ def with_bounds(cell: Cell, values: dict[tuple[str, str | None], float | None], 
     """Limits by (limit, joint) set to ± a value; None takes a limit away. Joint None: the tool."""
 
     def changed(joint: str, limits: JointLimits) -> JointLimits:
-        new = {}
+        new: dict[str, Any] = {}
         for (limit, name), value in values.items():
             if name == joint and limit in FIELDS:
                 new[FIELDS[limit]] = None if value is None else Bound(-value, value, source)

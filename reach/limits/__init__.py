@@ -16,6 +16,5 @@ from reach.limits.torque_rate import TorqueRate
 from reach.limits.velocity import Velocity
 
 LIMITS: dict[str, type[Limit]] = {
-    kind.name: kind
-    for kind in (Position, Velocity, Acceleration, Jerk, Torque, TorqueRate, Duty, ToolSpeed)
+    kind.name: kind for kind in (Position, Velocity, Acceleration, Jerk, Torque, TorqueRate, Duty, ToolSpeed)
 }

@@ -23,13 +23,16 @@ class Brake(NamedTuple):
     """What the joints can do until the next look, `horizon_s` ahead; (n,) each.
 
     deceleration (per s²) and its rate (per s³) that all joints can have together; top: the acceleration that one
-    may have by itself; gain: the most speed it still gains while its acceleration is taken back.
+    may have by itself; soon: the most speed that it may have by the next look; gain: what it still gains while
+    its acceleration is taken back; fastest: the kept-back velocity limit, inf where unknown.
     """
 
     deceleration: Array
     rate: Array
     top: Array
+    soon: Array
     gain: Array
+    fastest: Array
     horizon_s: float
 
 

@@ -1,7 +1,7 @@
 """How fast all joints together can slow down, and how soon: what position and velocity bounds rest on.
 
-A brake takes time to build up under torque-rate and jerk limits (45 to 90 ms at 1,000 N·m/s), so the stopping distance is
-that of a third-order motion. Viability in discrete time for the second-order case: Del Prete, IEEE RA-L 3(1) 2018;
+A brake takes time to build up under torque-rate and jerk limits (45 to 90 ms at 1,000 N·m/s), so the stopping
+distance is that of a third-order motion. Viability in discrete time for the second-order case: Del Prete, IEEE RA-L 3(1) 2018;
 braking distance as a compatibility term: Rubrecht et al., Auton. Robots 32 (2012); Decré et al., ICRA 2009. The
 third-order form and its factor are our own and are tested by adversarial roll-outs.
 """
@@ -14,11 +14,12 @@ import numpy as np
 
 from reach.arm import State
 from reach.cell import Array
-from reach.limits.base import Brake
+from reach.limits.base import Brake, Limit
 
 BRAKE_SHARE = 0.5  # of what torque and acceleration allow; 0.5 held in 1,000 adversarial roll-outs
 DRIFT_CAP = 0.7  # largest share of the torque rate that gravity and Coriolis drift may claim
 UNLIMITED = 1e9  # stands for "no limit known" in rad/s² and rad/s³, where infinity would give 0 * inf
+VAST = 1e15  # N·m and N·m/s, the same for torque and its rate
 STANDSTILL_SHARE = 1e-3  # of the acceleration that is left where the static load takes all the torque
 
 
@@ -27,24 +28,26 @@ class BrakeModel:
 
     Parameters
     ----------
-    acceleration, jerk, torque, torque_rate : (n,)
-        The lesser of both sides of each kept-back limit, inf where unknown.
+    limits : dict of Limit by name
+        Acceleration, jerk, torque and torque rate count, each with its tighter side; inf where unknown.
     horizon_s : float
-        How long an answer serves: until the next look.
+        How long an answer serves: until the period after the next look.
     """
 
-    def __init__(
-        self, acceleration: Array, jerk: Array, torque: Array, torque_rate: Array, horizon_s: float
-    ):
-        self._torque = np.minimum(torque, 1e15)
-        self._rate = np.minimum(torque_rate, 1e15)
-        self._stated = np.isfinite(acceleration)
-        self._acceleration = acceleration
-        self._jerk = np.minimum(BRAKE_SHARE * jerk, UNLIMITED)
+    def __init__(self, limits: dict[str, Limit], horizon_s: float):
+        self._torque = np.minimum(limits["torque"].tighter, VAST)
+        self._rate = np.minimum(limits["torque rate"].tighter, VAST)
+        self._acceleration = limits["acceleration"].tighter
+        self._fastest = limits["velocity"].tighter
+        self._stated = np.isfinite(self._acceleration)
+        self._jerk = np.minimum(BRAKE_SHARE * limits["jerk"].tighter, UNLIMITED)
         self._horizon_s = horizon_s
 
-    def at(self, state: State, bias_rate: Array) -> Brake:
-        """Ability at a state; bias_rate (n,) is how fast the torque at zero acceleration changes, N·m/s."""
+    def at(self, state: State, v: Array, bias_rate: Array) -> Brake:
+        """Ability at a state with joint velocity v (n,).
+
+        bias_rate (n,) is how fast the torque at zero acceleration changes, N·m/s.
+        """
         load = np.abs(state.bias)
         own, top = self._acceleration, self._acceleration
         if not self._stated.all():
@@ -55,13 +58,16 @@ class BrakeModel:
         speed = ((self._rate - drift) / share).min()
         deceleration = (BRAKE_SHARE * min(1.0, max(spare, STANDSTILL_SHARE))) * own
         rate = np.minimum((BRAKE_SHARE * speed) * own, self._jerk)
-        return Brake(deceleration, rate, top, top * top / (2 * rate), self._horizon_s)
+        soon = np.abs(v) + top * self._horizon_s
+        return Brake(deceleration, rate, top, soon, top * top / (2 * rate), self._fastest, self._horizon_s)
 
     def _by_torque(self, state: State, load: Array) -> tuple[Array, Array]:
         """Accelerations where none is stated: the share that torque leaves each joint, and the most it can have."""
         alone = np.minimum(self._torque / np.diagonal(state.mass), UNLIMITED)
         most = np.minimum(np.abs(np.linalg.inv(state.mass)) @ (self._torque + load), UNLIMITED)
-        return np.where(self._stated, self._acceleration, alone), np.where(self._stated, self._acceleration, most)
+        return np.where(self._stated, self._acceleration, alone), np.where(
+            self._stated, self._acceleration, most
+        )
 
 
 def stopping_distance(v: float, a: float, deceleration: float, rate: float) -> float:

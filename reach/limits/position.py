@@ -9,7 +9,9 @@ from reach.limits.base import Fine, Limit, Now
 from reach.limits.brake import largest_velocity
 
 LOOSEST_FACTOR = 8  # times the largest acceleration: a change of velocity that other rows forbid anyway
-APPROACH_PER_S = 10.0  # deceleration over speed of a joint near its end, an order of magnitude, to rank reasons
+APPROACH_PER_S = (
+    10.0  # deceleration over speed of a joint near its end, an order of magnitude, to rank reasons
+)
 
 
 class Position(Limit):
@@ -26,16 +28,18 @@ class Position(Limit):
 
     def keep(self, cell: Cell) -> None:
         margins = cell.margins
-        margin = np.array([margins.position_m if j.sliding else margins.position_rad for j in cell.arm.joints])
+        margin = np.array(
+            [margins.position_m if j.sliding else margins.position_rad for j in cell.arm.joints]
+        )
         self.kept_lo, self.kept_hi = self.lo + margin, self.hi - margin
 
     def look(self, now: Now) -> bool:
         # A joint is watched when it could not stop inside its room from the most speed that it may have by the next
         # look, plus what it gains while its acceleration is taken back.
-        alpha, beta, top, gain, horizon = now.brake
-        soon = np.abs(now.v) + top * (horizon + now.period_s)
-        speed = soon + gain
-        need = soon * horizon + speed * (speed / (2 * alpha) + (top + alpha) / beta + now.period_s)
+        alpha, beta, top, soon, gain, fastest, horizon = now.brake
+        soon = np.minimum(soon, np.maximum(fastest, np.abs(now.v)))
+        speed = np.minimum(soon + gain, np.maximum(fastest, soon))
+        need = soon * horizon + speed * (speed / (2 * alpha) + (top + alpha) / beta)
         room = self.kept - np.concatenate([now.q, -now.q])
         self._near = np.flatnonzero(room < np.concatenate([need, need])).tolist()
         return bool(self._near)

@@ -7,6 +7,8 @@ must pass.
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 import qpsolvers
 
@@ -14,7 +16,7 @@ from reach.cell import Array
 from reach.errors import SolverFailure
 from reach.qp.problem import KKT_TOLERANCE, PRIMAL_TOLERANCE, QpProblem, QpSolution, QpStatus, residuals
 
-BACKENDS: dict[str, dict[str, object]] = {
+BACKENDS: dict[str, dict[str, Any]] = {
     "daqp": {},
     "piqp": {"eps_abs": 1e-10, "eps_rel": 0.0},
     "clarabel": {"tol_gap_abs": 1e-10, "tol_gap_rel": 1e-10, "tol_feas": 1e-10},
@@ -41,7 +43,9 @@ class Solver:
         for wanted in (name, fallback):
             if wanted not in qpsolvers.available_solvers:
                 found = ", ".join(s for s in qpsolvers.available_solvers if s in BACKENDS)
-                raise SolverFailure(f'solver "{wanted}" is not installed (found: {found}); pip install {wanted}')
+                raise SolverFailure(
+                    f'solver "{wanted}" is not installed (found: {found}); pip install {wanted}'
+                )
         self.names = (name, fallback)
 
     def solve(self, problem: QpProblem) -> QpSolution:
@@ -75,8 +79,8 @@ class Solver:
             )
         try:
             answer = qpsolvers.solve_problem(form, name, **BACKENDS[name])
-        except Exception:  # noqa: BLE001 - whatever a backend throws counts as "it gave no answer"
+        except Exception:  # whatever a backend throws counts as "it gave no answer"
             return None
-        if not answer.found or answer.x is None:
+        if not answer.found or answer.x is None or answer.z is None or answer.z_box is None:
             return None
         return answer.x, answer.z, answer.z_box

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from enum import Enum
+from typing import Any
 
 import numpy as np
 
@@ -37,7 +38,7 @@ class QpProblem:
     h: Array
     lb: Array
     ub: Array
-    form: object = None
+    form: Any = None
 
 
 @dataclass(frozen=True, eq=False, slots=True)

@@ -44,7 +44,7 @@ def _limit_kind(suite: ET.Element, result: FollowResult, kind: str) -> None:
     broken = [use for use in broken_limits(result.evidence) if use.limit == kind]
     unknown = ["tool" if joint is None else joint for name, joint in result.evidence.unknown if name == kind]
     if broken:
-        texts = [f"{owner(use)} at {percent(use.utilisation)} % at {use.time_s:.3f} s" for use in broken]
+        texts = [f"{owner(use)} at {percent(use.utilisation)} %" for use in broken]
         _add(case, "failure", "; ".join(texts), "limit")
     elif unknown:
         required = kind in result.cell.accept.require

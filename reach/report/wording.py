@@ -12,7 +12,6 @@ from reach.result import FollowResult
 NOTHING = "–"
 # Marks that turn the writing direction of what follows, and two code points that XML forbids.
 UNSAFE = frozenset("\u202a\u202b\u202c\u202d\u202e\u2066\u2067\u2068\u2069\ufffe\uffff")
-LEAST_TILT_DEG = 1e-6  # below it a shift per degree is rounding
 
 
 def plain(text: str) -> str:
@@ -94,9 +93,9 @@ def remedy_line(remedy: Remedy) -> str:
 def tilt_meaning(result: FollowResult) -> str | None:
     """Return what a tilt error of one degree does at the next contact; None where no apex is known."""
     shifts = [
-        1000 * strike.next_contact_shift_m / strike.tilt_error_deg
+        1000 * strike.shift_per_degree_m
         for strike in result.evidence.strikes
-        if strike.next_contact_shift_m is not None and strike.tilt_error_deg > LEAST_TILT_DEG
+        if strike.shift_per_degree_m is not None
     ]
     if not shifts:
         return None
