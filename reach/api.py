@@ -6,20 +6,21 @@ from collections.abc import Callable
 from dataclasses import replace
 from os import PathLike
 from pathlib import Path
-from typing import Literal
+from typing import Literal, get_args
 
 import numpy as np
 from numpy.typing import ArrayLike
 
-from reach.cell import Cell, Follow, Vec3
+from reach.cell import Cell, CommandLog, Follow, Vec3
 from reach.describe import describe_cell as describe_cell
-from reach.errors import Fault, InputError
+from reach.errors import Fault, FaultList, InputError
 from reach.follow.answer import answer
 from reach.formats import check_arrays
 from reach.result import FollowResult
 
 Frame = Literal["world", "base", "paddle"]
 Point = Literal["strike", "tip"] | Vec3
+NO_LOG = CommandLog(np.zeros(0), np.zeros((0, 6)))
 
 
 def follow_commands(
@@ -32,6 +33,7 @@ def follow_commands(
     strikes: ArrayLike | None = None,
     poses: ArrayLike | None = None,
     workers: int = 1,
+    seed: int = 0,
     advice: bool = True,
     progress: Callable[[str], None] | None = None,
 ) -> FollowResult:
@@ -53,6 +55,8 @@ def follow_commands(
         px, py, pz in m and a unit quaternion qw, qx, qy, qz of the strike frame in the world.
     workers : int
         Processes for the re-runs of the searches. Above 1, call from under `if __name__ == "__main__":`.
+    seed : int
+        Of the random starts of inverse kinematics.
     advice : bool
         False leaves out the searches (headroom, needs, remedies), which take most of the time.
     progress : callable
@@ -67,30 +71,56 @@ def follow_commands(
     InputError
         Faults of the arrays, or no log, frame or point given anywhere.
     """
-    if (t_s is None) != (twists is None):
-        raise InputError([Fault("arrays", "follow", "give t_s and twists together, or neither")])
-    settings = cell.follow
+    settings = _settings(cell, frame, point)
     if t_s is not None and twists is not None:
-        log = check_arrays(
-            np.asarray(t_s, dtype=float),
-            np.asarray(twists, dtype=float),
-            None if strikes is None else np.asarray(strikes),
-            None if poses is None else np.asarray(poses, dtype=float),
+        gaps = (settings.max_gap_s, settings.time_faults)
+        settings = replace(settings, commands=check_arrays(t_s, twists, strikes, poses, *gaps))
+    elif any(given is not None for given in (t_s, twists, strikes, poses)):
+        raise InputError(
+            [Fault("arrays", "follow", "give t_s and twists together; strikes and poses belong to them")]
         )
-        if settings is None:
-            if frame is None or point is None:
-                what = "say what the twists mean: frame (world, base or paddle) and point (strike, tip or x, y, z)"
-                raise InputError([Fault("arrays", "follow", what)])
-            settings = Follow(frame=frame, point=point, commands=log)
-        settings = replace(settings, commands=log)
-    if settings is None:
+    elif cell.follow is None:
         raise InputError([Fault(cell.path, "follow", "the cell has no [follow] table; give t_s and twists")])
-    settings = replace(settings, frame=frame or settings.frame, point=point or settings.point)
-    return answer(replace(cell, follow=settings), workers, advice, progress)
+    return answer(replace(cell, follow=settings), workers, advice, progress, seed)
 
 
-def write_results(result: FollowResult, folder: str | PathLike[str]) -> list[Path]:
+def _settings(cell: Cell, frame: object, point: object) -> Follow:
+    """The cell's [follow] with frame and point as given, checked; its log still the cell's own."""
+    settings, faults = cell.follow, FaultList("arrays")
+    if frame is None and settings is not None:
+        frame = settings.frame
+    if point is None and settings is not None:
+        point = settings.point
+    if frame is None or point is None:
+        faults.add(
+            "follow",
+            "say what the twists mean: frame (world, base, paddle) and point (strike, tip, or x, y, z)",
+        )
+        faults.raise_if_any()
+    if frame not in get_args(Frame):
+        faults.add("frame", f"{frame!r} is none of world, base, paddle; say along whose axes the twists are")
+    if not isinstance(point, str) and point is not None:
+        numbers = np.asarray(point, dtype=object).ravel().tolist()
+        if len(numbers) == 3 and all(isinstance(x, int | float) and np.isfinite(x) for x in numbers):
+            point = tuple(float(x) for x in numbers)
+    if not (isinstance(point, tuple) or point in ("strike", "tip")) or (
+        isinstance(point, tuple) and len(point) != 3
+    ):
+        faults.add(
+            "point", f"{point!r} is none of strike, tip, or three finite numbers x, y, z in the face frame"
+        )
+    faults.raise_if_any()
+    if settings is None:
+        return Follow(frame=frame, point=point, commands=NO_LOG)  # type: ignore[arg-type]  # checked above
+    return replace(settings, frame=frame, point=point)  # type: ignore[arg-type]  # checked above
+
+
+def write_results(
+    result: FollowResult, folder: str | PathLike[str], junit: str | PathLike[str] | None = None
+) -> list[Path]:
     """Write verdict.json, motion.csv, report.html and evidence/ into a folder, each whole or not at all.
+
+    `junit` names one more file, in JUnit's XML.
 
     Raises
     ------
@@ -99,4 +129,4 @@ def write_results(result: FollowResult, folder: str | PathLike[str]) -> list[Pat
     """
     from reach.report import write_folder
 
-    return write_folder(result, Path(folder))
+    return write_folder(result, Path(folder), None if junit is None else Path(junit))

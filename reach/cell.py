@@ -277,6 +277,8 @@ class Follow:
     strikes: Literal["marked", "guessed-ok"] = "marked"
     strike_min_m_s: float = 0.1
     strike_min_gap_s: float = 0.15
+    max_gap_s: float = 0.1
+    time_faults: Literal["refuse", "mend"] = "refuse"
 
 
 @dataclass(frozen=True)

@@ -8,7 +8,6 @@ import os
 import sys
 import traceback
 from collections.abc import Callable, Sequence
-from pathlib import Path
 
 from reach import __version__
 from reach.errors import ReachError
@@ -88,6 +87,9 @@ def _common(parser: argparse.ArgumentParser, command: str) -> None:
         default=min(2, os.cpu_count() or 1),
         help="processes (default: %(default)s)",
     )
+    parser.add_argument(
+        "--seed", metavar="N", type=int, default=0, help="of random starts (default: %(default)s)"
+    )
     parser.add_argument("--junit", metavar="FILE", help="also write a JUnit XML file")
 
 
@@ -107,14 +109,17 @@ def _describe(options: argparse.Namespace) -> int:
 
 def _follow(options: argparse.Namespace) -> int:
     from reach import follow_commands, load_cell, write_results
-    from reach.report import WRITERS, write_files
+    from reach.report import WRITERS
 
     cell = load_cell(options.cell, need_follow=True)
-    progress = _progress(options.quiet)
-    result = follow_commands(cell, workers=options.workers, advice=not options.no_advice, progress=progress)
-    written = write_results(result, options.out)
-    if options.junit:
-        write_files({Path(options.junit): WRITERS["junit"](result)})
+    result = follow_commands(
+        cell,
+        workers=options.workers,
+        seed=options.seed,
+        advice=not options.no_advice,
+        progress=_progress(options.quiet),
+    )
+    written = write_results(result, options.out, options.junit)
     if options.json:
         print(WRITERS["json"](result), end="")
     elif not options.quiet:

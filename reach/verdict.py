@@ -33,7 +33,7 @@ class Verdict:
 
 def broken_limits(evidence: Evidence) -> list[Use]:
     """Uses above their stated limit."""
-    return [use for use in evidence.uses if use.utilisation is not None and use.utilisation > 1 + ROUNDING]
+    return [u for u in evidence.uses if u.utilisation is not None and not u.utilisation <= 1 + ROUNDING]
 
 
 def judge(evidence: Evidence, accept: Accept) -> Verdict:

@@ -65,13 +65,13 @@ def strike_faults(errors: Errors, accept: Accept) -> tuple[str, ...]:
     size = np.maximum(np.abs(errors.wanted_normal), 1e-9)
     share = (errors.normal - errors.wanted_normal) * np.sign(errors.wanted_normal) / size
     worst = share[np.argmax(np.abs(share))]
-    if abs(worst) > accept.strike_speed_error_share:
+    if not abs(worst) <= accept.strike_speed_error_share:  # so that a nan fails, here and below
         found.append(f"too {'fast' if worst > 0 else 'slow'} by {100 * abs(worst):.1f} %")
-    if (lateral := errors.lateral.max()) > accept.strike_lateral_m_s:
+    if not (lateral := errors.lateral.max()) <= accept.strike_lateral_m_s:
         found.append(f"{lateral:.3f} m/s sideways")
-    if (off := errors.position.max()) > accept.strike_position_m:
+    if not (off := errors.position.max()) <= accept.strike_position_m:
         found.append(f"{1000 * off:.1f} mm off")
-    if (tilt := errors.tilt.max()) > accept.strike_tilt_error_rad:
+    if not (tilt := errors.tilt.max()) <= accept.strike_tilt_error_rad:
         found.append(f"tilted by {np.degrees(tilt):.2f}°")
     return tuple(found)
 
@@ -165,6 +165,6 @@ def throughout_faults(track_: Track, accept: Accept) -> tuple[str, ...]:
     found = []
     for values, allowed, text, factor in checks:
         at = int(np.argmax(np.where(during, values, -1.0)))
-        if values[at] > allowed:
+        if not values[at] <= allowed:
             found.append(text.format(values[at] * factor) + f" at {track_.t_s[at]:.3f} s")
     return tuple(found)

@@ -18,7 +18,7 @@ from reach.follow.needs import needs
 from reach.follow.reading import better_reading, reading_in_words
 from reach.follow.reasons import deciding, reasons
 from reach.follow.remedies import remedies
-from reach.follow.roll import Roll
+from reach.follow.rolled import Roll
 from reach.follow.search import runner
 from reach.follow.variants import without_margins, without_pose_gain
 from reach.kinematics import Chain
@@ -32,7 +32,11 @@ REPLAYED = (
 
 
 def answer(
-    cell: Cell, workers: int = 1, advice: bool = True, progress: Callable[[str], None] | None = None
+    cell: Cell,
+    workers: int = 1,
+    advice: bool = True,
+    progress: Callable[[str], None] | None = None,
+    seed: int = 0,
 ) -> FollowResult:
     """Follow a cell's log and say whether the arm delivers it, why not, and what would help.
 
@@ -42,6 +46,7 @@ def answer(
     workers : processes for the re-runs
     advice : False leaves out the searches (headroom, needs, remedies), which take most of the time
     progress : called with a line of what is being done
+    seed : of inverse kinematics' random starts
 
     Raises
     ------
@@ -54,7 +59,7 @@ def answer(
     assert follow is not None, "the cell has no log to follow"
     if progress:
         progress("following the log")
-    base = run(cell)
+    base = run(cell, seed=seed)
     cell = base.cell
     demand = _demand(base)
     found, strikes = reasons(base, demand)
@@ -76,7 +81,7 @@ def answer(
         with runner(workers, progress) as runs:
             share, headroom_text = headroom(cell, runs, base.passed)
             wanted = needs(cell, base, deciding(found), runs)
-            helps = remedies(cell, base, wanted, deciding(found), runs)
+            helps = remedies(cell, base, wanted, deciding(found), runs, seed)
     return FollowResult(
         cell=cell,
         reading=reading_in_words(follow),

@@ -14,7 +14,8 @@ from reach.evidence.record import Evidence, Strike
 from reach.evidence.strikes import compare, judge_strike, strike_faults, throughout_faults, track
 from reach.follow.contacts import Contacts, contacts
 from reach.follow.reference import Reference, build_reference
-from reach.follow.roll import Roll, roll
+from reach.follow.roll import roll
+from reach.follow.rolled import Roll
 from reach.kinematics import Chain, logarithm
 from reach.limits import LIMITS
 from reach.limits.base import Limit
@@ -55,18 +56,19 @@ def build_limits(cell: Cell) -> dict[str, Limit]:
     return {name: kind(cell) for name, kind in LIMITS.items()}
 
 
-def run(cell: Cell, quick: bool = False) -> Run:
+def run(cell: Cell, quick: bool = False, seed: int = 0) -> Run:
     """Follow the cell's log once and judge it.
 
     Parameters
     ----------
     quick : end at the first strike that misses; for searches that only ask whether the verdict holds
+    seed : of inverse kinematics' random starts, where start = "auto"
     """
     follow = cell.follow
     assert follow is not None, "the cell has no log to follow"
     arm = Arm(cell.arm, cell.paddle)
     limits = build_limits(cell)
-    cell, blocked = _with_start(cell, arm)
+    cell, blocked = _with_start(cell, arm, seed)
     if cell.arm.start is None:
         found = contacts(follow, None)
         evidence = _no_motion(cell, limits, found, blocked)
@@ -106,7 +108,7 @@ def rotation_of(quaternion: Array) -> Array:
     )
 
 
-def _with_start(cell: Cell, arm: Arm) -> tuple[Cell, tuple[str, ...]]:
+def _with_start(cell: Cell, arm: Arm, seed: int) -> tuple[Cell, tuple[str, ...]]:
     """Fill in start = "auto" by inverse kinematics; say what blocks where none is found or it is far off."""
     assert cell.follow is not None
     pose = cell.follow.commands.pose
@@ -114,7 +116,7 @@ def _with_start(cell: Cell, arm: Arm) -> tuple[Cell, tuple[str, ...]]:
         if pose is None:
             what = 'start = "auto" needs the pose columns in the command log; give start_rad instead'
             raise InputError([Fault(cell.path, "arm.start", what)])
-        answer = postures(arm, pose[0, :3], rotation_of(pose[0, 3:]))
+        answer = postures(arm, pose[0, :3], rotation_of(pose[0, 3:]), seed=seed)
         if len(answer.q) == 0:
             return cell, (f"reach: no posture for the log's first pose; {answer.text}",)
         best = tuple(float(x) for x in answer.q[0])

@@ -10,7 +10,7 @@ import numpy as np
 from reach.arm import Arm
 from reach.cell import Cell
 from reach.follow.bench import build_limits
-from reach.follow.roll import Roll, now_at
+from reach.follow.rolled import Roll, now_at
 from reach.follow.rows import Lanes, Rows
 from reach.limits.base import Now
 

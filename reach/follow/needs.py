@@ -64,7 +64,8 @@ def _unknown_needs(cell: Cell, base: Run, runs: Runner, units: dict[Key, str]) -
     for key in unknown:
         if key not in wanted:
             limit, joint = key
-            text = f"{joint}: the motion takes {_number(peaks[key])} {units[key]} of {limit}; not required, not searched"
+            text = f"{joint}: the motion takes {_number(peaks[key])} {units[key]} of {limit}"
+            text += "; not required, not searched"
             found.append(Need(joint, limit, None, peaks[key], units[key], text))
     return found
 
@@ -81,7 +82,9 @@ def _least(cell: Cell, measures: dict[Key, float], runs: Runner) -> float | None
     """The least multiple of some limits' measures, all at once, under which the command passes."""
 
     def passes(shares: Sequence[float]) -> list[bool]:
-        stated = [{k: _spared(cell, k, s * measure) for k, measure in measures.items()} for s in shares]
+        stated: list[dict[Key, float | None]] = [
+            {k: _spared(cell, k, s * measure) for k, measure in measures.items()} for s in shares
+        ]
         return runs.passes([with_bounds(cell, values, "search") for values in stated])
 
     return least_passing(passes, SCAN, RESOLUTION) if measures else None

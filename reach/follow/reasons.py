@@ -95,12 +95,14 @@ class _Book:
         if self._drive_alone_misses(strike):
             drive = self.cell.drive
             assert drive is not None
-            words = f"delay {1000 * drive.delay_s:g} ms, lag {1000 * drive.lag_s:g} ms, jitter ±{1000 * drive.jitter_s:g} ms"
-            words = f"{text}: even exact tracking misses behind the drive ({words})"
+            words = (
+                f"{text}: even exact tracking misses behind the drive (delay {1000 * drive.delay_s:g} ms, "
+                f"lag {1000 * drive.lag_s:g} ms, jitter ±{1000 * drive.jitter_s:g} ms)"
+            )
             found.insert(0, self._without_limit("drive tracking", strike, words))
         if not found:
-            words = f"no limit held the arm back; the command changes within one control period of {self.cell.period_s:g} s"
-            found = [self._without_limit("control period", strike, f"{text}: {words}")]
+            words = f"{text}: no limit held the arm back; the command changes within one control period"
+            found = [self._without_limit("control period", strike, words)]
         return found
 
     def _drive_alone_misses(self, strike: Strike) -> bool:

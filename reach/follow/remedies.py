@@ -25,13 +25,18 @@ POSTURES_TRIED = 8
 
 
 def remedies(
-    cell: Cell, base: Run, needs: Sequence[Need], deciding: Sequence[tuple[str, str | None]], runs: Runner
+    cell: Cell,
+    base: Run,
+    needs: Sequence[Need],
+    deciding: Sequence[tuple[str, str | None]],
+    runs: Runner,
+    seed: int,
 ) -> tuple[Remedy, ...]:
     """Changes that make a log deliverable, or more of its strikes, in the order in which a user can make them."""
     if base.passed or base.evidence.motion is None:
         return ()
     found: list[Remedy | None] = [
-        _start_posture(cell, base, runs),
+        _start_posture(cell, base, runs, seed),
         _slower(cell, base, runs),
         _lighter(cell, runs),
         _base_height(cell, base, runs),
@@ -41,11 +46,11 @@ def remedies(
     return tuple(remedy for remedy in found if remedy is not None)
 
 
-def _start_posture(cell: Cell, base: Run, runs: Runner) -> Remedy | None:
+def _start_posture(cell: Cell, base: Run, runs: Runner, seed: int) -> Remedy | None:
     """Another posture for the same paddle pose."""
     runs.say("remedy: another start posture")
     arm, start = Arm(cell.arm, cell.paddle), np.array(cell.arm.start)
-    answer = postures(arm, *arm.pose(start), near=start, starts=POSTURE_STARTS)
+    answer = postures(arm, *arm.pose(start), near=start, seed=seed, starts=POSTURE_STARTS)
     others = [tuple(float(x) for x in q) for q in answer.q[1 : POSTURES_TRIED + 1]]
     outcomes = runs.outcomes([started_at(cell, q) for q in others], quick=False)
     best = _best(outcomes, base)

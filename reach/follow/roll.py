@@ -2,18 +2,16 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
-from dataclasses import dataclass
-from typing import NamedTuple
+from collections.abc import Callable
 
 import numpy as np
 
 from reach.arm import Arm
 from reach.cell import Array, Cell
-from reach.evidence.motion import Motion
 from reach.follow.direction import same_direction
 from reach.follow.drive import DriveState
 from reach.follow.reference import Reference
+from reach.follow.rolled import GaveWay, Roll, motion_of, now_at
 from reach.follow.step import BLOCK, Step, Stepper
 from reach.kinematics import logarithm
 from reach.limits.base import Brake, Limit, Now
@@ -24,51 +22,6 @@ REST_SPEED = 1e-7  # rad/s or m/s: below it the arm stands
 STOP_WITHIN_S = 5.0  # an arm that does not stand this long after the command's end counts as not stopping
 GAVE_WAY = 1e-6  # smaller slack is rounding
 LOOK_EVERY = 5  # steps between looks at the braking ability and at which joints come near a bound
-
-
-class GaveWay(NamedTuple):
-    """A limit that a step could not keep: by how much, in rad/s (m/s) of velocity change or in shares of torque."""
-
-    step: int
-    limit: str
-    joint: int
-    amount: float
-
-
-@dataclass(frozen=True, eq=False)
-class Roll:
-    """A rolled-out motion and what happened on the way; k steps.
-
-    Attributes
-    ----------
-    sent : Motion of the joints as sent; `delivered` behind the drive, the same object where there is none
-    targets : (k, 6) twist each step went for, pose feedback included
-    shortfall : (k,) m/s, by which it missed: ‖W (J v⁺ + J̇ v dt − ν)‖
-    torque : (k, n) at each step's start
-    z, z_box : (k, 2m), (k, n) multipliers of each step's torque rows and box, zero where it was not plainly solved
-    z_tool : (k,) the largest of the tool's rows
-    brakes : braking ability that each step was planned with
-    gave_way : what could not be kept
-    elastic_steps, failed_steps, fallback_steps : int
-    stopped : whether the arm stood at the end
-    end_row : first row after the command's end
-    """
-
-    sent: Motion
-    delivered: Motion
-    targets: Array
-    shortfall: Array
-    torque: Array
-    z: Array
-    z_box: Array
-    z_tool: Array
-    brakes: tuple[Brake, ...]
-    gave_way: tuple[GaveWay, ...]
-    elastic_steps: int
-    failed_steps: int
-    fallback_steps: int
-    stopped: bool
-    end_row: int
 
 
 GiveUp = Callable[[int, Array, Array], bool]
@@ -241,12 +194,8 @@ class _Roller:
         count = k - self.checked
         if count == 0:
             return None
-        block, bad = self.stepper.block, None
-        unchecked = [s for s in range(count) if self.checked + s not in self.noted]
-        if len(unchecked) == count:
-            bad = block.first_bad(count)
-        elif unchecked:
-            bad = next((s for s in unchecked if block.first_bad(s + 1) == s), None)
+        block = self.stepper.block
+        bad = block.first_bad(count, [s for s in range(count) if self.checked + s in self.noted])
         good = count if bad is None else bad
         x = block.x[:good]
         error = self.stepper.error[:good] + (self.stepper.task[:good] @ x[..., None])[..., 0]
@@ -279,12 +228,12 @@ class _Roller:
     def _finish(self, stopped: bool) -> Roll:
         dt, steps = self.dt, len(self.change)
         begin = float(self.reference.t_s[0])
-        sent = _motion(begin, dt, self.q, self.v, self.change, stopped)
+        sent = motion_of(begin, dt, self.q, self.v, self.change, stopped)
         delivered = sent
         if self.drive:
             q = [*(pair[0] for pair in self.real), self.drive.q]
             v = [*(pair[1] for pair in self.real), self.drive.v]
-            delivered = _motion(begin, dt, q, v, self.real_change, stopped)
+            delivered = motion_of(begin, dt, q, v, self.real_change, stopped)
         n, m = self.arm.n, self.stepper.rows.count
         z_tool = np.zeros(steps)
         for k, step in self.noted.items():
@@ -334,31 +283,3 @@ class _Roller:
 
     def _now(self, k: int) -> Now:
         return now_at(self.arm, self.q[k], self.v[k], self.change, self.torque, self.brake_of[k], k, self.dt)
-
-
-def now_at(
-    arm: Arm,
-    q: Array,
-    v: Array,
-    changes: Sequence[Array] | Array,
-    torques: Sequence[Array] | Array,
-    brake: Brake,
-    k: int,
-    dt: float,
-) -> Now:
-    """What step k knew: the state (q, v) and what the step before did."""
-    state = arm.at(q, v)
-    change = changes[k - 1] if k else np.zeros(arm.n)
-    torque = torques[k - 1] if k else state.bias
-    return Now(q, v, change, torque, state, brake, dt)
-
-
-def _motion(
-    begin: float, dt: float, q: list[Array], v: list[Array], change: list[Array], stopped: bool
-) -> Motion:
-    speeds = np.array(v)
-    if stopped:
-        speeds[-1] = 0.0
-    n = speeds.shape[1]
-    accelerations = np.vstack([np.array(change).reshape(-1, n) / dt, np.zeros((1, n))])
-    return Motion(begin, dt, np.array(q), speeds, accelerations)

@@ -139,7 +139,7 @@ def _ball(table: Mapping[str, Any], given: Mapping[str, Any], faults: FaultList)
 def _follow(table: Mapping[str, Any], faults: FaultList, reading: Reading) -> Follow | None:
     """The log, read by the reader of its suffix, and how to follow it."""
     values = dict(table)
-    named, max_gap_s, time_faults = (values.pop(key) for key in ("commands", "max_gap_s", "time_faults"))
+    named = values.pop("commands")
     if not named:
         return None
     path = beside(faults.file, named)
@@ -152,7 +152,7 @@ def _follow(table: Mapping[str, Any], faults: FaultList, reading: Reading) -> Fo
     if content is None:
         return None
     try:
-        commands = reader(content, path, max_gap_s, time_faults)
+        commands = reader(content, path, values["max_gap_s"], values["time_faults"])
     except InputError as error:
         reading.faults.extend(error.faults)
         return None

@@ -1,9 +1,9 @@
 """How fast all joints together can slow down, and how soon: what position and velocity bounds rest on.
 
 A brake takes time to build up under torque-rate and jerk limits (45 to 90 ms at 1,000 N·m/s), so the stopping
-distance is that of a third-order motion. Viability in discrete time for the second-order case: Del Prete, IEEE RA-L 3(1) 2018;
-braking distance as a compatibility term: Rubrecht et al., Auton. Robots 32 (2012); Decré et al., ICRA 2009. The
-third-order form and its factor are our own and are tested by adversarial roll-outs.
+distance is that of a third-order motion. Viability in discrete time for the second-order case: Del Prete, IEEE
+RA-L 3(1) 2018; braking distance as a compatibility term: Rubrecht et al., Auton. Robots 32 (2012); Decré et al.,
+ICRA 2009. The third-order form and its factor are our own and are tested by adversarial roll-outs.
 """
 
 from __future__ import annotations

@@ -1,8 +1,8 @@
 """The quadratic-programming solvers, called through qpsolvers; its only importer.
 
 Allowed are solvers that never gave a false answer or hung on the problems of this program. Others flag
-infeasible or non-finite answers as found, or hang on badly scaled rows. To add one: a line in BACKENDS, and the tests' problem set
-must pass.
+infeasible or non-finite answers as found, or hang on badly scaled rows. To add one: a line in BACKENDS, and the
+tests' problem set must pass.
 """
 
 from __future__ import annotations

@@ -18,7 +18,7 @@ FILES = (("motion.csv", "csv"), ("report.html", "html"), ("verdict.json", "json"
 EVIDENCE = "evidence"
 
 
-def write_folder(result: FollowResult, out_dir: Path) -> list[Path]:
+def write_folder(result: FollowResult, out_dir: Path, junit: Path | None = None) -> list[Path]:
     """Write verdict.json, motion.csv, report.html and evidence/ into a folder, which is made where needed.
 
     Returns
@@ -35,6 +35,8 @@ def write_folder(result: FollowResult, out_dir: Path) -> list[Path]:
     contents: dict[Path, bytes | None] = {
         out_dir / EVIDENCE / name: content for name, content in evidence_files(result).items()
     }
+    if junit is not None:
+        contents[junit] = as_bytes(WRITERS["junit"](result))
     for name, kind in FILES:
         contents[out_dir / name] = as_bytes(WRITERS[kind](result))
     return write_files(contents)
