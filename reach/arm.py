@@ -26,12 +26,15 @@ class State(NamedTuple):
     jacobian : (6, n) linear then angular rows, world axes, about the strike point
     drift : (6,) J̇ v, classical acceleration of the strike point at zero joint acceleration
     mass : (n, n) joint-space inertia with reflected rotor inertia, kg·m²
+    slope : (n,) how the torque at zero acceleration grows with each joint's own speed by damping and dry
+        friction, N·m·s/rad
     bias : (n,) torque at zero joint acceleration: Coriolis, gravity, damping, dry friction, N·m
     """
 
     jacobian: Array
     drift: Array
     mass: Array
+    slope: Array
     bias: Array
 
 
@@ -57,6 +60,7 @@ class Arm:
         limits = [joint.limits for joint in spec.joints]
         self.damping = np.array([item.damping or 0.0 for item in limits])
         self.friction = np.array([item.friction or 0.0 for item in limits])
+        self._rub_slope = self.friction / np.where(self.sliding, FRICTION_WIDTH_M_S, FRICTION_WIDTH_RAD_S)
         self._rubs = bool(self.friction.any())
         self._friction_width = np.where(self.sliding, FRICTION_WIDTH_M_S, FRICTION_WIDTH_RAD_S)
         self._model = _reduced_model(spec)
@@ -77,11 +81,19 @@ class Arm:
         model, data, frame = self._model, self._data, self._frame
         pin.computeAllTerms(model, data, q, v)
         pin.updateFramePlacement(model, data, frame)
-        bias = data.nle + self._losses(v)
+        if self._rubs:
+            rub = np.tanh(v / self._friction_width)
+            bias = data.nle + self.damping * v
+            bias += self.friction * rub
+            rub *= rub
+            slope = self.damping + self._rub_slope * (1 - rub)
+        else:
+            bias, slope = data.nle + self.damping * v, self.damping
         return State(
             pin.getFrameJacobian(model, data, frame, WORLD_AXES),
             pin.getFrameJacobianTimeVariation(model, data, frame, WORLD_AXES).dot(v),
             data.M,
+            slope,
             bias,
         )
 
@@ -194,4 +206,10 @@ def _on_held_base(arm: pin.Model) -> pin.Model:
     base.gravity = arm.gravity
     joint = base.addJoint(0, pin.JointModelFreeFlyer(), pin.SE3.Identity(), "stand")
     frame = base.addFrame(pin.Frame("stand", joint, 0, pin.SE3.Identity(), pin.BODY))
-    return pin.appendModel(base, arm, frame, pin.SE3.Identity())
+    whole = pin.appendModel(base, arm, frame, pin.SE3.Identity())
+    whole.gravity = arm.gravity
+    whole.inertias[1] = pin.Inertia.Zero()  # of what does not move
+    armature = np.zeros(whole.nv)
+    armature[6:] = arm.armature
+    whole.armature = armature
+    return whole

@@ -12,7 +12,7 @@ from reach.cell import Cell
 from reach.follow.bench import build_limits
 from reach.follow.rolled import Roll, now_at
 from reach.follow.rows import Lanes, Rows
-from reach.limits.base import Now
+from reach.limits.base import SIGNS, Now
 
 BLAME_FROM_M_S = 1e-3  # shortfall of a step from which its multipliers are looked at
 ACTIVE = 1e-12  # multipliers up to here are none
@@ -33,7 +33,7 @@ class Blames:
         self._arm, self._roll, self._dt = arm, roll, cell.period_s
         limits = build_limits(cell)
         self._rows = Rows(limits, arm.n, cell.period_s)
-        self._percent = {name: limit.percent(cell.period_s) for name, limit in limits.items()}
+        self._percent = {name: limit.percent() for name, limit in limits.items()}
         self.of = cache(self._of)
 
     def _of(self, step: int) -> list[Blame]:
@@ -51,13 +51,11 @@ class Blames:
                 roll.torque,
                 roll.brakes[step],
                 step,
-                self._dt,
             )
-            self._rows.look(now)
-            box = np.concatenate([np.maximum(z_box, 0.0), np.maximum(-z_box, 0.0)])
+            box = np.maximum(SIGNS * z_box, 0.0)
             found += self._tightest(self._rows.joint, now, box, np.ones(n), step)
-            torque, m = np.zeros(2 * n), len(self._rows.limited)
-            torque[self._rows.limited], torque[self._rows.limited + n] = z[:m], z[m:]
+            torque = np.zeros((2, n))
+            torque[:, self._rows.limited] = z.reshape(2, -1)
             found += self._tightest(self._rows.torque, now, torque, self._rows.scale, step)
         if roll.z_tool[step] > ACTIVE:
             gain = roll.z_tool[step] * self._percent["tool speed"][0] / roll.shortfall[step]
@@ -71,10 +69,14 @@ class Blames:
         if not lanes.kinds:
             return []
         lanes.tightest(now)
-        n, found = self._arm.n, []
-        for row in np.flatnonzero(multipliers > ACTIVE):
-            joint = int(row % n)
-            kind = lanes.kinds[int(np.argmin(lanes.values[:, row]))].name
-            gain = multipliers[row] * self._percent[kind][joint] * scale[joint] / self._roll.shortfall[step]
+        found = []
+        for side, joint in np.argwhere(multipliers > ACTIVE).tolist():
+            kind = lanes.kinds[int(np.argmin(lanes.values[:, side, joint]))].name
+            gain = (
+                multipliers[side, joint]
+                * self._percent[kind][joint]
+                * scale[joint]
+                / self._roll.shortfall[step]
+            )
             found.append(Blame(kind, joint, float(gain)))
         return found

@@ -14,14 +14,14 @@ from reach.follow.reference import Reference
 from reach.follow.rolled import GaveWay, Roll, motion_of, now_at
 from reach.follow.step import BLOCK, Step, Stepper
 from reach.kinematics import logarithm
-from reach.limits.base import Brake, Limit, Now
+from reach.limits.base import SIGNS, Brake, Limit, Now
 from reach.limits.brake import BrakeModel
 
+POSTURE_EVERY = 5  # steps between looks at that return
 POSTURE_SPEED = 0.2  # rad/s or m/s: cap of the slow return toward the start posture
 REST_SPEED = 1e-7  # rad/s or m/s: below it the arm stands
 STOP_WITHIN_S = 5.0  # an arm that does not stand this long after the command's end counts as not stopping
 GAVE_WAY = 1e-6  # smaller slack is rounding
-LOOK_EVERY = 5  # steps between looks at the braking ability and at which joints come near a bound
 
 
 GiveUp = Callable[[int, Array, Array], bool]
@@ -70,7 +70,7 @@ class _Roller:
         self.dt, self.start = cell.period_s, start
         self.keeps_direction = cell.follow.shortfall == "same-direction"
         self.stepper = Stepper(cell, limits)
-        self.brakes = BrakeModel(limits, (LOOK_EVERY + 1) * self.dt)
+        self.brakes = BrakeModel(limits, self.dt)
         self.commanded = int(np.ceil((reference.end_s - reference.t_s[0]) / self.dt - 1e-6))
         self.targets = list(reference.targets(self.dt, self.commanded))
         self.rest = np.zeros(6)
@@ -99,19 +99,18 @@ class _Roller:
 
     def run(self) -> Roll:
         last = self.commanded + int(STOP_WITHIN_S / self.dt)
-        stopped, k, look = False, 0, True
+        stopped, k = False, 0
         while True:
             ended = k >= last or (self.give_up is not None and self._gives_up(k))
             stopped = not ended and k >= self.commanded and self._at_rest()
             if ended or stopped or k - self.checked == BLOCK:
                 if (bad := self._settle(k)) is not None:
-                    k, look = self._back_to(bad), True
+                    k = self._back_to(bad)
                     continue
                 if ended or stopped:
                     break
-            look = look or k % LOOK_EVERY == 0 or k == self.commanded
-            self._step(k, look)
-            k, look = k + 1, False
+            self._step(k)
+            k += 1
         return self._finish(stopped)
 
     def _gives_up(self, k: int) -> bool:
@@ -123,19 +122,16 @@ class _Roller:
         still = np.abs(self.v[-1]).max() <= REST_SPEED and np.abs(self.last_change).max() <= REST_SPEED
         return bool(still) and (self.drive is None or self.drive.settled(REST_SPEED))
 
-    def _step(self, k: int, look: bool) -> None:
+    def _step(self, k: int) -> None:
         """Solve and apply step k."""
         q, v, state, dt = self.q[k], self.v[k], self.state, self.dt
-        if look:
-            self.brake = self.brakes.at(state, v, (state.bias - self.bias_before) / dt)
+        if k % POSTURE_EVERY == 0 or k == self.commanded:
             self.posture_velocity = self._posture_velocity(k, q)
         target = self._target(k)
-        now = Now(q, v, self.last_change, self.last_torque, state, self.brake, dt)
-        if look:
-            self.stepper.rows.look(now)
+        brake = self.brakes.at(state, self.bias_before)
+        now = Now(q, v, self.last_change, self.last_torque, state, brake)
         change = self._solve(k, now, target)
-        self.last_torque = state.mass.dot(change / dt)
-        self.last_torque += state.bias
+        self.last_torque = self.stepper.rows.torque_of(now, change)
         next_v = v + change
         next_q = (v + next_v) * (dt / 2)
         next_q += q
@@ -144,7 +140,7 @@ class _Roller:
         self.change.append(change)
         self.target.append(target)
         self.torque.append(self.last_torque)
-        self.brake_of.append(self.brake)
+        self.brake_of.append(brake)
         if self.drive:
             self.real.append((self.drive.q, self.drive.v))
             self.real_change.append(self.drive.advance(next_v))
@@ -259,13 +255,13 @@ class _Roller:
         )
 
     def _gave_way(self) -> list[GaveWay]:
-        """What elastic steps could not keep, each joint's box named by its tightest lane then."""
+        """What elastic steps could not keep, each joint's box named by the lane that is most overrun."""
         found = []
         n = self.arm.n
         for k, step in self.noted.items():
             if step.slack is None:
                 continue
-            kinds = [self._tightest(k, i) for i in range(n)]
+            kinds = self._overrun(k, step.change)
             kinds += ["tool speed"] * step.tool
             kinds += ["torque"] * (len(step.slack) - len(kinds))
             for i, (kind, amount) in enumerate(zip(kinds, step.slack, strict=True)):
@@ -273,13 +269,12 @@ class _Roller:
                     found.append(GaveWay(k, kind, i if i < n else -1, float(amount)))
         return found
 
-    def _tightest(self, k: int, joint: int) -> str:
+    def _overrun(self, k: int, change: Array) -> list[str]:
+        """For each joint the joint-family kind whose lane step k overruns most."""
         lanes = self.stepper.rows.joint
-        now = self._now(k)
-        lanes.look(now)
+        now = now_at(self.arm, self.q[k], self.v[k], self.change, self.torque, self.brake_of[k], k)
         lanes.tightest(now)
-        sides = lanes.values[:, [joint, joint + self.arm.n]]
-        return lanes.kinds[int(np.argmin(sides.min(axis=1)))].name if lanes.kinds else "acceleration"
-
-    def _now(self, k: int) -> Now:
-        return now_at(self.arm, self.q[k], self.v[k], self.change, self.torque, self.brake_of[k], k, self.dt)
+        over = (SIGNS * change - lanes.values).max(axis=1)
+        return (
+            [lanes.kinds[i].name for i in np.argmax(over, axis=0)] if lanes.kinds else ["none"] * self.arm.n
+        )

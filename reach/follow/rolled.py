@@ -67,13 +67,12 @@ def now_at(
     torques: Sequence[Array] | Array,
     brake: Brake,
     k: int,
-    dt: float,
 ) -> Now:
     """What step k knew: the state (q, v) and what the step before did."""
     state = arm.at(q, v)
     change = changes[k - 1] if k else np.zeros(arm.n)
     torque = torques[k - 1] if k else state.bias
-    return Now(q, v, change, torque, state, brake, dt)
+    return Now(q, v, change, torque, state, brake)
 
 
 def motion_of(

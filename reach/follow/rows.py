@@ -5,49 +5,41 @@ from __future__ import annotations
 import numpy as np
 
 from reach.cell import Array
-from reach.limits.base import Limit, Now
+from reach.limits.base import SIGNS, Limit, Now
 from reach.limits.tool_speed import ToolSpeed
 from reach.qp.problem import QpProblem
 
+PHASE = 0.75  # of a period: the last of the fine samples in it
 FREE = 1e3  # rad/s or m/s: stands for "no bound" on a change of velocity, and binds nowhere
 
 
 class Lanes:
-    """The bounds of one family of kinds, one lane (2n,) each, and the tightest of them.
+    """The bounds of one family of kinds, one lane (2, n) each, and the tightest of them.
 
     Attributes
     ----------
     kinds : tuple of Limit in lane order
-    values : (k, 2n) how far a step may go, positive directions first
+    values : (k, 2, n) how far a step may go, positive directions first
     """
 
     def __init__(self, limits: dict[str, Limit], family: str, n: int, widest: float):
         self.kinds = tuple(k for k in limits.values() if k.family == family and k.known.any())
-        self.values = np.full((len(self.kinds), 2 * n), np.inf)
-        self._views = list(zip(self.kinds, self.values, strict=True))
-        self._asked: list[tuple[Limit, Array]] = []
-        self._constant = np.full(2 * n, widest)
-        self._most = np.empty(2 * n)
+        self.values = np.full((len(self.kinds), 2, n), np.inf)
+        lanes = list(zip(self.kinds, self.values, strict=True))
+        self._constant = [(kind, lane) for kind, lane in lanes if kind.constant]
+        self._asked = [(kind, lane) for kind, lane in lanes if not kind.constant]
+        self._widest, self._most = np.full((2, n), widest), np.empty((2, n))
         self._fresh = True
 
-    def look(self, now: Now) -> None:
-        """Ask each kind whether it has anything to say until the next look; constant ones once for all."""
-        self._asked = []
-        for kind, lane in self._views:
-            if kind.constant:
-                if self._fresh:
-                    kind.rows(now, lane)
-                    np.minimum(self._constant, lane, out=self._constant)
-            elif kind.look(now):
-                self._asked.append((kind, lane))
-            else:
-                lane.fill(np.inf)
-        self._fresh = False
-
     def tightest(self, now: Now) -> Array:
-        """Write the lanes for a state; the tightest of each row (2n,), to be read before the next call."""
+        """Write the lanes for a state; the tightest in each direction (2, n), to be read before the next call."""
+        if self._fresh:
+            self._fresh = False
+            for kind, lane in self._constant:
+                kind.rows(now, lane)
+                np.minimum(self._widest, lane, out=self._widest)
         most = self._most
-        np.copyto(most, self._constant)
+        np.copyto(most, self._widest)
         for kind, lane in self._asked:
             kind.rows(now, lane)
             np.minimum(most, lane, out=most)
@@ -58,8 +50,12 @@ class Rows:
     """Joint boxes, torque rows and tool rows of a step.
 
     The variable is the change of joint velocity over the period, Δv = a dt. Torque and torque rate share one
-    matrix, M / dt, so both become one interval; rows are scaled by the torque limit, or by the torque that
-    one period's rate allows where only that is known.
+    matrix, so both become one interval; rows are scaled by the torque limit, or by the torque that one
+    period's rate allows where only that is known.
+
+    Torque moves inside a period while the rows hold one instant of it. The fastest part of that, damping and dry
+    friction that change with the joint's own speed, is put into the matrix, (M + PHASE dt S)/dt with their slope S: so
+    the rows hold the torque at the last of the fine samples.
 
     Attributes
     ----------
@@ -76,30 +72,27 @@ class Rows:
         known = [k.known for k in self.torque.kinds] or [np.zeros(n, bool)]
         self.limited = np.flatnonzero(np.any(known, axis=0))
         self.scale = self._scale(n, period_s)
-        self._n, self._all = n, len(self.limited) == n
-        self._both = np.concatenate([self.limited, self.limited + n])
+        self._n, self._all, self._period_s = n, len(self.limited) == n, period_s
         self._matrix_scale = (self.scale / period_s)[:, None]
-        self._scale_twice = np.concatenate([self.scale, self.scale])
+        self._signed = np.empty((2, n))
+        self.matrix = np.empty((n, n))
+        self._diagonal = self.matrix.reshape(-1)[:: n + 1]
 
     @property
     def count(self) -> int:
         """Torque rows of a step."""
         return 2 * len(self.limited)
 
-    def look(self, now: Now) -> None:
-        """Let the kinds look ahead, with a new brake."""
-        self.joint.look(now)
-        self.torque.look(now)
-
     def fill(self, now: Now, p: QpProblem) -> QpProblem:
         """Write the rows for a state into a problem; the cost is the caller's.
 
         Returns that problem, or where the tool's cap is near another one with its rows added.
         """
-        n = self._n
         most = self.joint.tightest(now)
-        p.ub[:] = most[:n]
-        np.negative(most[n:], out=p.lb)
+        p.ub[:] = most[0]
+        np.negative(most[1], out=p.lb)
+        np.copyto(self.matrix, now.state.mass)
+        self._diagonal += now.state.slope * (PHASE * self._period_s)
         if self.limited.size:
             self._fill_torque(now, p)
         extra = self.tool.coefficients(now) if self.tool else None
@@ -107,17 +100,24 @@ class Rows:
             return p
         return QpProblem(p.P, p.q, np.vstack([p.G, extra[0]]), np.append(p.h, extra[1]), p.lb, p.ub)
 
+    def torque_of(self, now: Now, change: Array) -> Array:
+        """Torque (n,) that the rows of the last `fill` hold, for a change of velocity (n,)."""
+        torque = self.matrix.dot(change / self._period_s)
+        torque += now.state.bias
+        return np.asarray(torque)
+
     def _fill_torque(self, now: Now, p: QpProblem) -> None:
-        n, m, bias = self._n, len(self.limited), now.state.bias
+        m = len(self.limited)
         most = self.torque.tightest(now)
-        most[:n] -= bias
-        most[n:] += bias
+        np.multiply(SIGNS, now.state.bias, out=self._signed)
+        most -= self._signed
+        most *= self.scale
         if self._all:
-            np.multiply(most, self._scale_twice, out=p.h)
-            np.multiply(now.state.mass, self._matrix_scale, out=p.G[:m])
+            p.h[:] = most.reshape(-1)
+            np.multiply(self.matrix, self._matrix_scale, out=p.G[:m])
         else:
-            p.h[:] = (most * self._scale_twice)[self._both]
-            p.G[:m] = (now.state.mass * self._matrix_scale)[self.limited]
+            p.h[:] = most[:, self.limited].reshape(-1)
+            p.G[:m] = (self.matrix * self._matrix_scale)[self.limited]
         np.negative(p.G[:m], out=p.G[m:])
 
     def _scale(self, n: int, period_s: float) -> Array:

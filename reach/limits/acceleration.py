@@ -19,10 +19,10 @@ class Acceleration(Limit):
     constant = True
 
     def rows(self, now: Now, most: Array) -> None:
-        np.multiply(self.kept, now.period_s, out=most)
+        np.multiply(self.kept, self.period_s, out=most)
 
     def measure(self, fine: Fine) -> Array:
         return fine.a
 
-    def percent(self, period_s: float) -> Array:
-        return super().percent(period_s) * period_s
+    def percent(self) -> Array:
+        return super().percent() * self.period_s

@@ -14,26 +14,24 @@ from reach.cell import Array, Cell
 
 Family = Literal["joint", "torque", "tool", "none"]
 
-# What a plan keeps for the drift inside one period, where the margin keeps less: torque moves while the rows hold
-# its value at the period's start. Measured on bench7 and a published arm: up to 0.5 % of the limit.
+# What a plan keeps for the drift inside one period, where the margin keeps less: rows hold the torque of one phase of
+# the period (arm.State.inertia), gravity and Coriolis torque move on. Measured over the tests' roll-outs.
 DRIFT_SHARE = 0.01
 
 
+SIGNS = np.array([[1.0], [-1.0]])  # turns values (n,) into both directions (2, n)
+
+
 class Brake(NamedTuple):
-    """What the joints can do until the next look, `horizon_s` ahead; (n,) each.
+    """What the joints can do at a state; (n,) each.
 
     deceleration (per s²) and its rate (per s³) that all joints can have together; top: the acceleration that one
-    may have by itself; soon: the most speed that it may have by the next look; gain: what it still gains while
-    its acceleration is taken back; fastest: the kept-back velocity limit, inf where unknown.
+    may have by itself.
     """
 
     deceleration: Array
     rate: Array
     top: Array
-    soon: Array
-    gain: Array
-    fastest: Array
-    horizon_s: float
 
 
 class Now(NamedTuple):
@@ -45,7 +43,6 @@ class Now(NamedTuple):
     torque: Array
     state: State
     brake: Brake
-    period_s: float
 
 
 @dataclass(frozen=True, eq=False)
@@ -90,11 +87,10 @@ class Limit(ABC):
        Margins) and `units` (of a turning and of a sliding joint);
     2. read what is stated in `__init__`: arrays `lo`, `hi` (n,), ±inf where nothing is known, and `known`
        (n,) bool; `keep` takes the margin off and leaves the result in `kept_lo`, `kept_hi`;
-    3. in `rows`, write into `most` (2n,) how far a step may go: the largest value in each joint's positive
+    3. in `rows`, write into `most` (2, n) how far a step may go: the largest value in each joint's positive
        direction, then in its negative one. The value is, for the family "joint", the change of each joint's
-       velocity over the period, for "torque" its torque at the period's start. A kind whose rows never
-       change sets `constant`; one that need not be asked until the next look says so in `look`. The family
-       "tool" gives rows on the change of all joints instead (see tool_speed.py);
+       velocity over the period, for "torque" its torque in the period. A kind whose rows never change sets
+       `constant`. The family "tool" gives rows on the change of all joints instead (see tool_speed.py);
     4. in `measure`, give the exact values (f, n) of a finished motion in the limit's own unit, lo <= value <= hi
        being what the limit means; whatever `rows` allows must lie inside.
 
@@ -129,7 +125,8 @@ class Limit(ABC):
         self.joints: tuple[str | None, ...] = tuple(joint.name for joint in joints)
         self.joint_units = tuple(self.units[joint.sliding] for joint in joints)
         self.keep(cell)
-        self.kept = np.concatenate([self.kept_hi, -self.kept_lo])  # (2n,), as in `rows`
+        self.kept = np.array([self.kept_hi, -self.kept_lo])  # (2, n), as in `rows`
+        self.period_s = cell.period_s
 
     def keep(self, cell: Cell) -> None:
         """Take the cell's margin off the stated limit, but at least what the drift inside a period needs."""
@@ -141,19 +138,15 @@ class Limit(ABC):
         """The lesser side (n,) of each kept-back limit, inf where unknown."""
         return np.minimum(-self.kept_lo, self.kept_hi)
 
-    def look(self, now: Now) -> bool:
-        """Whether `rows` has anything to say before the next look; called when `now.brake` is new."""
-        return True
-
     @abstractmethod
     def rows(self, now: Now, most: Array) -> None:
-        """Write how far a step from `now` may go into most (2n,)."""
+        """Write how far a step from `now` may go into most (2, n)."""
 
     @abstractmethod
     def measure(self, fine: Fine) -> Array:
         """Values (f, n) of a finished motion, in the limit's own unit."""
 
-    def percent(self, period_s: float) -> Array:
+    def percent(self) -> Array:
         """How far (n,) one per cent more of the limit loosens a step's rows (for reasons)."""
         span = np.where(self.known, np.minimum(np.abs(self.lo), np.abs(self.hi)), 0.0)
         return np.asarray(0.01 * np.where(np.isfinite(span), span, 0.0))

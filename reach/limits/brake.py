@@ -30,41 +30,43 @@ class BrakeModel:
     ----------
     limits : dict of Limit by name
         Acceleration, jerk, torque and torque rate count, each with its tighter side; inf where unknown.
-    horizon_s : float
-        How long an answer serves: until the period after the next look.
+    period_s : float
     """
 
-    def __init__(self, limits: dict[str, Limit], horizon_s: float):
-        self._torque = np.minimum(limits["torque"].tighter, VAST)
-        self._rate = np.minimum(limits["torque rate"].tighter, VAST)
+    def __init__(self, limits: dict[str, Limit], period_s: float):
+        torque, rate = limits["torque"].tighter, limits["torque rate"].tighter
+        self._limit = np.minimum(np.array([torque, rate * period_s]), VAST)
+        self._claim = np.array([np.full(len(rate), np.inf), DRIFT_CAP * self._limit[1]])
+        self._spare = np.empty_like(self._limit)
         self._acceleration = limits["acceleration"].tighter
-        self._fastest = limits["velocity"].tighter
         self._stated = np.isfinite(self._acceleration)
+        self._all_stated = bool(self._stated.all())
         self._jerk = np.minimum(BRAKE_SHARE * limits["jerk"].tighter, UNLIMITED)
-        self._horizon_s = horizon_s
+        self._period_s = period_s
 
-    def at(self, state: State, v: Array, bias_rate: Array) -> Brake:
-        """Ability at a state with joint velocity v (n,).
-
-        bias_rate (n,) is how fast the torque at zero acceleration changes, N·m/s.
-        """
-        load = np.abs(state.bias)
+    def at(self, state: State, bias_before: Array) -> Brake:
+        """Ability at a state; bias_before (n,) is the torque at zero acceleration one period earlier."""
         own, top = self._acceleration, self._acceleration
-        if not self._stated.all():
-            own, top = self._by_torque(state, load)
-        share = np.abs(state.mass) @ own
-        spare = ((self._torque - load) / share).min()
-        drift = np.minimum(np.abs(bias_rate), DRIFT_CAP * self._rate)
-        speed = ((self._rate - drift) / share).min()
-        deceleration = (BRAKE_SHARE * min(1.0, max(spare, STANDSTILL_SHARE))) * own
-        rate = np.minimum((BRAKE_SHARE * speed) * own, self._jerk)
-        soon = np.abs(v) + top * self._horizon_s
-        return Brake(deceleration, rate, top, soon, top * top / (2 * rate), self._fastest, self._horizon_s)
+        if not self._all_stated:
+            own, top = self._by_torque(state)
+        spare = self._spare
+        spare[0] = state.bias
+        np.subtract(state.bias, bias_before, out=spare[1])
+        np.abs(spare, out=spare)
+        np.minimum(spare, self._claim, out=spare)
+        np.subtract(self._limit, spare, out=spare)
+        spare /= np.abs(state.mass).dot(own)
+        force, speed = np.minimum.reduce(spare, axis=1).tolist()
+        deceleration = own * (BRAKE_SHARE * min(1.0, max(force, STANDSTILL_SHARE)))
+        rate = own * (BRAKE_SHARE * speed / self._period_s)
+        return Brake(deceleration, np.minimum(rate, self._jerk, out=rate), top)
 
-    def _by_torque(self, state: State, load: Array) -> tuple[Array, Array]:
+    def _by_torque(self, state: State) -> tuple[Array, Array]:
         """Accelerations where none is stated: the share that torque leaves each joint, and the most it can have."""
-        alone = np.minimum(self._torque / np.diagonal(state.mass), UNLIMITED)
-        most = np.minimum(np.abs(np.linalg.inv(state.mass)) @ (self._torque + load), UNLIMITED)
+        torque = self._limit[0]
+        alone = np.minimum(torque / np.diagonal(state.mass), UNLIMITED)
+        together = np.abs(np.linalg.inv(state.mass)) @ (torque + np.abs(state.bias))
+        most = np.minimum(together, UNLIMITED)
         return np.where(self._stated, self._acceleration, alone), np.where(
             self._stated, self._acceleration, most
         )

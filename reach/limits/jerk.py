@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import numpy as np
 
-from reach.cell import Array
-from reach.limits.base import Fine, Limit, Now
+from reach.cell import Array, Cell
+from reach.limits.base import SIGNS, Fine, Limit, Now
 
 
 class Jerk(Limit):
@@ -17,14 +17,16 @@ class Jerk(Limit):
     margin = "jerk_share"
     units = ("rad/s³", "m/s³")
 
+    def __init__(self, cell: Cell):
+        super().__init__(cell)
+        self._gain = self.kept * cell.period_s**2
+
     def rows(self, now: Now, most: Array) -> None:
-        np.multiply(self.kept, now.period_s**2, out=most)
-        n = len(now.change)
-        most[:n] += now.change
-        most[n:] -= now.change
+        np.multiply(SIGNS, now.change, out=most)
+        most += self._gain
 
     def measure(self, fine: Fine) -> Array:
         return fine.change(fine.a, fine.a_before)
 
-    def percent(self, period_s: float) -> Array:
-        return super().percent(period_s) * period_s**2
+    def percent(self) -> Array:
+        return super().percent() * self.period_s**2

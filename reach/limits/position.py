@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from reach.cell import Array, Cell
-from reach.limits.base import Fine, Limit, Now
+from reach.limits.base import SIGNS, Fine, Limit, Now
 from reach.limits.brake import largest_velocity
 
 LOOSEST_FACTOR = 8  # times the largest acceleration: a change of velocity that other rows forbid anyway
@@ -24,7 +24,9 @@ class Position(Limit):
 
     def __init__(self, cell: Cell):
         super().__init__(cell)
-        self._near: list[int] = []
+        self._room = np.empty_like(self.kept)
+        velocities = [joint.limits.velocity for joint in cell.arm.joints]
+        self._fastest = np.array([max(-v.lo, v.hi) if v else np.inf for v in velocities])
 
     def keep(self, cell: Cell) -> None:
         margins = cell.margins
@@ -33,40 +35,48 @@ class Position(Limit):
         )
         self.kept_lo, self.kept_hi = self.lo + margin, self.hi - margin
 
-    def look(self, now: Now) -> bool:
-        # A joint is watched when it could not stop inside its room from the most speed that it may have by the next
-        # look, plus what it gains while its acceleration is taken back.
-        alpha, beta, top, soon, gain, fastest, horizon = now.brake
-        soon = np.minimum(soon, np.maximum(fastest, np.abs(now.v)))
-        speed = np.minimum(soon + gain, np.maximum(fastest, soon))
-        need = soon * horizon + speed * (speed / (2 * alpha) + (top + alpha) / beta)
-        room = self.kept - np.concatenate([now.q, -now.q])
-        self._near = np.flatnonzero(room < np.concatenate([need, need])).tolist()
-        return bool(self._near)
-
     def rows(self, now: Now, most: Array) -> None:
+        # A joint is looked at closely when it could not stop inside its room from the most speed that it may have
+        # after this period, plus what it gains while its acceleration is taken back.
         most.fill(np.inf)
-        n, dt = len(now.q), now.period_s
-        for row in self._near:
-            i = row % n
-            sign = 1.0 if row < n else -1.0
-            v, room = sign * float(now.v[i]), float(self.kept[row]) - sign * float(now.q[i])
-            alpha, beta = float(now.brake.deceleration[i]), float(now.brake.rate[i])
-            loosest = LOOSEST_FACTOR * float(now.brake.top[i]) * dt
-            change = largest_velocity(room, v, v + loosest, alpha, beta, dt) - v
-            if change < loosest:
-                most[row] = change
+        alpha, beta, top = now.brake
+        speed = top * top
+        speed /= 2 * beta
+        speed += top * self.period_s
+        pace = np.abs(now.v)
+        speed += pace
+        np.minimum(speed, np.maximum(pace, self._fastest), out=speed)
+        need = speed / (2 * alpha)
+        need += (top + alpha) / beta
+        need *= speed
+        room = self._room
+        np.multiply(SIGNS, now.q, out=room)
+        np.subtract(self.kept, room, out=room)
+        near = room < need
+        if near.any():
+            for side, i in np.argwhere(near).tolist():
+                self._close(now, side, i, float(room[side, i]), most)
+
+    def _close(self, now: Now, side: int, i: int, room: float, most: Array) -> None:
+        """The exact bound of one joint in one direction."""
+        dt = self.period_s
+        v = float(now.v[i]) if side == 0 else -float(now.v[i])
+        alpha, beta = float(now.brake.deceleration[i]), float(now.brake.rate[i])
+        loosest = LOOSEST_FACTOR * float(now.brake.top[i]) * dt
+        change = largest_velocity(room, v, v + loosest, alpha, beta, dt) - v
+        if change < loosest:
+            most[side, i] = change
 
     def measure(self, fine: Fine) -> Array:
         return fine.q
 
-    def percent(self, period_s: float) -> Array:
+    def percent(self) -> Array:
         span = self.hi - self.lo
         return np.asarray(0.005 * APPROACH_PER_S * np.where(np.isfinite(span), span, 0.0))
 
     def utilisation(self, values: Array) -> Array:
         """Distance from the middle of the range as a share of half the range; 0 where there is no limit."""
         bounded = np.isfinite(self.hi) & np.isfinite(self.lo)
-        middle = np.where(bounded, (self.hi + self.lo) / 2, 0.0)
-        half = np.where(bounded, (self.hi - self.lo) / 2, np.inf)
+        lo, hi = np.where(bounded, self.lo, 0.0), np.where(bounded, self.hi, 0.0)
+        middle, half = (hi + lo) / 2, np.where(bounded, (hi - lo) / 2, np.inf)
         return np.where(self.known, np.abs(values - middle) / half, np.nan)

@@ -28,7 +28,8 @@ class ToolSpeed(Limit):
         self.joints, self.joint_units = (None,), ("m/s",)
         share = cell.margins.velocity_share
         self.kept_lo, self.kept_hi = self.lo * (1 - share), self.hi * (1 - share)
-        self.kept = np.concatenate([self.kept_hi, -self.kept_lo])
+        self.kept = np.array([self.kept_hi, -self.kept_lo])
+        self.period_s = cell.period_s
 
     def rows(self, now: Now, most: Array) -> None:
         """No bounds of its own: see `coefficients`."""
@@ -50,12 +51,12 @@ class ToolSpeed(Limit):
         across = np.cross(along, np.eye(3)[np.argmin(np.abs(along))])
         across /= np.linalg.norm(across)
         box = np.array([along, across, np.cross(along, across)]) @ rows
-        ahead = now.state.drift[:3] * now.period_s
-        gaining = float(along @ (rows @ now.change)) / now.period_s
+        ahead = now.state.drift[:3] * self.period_s
+        gaining = float(along @ (rows @ now.change)) / self.period_s
         room = cap * np.sqrt(1 - ASIDE_SHARE**2) - speed - float(along @ ahead)
         if gaining > 0:
-            slowest = float(np.max(np.abs(now.change) / now.brake.rate) / now.period_s)
-            step = gaining / slowest * now.period_s**2
+            slowest = float(np.max(np.abs(now.change) / now.brake.rate) / self.period_s)
+            step = gaining / slowest * self.period_s**2
             room = min(room, step * (np.sqrt(1 + 2 * max(room, 0.0) / step) - 1)) if room > 0 else room
         aside = cap * ASIDE_SHARE / np.sqrt(2)
         return (

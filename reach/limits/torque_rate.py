@@ -8,8 +8,8 @@ from __future__ import annotations
 
 import numpy as np
 
-from reach.cell import Array
-from reach.limits.base import DRIFT_SHARE, Fine, Limit, Now
+from reach.cell import Array, Cell
+from reach.limits.base import DRIFT_SHARE, SIGNS, Fine, Limit, Now
 
 
 class TorqueRate(Limit):
@@ -22,14 +22,16 @@ class TorqueRate(Limit):
     units = ("N·m/s", "N/s")
     least_margin = DRIFT_SHARE
 
+    def __init__(self, cell: Cell):
+        super().__init__(cell)
+        self._gain = self.kept * cell.period_s
+
     def rows(self, now: Now, most: Array) -> None:
-        np.multiply(self.kept, now.period_s, out=most)
-        n = len(now.torque)
-        most[:n] += now.torque
-        most[n:] -= now.torque
+        np.multiply(SIGNS, now.torque, out=most)
+        most += self._gain
 
     def measure(self, fine: Fine) -> Array:
         return fine.change(fine.torque, fine.torque_before)
 
-    def percent(self, period_s: float) -> Array:
-        return super().percent(period_s) * period_s
+    def percent(self) -> Array:
+        return super().percent() * self.period_s

@@ -11,6 +11,7 @@ from typing import Any
 
 import numpy as np
 import qpsolvers
+from scipy.sparse import csc_matrix
 
 from reach.cell import Array
 from reach.errors import SolverFailure
@@ -21,6 +22,7 @@ BACKENDS: dict[str, dict[str, Any]] = {
     "piqp": {"eps_abs": 1e-10, "eps_rel": 0.0},
     "clarabel": {"tol_gap_abs": 1e-10, "tol_gap_rel": 1e-10, "tol_feas": 1e-10},
 }
+SPARSE = ("clarabel",)  # take their matrices in sparse form alone
 
 Answer = tuple[Array, Array, Array]  # x, z, z_box
 
@@ -55,7 +57,10 @@ class Solver:
         """
         none_found = 0
         for attempt, name in enumerate(self.names):
-            answer = self.attempt(problem, name)
+            try:
+                answer = self.attempt(problem, name)
+            except Exception:  # whatever a backend throws proves nothing, neither way
+                continue
             if answer is None:
                 none_found += 1
                 continue
@@ -67,20 +72,26 @@ class Solver:
         return QpSolution(np.full(n, np.nan), np.zeros(len(problem.h)), np.zeros(n), status, True)
 
     def first(self, problem: QpProblem) -> Answer | None:
-        """The first solver's answer, not yet checked; None where it has none."""
-        return self.attempt(problem, self.names[0])
+        """The first solver's answer, not yet checked; None where it has none or fails."""
+        try:
+            return self.attempt(problem, self.names[0])
+        except Exception:  # the careful solve that follows tells what it was
+            return None
 
     def attempt(self, problem: QpProblem, name: str) -> Answer | None:
         """One solver's raw answer, None where it says that it found none."""
-        form = problem.form
-        if form is None:
-            form = problem.form = qpsolvers.Problem(
-                problem.P, problem.q, problem.G, problem.h, None, None, problem.lb, problem.ub
-            )
-        try:
-            answer = qpsolvers.solve_problem(form, name, **BACKENDS[name])
-        except Exception:  # whatever a backend throws counts as "it gave no answer"
-            return None
+        if name in SPARSE:
+            form = _form(problem, csc_matrix(problem.P), csc_matrix(problem.G))
+        else:
+            form = problem.form
+            if form is None:
+                form = problem.form = _form(problem, problem.P, problem.G)
+        answer = qpsolvers.solve_problem(form, name, **BACKENDS[name])
         if not answer.found or answer.x is None or answer.z is None or answer.z_box is None:
             return None
         return answer.x, answer.z, answer.z_box
+
+
+def _form(problem: QpProblem, P: Any, G: Any) -> qpsolvers.Problem:
+    """The problem as qpsolvers takes it; its arrays stay ours, so writing them anew changes it."""
+    return qpsolvers.Problem(P, problem.q, G, problem.h, None, None, problem.lb, problem.ub)
