@@ -99,7 +99,7 @@ def _settings(cell: Cell, frame: object, point: object) -> Follow:
         faults.raise_if_any()
     if frame not in get_args(Frame):
         faults.add("frame", f"{frame!r} is none of world, base, paddle; say along whose axes the twists are")
-    if not isinstance(point, str) and point is not None:
+    if not isinstance(point, str):
         numbers = np.asarray(point, dtype=object).ravel().tolist()
         if len(numbers) == 3 and all(isinstance(x, int | float) and np.isfinite(x) for x in numbers):
             point = tuple(float(x) for x in numbers)

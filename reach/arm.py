@@ -103,6 +103,21 @@ class Arm:
         placement = pin.updateFramePlacement(self._model, self._scratch, self._frame)
         return placement.translation.copy(), placement.rotation.copy()
 
+    def pose_error(self, position: Array, rotation: Array, q: Array | None = None) -> Array:
+        """Offset (3,) in m and rotation vector (3,) in rad, world axes, from the strike frame to a wanted pose.
+
+        The strike frame is that of posture q (n,), or of the last call of `at`.
+        """
+        if q is None:
+            placement = self._data.oMf[self._frame]
+        else:
+            pin.forwardKinematics(self._model, self._scratch, q)
+            placement = pin.updateFramePlacement(self._model, self._scratch, self._frame)
+        error = np.empty(6)
+        np.subtract(position, placement.translation, out=error[:3])
+        error[3:] = pin.log3(rotation.dot(placement.rotation.T))
+        return error
+
     def jacobian(self, q: Array) -> tuple[Array, Array, Array]:
         """Strike point (3,), paddle axes (3, 3) and Jacobian (6, n) at posture q (n,)."""
         pin.computeJointJacobians(self._model, self._scratch, q)

@@ -16,7 +16,8 @@ from reach.evidence.measure import measure
 from reach.evidence.motion import FINE, Motion
 from reach.follow.bench import build_limits
 from reach.follow.reference import build_reference
-from reach.follow.roll import Roll, now_at, roll
+from reach.follow.roll import roll
+from reach.follow.rolled import Roll, now_at
 from reach.follow.rows import Rows
 from reach.kinematics import Chain
 from reach.limits import LIMITS
@@ -85,14 +86,14 @@ def moment(arm: Arm, rolled: Roll, k: int) -> Moment:
     """Step k of a roll as the step saw it."""
     q, v, a = rolled.sent.q, rolled.sent.v, rolled.sent.a
     dt = rolled.sent.period_s
-    now = now_at(arm, q[k], v[k], a * dt, rolled.torque, rolled.brakes[k], k, dt)
+    now = now_at(arm, q[k], v[k], a * dt, rolled.torque, rolled.brakes[k], k)
     state = State(*(part.copy() for part in now.state))
     return Moment(q[k - 1], v[k - 1], a[k - 1], now._replace(state=state))
 
 
 def second_period(arm: Arm, limits: dict[str, Limit], item: Moment, change: np.ndarray) -> Fine:
     """The two periods around a state as a motion, measured."""
-    dt = item.now.period_s
+    dt = limits["position"].period_s
     q, v = item.now.q, item.now.v
     end = v + change
     motion = Motion(
@@ -111,7 +112,6 @@ def allowed(rows: Rows, now: Now, box: tuple[np.ndarray, np.ndarray]) -> tuple[n
     blank = QpProblem(
         np.eye(n), np.zeros(n), np.zeros((rows.count, n)), np.zeros(rows.count), *np.zeros((2, n))
     )
-    rows.look(now)
     problem = rows.fill(now, blank)
     return problem.G.copy(), problem.h.copy(), np.maximum(problem.lb, box[0]), np.minimum(problem.ub, box[1])
 

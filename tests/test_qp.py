@@ -251,14 +251,12 @@ def standing(jacobian) -> Now:
     rows = np.zeros((6, n))
     rows[: len(jacobian)] = jacobian
     zero = np.zeros(n)
-    return Now(zero, zero, zero, zero, State(rows, np.zeros(6), np.eye(n), zero), brake(n), PERIOD_S)
+    return Now(zero, zero, zero, zero, State(rows, np.zeros(6), np.eye(n), zero, zero), brake(n))
 
 
 def brake(n: int) -> Brake:
     """Brakes so sharp that only |v| <= limit is left of the velocity rows, and every joint is watched."""
-    sizes = dict.fromkeys(Brake._fields, 1e5) | {"deceleration": 1e9, "rate": 1e13, "top": 1e9}
-    fields = {name: np.full(n, size) for name, size in sizes.items()}
-    return Brake(**(fields | {"horizon_s": PERIOD_S}))
+    return Brake(np.full(n, 1e9), np.full(n, 1e13), np.full(n, 1e9))
 
 
 def solved(
@@ -266,7 +264,6 @@ def solved(
 ) -> tuple[Step, Stepper]:
     """One step from a state."""
     stepper = Stepper(cell, build_limits(cell))
-    stepper.rows.look(now)
     problem = stepper.prepare(now, target, posture_velocity, 0)
     step = same_direction(stepper, problem, 0, target) if keep_direction else stepper.careful(problem)
     return step, stepper
@@ -338,7 +335,7 @@ def test_closest_step_is_bounded_least_squares():
     for _ in range(60):
         q, v = rng.uniform(-1.5, 1.5, 7), rng.uniform(-0.9, 0.9, 7) * limits["velocity"].hi
         state = arm.at(q, v)
-        now = Now(q, v, np.zeros(7), np.zeros(7), state, brake(7), PERIOD_S)
+        now = Now(q, v, np.zeros(7), np.zeros(7), state, brake(7))
         target = state.jacobian @ v + rng.normal(size=6) * rng.choice([0.002, 0.05])
         posture = rng.uniform(-0.2, 0.2, 7)
         step, stepper = solved(cell, now, target, posture)

@@ -13,6 +13,8 @@ from reach.evidence.record import BaseLoad, Use
 from reach.kinematics import Chain
 from reach.limits.base import Fine, Limit
 
+FAST_SHARE = 0.9  # of the peak or of the cap: periods from there on are looked at finely
+
 
 @dataclass(frozen=True, eq=False)
 class Measured:
@@ -59,10 +61,13 @@ def measure(arm: Arm, chain: Chain, limits: dict[str, Limit], motion: Motion) ->
 
 
 def _speed(chain: Chain, limits: dict[str, Limit], q: Array, v: Array, twist: Array) -> Array:
-    """Speed (f,) of the strike point on the fine grid; where no cap is stated, that of each row for its period."""
-    if not limits["tool speed"].known.any():
-        return np.repeat(np.linalg.norm(twist[:, :3], axis=1), FINE)[: len(q)]
-    return np.asarray(np.linalg.norm(chain.twists(q, v)[2][:, :3], axis=1))
+    """Speed (f,) of the strike point on the fine grid; a row's own speed for its period where that is far from any peak."""
+    rows = np.linalg.norm(twist[:, :3], axis=1)
+    fine = np.repeat(rows, FINE)[: len(q)]
+    cap = limits["tool speed"].hi[0]
+    close = np.flatnonzero(fine >= FAST_SHARE * min(rows.max(), cap))
+    fine[close] = np.linalg.norm(chain.twists(q[close], v[close])[2][:, :3], axis=1)
+    return np.asarray(fine)
 
 
 def limit_uses(limit: Limit, fine: Fine, rows: int) -> list[Use]:

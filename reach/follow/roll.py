@@ -13,10 +13,11 @@ from reach.follow.drive import DriveState
 from reach.follow.reference import Reference
 from reach.follow.rolled import GaveWay, Roll, motion_of, now_at
 from reach.follow.step import BLOCK, Step, Stepper
-from reach.kinematics import logarithm
 from reach.limits.base import SIGNS, Brake, Limit, Now
 from reach.limits.brake import BrakeModel
 
+CLOSE_FOR = 20  # steps for which all rows stay in once a step came near a position or velocity limit
+CAUTIOUS_FOR = 5  # steps for which a cautious braking ability serves
 POSTURE_EVERY = 5  # steps between looks at that return
 POSTURE_SPEED = 0.2  # rad/s or m/s: cap of the slow return toward the start posture
 REST_SPEED = 1e-7  # rad/s or m/s: below it the arm stands
@@ -92,7 +93,9 @@ class _Roller:
         self.z: list[Array] = []
         self.z_box: list[Array] = []
         self.checked = 0
-        self.careful_at = -1
+        self.careful_at = -1  # step that is to be checked at once
+        self.close_until = 0  # step up to which no row is left out
+        self.cautious_until = 0  # step up to which the cautious braking ability serves
         self.state = arm.at(start, v)
         self.bias_before = self.state.bias
         self.last_change, self.last_torque = np.zeros(arm.n), self.state.bias
@@ -128,10 +131,8 @@ class _Roller:
         if k % POSTURE_EVERY == 0 or k == self.commanded:
             self.posture_velocity = self._posture_velocity(k, q)
         target = self._target(k)
-        brake = self.brakes.at(state, self.bias_before)
-        now = Now(q, v, self.last_change, self.last_torque, state, brake)
-        change = self._solve(k, now, target)
-        self.last_torque = self.stepper.rows.torque_of(now, change)
+        change, brake = self._solve(k, target)
+        self.last_torque = self.stepper.rows.torque_of(state, change)
         next_v = v + change
         next_q = (v + next_v) * (dt / 2)
         next_q += q
@@ -160,27 +161,47 @@ class _Roller:
             return self.rest
         target: Array = self.targets[k]
         if self.gain > 0:
-            position, rotation = self.arm.pose(self.drive.q if self.drive else self.q[k])
-            turn = logarithm(self.wanted_rotation[k] @ rotation.T)
-            target = target + self.gain * np.concatenate([self.wanted_position[k] - position, turn])
+            wanted = self.wanted_position[k], self.wanted_rotation[k]
+            error = self.arm.pose_error(*wanted, self.drive.q if self.drive else None)
+            error *= self.gain
+            error += target
+            return error
         return target
 
-    def _solve(self, k: int, now: Now, target: Array) -> Array:
-        """The change of velocity of step k: unchecked where the block checks it, else checked and noted."""
-        slot = k - self.checked
+    def _solve(self, k: int, target: Array) -> tuple[Array, Brake]:
+        """The change of velocity of step k, and the braking ability that it was planned with.
+
+        Far from every position and velocity limit those rows are left out, and a step that might miss them is
+        solved again with them; near one they stay in for a while.
+        """
+        q, v, state, slot = self.q[k], self.v[k], self.state, k - self.checked
+        if k >= self.close_until and not self.keeps_direction:
+            if k >= self.cautious_until:
+                self.cautious, self.caution = self.brakes.cautious(state)
+                self.cautious_until = k + CAUTIOUS_FOR
+            now = Now(q, v, self.last_change, self.last_torque, state, self.cautious)
+            problem = self.stepper.prepare(now, target, self.posture_velocity, slot, close=False)
+            if problem is self.stepper.block.problems[slot]:
+                change = self.stepper.quick(problem, slot)
+                if change is not None and self.stepper.rows.clear(self.caution, q, v + change, change):
+                    return change, self.cautious
+            self.close_until = k + CLOSE_FOR
+        brake = self.brakes.at(state, self.bias_before)
+        now = Now(q, v, self.last_change, self.last_torque, state, brake)
         problem = self.stepper.prepare(now, target, self.posture_velocity, slot)
         if self.keeps_direction:
-            step = same_direction(self.stepper, problem, slot, target)
-        else:
-            plain = problem is self.stepper.block.problems[slot] and k != self.careful_at
-            change = self.stepper.quick(problem, slot) if plain else None
+            return self._noted(k, same_direction(self.stepper, problem, slot, target)), brake
+        if problem is self.stepper.block.problems[slot] and k != self.careful_at:
+            change = self.stepper.quick(problem, slot)
             if change is not None:
-                return change
-            step = self.stepper.careful(problem)
+                return change, brake
+        return self._noted(k, self.stepper.careful(problem)), brake
+
+    def _noted(self, k: int, step: Step) -> Array:
+        """Keep a step that was checked at once out of the block's check, and what it says."""
         self.noted[k] = step
-        block = self.stepper.block
+        block, slot, m = self.stepper.block, k - self.checked, self.stepper.rows.count
         block.x[slot] = step.change
-        m = self.stepper.rows.count
         block.z[slot] = 0.0 if step.z is None else step.z[:m]
         block.z_box[slot] = 0.0 if step.z_box is None else step.z_box
         return step.change
@@ -208,7 +229,7 @@ class _Roller:
         del self.q[k + 1 :], self.v[k + 1 :]
         for step in [s for s in self.noted if s >= k]:
             del self.noted[step]
-        self.careful_at = k
+        self.careful_at, self.close_until = k, k + CLOSE_FOR
         before = max(k - 1, 0)
         self.bias_before = self.arm.at(self.q[before], self.v[before]).bias
         self.state = self.arm.at(self.q[k], self.v[k])

@@ -4,8 +4,9 @@ from __future__ import annotations
 
 import numpy as np
 
+from reach.arm import State
 from reach.cell import Array
-from reach.limits.base import SIGNS, Limit, Now
+from reach.limits.base import SIGNS, Ahead, Caution, Limit, Now
 from reach.limits.tool_speed import ToolSpeed
 from reach.qp.problem import QpProblem
 
@@ -27,12 +28,16 @@ class Lanes:
         self.values = np.full((len(self.kinds), 2, n), np.inf)
         lanes = list(zip(self.kinds, self.values, strict=True))
         self._constant = [(kind, lane) for kind, lane in lanes if kind.constant]
-        self._asked = [(kind, lane) for kind, lane in lanes if not kind.constant]
+        self._always = [(kind, lane) for kind, lane in lanes if not kind.constant and not kind.seldom]
+        self._seldom = [(kind, lane) for kind, lane in lanes if kind.seldom]
         self._widest, self._most = np.full((2, n), widest), np.empty((2, n))
         self._fresh = True
 
-    def tightest(self, now: Now) -> Array:
-        """Write the lanes for a state; the tightest in each direction (2, n), to be read before the next call."""
+    def tightest(self, now: Now, close: bool = True) -> Array:
+        """Write the lanes for a state; the tightest in each direction (2, n), to be read before the next call.
+
+        `close` False leaves out the kinds whose rows seldom matter.
+        """
         if self._fresh:
             self._fresh = False
             for kind, lane in self._constant:
@@ -40,10 +45,17 @@ class Lanes:
                 np.minimum(self._widest, lane, out=self._widest)
         most = self._most
         np.copyto(most, self._widest)
-        for kind, lane in self._asked:
+        for kind, lane in (self._always + self._seldom) if close else self._always:
             kind.rows(now, lane)
             np.minimum(most, lane, out=most)
         return most
+
+    def clear(self, ahead: Ahead) -> bool:
+        """Whether a step made without the seldom kinds surely keeps them."""
+        for kind, _ in self._seldom:
+            if not kind.clear(ahead):
+                return False
+        return True
 
 
 class Rows:
@@ -72,6 +84,7 @@ class Rows:
         known = [k.known for k in self.torque.kinds] or [np.zeros(n, bool)]
         self.limited = np.flatnonzero(np.any(known, axis=0))
         self.scale = self._scale(n, period_s)
+        self._tool_calm = 0  # steps for which the tool's cap is surely out of reach
         self._n, self._all, self._period_s = n, len(self.limited) == n, period_s
         self._matrix_scale = (self.scale / period_s)[:, None]
         self._signed = np.empty((2, n))
@@ -83,27 +96,39 @@ class Rows:
         """Torque rows of a step."""
         return 2 * len(self.limited)
 
-    def fill(self, now: Now, p: QpProblem) -> QpProblem:
-        """Write the rows for a state into a problem; the cost is the caller's.
+    def fill(self, now: Now, p: QpProblem, close: bool = True) -> QpProblem:
+        """Write the rows for a state into a problem; the cost is the caller's. `close` as in Lanes.tightest.
 
         Returns that problem, or where the tool's cap is near another one with its rows added.
         """
-        most = self.joint.tightest(now)
+        most = self.joint.tightest(now, close)
         p.ub[:] = most[0]
         np.negative(most[1], out=p.lb)
         np.copyto(self.matrix, now.state.mass)
         self._diagonal += now.state.slope * (PHASE * self._period_s)
         if self.limited.size:
             self._fill_torque(now, p)
-        extra = self.tool.coefficients(now) if self.tool else None
+        extra = None
+        if self.tool is not None:
+            self._tool_calm -= 1
+            if self._tool_calm < 0:
+                extra = self.tool.coefficients(now)
+                self._tool_calm = 0 if extra is not None else self.tool.calm_for(now)
         if extra is None:
             return p
         return QpProblem(p.P, p.q, np.vstack([p.G, extra[0]]), np.append(p.h, extra[1]), p.lb, p.ub)
 
-    def torque_of(self, now: Now, change: Array) -> Array:
+    def clear(self, caution: Caution, q: Array, next_v: Array, change: Array) -> bool:
+        """Whether a step made with `close` False keeps the rows that were left out."""
+        speed = change * change
+        speed *= caution.gain
+        speed += np.abs(next_v)
+        return self.joint.clear(Ahead(q, np.abs(change), speed, caution))
+
+    def torque_of(self, state: State, change: Array) -> Array:
         """Torque (n,) that the rows of the last `fill` hold, for a change of velocity (n,)."""
         torque = self.matrix.dot(change / self._period_s)
-        torque += now.state.bias
+        torque += state.bias
         return np.asarray(torque)
 
     def _fill_torque(self, now: Now, p: QpProblem) -> None:

@@ -45,6 +45,31 @@ class Now(NamedTuple):
     brake: Brake
 
 
+class Caution(NamedTuple):
+    """A braking ability α, β (n,) that holds for some periods dt, as factors of what `Ahead` and its users need.
+
+    gain : 1/(2 β dt²); ramp : 1/(β dt); base : α/β + dt; stop : 1/(2 α)
+    """
+
+    gain: Array
+    ramp: Array
+    base: Array
+    stop: Array
+
+
+class Ahead(NamedTuple):
+    """Where a step would lead, by a cautious braking ability; (n,) each.
+
+    q : the joints' positions before it; change : size of its change of velocity; speed : the most that a joint still
+    gains to while the acceleration is taken back
+    """
+
+    q: Array
+    change: Array
+    speed: Array
+    caution: Caution
+
+
 @dataclass(frozen=True, eq=False)
 class Fine:
     """A finished motion on the fine grid, with what its limits are measured from.
@@ -90,7 +115,8 @@ class Limit(ABC):
     3. in `rows`, write into `most` (2, n) how far a step may go: the largest value in each joint's positive
        direction, then in its negative one. The value is, for the family "joint", the change of each joint's
        velocity over the period, for "torque" its torque in the period. A kind whose rows never change sets
-       `constant`. The family "tool" gives rows on the change of all joints instead (see tool_speed.py);
+       `constant`; one whose rows seldom matter sets `seldom` and says in `clear` when they surely don't. The
+       family "tool" gives rows on the change of all joints instead (see tool_speed.py);
     4. in `measure`, give the exact values (f, n) of a finished motion in the limit's own unit, lo <= value <= hi
        being what the limit means; whatever `rows` allows must lie inside.
 
@@ -106,6 +132,7 @@ class Limit(ABC):
     margin: ClassVar[str] = ""
     units: ClassVar[tuple[str, str]]
     constant: ClassVar[bool] = False
+    seldom: ClassVar[bool] = False
     least_margin: ClassVar[float] = 0.0
 
     lo: Array
@@ -141,6 +168,10 @@ class Limit(ABC):
     @abstractmethod
     def rows(self, now: Now, most: Array) -> None:
         """Write how far a step from `now` may go into most (2, n)."""
+
+    def clear(self, ahead: Ahead) -> bool:
+        """Whether a step made without this kind's rows surely keeps them."""
+        return False
 
     @abstractmethod
     def measure(self, fine: Fine) -> Array:

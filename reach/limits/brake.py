@@ -14,11 +14,12 @@ import numpy as np
 
 from reach.arm import State
 from reach.cell import Array
-from reach.limits.base import Brake, Limit
+from reach.limits.base import Brake, Caution, Limit
 
 BRAKE_SHARE = 0.5  # of what torque and acceleration allow; 0.5 held in 1,000 adversarial roll-outs
 DRIFT_CAP = 0.7  # largest share of the torque rate that gravity and Coriolis drift may claim
 UNLIMITED = 1e9  # stands for "no limit known" in rad/s² and rad/s³, where infinity would give 0 * inf
+CAUTIOUS_SHARE = 0.5  # of a deceleration that must still be there a few periods later
 VAST = 1e15  # N·m and N·m/s, the same for torque and its rate
 STANDSTILL_SHARE = 1e-3  # of the acceleration that is left where the static load takes all the torque
 
@@ -60,6 +61,14 @@ class BrakeModel:
         deceleration = own * (BRAKE_SHARE * min(1.0, max(force, STANDSTILL_SHARE)))
         rate = own * (BRAKE_SHARE * speed / self._period_s)
         return Brake(deceleration, np.minimum(rate, self._jerk, out=rate), top)
+
+    def cautious(self, state: State) -> tuple[Brake, Caution]:
+        """Ability that is not lost within a few periods: half the deceleration, and its rate at the most drift."""
+        fresh, dt = self.at(state, state.bias), self._period_s
+        alpha = fresh.deceleration * CAUTIOUS_SHARE
+        beta = np.minimum(fresh.rate * (1 - DRIFT_CAP), self._jerk)
+        caution = Caution(1 / (2 * beta * dt * dt), 1 / (beta * dt), alpha / beta + dt, 1 / (2 * alpha))
+        return Brake(alpha, beta, fresh.top), caution
 
     def _by_torque(self, state: State) -> tuple[Array, Array]:
         """Accelerations where none is stated: the share that torque leaves each joint, and the most it can have."""

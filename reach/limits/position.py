@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from reach.cell import Array, Cell
-from reach.limits.base import SIGNS, Fine, Limit, Now
+from reach.limits.base import SIGNS, Ahead, Fine, Limit, Now
 from reach.limits.brake import largest_velocity
 
 LOOSEST_FACTOR = 8  # times the largest acceleration: a change of velocity that other rows forbid anyway
@@ -21,10 +21,12 @@ class Position(Limit):
     family = "joint"
     field = "position"
     units = ("rad", "m")
+    seldom = True
 
     def __init__(self, cell: Cell):
         super().__init__(cell)
         self._room = np.empty_like(self.kept)
+        self._middle, self._half = _range(self.kept_lo, self.kept_hi)
         velocities = [joint.limits.velocity for joint in cell.arm.joints]
         self._fastest = np.array([max(-v.lo, v.hi) if v else np.inf for v in velocities])
 
@@ -67,6 +69,16 @@ class Position(Limit):
         if change < loosest:
             most[side, i] = change
 
+    def clear(self, ahead: Ahead) -> bool:
+        # The longest stop: the ramp at the highest speed, then braking from there.
+        need = ahead.change * ahead.caution.ramp
+        need += ahead.caution.base
+        need += ahead.speed * ahead.caution.stop
+        need *= ahead.speed
+        off = np.abs(ahead.q - self._middle)
+        off += need
+        return not np.count_nonzero(off >= self._half)
+
     def measure(self, fine: Fine) -> Array:
         return fine.q
 
@@ -76,7 +88,12 @@ class Position(Limit):
 
     def utilisation(self, values: Array) -> Array:
         """Distance from the middle of the range as a share of half the range; 0 where there is no limit."""
-        bounded = np.isfinite(self.hi) & np.isfinite(self.lo)
-        lo, hi = np.where(bounded, self.lo, 0.0), np.where(bounded, self.hi, 0.0)
-        middle, half = (hi + lo) / 2, np.where(bounded, (hi - lo) / 2, np.inf)
+        middle, half = _range(self.lo, self.hi)
         return np.where(self.known, np.abs(values - middle) / half, np.nan)
+
+
+def _range(lo: Array, hi: Array) -> tuple[Array, Array]:
+    """Middle and half of ranges (n,); 0 and inf where there is no limit."""
+    bounded = np.isfinite(hi) & np.isfinite(lo)
+    lo, hi = np.where(bounded, lo, 0.0), np.where(bounded, hi, 0.0)
+    return (hi + lo) / 2, np.where(bounded, (hi - lo) / 2, np.inf)

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import math
+
 import numpy as np
 
 from reach.cell import Array, Cell
@@ -10,6 +12,8 @@ from reach.limits.base import Fine, Limit, Now
 # Share of the cap that a step may turn the velocity aside; the rest, sqrt(1 - share²), is left along it. At 1.7 m/s
 # and 1 ms that is 120 m/s² sideways, beyond any arm, for half a per cent of the cap.
 ASIDE_SHARE = 0.1
+CALM_SHARE = 0.25
+CALM_STEPS = 5  # from a quarter to half of the cap in 5 ms takes more than 80 m/s² at 1.7 m/s
 NEAR_SHARE = 0.5  # below this share of the cap no step can reach it: rows are left out
 
 
@@ -43,8 +47,8 @@ class ToolSpeed(Limit):
         """
         cap = self.kept_hi[0]
         rows = now.state.jacobian[:3]
-        velocity = rows @ now.v
-        speed = float(np.sqrt(velocity @ velocity))
+        velocity = rows.dot(now.v)
+        speed = math.sqrt(velocity.dot(velocity))
         if speed < NEAR_SHARE * cap:
             return None
         along = velocity / speed
@@ -63,6 +67,11 @@ class ToolSpeed(Limit):
             np.vstack([box, -box[1:]]),
             np.array([room, aside, aside, aside, aside]),
         )
+
+    def calm_for(self, now: Now) -> int:
+        """Steps for which the cap stays out of reach, at most CALM_STEPS: while the speed is under a quarter of it."""
+        velocity = now.state.jacobian[:3].dot(now.v)
+        return CALM_STEPS if velocity.dot(velocity) < (CALM_SHARE * self.kept_hi[0]) ** 2 else 0
 
     def measure(self, fine: Fine) -> Array:
         return fine.speed[:, None]

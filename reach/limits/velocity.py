@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from reach.cell import Array, Cell
-from reach.limits.base import SIGNS, Fine, Limit, Now
+from reach.limits.base import SIGNS, Ahead, Fine, Limit, Now
 
 
 class Velocity(Limit):
@@ -16,10 +16,12 @@ class Velocity(Limit):
     field = "velocity"
     margin = "velocity_share"
     units = ("rad/s", "m/s")
+    seldom = True
 
     def __init__(self, cell: Cell):
         super().__init__(cell)
         self._room = np.empty_like(self.kept)
+        self._tighter = self.tighter
 
     def rows(self, now: Now, most: Array) -> None:
         # While the acceleration falls at rate β from a to zero the joint gains a²/2β more speed. Hence
@@ -34,6 +36,9 @@ class Velocity(Limit):
         most -= 1
         most *= step
         np.minimum(most, room, out=most)  # where the joint is too fast already, room is below zero
+
+    def clear(self, ahead: Ahead) -> bool:
+        return not np.count_nonzero(ahead.speed >= self._tighter)
 
     def measure(self, fine: Fine) -> Array:
         return fine.v
