@@ -104,8 +104,11 @@ def _sentence(verdict: str, grounds: list[str], evidence: Evidence) -> str:
     kinds = list(dict.fromkeys(use.limit for use in evidence.uses))
     unknown = {limit for limit, _ in evidence.unknown}
     checked = [kind for kind in kinds if kind not in unknown]
-    counted = f" on {len(checked)} of {len(kinds)} limits" if kinds else ""
-    text = f"{verdict}{counted}: {'; '.join(grounds)}"
+    if verdict == DELIVERABLE:
+        text = f"{verdict} on {len(checked)} of {len(kinds)} limits: {'; '.join(grounds)}"
+    else:
+        text = f"{verdict}: {'; '.join(grounds)}"
+        text += f"; {len(checked)} of {len(kinds)} limits checked" if kinds else ""
     if evidence.not_checked:
         text += f"; not checked: {', '.join(evidence.not_checked)}"
     return text

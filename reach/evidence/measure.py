@@ -61,7 +61,7 @@ def measure(arm: Arm, chain: Chain, limits: dict[str, Limit], motion: Motion) ->
 
 
 def _speed(chain: Chain, limits: dict[str, Limit], q: Array, v: Array, twist: Array) -> Array:
-    """Speed (f,) of the strike point on the fine grid; a row's own speed for its period where that is far from any peak."""
+    """Speed (f,) of the strike point on the fine grid; far from any peak a row's own speed for its period."""
     rows = np.linalg.norm(twist[:, :3], axis=1)
     fine = np.repeat(rows, FINE)[: len(q)]
     cap = limits["tool speed"].hi[0]

@@ -84,9 +84,9 @@ def judge_strike(
     wanted: Wanted,
     accept: Accept,
     jitter_s: float,
-    contact: Contact | None,
+    flight_s: float | None = None,
 ) -> Strike:
-    """One strike of a motion over its window, widened by the drive's timing jitter."""
+    """One strike of a motion over its window, widened by the drive's timing jitter; flight_s is to the next contact."""
     times = window_times(time_s, accept.strike_window_s / 2 + jitter_s, motion.period_s)
     q, v, _ = motion.at(times)
     position, rotation, twist = chain.twists(q, v)
@@ -106,22 +106,32 @@ def judge_strike(
         tilt_error_deg=float(np.degrees(tilt)),
         position_error_m=float(errors.position.max()),
         faults=strike_faults(errors, accept),
-        next_contact_shift_m=next_contact_shift(commanded, tilt, contact),
-        shift_per_degree_m=next_contact_shift(commanded, float(np.radians(1.0)), contact),
+        next_contact_shift_m=next_contact_shift(flight_s, tilt),
+        shift_per_degree_m=next_contact_shift(flight_s, float(np.radians(1.0))),
     )
 
 
-def next_contact_shift(speed_m_s: float, tilt_rad: float, contact: Contact | None) -> float | None:
-    """How far a tilt error moves the next contact: about 8 h θ at apex h over a still point of return.
+def next_contact_shift(flight_s: float | None, tilt_rad: float) -> float | None:
+    """How far a tilt error moves the next contact: about 8 h θ at apex h, hence g T² θ after a flight of T seconds.
 
-    The apex is that of the steady rally that this paddle speed keeps up, u = v (1 - e)/(1 + e), h = v²/2g. None
-    without a [contact] table, or where e = 1 leaves the apex open.
+    A small tilt θ turns the ball's velocity by 2θ, and v = g T / 2 over T is the way.
     """
+    return None if flight_s is None else float(STANDARD_GRAVITY_M_S2 * flight_s**2 * tilt_rad)
+
+
+def flight_times(contacts_s: Array, speeds_m_s: Array, contact: Contact | None) -> list[float | None]:
+    """Time in s from each contact (k,) to the next one.
+
+    After the last, that of the steady rally which its paddle speed keeps up, u = v (1 - e)/(1 + e), T = 2v/g; None
+    where there is no restitution to tell it by.
+    """
+    flights: list[float | None] = [float(t) for t in np.diff(contacts_s)]
+    if not len(contacts_s):
+        return flights
     if contact is None or contact.restitution >= 1:
-        return None
-    ball = abs(speed_m_s) * (1 + contact.restitution) / (1 - contact.restitution)
-    apex = ball**2 / (2 * STANDARD_GRAVITY_M_S2)
-    return float(8 * apex * tilt_rad)
+        return [*flights, None]
+    ball = abs(float(speeds_m_s[-1])) * (1 + contact.restitution) / (1 - contact.restitution)
+    return [*flights, 2 * ball / STANDARD_GRAVITY_M_S2]
 
 
 def track(

@@ -11,7 +11,14 @@ from reach.cell import Accept, Array, Cell
 from reach.errors import Fault, InputError
 from reach.evidence.measure import Measured, measure
 from reach.evidence.record import Evidence, Strike
-from reach.evidence.strikes import compare, judge_strike, strike_faults, throughout_faults, track
+from reach.evidence.strikes import (
+    compare,
+    flight_times,
+    judge_strike,
+    strike_faults,
+    throughout_faults,
+    track,
+)
 from reach.follow.contacts import Contacts, contacts
 from reach.follow.reference import Reference, build_reference
 from reach.follow.roll import roll
@@ -32,8 +39,7 @@ class Run:
     Attributes
     ----------
     cell : Cell with the start posture filled in
-    reference, roll, measured : None where there was no start posture
-    early : whether a search ended the roll at its first miss
+    reference, roll, measured : None where there was no start posture; measured too where a quick run missed
     """
 
     cell: Cell
@@ -43,12 +49,11 @@ class Run:
     measured: Measured | None
     evidence: Evidence
     verdict: Verdict
-    early: bool = False
 
     @property
     def passed(self) -> bool:
         """Whether nothing speaks against the motion; what is unknown counts as unlimited."""
-        return not self.early and self.verdict.verdict != "not deliverable"
+        return self.verdict.verdict != "not deliverable"
 
 
 def build_limits(cell: Cell) -> dict[str, Limit]:
@@ -80,11 +85,13 @@ def run(cell: Cell, quick: bool = False, seed: int = 0) -> Run:
     accept = cell.accept
     watch = _Watch(cell, arm, reference, found, accept) if quick else None
     rolled = roll(cell, arm, limits, reference, start, follow.pose_gain_per_s, watch)
+    if watch is not None and watch.missed:
+        evidence = _no_motion(cell, limits, found, ("a strike is missed",))
+        return Run(cell, found, reference, rolled, None, evidence, judge(evidence, accept))
     chain = Chain.of(arm)
     measured = measure(arm, chain, limits, rolled.delivered)
     evidence = _evidence(cell, limits, chain, reference, found, rolled, measured, blocked)
-    early = watch is not None and watch.missed
-    return Run(cell, found, reference, rolled, measured, evidence, judge(evidence, accept), early)
+    return Run(cell, found, reference, rolled, measured, evidence, judge(evidence, accept))
 
 
 def _first_pose(cell: Cell, arm: Arm, start: Array) -> tuple[Array, Array]:
@@ -184,9 +191,11 @@ def _evidence(
 ) -> Evidence:
     motion, accept = rolled.delivered, cell.accept
     jitter = cell.drive.jitter_s if cell.drive else 0.0
+    twist, _, axes = reference.at(found.t_s)
+    speeds = np.einsum("ki,ki->k", twist[:, :3], axes[:, :, 2])
     strikes: tuple[Strike, ...] = tuple(
-        judge_strike(float(t), found.marked, chain, motion, reference.at, accept, jitter, cell.contact)
-        for t in found.t_s
+        judge_strike(float(t), found.marked, chain, motion, reference.at, accept, jitter, flight)
+        for t, flight in zip(found.t_s, flight_times(found.t_s, speeds, cell.contact), strict=True)
     )
     beside = track(motion, reference.at, measured.position, measured.rotation, measured.twist, rolled.end_row)
     throughout = accept.at == "throughout" or not strikes

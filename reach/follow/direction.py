@@ -13,7 +13,8 @@ from reach.cell import Array
 from reach.follow.step import POSTURE_WEIGHT, Step, Stepper
 from reach.qp.problem import QpProblem, QpStatus
 
-EXACT_M_S = 1e-7  # shortfall below which the closest step is already all three levels' answer
+EXACT_SHARE = 1e-3  # of the twist: a closest step that misses it by less is already all three levels' answer
+STILL_M_S = 1e-7  # a twist below it has no direction
 RANK_SHARE = 1e-6  # singular values below this share of the largest count as zero
 LEVEL_TOLERANCE = 1e-9  # a level's own rounding, given to the next one in every row
 
@@ -23,17 +24,14 @@ def same_direction(stepper: Stepper, problem: QpProblem, slot: int, target: Arra
 
     Parameters
     ----------
-    problem : from `Stepper.prepare` for the same slot
+    problem : from `Stepper.problem` for the same slot
     """
     first = stepper.careful(problem)
     task, error = stepper.task[slot], stepper.error[slot]
     wanted = stepper.weight * target
     size = float(np.linalg.norm(wanted))
-    if (
-        first.status != "solved"
-        or size < EXACT_M_S
-        or np.linalg.norm(error + task @ first.change) < EXACT_M_S
-    ):
+    short = float(np.linalg.norm(error + task @ first.change))
+    if first.status != "solved" or size < STILL_M_S or short < EXACT_SHARE * size:
         return first
     along = wanted / size
     reached = error + wanted  # the twist without a change of velocity, weighted

@@ -5,34 +5,13 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from reach.cell import Cell
-from reach.follow.search import Runner, least_passing
+from reach.follow.search import Runner, least_that_holds
 from reach.follow.variants import scaled_limits
 
 # Factors on every limit but position that are tried, rising; the answer is refined to RESOLUTION of the factor.
-SCAN = (
-    0.1,
-    0.2,
-    0.3,
-    0.4,
-    0.5,
-    0.6,
-    0.7,
-    0.8,
-    0.9,
-    1.0,
-    1.1,
-    1.2,
-    1.35,
-    1.5,
-    1.75,
-    2.0,
-    2.5,
-    3.0,
-    4.0,
-    6.0,
-    10.0,
-)
-RESOLUTION = 0.01
+SHRINK = (0.1, 0.2, 0.35, 0.5, 0.65, 0.8, 0.9, 1.0)
+GROW = (1.0, 1.25, 1.6, 2.0, 2.5, 3.2, 4.0, 6.0, 10.0)
+RESOLUTION = 0.02
 
 
 def headroom(cell: Cell, runs: Runner, passes_as_is: bool) -> tuple[float | None, str]:
@@ -42,18 +21,21 @@ def headroom(cell: Cell, runs: Runner, passes_as_is: bool) -> tuple[float | None
     grow, None where not even ten times the limits would do. Unknown limits stay unlimited.
     """
     runs.say("headroom: all limits together")
-    split = SCAN.index(1.0)
-    scan = SCAN[: split + 1] if passes_as_is else SCAN[split:]
 
     def passes(factors: Sequence[float]) -> list[bool]:
         return runs.passes([scaled_limits(cell, f) for f in factors])
 
-    least = least_passing(passes, scan, RESOLUTION)
+    scan = SHRINK if passes_as_is else GROW
+    least, failed = least_that_holds(passes, scan, RESOLUTION)
     if least is None:
         return None, f"not deliverable even with {scan[-1]:g} times every limit but position"
     share = 1.0 - least
     if share > 0:
-        return share, f"still deliverable with every limit but position {100 * share:.0f} % lower"
-    if share < 0:
-        return share, f"every limit but position would have to be {-100 * share:.0f} % higher"
-    return 0.0, "no limit to spare: a few per cent less of every limit but position and it fails"
+        text = f"still deliverable with every limit but position {100 * share:.0f} % lower"
+    elif share < 0:
+        text = f"every limit but position would have to be {-100 * share:.0f} % higher"
+    else:
+        text = "no limit to spare: a few per cent less of every limit but position and it fails"
+    if failed is not None:
+        text += f" (a planner need not be monotone: at {failed:.3g} times the limits it failed again)"
+    return share, text

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 
 from reach.cell import Cell
 from reach.evidence.record import Need
@@ -15,8 +15,9 @@ from reach.follow.variants import with_bounds
 Key = tuple[str, str | None]
 
 RESOLUTION = 0.1  # relative, of a needed value
+COARSE = 0.2  # the same of what is necessary alone, a figure to ask a maker about
 SCAN = (0.02, 0.1, 0.4, 1.02, 2.0, 4.0)  # of a joint's measure (below) that are tried for an unknown limit
-GROW_SCAN = (1.0, 1.15, 1.35, 1.6, 2.0, 2.8, 4.0, 8.0)  # multiples of a stated limit that are tried
+GROW_SCAN = (1.0, 1.25, 1.6, 2.0, 2.8, 4.0, 8.0)  # multiples of a stated limit that are tried
 # The measure of an unknown limit is the peak of the motion with the limit unknown, but at least this share of the
 # largest peak among the joints: a joint that hardly moves still has to brake along with the others.
 LEAST_SHARE = 0.2
@@ -112,46 +113,77 @@ def _failing_needs(
     if not first:
         return []
     runs.say("what the failing limits would need")
-    keys = _all_in_the_way(cell, first, stated)
 
-    def least(key: Key, others: dict[Key, float | None]) -> float | None:
+    def least(keys: Sequence[Key], others: dict[Key, float | None], resolution: float) -> float | None:
+        """The least common multiple of some stated limits under which the command passes."""
+
         def passes(factors: Sequence[float]) -> list[bool]:
-            return runs.passes(
-                [with_bounds(cell, {**others, key: f * stated[key]}, "search") for f in factors]
-            )
+            grown = [{**others, **{k: f * stated[k] for k in keys}} for f in factors]
+            return runs.passes([with_bounds(cell, values, "search") for values in grown])
 
-        factor = least_passing(passes, GROW_SCAN, RESOLUTION)
-        return None if factor is None else factor * stated[key]
+        return least_passing(passes, GROW_SCAN, resolution)
 
-    def together(factors: Sequence[float]) -> list[bool]:
-        return runs.passes([with_bounds(cell, {k: f * stated[k] for k in keys}, "search") for f in factors])
-
-    common = least_passing(together, GROW_SCAN, RESOLUTION) if len(keys) > 1 else None
+    keys = _all_in_the_way(cell, first, stated, runs)
+    common = least(keys, {}, RESOLUTION)
+    if common is None:
+        return [_hopeless(key, stated[key], units[key]) for key in first]
+    grown = {k: common * stated[k] for k in keys}
+    keys = _that_matter(
+        keys,
+        lambda sets: runs.passes([with_bounds(cell, {k: grown[k] for k in some}, "search") for some in sets]),
+    )
     found = []
     for key in keys:
         limit, joint = key
-        unit, name = units[key], joint or "the tool"
-        alone = least(key, {}) if len(first) == 1 and key == first[0] else None
-        necessary = least(key, {k: None for k in keys if k != key}) if len(keys) > 1 else alone
-        sufficient = alone
-        text = f"{name}: {limit} of {_number(alone)} {unit} {ALONE} (now {_number(stated[key])})"
-        if alone is None and common is not None:
-            sufficient = common * stated[key]
-            text = (
-                f"{name}: {limit} of {_number(sufficient)} {unit} (now {_number(stated[key])}) "
-                f"would do together with the other {len(keys) - 1} named here, all grown alike"
-            )
-        elif alone is None:
-            text = f"{name}: no {limit} up to {GROW_SCAN[-1]:g} times the stated one is enough"
-        found.append(Need(joint, limit, necessary, sufficient, unit, text))
+        sufficient, necessary = common * stated[key], None
+        if len(keys) == 1:
+            factor = least(keys, {}, RESOLUTION)
+            sufficient = necessary = (factor or common) * stated[key]
+        else:
+            factor = least([key], dict.fromkeys(k for k in keys if k != key), COARSE)
+            if factor is not None and factor <= common:
+                necessary = factor * stated[key]
+        name = f"{limit} of {joint}" if joint else limit
+        text = f"{name}: {_number(sufficient)} {units[key]} (now {_number(stated[key])}) "
+        text += ALONE if len(keys) == 1 else "would do if all limits named here grow alike"
+        found.append(Need(joint, limit, necessary, sufficient, units[key], text))
     return found
 
 
-def _all_in_the_way(cell: Cell, first: list[Key], stated: dict[Key, float]) -> list[Key]:
+def _that_matter(keys: list[Key], passes: Callable[[Sequence[Sequence[Key]]], list[bool]]) -> list[Key]:
+    """The keys without those that may stay as stated.
+
+    Those that may stay alone are first all left out together; where that is too much, one after the other, the last
+    ones to turn up first.
+    """
+    if len(keys) < 2:
+        return keys
+    spare = [k for k, ok in zip(keys, passes([[o for o in keys if o != k] for k in keys]), strict=True) if ok]
+    needed = [k for k in keys if k not in spare]
+    if not spare or (needed and passes([needed])[0]):
+        return needed
+    kept = list(keys)
+    for key in reversed(spare):
+        fewer = [k for k in kept if k != key]
+        if fewer and passes([fewer])[0]:
+            kept = fewer
+    return kept
+
+
+def _hopeless(key: Key, stated: float, unit: str) -> Need:
+    limit, joint = key
+    name = f"{limit} of {joint}" if joint else limit
+    text = f"{name}: up to {GROW_SCAN[-1]:g} times the stated {_number(stated)} {unit} is not enough"
+    text += ", nor is it with the limits that bind then grown alike"
+    return Need(joint, limit, None, None, unit, text)
+
+
+def _all_in_the_way(cell: Cell, first: list[Key], stated: dict[Key, float], runs: Runner) -> list[Key]:
     """The deciding limits, and those that decide once these are lifted."""
     keys = list(first)
     for _ in range(LAYERS):
-        lifted = run(with_bounds(cell, dict.fromkeys(keys), "search"))
+        lifted = run(with_bounds(cell, {k: GROW_SCAN[-1] * stated[k] for k in keys}, "search"))
+        runs.runs += 1
         if lifted.passed:
             break
         found, _ = reasons(lifted, None)

@@ -19,6 +19,7 @@ from reach.follow.step import task_weight
 from reach.kinematics import Chain
 from reach.verdict import broken_limits
 
+LOOKED_AT = 400  # steps of an episode whose multipliers are looked at, evenly spread
 CALM_S = 0.05  # a shortfall this long ago, with none since, belongs to an earlier episode
 MINOR_SHARE = 0.1  # of the largest gain in an episode: limits below it are left out
 SINGULAR_SHARE = 0.5  # of a shortfall that stays without any limit: above it the posture is to blame
@@ -49,7 +50,8 @@ def reasons(run: Run, demand: Demand | None) -> tuple[tuple[Reason, ...], tuple[
             continue
         mine = book.of_strike(strike)
         found.extend(mine)
-        limit, joint = (mine[0].limit, mine[0].joint) if mine else (None, None)
+        first = next((r for r in mine if r.decides), None)
+        limit, joint = (first.limit, first.joint) if first else (None, None)
         strikes.append(replace(strike, limit=limit, joint=joint))
     if evidence.throughout_faults:
         found.extend(
@@ -157,7 +159,8 @@ class _Book:
         """One reason for each limit that mattered in an episode, the weightiest first."""
         gains: dict[tuple[str, int], float] = defaultdict(float)
         spans: dict[tuple[str, int], list[int]] = {}
-        for step in range(episode.first, episode.last + 1):
+        stride = 1 + (episode.last - episode.first) // LOOKED_AT
+        for step in range(episode.first, episode.last + 1, stride):
             for blame in self.blames.of(step):
                 key = (blame.limit, blame.joint)
                 gains[key] += blame.gain * self.roll.shortfall[step]
@@ -214,7 +217,8 @@ class _Book:
         if any_of:
             words = f"any one of several limits, among them {words}"
         if value is not None and bound is not None:
-            words += f" (exact tracking would ask {value:.4g} {use.unit}, the limit is {bound:.4g})"
+            words += f" (exact tracking would ask {value:.4g} {use.unit}, the limit is {bound:.4g}"
+            words += ")" if abs(value) > abs(bound) else "; it makes up for other joints)"
         middle = (span[0] + span[1]) // 2
         return Reason(
             decides,
@@ -322,28 +326,31 @@ def _broken(use: Use, book: _Book) -> Reason:
     )
 
 
+def _beyond(reason: Reason) -> bool:
+    """Whether exact tracking would ask for more than the limit; so too where that is not known."""
+    return reason.value is None or reason.bound is None or abs(reason.value) > abs(reason.bound)
+
+
 def _merged(found: Iterable[Reason]) -> list[Reason]:
-    """One reason a limit and joint: the first text, the whole span, how many strikes it decides."""
+    """One reason a limit and joint: the worst one's text, the whole span, how many strikes it is about."""
     groups: dict[tuple[str, str | None], list[Reason]] = defaultdict(list)
     for reason in found:
         groups[(reason.limit, reason.joint)].append(reason)
     merged = []
     for group in groups.values():
-        first = group[0]
         worst = max(group, key=lambda r: abs(r.value) if r.value is not None else 0.0)
-        more = f"; and {len(group) - 1} more like it" if len(group) > 1 else ""
         times = [t for r in group for t in (r.time_s, r.until_s) if t is not None]
+        text = worst.text if len(group) == 1 else f"{len(group)} strikes, the worst: {worst.text}"
         merged.append(
             replace(
-                first,
-                value=worst.value,
-                bound=worst.bound,
+                worst,
+                decides=any(r.decides for r in group),
                 time_s=min(times, default=None),
                 until_s=max(times, default=None),
-                text=worst.text + more,
+                text=text,
             )
         )
-    return merged
+    return sorted(merged, key=lambda r: not r.decides)
 
 
 def deciding(found: Iterable[Reason]) -> list[tuple[str, str | None]]:

@@ -80,25 +80,16 @@ def build_reference(cell: Cell, follow: Follow, position: Array, rotation: Array
     offset = _point_offset(cell, follow)
 
     mean = sent + rate * span[:, None] / 2
-    positions, rotations = np.empty((len(t), 3)), np.empty((len(t), 3, 3))
     if follow.frame == "paddle":
-        turns = exponential(mean[:, 3:] * span[:, None])
-        slide = _body_translation(mean, span)
-        point, axes = position + rotation @ offset, rotation
-        for k in range(len(t)):
-            positions[k], rotations[k] = point - axes @ offset, axes
-            point = point + axes @ slide[k]
-            axes = axes @ turns[k]
+        rotations = _products(rotation, exponential(mean[:, 3:] * span[:, None]), before=False)
+        steps = np.einsum("kij,kj->ki", rotations, _body_translation(mean, span))
         axes_of_twist = rotations
     else:
-        turns = exponential(mean[:, 3:] @ fixed_axes.T * span[:, None])
+        rotations = _products(rotation, exponential(mean[:, 3:] @ fixed_axes.T * span[:, None]), before=True)
         steps = mean[:, :3] @ fixed_axes.T * span[:, None]
-        point, axes = position + rotation @ offset, rotation
-        for k in range(len(t)):
-            positions[k], rotations[k] = point - axes @ offset, axes
-            point = point + steps[k]
-            axes = turns[k] @ axes
         axes_of_twist = np.broadcast_to(fixed_axes, rotations.shape)
+    moved = np.vstack([np.zeros((1, 3)), np.cumsum(steps[:-1], axis=0)])
+    positions = position + rotation @ offset + moved - rotations @ offset
     twist = _at_strike_point(sent, axes_of_twist, rotations @ offset)
     next_twist = _at_strike_point(
         sent + rate * span[:, None], np.roll(axes_of_twist, -1, 0), np.roll(rotations @ offset, -1, 0)
@@ -106,6 +97,18 @@ def build_reference(cell: Cell, follow: Follow, position: Array, rotation: Array
     slope = np.where(span[:, None] > 0, (next_twist - twist) / np.maximum(span, 1e-300)[:, None], 0.0)
     slope[t >= end_s - 1e-12] = 0.0
     return Reference(t, twist, slope, positions, rotations, end_s)
+
+
+def _products(first: Array, turns: Array, before: bool) -> Array:
+    """Rotations (k, 3, 3): the first, then each turn (k, 3, 3) but the last taken `before` (on the left) or after."""
+    rotations, current = np.empty_like(turns), first
+    rotations[0] = first
+    turning = np.any(turns != np.eye(3), axis=(1, 2)).tolist()
+    for k in range(len(turns) - 1):
+        if turning[k]:
+            current = turns[k].dot(current) if before else current.dot(turns[k])
+        rotations[k + 1] = current
+    return rotations
 
 
 def _instants(stamps: Array, end_s: float, period_s: float) -> Array:

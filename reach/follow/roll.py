@@ -93,6 +93,8 @@ class _Roller:
         self.z: list[Array] = []
         self.z_box: list[Array] = []
         self.checked = 0
+        self.free_slots: set[int] = set()  # slots whose step kept every row without being asked to
+        self.was_free = True
         self.careful_at = -1  # step that is to be checked at once
         self.close_until = 0  # step up to which no row is left out
         self.cautious_until = 0  # step up to which the cautious braking ability serves
@@ -174,33 +176,56 @@ class _Roller:
         Far from every position and velocity limit those rows are left out, and a step that might miss them is
         solved again with them; near one they stay in for a while.
         """
-        q, v, state, slot = self.q[k], self.v[k], self.state, k - self.checked
         if k >= self.close_until and not self.keeps_direction:
             if k >= self.cautious_until:
-                self.cautious, self.caution = self.brakes.cautious(state)
+                self.cautious, self.caution = self.brakes.cautious(self.state)
                 self.cautious_until = k + CAUTIOUS_FOR
-            now = Now(q, v, self.last_change, self.last_torque, state, self.cautious)
-            problem = self.stepper.prepare(now, target, self.posture_velocity, slot, close=False)
-            if problem is self.stepper.block.problems[slot]:
-                change = self.stepper.quick(problem, slot)
-                if change is not None and self.stepper.rows.clear(self.caution, q, v + change, change):
-                    return change, self.cautious
-            self.close_until = k + CLOSE_FOR
-        brake = self.brakes.at(state, self.bias_before)
-        now = Now(q, v, self.last_change, self.last_torque, state, brake)
-        problem = self.stepper.prepare(now, target, self.posture_velocity, slot)
-        if self.keeps_direction:
-            return self._noted(k, same_direction(self.stepper, problem, slot, target)), brake
-        if problem is self.stepper.block.problems[slot] and k != self.careful_at:
-            change = self.stepper.quick(problem, slot)
+            change = self._attempt(k, target, self.cautious, close=False)
             if change is not None:
-                return change, brake
+                if self.stepper.rows.clear(self.caution, self.q[k], self.v[k] + change, change):
+                    return change, self.cautious
+                self.free_slots.discard(k - self.checked)
+            self.close_until = k + CLOSE_FOR
+        brake = self.brakes.at(self.state, self.bias_before)
+        change = self._attempt(k, target, brake, close=True)
+        if change is not None:
+            return change, brake
+        problem = self.stepper.problem(self._now(k, brake), k - self.checked)
+        if self.keeps_direction:
+            return self._noted(k, same_direction(self.stepper, problem, k - self.checked, target)), brake
         return self._noted(k, self.stepper.careful(problem)), brake
+
+    def _now(self, k: int, brake: Brake) -> Now:
+        return Now(self.q[k], self.v[k], self.last_change, self.last_torque, self.state, brake)
+
+    def _attempt(self, k: int, target: Array, brake: Brake, close: bool) -> Array | None:
+        """The step without any row where that keeps them all, else by the first solver, whose word the block checks.
+
+        None where the step must be checked at once.
+        """
+        stepper, slot, now = self.stepper, k - self.checked, self._now(k, brake)
+        stepper.cost(now, target, self.posture_velocity, slot)
+        if self.keeps_direction or k == self.careful_at:
+            return None
+        block = stepper.block
+        if self.was_free:
+            change = stepper.free(now, slot, close)
+            if change is not None:
+                block.x[slot], block.z[slot], block.z_box[slot] = change, 0.0, 0.0
+                self.free_slots.add(slot)
+                return change
+        problem = stepper.problem(now, slot, close)
+        if problem is not block.problems[slot]:
+            return None
+        change = stepper.quick(problem, slot)
+        self.was_free = change is not None and not (block.z[slot].any() or block.z_box[slot].any())
+        return change
 
     def _noted(self, k: int, step: Step) -> Array:
         """Keep a step that was checked at once out of the block's check, and what it says."""
         self.noted[k] = step
         block, slot, m = self.stepper.block, k - self.checked, self.stepper.rows.count
+        self.was_free = False
         block.x[slot] = step.change
         block.z[slot] = 0.0 if step.z is None else step.z[:m]
         block.z_box[slot] = 0.0 if step.z_box is None else step.z_box
@@ -212,7 +237,11 @@ class _Roller:
         if count == 0:
             return None
         block = self.stepper.block
-        bad = block.first_bad(count, [s for s in range(count) if self.checked + s in self.noted])
+        unchecked = [
+            s for s in range(count) if s not in self.free_slots and self.checked + s not in self.noted
+        ]
+        bad = block.first_bad(unchecked) if unchecked else None
+        self.free_slots = set()
         good = count if bad is None else bad
         x = block.x[:good]
         error = self.stepper.error[:good] + (self.stepper.task[:good] @ x[..., None])[..., 0]

@@ -96,6 +96,22 @@ class Rows:
         """Torque rows of a step."""
         return 2 * len(self.limited)
 
+    def inside(self, now: Now, change: Array, close: bool) -> bool:
+        """Whether a change of velocity (n,) keeps all rows; says no where the tool's cap is near."""
+        if self.tool is not None and self._tool_calm <= 0:
+            return False
+        signed = self._signed
+        np.multiply(SIGNS, change, out=signed)
+        if np.count_nonzero(signed > self.joint.tightest(now, close)):
+            return False
+        if self.limited.size:
+            self._sum_inertia(now)
+            np.multiply(SIGNS, self.torque_of(now.state, change), out=signed)
+            if np.count_nonzero(signed > self.torque.tightest(now)):
+                return False
+        self._tool_calm -= 1
+        return True
+
     def fill(self, now: Now, p: QpProblem, close: bool = True) -> QpProblem:
         """Write the rows for a state into a problem; the cost is the caller's. `close` as in Lanes.tightest.
 
@@ -104,9 +120,8 @@ class Rows:
         most = self.joint.tightest(now, close)
         p.ub[:] = most[0]
         np.negative(most[1], out=p.lb)
-        np.copyto(self.matrix, now.state.mass)
-        self._diagonal += now.state.slope * (PHASE * self._period_s)
         if self.limited.size:
+            self._sum_inertia(now)
             self._fill_torque(now, p)
         extra = None
         if self.tool is not None:
@@ -126,10 +141,14 @@ class Rows:
         return self.joint.clear(Ahead(q, np.abs(change), speed, caution))
 
     def torque_of(self, state: State, change: Array) -> Array:
-        """Torque (n,) that the rows of the last `fill` hold, for a change of velocity (n,)."""
+        """Torque (n,) that the rows of the last `fill` or `inside` hold, for a change of velocity (n,)."""
         torque = self.matrix.dot(change / self._period_s)
         torque += state.bias
         return np.asarray(torque)
+
+    def _sum_inertia(self, now: Now) -> None:
+        np.copyto(self.matrix, now.state.mass)
+        self._diagonal += now.state.slope * (PHASE * self._period_s)
 
     def _fill_torque(self, now: Now, p: QpProblem) -> None:
         m = len(self.limited)

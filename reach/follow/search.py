@@ -15,6 +15,7 @@ from reach.cell import Cell
 from reach.follow.bench import run
 
 BATCH = 2  # values tried at once, one a worker on a two-core machine
+HOLD = (1.02, 1.05, 1.1)  # multiples of a value that must pass as well
 THREAD_VARIABLES = ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS")
 
 
@@ -117,3 +118,34 @@ def least_passing(
                 break
             low = value
     return high
+
+
+def least_that_holds(
+    passes: Callable[[Sequence[float]], list[bool]], scan: Sequence[float], resolution: float
+) -> tuple[float | None, float | None]:
+    """The least value that passes and goes on passing a little further up, and the largest above it that failed.
+
+    The value is rounded up to its resolution before it is run, so that what is printed is what passed. HOLD gives how
+    far further up it must hold; where it does not, the search goes on above the failure, which is returned too: a
+    counter-example to the thought that more is always better.
+    """
+    failed: float | None = None
+    values = list(scan)
+    while True:
+        found = least_passing(passes, values, resolution)
+        if found is None:
+            return None, failed
+        digits = max(0, 1 - math.floor(math.log10(resolution * found)))
+        rounded = math.ceil(found * 10**digits - 1e-9) / 10**digits
+        tried = [rounded, *(rounded * further for further in HOLD)]
+        verdicts = passes(tried)
+        if all(verdicts):
+            return rounded, failed
+        failed = max(value for value, ok in zip(tried, verdicts, strict=True) if not ok)
+        if failed >= scan[-1]:
+            return None, failed
+        values = [
+            failed,
+            *(failed * (1 + resolution) ** k for k in (1, 3, 7)),
+            *(v for v in scan if v > failed * 1.1),
+        ]

@@ -5,6 +5,7 @@ from __future__ import annotations
 from typing import NamedTuple
 
 import numpy as np
+from scipy.linalg.lapack import dposv
 
 from reach.cell import Array, Cell
 from reach.follow.rows import Rows
@@ -73,13 +74,8 @@ class Stepper:
         self._weight_column = self.weight[:, None]
         self._share = POSTURE_WEIGHT / n
 
-    def prepare(
-        self, now: Now, target: Array, posture_velocity: Array, slot: int, close: bool = True
-    ) -> QpProblem:
-        """Rows and cost of a step toward a twist (6,), written into a slot; returns the problem to solve.
-
-        `close` False leaves out the rows that seldom matter; `rows.clear` then tells whether they are kept.
-        """
+    def cost(self, now: Now, target: Array, posture_velocity: Array, slot: int) -> None:
+        """Write the cost of a step toward a twist (6,) into a slot."""
         problem, task, error, flat, diagonal = self._slots[slot]
         np.multiply(now.state.jacobian, self._weight_column, out=task)
         np.multiply(now.state.drift, self._period_s, out=error)
@@ -91,7 +87,23 @@ class Stepper:
         diagonal += share
         np.dot(error, task, out=problem.q)
         problem.q += share * (now.v - posture_velocity)
-        return self.rows.fill(now, problem, close)
+
+    def free(self, now: Now, slot: int, close: bool) -> Array | None:
+        """The change of velocity that minimises a slot's cost with no row at all, None where it misses a row.
+
+        Where it keeps every row it is the quadratic program's answer, with all multipliers zero, at a fraction of a
+        solve. `close` as in Lanes.tightest.
+        """
+        problem = self.block.problems[slot]
+        _, change, singular = dposv(problem.P, problem.q)
+        if singular:
+            return None
+        np.negative(change, out=change)
+        return change if self.rows.inside(now, change, close) else None
+
+    def problem(self, now: Now, slot: int, close: bool = True) -> QpProblem:
+        """The quadratic program of a slot whose cost is written, with its rows. `close` as in Lanes.tightest."""
+        return self.rows.fill(now, self.block.problems[slot], close)
 
     def quick(self, problem: QpProblem, slot: int) -> Array | None:
         """The change of velocity by the first solver's word, noted in the block; None where it has no answer."""

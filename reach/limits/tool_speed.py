@@ -52,9 +52,7 @@ class ToolSpeed(Limit):
         if speed < NEAR_SHARE * cap:
             return None
         along = velocity / speed
-        across = np.cross(along, np.eye(3)[np.argmin(np.abs(along))])
-        across /= np.linalg.norm(across)
-        box = np.array([along, across, np.cross(along, across)]) @ rows
+        box = _frame_along(*along.tolist()).dot(rows)
         ahead = now.state.drift[:3] * self.period_s
         gaining = float(along @ (rows @ now.change)) / self.period_s
         room = cap * np.sqrt(1 - ASIDE_SHARE**2) - speed - float(along @ ahead)
@@ -75,3 +73,14 @@ class ToolSpeed(Limit):
 
     def measure(self, fine: Fine) -> Array:
         return fine.speed[:, None]
+
+
+def _frame_along(x: float, y: float, z: float) -> Array:
+    """Orthonormal rows (3, 3), the first a given unit vector."""
+    if abs(z) < 0.7:
+        size = math.hypot(x, y)
+        u, v, w = -y / size, x / size, 0.0
+    else:
+        size = math.hypot(y, z)
+        u, v, w = 0.0, -z / size, y / size
+    return np.array([[x, y, z], [u, v, w], [y * w - z * v, z * u - x * w, x * v - y * u]])

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
 from dataclasses import dataclass
 from enum import Enum
 from typing import Any
@@ -81,16 +80,12 @@ class QpBlock:
         arrays = (self.P, self.q, self.G, self.h, self.lb, self.ub)
         self.problems = [QpProblem(*(array[k] for array in arrays)) for k in range(size)]
 
-    def first_bad(self, count: int, settled: Iterable[int] = ()) -> int | None:
-        """Index of the first of `count` answers that fails the check, None where all pass.
-
-        Slots named in `settled` were checked before and hold no plain answer.
-        """
-        part = [a[:count] for a in (self.P, self.q, self.G, self.h, self.lb, self.ub)]
-        primal, kkt = residuals(QpProblem(*part), self.x[:count], self.z[:count], self.z_box[:count])
+    def first_bad(self, slots: list[int]) -> int | None:
+        """The first of some slots whose answer fails the check, None where all pass."""
+        part = [a[slots] for a in (self.P, self.q, self.G, self.h, self.lb, self.ub)]
+        primal, kkt = residuals(QpProblem(*part), self.x[slots], self.z[slots], self.z_box[slots])
         good = (primal <= PRIMAL_TOLERANCE) & (kkt <= KKT_TOLERANCE)
-        good[list(settled)] = True
-        return None if good.all() else int(np.argmin(good))
+        return None if good.all() else slots[int(np.argmin(good))]
 
 
 def residuals(p: QpProblem, x: Array, z: Array, z_box: Array) -> tuple[Array, Array]:

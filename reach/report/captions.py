@@ -38,20 +38,22 @@ def of_speed(result: FollowResult) -> Caption:
 def of_peaks(result: FollowResult) -> Caption:
     """Caption of the table of peaks."""
     text = (
-        "Peak use of each limit in per cent of the stated value, and in brackets what exact tracking would "
-        "have asked for. Darker is more; a thick frame with an exclamation mark is a broken limit."
+        "Peak use of each limit in per cent of the stated value, darker is more; in brackets what exact "
+        "tracking would have asked for, with an orange wedge at the left where that is more than the limit. "
+        "A thick frame with an exclamation mark is a limit that the delivered motion breaks."
     )
     alt = f"{len(broken_limits(result.evidence))} limits broken; the table of limits has the numbers."
-    return Caption("Use of each limit", text, alt)
+    return Caption("Use of each limit, delivered (and asked for)", text, alt)
 
 
-def of_uses(most_share: float) -> Caption:
-    """Caption of the use of limits over time, in panels that end at a share of the limit."""
+def of_uses(lanes: int) -> Caption:
+    """Caption of the use of limits over time, for so many of each joint's limits."""
     text = (
-        "Share of each stated limit over time. The dark line is the limit; short dashes at the right edge, "
-        "in the colour of their line, are what the plan leaves of it after its margin; filled parts are "
-        "breaks, with a cross at the worst. Limits that are unknown, or one number for the whole motion, "
-        f"have no line. A panel ends at {100 * most_share:.0f} % at most."
+        f"The {lanes} limits that each joint uses most, the most used at the top, as shares of the stated limit: the "
+        "largest in each short run of time, with the peak at the right. The solid line above is the limit, the "
+        "dashed one what the plan leaves of it after its margin. Dark parts above the limit, with a cross at "
+        "the worst and an exclamation mark at the peak, are breaks. Limits that are unknown, or one number for "
+        "the whole motion, have no line."
     )
     alt = "The table of limits has the peaks and their instants."
     return Caption("Use of the limits over time", text, alt)
@@ -72,8 +74,8 @@ def of_errors(result: FollowResult) -> Caption:
 def of_path(track: Track) -> Caption:
     """Caption of the strike point's path."""
     text = (
-        "The way of the strike point in world axes, both scales equal. The commanded way is the command "
-        "integrated; the open square is the start."
+        "The way of the strike point along the world's axes; within a view both scales are equal, each view has "
+        "its own. The commanded way, wide and light, is the command integrated; the open square is the start."
     )
     span = np.ptp(track.position, axis=0)
     alt = f"It spans {span[0]:.3f} m in x, {span[1]:.3f} m in y and {span[2]:.3f} m in z."

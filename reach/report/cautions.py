@@ -33,7 +33,7 @@ def _speed(peak_m_s: float | None) -> str:
     if peak_m_s is None:
         return f"{rule}."
     if peak_m_s > REDUCED_SPEED_M_S:
-        return f"{rule}: this motion passes it, with {1000 * peak_m_s:.0f} mm/s at the strike point."
+        return f"{rule}: this motion exceeds it, with {1000 * peak_m_s:.0f} mm/s at the strike point."
     return (
         f"{rule}: this motion stays within it at the strike point, with {1000 * peak_m_s:.0f} mm/s there; "
         "other points of arm and paddle may be faster."

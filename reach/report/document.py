@@ -10,18 +10,18 @@ from typing import Any
 
 import numpy as np
 
+import reach
 from reach.evidence.record import Strike, Track, Use
 from reach.report.cautions import cautions
-from reach.report.wording import tilt_meaning
+from reach.report.wording import all_notes, tilt_meaning
 from reach.result import FollowResult
 
 SCHEMA = "strikecheck/follow/1"
 DIGITS = 9  # significant digits of a value that leaves the program
 TIME_DECIMALS = 9  # of an instant: nanoseconds, whatever the log's zero is
 TIMES = ("time_s", "until_s")
-# Names in versions, and the distributions they come from.
+# Names in versions beside this program's own, and the distributions they come from.
 DISTRIBUTIONS = {
-    "strikecheck": "strikecheck",
     "pinocchio": "pin",
     "qpsolvers": "qpsolvers",
     "numpy": "numpy",
@@ -55,7 +55,7 @@ def document(result: FollowResult) -> dict[str, Any]:
         "rms_torque_nm": _rms_torque(result),
         "solver": asdict(result.solver),
         "reading": result.reading,
-        "notes": result.notes + result.cell.notes,
+        "notes": all_notes(result),
         "cautions": cautions(result),
         "inputs": [asdict(source) for source in result.cell.inputs],
         "versions": versions(),
@@ -107,7 +107,7 @@ def tracking(track: Track | None) -> dict[str, float | None]:
 
 def versions() -> dict[str, str | None]:
     """Return the versions of what produced the result; None for what is not installed as a distribution."""
-    found: dict[str, str | None] = {}
+    found: dict[str, str | None] = {"strikecheck": reach.__version__}
     for name, distribution in DISTRIBUTIONS.items():
         try:
             found[name] = importlib.metadata.version(distribution)

@@ -3,13 +3,17 @@
 from __future__ import annotations
 
 from reach.evidence.record import Reason, Strike, Use
+from reach.report import needs
+from reach.report.alike import once
 from reach.report.cautions import cautions
 from reach.report.document import tracking, versions
-from reach.report.figures import pictures
-from reach.report.page import bullets, esc, page, paragraph, picture, section, table
+from reach.report.page import bullets, details, esc, page, paragraph, picture, section, table
+from reach.report.pictures import pictures
 from reach.report.wording import (
     NOTHING,
+    all_notes,
     both_sides,
+    demand_note,
     fixed,
     force_unit,
     number,
@@ -18,6 +22,7 @@ from reach.report.wording import (
     percent,
     remedy_line,
     solver_line,
+    span,
     tilt_meaning,
     unknown_limits,
 )
@@ -39,12 +44,12 @@ def write(result: FollowResult) -> str:
             section("What the limits would have to be", _needs(result)),
             section("Strikes", _strikes(result), paragraph(tilt_meaning(result) or "")),
             section("Figures", *_pictures(result)),
-            section("Limits", _limits(result), _unknown(result)),
+            section("Limits", _limits(result), paragraph(demand_note(result)), _unknown(result)),
             section("What else fell short", _reasons(others)),
             section("The motion", _motion(result)),
             section("How the log was read", paragraph(result.reading)),
             section("Not checked", bullets(result.evidence.not_checked)),
-            section("Notes", bullets([*result.notes, *result.cell.notes])),
+            section("Notes", _notes(result)),
             section("Inputs", table(("file", "SHA-256"), [(i.path, i.sha256) for i in result.cell.inputs])),
             section("Versions", table(("program", "version"), _versions())),
             section("Caution", f'<div class="caution">{bullets(cautions(result))}</div>'),
@@ -64,14 +69,13 @@ def _verdict(result: FollowResult) -> str:
 
 
 def _reasons(reasons: list[Reason]) -> str:
-    header = ("what", "limit", "phase", "#from s", "#to s", "#value", "#bound", "unit", "basis")
+    header = ("what", "limit", "phase", "#when s", "#value", "#bound", "unit", "basis")
     rows = [
         (
             reason.text,
             f"{reason.limit} of {reason.joint}" if reason.joint else reason.limit,
             reason.phase or NOTHING,
-            fixed(reason.time_s, 3),
-            fixed(reason.until_s, 3),
+            span(reason),
             number(reason.value),
             number(reason.bound),
             reason.unit,
@@ -87,12 +91,21 @@ def _remedies(result: FollowResult) -> str:
 
 
 def _needs(result: FollowResult) -> str:
-    header = ("what", "limit", "joint", "#necessary", "#sufficient", "unit")
-    rows = [
-        (n.text, n.limit, n.joint or NOTHING, number(n.necessary), number(n.sufficient), n.unit)
-        for n in result.needs
-    ]
-    return table(header, rows)
+    sought, beyond = needs.split(result)
+    header = [f"#{name}" if name in ("now", "necessary", "sufficient") else name for name in needs.HEADER]
+    found = table(header, needs.rows(result, sought))
+    if found:
+        found += paragraph(f"{needs.meaning(sought)}.") + bullets(needs.remarks(sought))
+    return found + details(needs.not_searched(beyond), bullets(need.text for need in beyond))
+
+
+def _notes(result: FollowResult) -> str:
+    """The notes, those that are alike told once, and all of them behind a click where that leaves some out."""
+    notes = all_notes(result)
+    short = once(notes, [joint.name for joint in result.cell.arm.joints])
+    return bullets(short) + (
+        details(f"all {len(notes)} notes", bullets(notes)) if len(short) < len(notes) else ""
+    )
 
 
 def _strikes(result: FollowResult) -> str:
@@ -101,7 +114,7 @@ def _strikes(result: FollowResult) -> str:
         "#at s",
         "#commanded m/s",
         "#delivered m/s",
-        "#share %",
+        "#worst in window %",
         "#lateral m/s",
         "#tilt off °",
         "#position off mm",

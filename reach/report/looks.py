@@ -11,19 +11,23 @@ from typing import Any
 BLUE, ORANGE, GREEN, PURPLE = "#0072b2", "#d55e00", "#009e73", "#aa4499"
 SKY, YELLOW, INK, GREY, PALE = "#56b4e9", "#b8860b", "#222222", "#7a7a7a", "#e9edf1"
 
-KIND_STYLES: dict[str, tuple[str, str | tuple[int, tuple[float, ...]]]] = {
-    "position": (GREY, "-"),
-    "velocity": (BLUE, "-"),
-    "acceleration": (GREEN, (0, (5, 1.5))),
-    "jerk": (PURPLE, (0, (1, 1.2))),
-    "torque": (ORANGE, "-"),
-    "torque rate": (YELLOW, (0, (4, 1.2, 1, 1.2))),
-    "tool speed": (INK, "-"),
+KIND_COLOURS = {
+    "position": GREY,
+    "velocity": BLUE,
+    "acceleration": GREEN,
+    "jerk": PURPLE,
+    "torque": ORANGE,
+    "torque rate": YELLOW,
+    "tool speed": INK,
 }
-OTHER_STYLE = (SKY, (0, (2, 1)))  # a kind that has no style of its own
+OTHER_COLOUR = SKY  # of a kind that has none of its own
+BROKEN, BROKEN_PALE = "#8a2f00", "#fbe3d2"
 
 COMMANDED_STYLE: dict[str, Any] = {"color": INK, "linestyle": (0, (4, 2)), "label": "commanded", "zorder": 3}
 DELIVERED_STYLE: dict[str, Any] = {"color": BLUE, "linewidth": 1.6, "label": "delivered"}
+# In the drawing of the way the command lies below, wide and light.
+WAY_COMMANDED_STYLE: dict[str, Any] = {"color": "#b4b4b4", "linewidth": 4.5, "label": "commanded"}
+WAY_DELIVERED_STYLE: dict[str, Any] = {"color": BLUE, "linewidth": 1.1, "label": "delivered"}
 MARK: dict[str, Any] = {"linestyle": "", "markersize": 7, "zorder": 5}
 STRIKE_STYLES: dict[bool, dict[str, Any]] = {  # by whether it was delivered
     True: {**MARK, "marker": "o", "color": GREEN, "label": "strike delivered"},

@@ -35,10 +35,14 @@ tr.marked td { background: #fdf1e8; }
 figure { margin: 1rem 0 1.6rem; }
 figure img { display: block; width: 100%; height: auto; }
 figcaption { font-size: .9rem; color: #444; }
+details { margin: .4rem 0; }
+summary { cursor: pointer; color: #444; }
 .caution { border-left: 6px solid #222; padding-left: 1rem; }
 @media print { body { max-width: none; padding: 0; font-size: 10pt; } figure, tr { break-inside: avoid; }
   h2, h3 { break-after: avoid; } thead { display: table-header-group; }
-  .scroll { overflow: visible; } td { overflow-wrap: anywhere; } }
+  .scroll { overflow: visible; } table { font-size: 8pt; } th, td { padding: .15rem .3rem; }
+  td { overflow-wrap: anywhere; min-width: 4.6rem; } td.n { min-width: 0; }
+  details::details-content { content-visibility: visible; block-size: auto; } }
 """
 
 
@@ -93,6 +97,11 @@ def table(header: Sequence[str], rows: Sequence[Sequence[str]], marked: Sequence
     body = "\n".join(lines)
     rows_html = f"<thead><tr>{head}</tr></thead>\n<tbody>\n{body}\n</tbody>"
     return f'<div class="scroll"><table>\n{rows_html}</table></div>'
+
+
+def details(summary: str, content: str) -> str:
+    """Return HTML content that opens on demand, or nothing without content."""
+    return f"<details>\n<summary>{esc(summary)}</summary>\n{content}\n</details>" if content else ""
 
 
 def picture(title: str, caption: str, alt: str, svg: bytes) -> str:

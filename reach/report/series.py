@@ -24,6 +24,44 @@ def keep(values: Array, points: int) -> NDArray[np.int_]:
     return np.unique(np.minimum(chosen, count - 1))
 
 
+def keep_way(way: Array, finest: float, points: int = 6000) -> NDArray[np.int_]:
+    """Return the rows of a way (m, 2) to draw: what is drawn leaves it by `finest` at most.
+
+    From the ends inwards, the row farthest from the line drawn so far is added (Douglas and Peucker, 1973,
+    Cartographica 10(2), from memory). Where that takes more than so many points, `finest` is doubled.
+    """
+    while True:
+        chosen = _corners(way, finest, points)
+        if chosen is not None:
+            return chosen
+        finest *= 2
+
+
+def _corners(way: Array, finest: float, points: int) -> NDArray[np.int_] | None:
+    """Return the rows to draw, None where they would be more than `points`."""
+    chosen = {0, len(way) - 1}
+    open_ends = [(0, len(way) - 1)]
+    while open_ends and len(chosen) <= points:
+        first, last = open_ends.pop()
+        if last - first < 2:
+            continue
+        away = _distances(way[first + 1 : last], way[first], way[last])
+        farthest = int(np.argmax(away))
+        if away[farthest] > finest:
+            middle = first + 1 + farthest
+            chosen.add(middle)
+            open_ends += [(first, middle), (middle, last)]
+    return None if len(chosen) > points else np.array(sorted(chosen))
+
+
+def _distances(places: Array, start: Array, end: Array) -> Array:
+    """Return the distances (m,) of places (m, 2) from a line that ends at both its ends."""
+    line = end - start
+    square = float(line @ line)
+    along = np.clip((places - start) @ line / square, 0.0, 1.0) if square > 0 else np.zeros(len(places))
+    return np.asarray(np.linalg.norm(places - start - along[:, None] * line, axis=1))
+
+
 def shares(use: Use, values: Array | None = None) -> Array:
     """Return the share of its stated limit that a use's series takes, or `values`; 1 is at the limit.
 

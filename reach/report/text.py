@@ -5,11 +5,15 @@ from __future__ import annotations
 import math
 
 from reach.evidence.record import Reason, Strike, Use
+from reach.report import needs
+from reach.report.alike import alike, with_count
 from reach.report.cautions import cautions
 from reach.report.columns import shorten, table, wrap
 from reach.report.document import tracking
 from reach.report.wording import (
     NOTHING,
+    all_notes,
+    demand_note,
     fixed,
     force_unit,
     number,
@@ -29,6 +33,7 @@ FIRST_STRIKES = 3  # delivered strikes shown
 MISSED_STRIKES = 20  # missed strikes shown
 OTHER_REASONS = 5
 WORST_LIMITS = 8
+NOTE_LINES = 8
 NAME_COLUMNS = 24
 
 Section = tuple[str, list[str]]
@@ -44,11 +49,11 @@ def write(result: FollowResult) -> str:
         ("What else fell short", _other_reasons(result)),
         ("Limits used most", _limits(result)),
         ("Limits unknown", _unknown(result)),
-        ("What the limits would have to be", _bullets([need.text for need in result.needs])),
+        ("What the limits would have to be", _needs(result)),
         ("What would help", _remedies(result)),
         ("The motion", _motion(result)),
         ("How the log was read", _bullets([result.reading])),
-        ("Notes", _bullets([*result.notes, *result.cell.notes])),
+        ("Notes", _notes(result)),
         ("Caution", _bullets(cautions(result))),
     ):
         if content:
@@ -72,12 +77,16 @@ def _strikes(result: FollowResult) -> list[str]:
     # Near the whole list, leaving a few out saves nothing.
     shown = hit if len(hit) <= FIRST_STRIKES + 1 else hit[:FIRST_STRIKES]
     listed = sorted([*shown, *missed[:MISSED_STRIKES]], key=lambda strike: strike.time_s)
-    header = ("at s", "commanded", "delivered", "%", "lateral", "tilt °", "off mm", "next mm", "result")
+    header = ("at s", "commanded", "delivered", "worst %", "lateral", "tilt °", "off mm", "next mm", "result")
     lines = table(header, [_strike(strike) for strike in listed])
     for count, word in ((len(missed) - MISSED_STRIKES, "missed"), (len(hit) - len(shown), "delivered")):
         if count > 0:
             lines.append(f"  … and {count} more {word}")
-    lines += wrap("speeds in m/s; next: how far the tilt error moves the next contact", "  ")
+    lines += wrap(
+        "speeds in m/s; worst: delivered over commanded where they differ most in the window; next: how far "
+        "the tilt error moves the next contact",
+        "  ",
+    )
     if any(not strike.marked for strike in strikes):
         lines += wrap("contacts guessed from the command's peaks", "  ")
     meaning = tilt_meaning(result)
@@ -119,7 +128,8 @@ def _limits(result: FollowResult) -> list[str]:
     if not worst:
         return []
     header = ("limit", "joint", "peak", "limit", "%", "at s", "asked for", "unit")
-    return table(header, [_use(use) for use in worst], left=2)
+    note = demand_note(result)
+    return table(header, [_use(use) for use in worst], left=2) + (wrap(note, "  ") if note else [])
 
 
 def _use(use: Use) -> tuple[str, ...]:
@@ -137,6 +147,31 @@ def _use(use: Use) -> tuple[str, ...]:
 
 def _unknown(result: FollowResult) -> list[str]:
     return _bullets([f"{limit}: {joints}" for limit, joints in unknown_limits(result)])
+
+
+def _needs(result: FollowResult) -> list[str]:
+    sought, beyond = needs.split(result)
+    lines = []
+    if sought:
+        cells = [
+            (limit, shorten(joint, NAME_COLUMNS), *rest) for limit, joint, *rest in needs.rows(result, sought)
+        ]
+        lines = table(needs.HEADER, cells, left=2) + wrap(needs.meaning(sought), "  ")
+    return lines + _bullets([*needs.remarks(sought), needs.not_searched(beyond)])
+
+
+def _notes(result: FollowResult) -> list[str]:
+    """As many notes as a few lines hold, those that are alike told once."""
+    notes = all_notes(result)
+    lines: list[str] = []
+    told = 0
+    for note, count in alike(notes, [joint.name for joint in result.cell.arm.joints]):
+        more = _bullets([with_count(note, count)])
+        if lines and len(lines) + len(more) > NOTE_LINES:
+            break
+        lines += more
+        told += count
+    return lines + ([f"  … and {len(notes) - told} more in verdict.json"] if told < len(notes) else [])
 
 
 def _remedies(result: FollowResult) -> list[str]:

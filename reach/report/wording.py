@@ -5,11 +5,15 @@ from __future__ import annotations
 import math
 import unicodedata
 
+import numpy as np
+
 from reach.cell import Joint
-from reach.evidence.record import Remedy, Strike, Use
+from reach.evidence.record import Reason, Remedy, Strike, Use
 from reach.result import FollowResult
 
 NOTHING = "–"
+WRITTEN_OUT = 1e7  # smaller values are written without an exponent
+COARSE = 1.5  # control periods: a log whose samples are farther apart is coarse
 # Marks that turn the writing direction of what follows, and two code points that XML forbids.
 UNSAFE = frozenset("\u202a\u202b\u202c\u202d\u202e\u2066\u2067\u2068\u2069\ufffe\uffff")
 
@@ -33,6 +37,8 @@ def number(value: float | None, digits: int = 4) -> str:
         return NOTHING
     if math.isinf(value):
         return "none"
+    if 10**digits <= abs(value) < WRITTEN_OUT:
+        return f"{value:.0f}"
     return f"{value + 0.0:.{digits}g}"
 
 
@@ -46,6 +52,14 @@ def fixed(value: float | None, decimals: int) -> str:
 def percent(share: float | None) -> str:
     """Return a share as per cent without the sign; a dash for nothing."""
     return fixed(None if share is None else 100 * share, 1)
+
+
+def span(reason: Reason) -> str:
+    """Return from when to when something fell short, in s; a dash where that isn't known."""
+    first, last = fixed(reason.time_s, 3), fixed(reason.until_s, 3)
+    if first == NOTHING or last in (NOTHING, first):
+        return first if first != NOTHING else last
+    return f"{first} to {last}"
 
 
 def owner(use: Use) -> str:
@@ -110,6 +124,32 @@ def unknown_limits(result: FollowResult) -> list[tuple[str, str]]:
     for limit, joint in result.evidence.unknown:
         grouped.setdefault(limit, []).append("tool" if joint is None else plain(joint))
     return [(limit, ", ".join(joints)) for limit, joints in grouped.items()]
+
+
+def demand_note(result: FollowResult) -> str:
+    """Return what to think of the values asked for by a log coarser than the control; empty for a finer one."""
+    follow, period_s = result.cell.follow, result.cell.period_s
+    if follow is None or len(follow.commands.t_s) < 2:
+        return ""
+    sample_s = float(np.median(np.diff(follow.commands.t_s)))
+    if sample_s <= COARSE * period_s:
+        return ""
+    jumps, tell = (
+        ("acceleration", "jerk and torque rate")
+        if follow.interpolation == "linear"
+        else ("velocity", "acceleration, jerk, torque and torque rate")
+    )
+    return (
+        f'"Asked for" counts the step at each sample of the log: one every {number(1000 * sample_s, 3)} ms, where '
+        f"the controller has {number(1000 * period_s, 3)} ms. The commanded {jumps} jumps there, so the {tell} "
+        "asked for tell of the log's spacing more than of the stroke."
+    )
+
+
+def all_notes(result: FollowResult) -> tuple[str, ...]:
+    """Return the notes on the result, then those on reading the files, each once."""
+    read = result.cell.notes
+    return tuple(dict.fromkeys([*(note for note in result.notes if note not in read), *read]))
 
 
 def solver_line(result: FollowResult) -> str:
