@@ -43,6 +43,7 @@ from reach.report.columns import width, wrap
 from reach.report.csv import quaternions
 from reach.report.document import document, versions
 from reach.report.evidence import evidence_files
+from reach.report.page import table
 from reach.report.series import keep, keep_way, shares
 from reach.report.wording import all_notes, demand_note, number, plain, span, tilt_meaning
 from reach.result import FollowResult
@@ -750,3 +751,10 @@ def test_shares_are_of_the_side_in_use(result: FollowResult) -> None:
     np.testing.assert_allclose(shares(use), [0.5, 0.25, 0.0])
     np.testing.assert_allclose(shares(replace(use, limit="position")), [2 / 3, 0.0, 1 / 3])
     np.testing.assert_allclose(shares(replace(use, lo=-np.inf, hi=np.inf)), 0.0)
+
+
+def test_long_words_in_a_table_may_break_and_stay_whole() -> None:
+    name = "<j>\n" + "x" * 60
+    markup = table(("joint", "#value"), [(name, "1")])
+    assert markup.count("<wbr>") == 2
+    assert "".join(Page(markup).words).split("value")[1].strip() == f"{plain(name)}1"

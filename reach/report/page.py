@@ -4,9 +4,12 @@ from __future__ import annotations
 
 import base64
 import html
+import re
 from collections.abc import Iterable, Sequence
 
 from reach.report.wording import plain
+
+LONG_WORD = re.compile(r"\S{24}(?=\S)")  # of a table: may be broken after so many characters
 
 POLICY = "default-src 'none'; img-src data:; style-src 'unsafe-inline'"
 
@@ -41,7 +44,6 @@ summary { cursor: pointer; color: #444; }
 @media print { body { max-width: none; padding: 0; font-size: 10pt; } figure, tr { break-inside: avoid; }
   h2, h3 { break-after: avoid; } thead { display: table-header-group; }
   .scroll { overflow: visible; } table { font-size: 8pt; } th, td { padding: .15rem .3rem; }
-  td { overflow-wrap: anywhere; min-width: 4.6rem; } td.n { min-width: 0; }
   details::details-content { content-visibility: visible; block-size: auto; } }
 """
 
@@ -92,7 +94,7 @@ def table(header: Sequence[str], rows: Sequence[Sequence[str]], marked: Sequence
     head = "".join(f"<th{c}>{esc(name)}</th>" for c, name in zip(numeric, names, strict=True))
     lines = []
     for place, row in enumerate(rows):
-        cells = "".join(f"<td{c}>{esc(cell)}</td>" for c, cell in zip(numeric, row, strict=True))
+        cells = "".join(f"<td{c}>{_breakable(cell)}</td>" for c, cell in zip(numeric, row, strict=True))
         lines.append(f"<tr{' class=marked' if place < len(marked) and marked[place] else ''}>{cells}</tr>")
     body = "\n".join(lines)
     rows_html = f"<thead><tr>{head}</tr></thead>\n<tbody>\n{body}\n</tbody>"
@@ -102,6 +104,11 @@ def table(header: Sequence[str], rows: Sequence[Sequence[str]], marked: Sequence
 def details(summary: str, content: str) -> str:
     """Return HTML content that opens on demand, or nothing without content."""
     return f"<details>\n<summary>{esc(summary)}</summary>\n{content}\n</details>" if content else ""
+
+
+def _breakable(text: str) -> str:
+    """Return text escaped, with places to break in words too long for a column."""
+    return "<wbr>".join(esc(part) for part in LONG_WORD.sub("\\g<0>\n", plain(text)).split("\n"))
 
 
 def picture(title: str, caption: str, alt: str, svg: bytes) -> str:
