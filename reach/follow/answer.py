@@ -80,7 +80,7 @@ def answer(
     if advice and base.roll is not None:
         with runner(workers, progress) as runs:
             share, headroom_text = headroom(cell, runs, base.passed)
-            wanted = needs(cell, base, deciding(found), runs)
+            wanted = needs(cell, base, deciding(found), share, runs)
             helps = remedies(cell, base, wanted, deciding(found), runs, seed)
     return FollowResult(
         cell=cell,

@@ -10,7 +10,7 @@ from reach.follow.variants import scaled_limits
 
 # Factors on every limit but position that are tried, rising; the answer is refined to RESOLUTION of the factor.
 SHRINK = (0.1, 0.2, 0.35, 0.5, 0.65, 0.8, 0.9, 1.0)
-GROW = (1.0, 1.25, 1.6, 2.0, 2.5, 3.2, 4.0, 6.0, 10.0)
+GROW = (1.25, 1.6, 2.0, 2.5, 3.2, 4.0, 6.0, 10.0)
 RESOLUTION = 0.02
 
 
@@ -26,7 +26,7 @@ def headroom(cell: Cell, runs: Runner, passes_as_is: bool) -> tuple[float | None
         return runs.passes([scaled_limits(cell, f) for f in factors])
 
     scan = SHRINK if passes_as_is else GROW
-    least, failed = least_that_holds(passes, scan, RESOLUTION)
+    least, failed = least_that_holds(passes, scan, RESOLUTION, below=None if passes_as_is else 1.0)
     if least is None:
         return None, f"not deliverable even with {scan[-1]:g} times every limit but position"
     share = 1.0 - least

@@ -26,15 +26,22 @@ ALONE = "alone would do"
 NEVER_SEARCHED = ("duty", "position")  # measured only, or a question of travel
 
 
-def needs(cell: Cell, base: Run, deciding: Sequence[Key], runs: Runner) -> tuple[Need, ...]:
+def needs(
+    cell: Cell, base: Run, deciding: Sequence[Key], headroom_share: float | None, runs: Runner
+) -> tuple[Need, ...]:
     """Needs of every unknown limit and of every limit that decides the verdict.
 
     *sufficient*: a motion was planned under it and passed. *necessary*: the least value at which the command still
-    passes with the other unknown (or failing) limits unlimited.
+    passes with the other unknown (or failing) limits unlimited; of failing ones for those that decide the verdict.
+
+    Parameters
+    ----------
+    headroom_share : from the search for all limits together, which tells where to look
     """
     units = {(use.limit, use.joint): use.unit for use in base.evidence.uses}
     found = _unknown_needs(cell, base, runs, units)
-    return (*found, *_failing_needs(cell, deciding, runs, units, base))
+    grown = 1.0 if headroom_share is None else max(1.0 - headroom_share, 1.0)
+    return (*found, *_failing_needs(cell, deciding, runs, units, base, grown))
 
 
 def _unknown_needs(cell: Cell, base: Run, runs: Runner, units: dict[Key, str]) -> list[Need]:
@@ -104,7 +111,7 @@ def _spared(cell: Cell, key: Key, value: float) -> float:
 
 
 def _failing_needs(
-    cell: Cell, deciding: Sequence[Key], runs: Runner, units: dict[Key, str], base: Run
+    cell: Cell, deciding: Sequence[Key], runs: Runner, units: dict[Key, str], base: Run, grown_all: float
 ) -> list[Need]:
     stated = {
         (u.limit, u.joint): max(abs(u.lo or 0.0), abs(u.hi or 0.0)) for u in base.evidence.uses if u.known
@@ -114,17 +121,23 @@ def _failing_needs(
         return []
     runs.say("what the failing limits would need")
 
-    def least(keys: Sequence[Key], others: dict[Key, float | None], resolution: float) -> float | None:
+    def least(
+        keys: Sequence[Key],
+        others: dict[Key, float | None],
+        resolution: float,
+        scan: Sequence[float] = GROW_SCAN,
+    ) -> float | None:
         """The least common multiple of some stated limits under which the command passes."""
 
         def passes(factors: Sequence[float]) -> list[bool]:
             grown = [{**others, **{k: f * stated[k] for k in keys}} for f in factors]
             return runs.passes([with_bounds(cell, values, "search") for values in grown])
 
-        return least_passing(passes, GROW_SCAN, resolution)
+        return least_passing(passes, scan, resolution)
 
     keys = _all_in_the_way(cell, first, stated, runs)
-    common = least(keys, {}, RESOLUTION)
+    likely = [grown_all * further for further in (1.0, 1.05, 1.2)] if grown_all > 1 else []
+    common = least(keys, {}, RESOLUTION, likely) or least(keys, {}, RESOLUTION)
     if common is None:
         return [_hopeless(key, stated[key], units[key]) for key in first]
     grown = {k: common * stated[k] for k in keys}
@@ -139,7 +152,7 @@ def _failing_needs(
         if len(keys) == 1:
             factor = least(keys, {}, RESOLUTION)
             sufficient = necessary = (factor or common) * stated[key]
-        else:
+        elif key in first:
             factor = least([key], dict.fromkeys(k for k in keys if k != key), COARSE)
             if factor is not None and factor <= common:
                 necessary = factor * stated[key]

@@ -64,7 +64,7 @@ def _slower(cell: Cell, base: Run, runs: Runner) -> Remedy | None:
     """The same path, stretched in time by the least factor that passes."""
     runs.say("remedy: slower")
     factor, failed = least_that_holds(
-        lambda fs: runs.passes([slower(cell, f) for f in fs]), SLOWER_SCAN, RESOLUTION
+        lambda fs: runs.passes([slower(cell, f) for f in fs]), SLOWER_SCAN, RESOLUTION, below=1.0
     )
     if factor is None:
         return None
@@ -88,7 +88,7 @@ def _lighter(cell: Cell, runs: Runner) -> Remedy | None:
 
     if not any(passes(LIGHTER_SCAN[-2:])):
         return None
-    factor, _ = least_that_holds(passes, LIGHTER_SCAN, RESOLUTION)
+    factor, _ = least_that_holds(passes, LIGHTER_SCAN, RESOLUTION, below=1.0)
     if factor is None:
         return None
     now = cell.paddle.mass_kg + sum(part.mass_kg for part in cell.paddle.parts)

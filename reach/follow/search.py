@@ -87,7 +87,10 @@ def runner(workers: int, progress: Callable[[str], None] | None = None) -> Itera
 
 
 def least_passing(
-    passes: Callable[[Sequence[float]], list[bool]], scan: Sequence[float], resolution: float
+    passes: Callable[[Sequence[float]], list[bool]],
+    scan: Sequence[float],
+    resolution: float,
+    below: float | None = None,
 ) -> float | None:
     """The least value that passes, to a relative resolution; None where none of the scan does.
 
@@ -98,14 +101,15 @@ def least_passing(
     ----------
     passes : tells for several values at once whether each passes
     scan : rising values, all > 0
+    below : a value under all of them that is known to fail
     """
-    low = high = None
+    low, high = below, None
     for k in range(0, len(scan), BATCH):
         tried = scan[k : k + BATCH]
         verdicts = passes(tried)
         if True in verdicts:
             first = k + verdicts.index(True)
-            low, high = (scan[first - 1] if first else None), scan[first]
+            low, high = (scan[first - 1] if first else below), scan[first]
             break
     if high is None or low is None:
         return high
@@ -121,18 +125,21 @@ def least_passing(
 
 
 def least_that_holds(
-    passes: Callable[[Sequence[float]], list[bool]], scan: Sequence[float], resolution: float
+    passes: Callable[[Sequence[float]], list[bool]],
+    scan: Sequence[float],
+    resolution: float,
+    below: float | None = None,
 ) -> tuple[float | None, float | None]:
     """The least value that passes and goes on passing a little further up, and the largest above it that failed.
 
     The value is rounded up to its resolution before it is run, so that what is printed is what passed. HOLD gives how
     far further up it must hold; where it does not, the search goes on above the failure, which is returned too: a
-    counter-example to the thought that more is always better.
+    counter-example to the thought that more is always better. Parameters as in `least_passing`.
     """
     failed: float | None = None
     values = list(scan)
     while True:
-        found = least_passing(passes, values, resolution)
+        found = least_passing(passes, values, resolution, below)
         if found is None:
             return None, failed
         digits = max(0, 1 - math.floor(math.log10(resolution * found)))
