@@ -71,16 +71,17 @@ def follow_commands(
     InputError
         Faults of the arrays, or no log, frame or point given anywhere.
     """
+    arrays = t_s is not None and twists is not None
+    if not arrays and any(given is not None for given in (t_s, twists, strikes, poses)):
+        raise InputError(
+            [Fault("arrays", "follow", "give t_s and twists together; strikes and poses belong to them")]
+        )
+    if not arrays and cell.follow is None:
+        raise InputError([Fault(cell.path, "follow", "the cell has no [follow] table; give t_s and twists")])
     settings = _settings(cell, frame, point)
     if t_s is not None and twists is not None:
         gaps = (settings.max_gap_s, settings.time_faults)
         settings = replace(settings, commands=check_arrays(t_s, twists, strikes, poses, *gaps))
-    elif any(given is not None for given in (t_s, twists, strikes, poses)):
-        raise InputError(
-            [Fault("arrays", "follow", "give t_s and twists together; strikes and poses belong to them")]
-        )
-    elif cell.follow is None:
-        raise InputError([Fault(cell.path, "follow", "the cell has no [follow] table; give t_s and twists")])
     return answer(replace(cell, follow=settings), workers, advice, progress, seed)
 
 
@@ -101,14 +102,10 @@ def _settings(cell: Cell, frame: object, point: object) -> Follow:
         faults.add("frame", f"{frame!r} is none of world, base, paddle; say along whose axes the twists are")
     if not isinstance(point, str):
         numbers = np.asarray(point, dtype=object).ravel().tolist()
-        if len(numbers) == 3 and all(isinstance(x, int | float) and np.isfinite(x) for x in numbers):
-            point = tuple(float(x) for x in numbers)
-    if not (isinstance(point, tuple) or point in ("strike", "tip")) or (
-        isinstance(point, tuple) and len(point) != 3
-    ):
-        faults.add(
-            "point", f"{point!r} is none of strike, tip, or three finite numbers x, y, z in the face frame"
-        )
+        finite = all(isinstance(x, int | float) and np.isfinite(x) for x in numbers)
+        point = tuple(float(x) for x in numbers) if finite and len(numbers) == 3 else None
+    if not isinstance(point, tuple) and point not in ("strike", "tip"):
+        faults.add("point", "it must be strike, tip, or three finite numbers x, y, z in m in the face frame")
     faults.raise_if_any()
     if settings is None:
         return Follow(frame=frame, point=point, commands=NO_LOG)  # type: ignore[arg-type]  # checked above

@@ -182,7 +182,7 @@ def test_kept_back_lies_inside_stated(name):
         assert limit.known.all()
         assert np.all(limit.kept_hi <= limit.hi) and np.all(limit.kept_lo >= limit.lo)
         n = len(limit.known)
-        np.testing.assert_array_equal(limit.kept, np.r_[limit.kept_hi, -limit.kept_lo])
+        np.testing.assert_array_equal(limit.kept, [limit.kept_hi, -limit.kept_lo])
         assert n == len(limit.sources) == len(limit.joints) == len(limit.joint_units)
 
 

@@ -209,7 +209,7 @@ class _Roller:
             return None
         block = stepper.block
         if self.was_free:
-            change = stepper.free(now, slot, close)
+            change = stepper.free(now, close)
             if change is not None:
                 block.x[slot], block.z[slot], block.z_box[slot] = change, 0.0, 0.0
                 self.free_slots.add(slot)

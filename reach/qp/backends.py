@@ -7,6 +7,7 @@ tests' problem set must pass.
 
 from __future__ import annotations
 
+import warnings
 from typing import Any
 
 import numpy as np
@@ -81,12 +82,14 @@ class Solver:
     def attempt(self, problem: QpProblem, name: str) -> Answer | None:
         """One solver's raw answer, None where it says that it found none."""
         if name in SPARSE:
-            form = _form(problem, csc_matrix(problem.P), csc_matrix(problem.G))
+            with warnings.catch_warnings():
+                warnings.simplefilter("ignore")  # it warns of what `found` says
+                form = _form(problem, csc_matrix(problem.P), csc_matrix(problem.G))
+                answer = qpsolvers.solve_problem(form, name, **BACKENDS[name])
         else:
-            form = problem.form
-            if form is None:
-                form = problem.form = _form(problem, problem.P, problem.G)
-        answer = qpsolvers.solve_problem(form, name, **BACKENDS[name])
+            if problem.form is None:
+                problem.form = _form(problem, problem.P, problem.G)
+            answer = qpsolvers.solve_problem(problem.form, name, **BACKENDS[name])
         if not answer.found or answer.x is None or answer.z is None or answer.z_box is None:
             return None
         return answer.x, answer.z, answer.z_box

@@ -83,10 +83,14 @@ def main() -> None:
     for _ in range(ROUNDS):
         for name, action in parts.items():
             times[name].append(cpu(action) / (FLOOR_STEPS if name == "floor" else steps))
-    print(f"{arm.n} joints, {steps} steps of {1000 * cell.period_s:g} ms, pin {pin.__version__}, numpy {np.__version__}")
+    print(
+        f"{arm.n} joints, {steps} steps of {1000 * cell.period_s:g} ms, pin {pin.__version__}, numpy {np.__version__}"
+    )
     for name, seconds in times.items():
         ratios = np.array(seconds) / np.array(times["floor"])
-        print(f"  {name:36s} {1e6 * min(seconds):7.1f} µs a step at best   {np.median(ratios):5.2f} × the floor")
+        print(
+            f"  {name:36s} {1e6 * min(seconds):7.1f} µs a step at best   {np.median(ratios):5.2f} × the floor"
+        )
 
 
 if __name__ == "__main__":
