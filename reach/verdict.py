@@ -62,7 +62,7 @@ def strikes_needed(evidence: Evidence, accept: Accept) -> int:
 
 
 def _failures(evidence: Evidence, accept: Accept) -> list[str]:
-    found = list(evidence.blocked)
+    found = [f"{reason.limit}: {reason.text}" for reason in evidence.blocked]
     for use in broken_limits(evidence):
         assert use.utilisation is not None
         where = f" of {use.joint}" if use.joint else ""

@@ -10,12 +10,13 @@ from typing import Any
 
 import numpy as np
 import pytest
-from builders import NO_MARGINS, WEIGHTLESS, WORKING, following, robot_cell
+from builders import NO_MARGINS, WEIGHTLESS, WORKING, Body, chain_arm, following, robot_cell
 from follow_case import (
     INERTIA_KG_M2,
     LENGTH_M,
     LEVEL,
     MASS_KG,
+    UPRIGHT,
     bump,
     hinge,
     hinge_log,
@@ -42,7 +43,7 @@ from reach.verdict import NOT_DELIVERABLE, UNDECIDED
 
 G = 9.80665
 SAME = 1e-6
-DAMPING = 1 / (1 + 1e-4)  # the null-space return weighs 1e-4 of the task: the hinge follows that much short
+SHORT = 2e-4  # the null-space return may take this share of what a free step asks
 
 
 def rolled(cell: Cell, give_up: Callable[[int, Array, Array], bool] | None = None) -> Roll:
@@ -145,7 +146,7 @@ def test_starts_with_a_given_velocity() -> None:
     cell = hinge(start_velocity=0.8)
     found = rolled(hinge_log(cell, 0.001 * np.arange(100), np.full(100, 0.8))).sent
     assert found.v[0, 0] == 0.8
-    np.testing.assert_allclose(found.v[1:100, 0], 0.8 * DAMPING, rtol=1e-9)  # nothing to do but keep going
+    np.testing.assert_allclose(found.v[1:100, 0], 0.8, rtol=SHORT)  # nothing to do but keep going
     np.testing.assert_allclose(found.q[99, 0], 0.8 * 0.099, rtol=2e-4)
 
 
@@ -202,8 +203,9 @@ def test_an_arm_too_weak_to_stop() -> None:
     cell = hinge(limits(torque=0.5), start_velocity=12.0, period_s=0.005)
     found = rolled(hinge_log(cell, 0.005 * np.arange(10), np.full(10, 12.0)))
     assert not found.stopped
-    slowed = 0.45 / INERTIA_KG_M2 * 5.0
-    np.testing.assert_allclose(found.sent.v[-1, 0], 12.0 * DAMPING - slowed, rtol=1e-3)
+    v, end = found.sent.v[:, 0], found.end_row
+    assert v[end] == pytest.approx(12.0, rel=5e-3) and len(v) - 1 - end == 1000
+    np.testing.assert_allclose(v[end:], v[end] - 1.8 * 0.005 * np.arange(1001), rtol=1e-6)
     done = run(hinge_log(cell, 0.005 * np.arange(10), np.full(10, 12.0)))
     assert done.verdict.verdict == NOT_DELIVERABLE
     assert any("stand" in ground for ground in done.verdict.grounds)
@@ -275,21 +277,21 @@ def test_hold_is_causal(at_s: float) -> None:
     found = rolled(hinge_log(hinge(), t, np.where(t >= at_s - 1e-9, 0.3, 0.0))).sent
     seen = int(np.ceil(round(at_s / 0.001, 6)))  # first control instant at which the sample is there
     assert np.all(found.v[: seen + 1] == 0)
-    np.testing.assert_allclose(found.v[seen + 1, 0], 0.3 * DAMPING, rtol=1e-9)
+    np.testing.assert_allclose(found.v[seen + 1, 0], 0.3, rtol=SHORT)
 
 
 def test_linear_reaches_a_ramp_in_step() -> None:
     t = 0.004 * np.arange(26)
     found = rolled(hinge_log(hinge(), t, 5.0 * t, interpolation="linear")).sent
-    np.testing.assert_allclose(found.v[:100, 0], 5.0 * 0.001 * np.arange(100) * DAMPING, atol=1e-9)
-    np.testing.assert_allclose(found.a[1:98, 0], 5.0 * DAMPING, atol=1e-6)
+    np.testing.assert_allclose(found.v[:100, 0], 5.0 * 0.001 * np.arange(100), rtol=SHORT)
+    np.testing.assert_allclose(found.a[1:98, 0], 5.0, rtol=2 * SHORT)
 
 
 def test_the_last_sample_holds_for_one_median_period() -> None:
     found = rolled(off_grid("hold", 0.0005))
     end = STAMPS[-1] + np.median(np.diff(STAMPS))
     assert found.end_row == int(np.ceil(end / 0.0005 - 1e-6))
-    np.testing.assert_allclose(found.sent.v[found.end_row, 0], SPEEDS[-1] * DAMPING, rtol=1e-9)
+    np.testing.assert_allclose(found.sent.v[found.end_row, 0], SPEEDS[-1], rtol=SHORT)
     assert abs(found.sent.v[found.end_row + 1, 0]) < 1e-12
 
 
@@ -361,11 +363,13 @@ def test_nine_readings_of_one_motion(frame: str, point: object) -> None:
     t = 0.001 * np.arange(201)
     position, axes, velocity, turning = physical(t)
     got_twist, got_position, got_axes = reference.at(t)
-    # Of second order in the control period: 1e-6 s² times accelerations of some m/s² and rad/s².
+    # Of second order in the control period: 1e-6 s² times rates of some m/s² and rad/s², and their products.
     np.testing.assert_allclose(got_position, position, rtol=0, atol=3e-6)
     np.testing.assert_allclose(got_axes, axes, rtol=0, atol=3e-6)
     np.testing.assert_allclose(got_twist, np.hstack([velocity, turning]), rtol=0, atol=3e-6)
-    same_motion(found, plain_reading()[1], 3e-6)
+    sent, plain = found.sent, plain_reading()[1].sent
+    np.testing.assert_allclose(sent.q[:201], plain.q[:201], rtol=0, atol=3e-6)
+    np.testing.assert_allclose(sent.v[:201], plain.v[:201], rtol=0, atol=2e-5)
 
 
 def test_the_joints_take_the_paddle_along_the_motion() -> None:
@@ -373,8 +377,8 @@ def test_the_joints_take_the_paddle_along_the_motion() -> None:
     position, axes, _ = Chain.of(Arm(tilted().arm, tilted().paddle)).twists(sent.q[:201], sent.v[:201])
     wanted, wanted_axes, _, _ = physical(0.001 * np.arange(201))
     travel = np.abs(wanted - wanted[0]).max()
-    assert travel > 0.05
-    # What the weight of the null-space return costs, 1e-4 of tr(J'W²J)/n against the weakest direction.
+    assert travel > 0.03
+    # What the weight of the null-space return costs in the weakest direction.
     np.testing.assert_allclose(position, wanted, rtol=0, atol=0.01 * travel)
     np.testing.assert_allclose(axes, wanted_axes, rtol=0, atol=0.01)
 
@@ -593,7 +597,7 @@ def test_a_start_above_the_velocity_limit_gives_way_and_is_recorded() -> None:
     for item in found.gave_way:
         assert item.amount == pytest.approx(speed[item.step + 1] - 1.0, rel=1e-4)
     assert np.abs(found.sent.a).max() * INERTIA_KG_M2 <= 4.0 + 1e-6  # torque stays hard
-    assert found.sent.v[149, 0] == pytest.approx(0.5 * DAMPING, rel=1e-6)
+    assert found.sent.v[149, 0] == pytest.approx(0.5, rel=0.01)  # the arm is by then turned ahead of the log
 
 
 def test_holding_the_start_takes_more_torque_than_there_is() -> None:
@@ -603,6 +607,14 @@ def test_holding_the_start_takes_more_torque_than_there_is() -> None:
     (text,) = done.evidence.blocked
     assert text.startswith("torque: ") and "j1" in text and f"{load:.1f}" in text
     assert done.verdict.verdict == NOT_DELIVERABLE
+
+
+def test_an_arm_of_one_joint() -> None:
+    body = Body(np.zeros(3), UPRIGHT, MASS_KG, np.array([LENGTH_M, 0.0, 0.0]))
+    spec = replace(chain_arm([body], np.array([LENGTH_M, 0.0, 0.0])), start=(0.0,))
+    twist = np.tile([0.0, 0.5 * LENGTH_M, 0.0, 0.0, 0.0, 0.5], (20, 1))
+    found = rolled(following(Cell("built", spec, WEIGHTLESS), 0.001 * np.arange(20), twist))
+    np.testing.assert_allclose(found.sent.v[1:21, 0], 0.5, rtol=SHORT)
 
 
 def test_one_joints_bump_is_that_joints_motion() -> None:

@@ -179,7 +179,7 @@ class Evidence:
     stopped : whether the arm stood at the end
     unknown : (limit, joint) pairs nobody stated
     not_checked : names of what was not checked at all
-    blocked : reasons that stand before any motion (start pose out of reach, static overload), in words
+    blocked : reasons that stand before any motion (start pose out of reach, static overload)
     failed_steps : steps that no solver answered
     """
 
@@ -195,5 +195,5 @@ class Evidence:
     stopped: bool
     unknown: tuple[tuple[str, str | None], ...]
     not_checked: tuple[str, ...]
-    blocked: tuple[str, ...]
+    blocked: tuple[Reason, ...]
     failed_steps: int

@@ -10,7 +10,7 @@ from reach.arm import Arm
 from reach.cell import Accept, Array, Cell
 from reach.errors import Fault, InputError
 from reach.evidence.measure import Measured, measure
-from reach.evidence.record import Evidence, Strike
+from reach.evidence.record import Evidence, Reason, Strike
 from reach.evidence.strikes import (
     compare,
     flight_times,
@@ -86,7 +86,7 @@ def run(cell: Cell, quick: bool = False, seed: int = 0) -> Run:
     watch = _Watch(cell, arm, reference, found, accept) if quick else None
     rolled = roll(cell, arm, limits, reference, start, follow.pose_gain_per_s, watch)
     if watch is not None and watch.missed:
-        evidence = _no_motion(cell, limits, found, ("a strike is missed",))
+        evidence = _no_motion(cell, limits, found, (_block("reach", "demonstrated", "a strike is missed"),))
         return Run(cell, found, reference, rolled, None, evidence, judge(evidence, accept))
     chain = Chain.of(arm)
     measured = measure(arm, chain, limits, rolled.delivered)
@@ -115,7 +115,7 @@ def rotation_of(quaternion: Array) -> Array:
     )
 
 
-def _with_start(cell: Cell, arm: Arm, seed: int) -> tuple[Cell, tuple[str, ...]]:
+def _with_start(cell: Cell, arm: Arm, seed: int) -> tuple[Cell, tuple[Reason, ...]]:
     """Fill in start = "auto" by inverse kinematics; say what blocks where none is found or it is far off."""
     assert cell.follow is not None
     pose = cell.follow.commands.pose
@@ -125,7 +125,8 @@ def _with_start(cell: Cell, arm: Arm, seed: int) -> tuple[Cell, tuple[str, ...]]
             raise InputError([Fault(cell.path, "arm.start", what)])
         answer = postures(arm, pose[0, :3], rotation_of(pose[0, 3:]), seed=seed)
         if len(answer.q) == 0:
-            return cell, (f"reach: no posture for the log's first pose; {answer.text}",)
+            text = f"no posture for the log's first pose; {answer.text}"
+            return cell, (_block("reach", answer.basis, text),)
         best = tuple(float(x) for x in answer.q[0])
         return replace(cell, arm=replace(cell.arm, start=best)), ()
     if pose is None:
@@ -134,23 +135,33 @@ def _with_start(cell: Cell, arm: Arm, seed: int) -> tuple[Cell, tuple[str, ...]]
     off = float(np.linalg.norm(pose[0, :3] - position))
     turn = float(np.linalg.norm(logarithm(rotation_of(pose[0, 3:]) @ rotation.T)))
     if off > cell.accept.strike_position_m or turn > cell.accept.strike_tilt_error_rad:
-        text = f"reach: the start posture is {1000 * off:.1f} mm and {np.degrees(turn):.1f}° from the log's first pose"
-        return cell, (text,)
+        text = (
+            f"the start posture is {1000 * off:.1f} mm and {np.degrees(turn):.1f}° from the log's first pose"
+        )
+        return cell, (_block("reach", "proved", text),)
     return cell, ()
 
 
-def _static_overload(cell: Cell, arm: Arm, start: Array) -> tuple[str, ...]:
+def _static_overload(cell: Cell, arm: Arm, start: Array) -> tuple[Reason, ...]:
     """Torque limits that holding the start posture alone breaks."""
     load = arm.static_torque(start)
     found = []
-    for joint, torque in zip(cell.arm.joints, load, strict=True):
+    for joint, torque in zip(cell.arm.joints, load.tolist(), strict=True):
         bound = joint.limits.torque
         if bound is not None and not bound.lo <= torque <= bound.hi:
-            limit = bound.hi if torque > 0 else -bound.lo
+            limit, unit = (bound.hi if torque > 0 else bound.lo), "N" if joint.sliding else "N·m"
+            text = f"holding {joint.name} at the start takes {torque:.1f} {unit}, its limit is {limit:.1f}"
             found.append(
-                f"torque: holding {joint.name} at the start takes {abs(torque):.1f}, its limit is {limit:.1f}"
+                replace(
+                    _block("torque", "proved", text), joint=joint.name, value=torque, bound=limit, unit=unit
+                )
             )
     return tuple(found)
+
+
+def _block(limit: str, basis: str, text: str) -> Reason:
+    """A reason that stands before any motion."""
+    return Reason(True, limit, None, None, None, None, None, None, "", basis, text)
 
 
 class _Watch:
@@ -187,7 +198,7 @@ def _evidence(
     found: Contacts,
     rolled: Roll,
     measured: Measured,
-    blocked: tuple[str, ...],
+    blocked: tuple[Reason, ...],
 ) -> Evidence:
     motion, accept = rolled.delivered, cell.accept
     jitter = cell.drive.jitter_s if cell.drive else 0.0
@@ -217,7 +228,9 @@ def _evidence(
     )
 
 
-def _no_motion(cell: Cell, limits: dict[str, Limit], found: Contacts, blocked: tuple[str, ...]) -> Evidence:
+def _no_motion(
+    cell: Cell, limits: dict[str, Limit], found: Contacts, blocked: tuple[Reason, ...]
+) -> Evidence:
     return Evidence(
         motion=None,
         torque=None,

@@ -78,6 +78,7 @@ def now_at(
 def motion_of(
     begin: float, dt: float, q: list[Array], v: list[Array], change: list[Array], stopped: bool
 ) -> Motion:
+    """The motion of states q, v (m, n) and changes of velocity (m - 1, n); its last row at rest if `stopped`."""
     speeds = np.array(v)
     if stopped:
         speeds[-1] = 0.0

@@ -193,7 +193,7 @@ def _unknown(result: FollowResult) -> str:
 def _motion(result: FollowResult) -> str:
     evidence = result.evidence
     if evidence.track is None:
-        return paragraph("There is no motion.") + bullets(evidence.blocked)
+        return paragraph("There is no motion.") + bullets(reason.text for reason in evidence.blocked)
     errors = tracking(evidence.track)
     position = errors["position_peak_m"]
     rows = [

@@ -184,7 +184,7 @@ def _remedies(result: FollowResult) -> list[str]:
 def _motion(result: FollowResult) -> list[str]:
     evidence = result.evidence
     if evidence.track is None:
-        lines = _bullets(["There is no motion.", *evidence.blocked])
+        lines = _bullets(["There is no motion.", *(reason.text for reason in evidence.blocked)])
     else:
         errors = tracking(evidence.track)
         tilt = errors["tilt_peak_deg"]
