@@ -255,7 +255,21 @@ def without_motion() -> FollowResult:
         track=None,
         strikes=(),
         base_load=None,
-        blocked=("start pose out of reach by 0.2 m",),
+        blocked=(
+            Reason(
+                True,
+                "reach",
+                None,
+                None,
+                None,
+                None,
+                None,
+                None,
+                "",
+                "proved",
+                "start pose out of reach by 0.2 m",
+            ),
+        ),
     )
     return replace(result, evidence=evidence, verdict=judge(evidence, result.cell.accept))
 

@@ -151,11 +151,8 @@ def _static_overload(cell: Cell, arm: Arm, start: Array) -> tuple[Reason, ...]:
         if bound is not None and not bound.lo <= torque <= bound.hi:
             limit, unit = (bound.hi if torque > 0 else bound.lo), "N" if joint.sliding else "N·m"
             text = f"holding {joint.name} at the start takes {torque:.1f} {unit}, its limit is {limit:.1f}"
-            found.append(
-                replace(
-                    _block("torque", "proved", text), joint=joint.name, value=torque, bound=limit, unit=unit
-                )
-            )
+            block = _block("torque", "proved", text)
+            found.append(replace(block, joint=joint.name, value=torque, bound=limit, unit=unit))
     return tuple(found)
 
 
