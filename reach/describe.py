@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import textwrap
+
 import numpy as np
 
 from reach.arm import Arm
@@ -12,6 +14,9 @@ from reach.follow.reading import better_reading, reading_in_words, stamp_statist
 from reach.follow.reference import build_reference
 from reach.limits.base import Limit
 from reach.paddle import paddle_mass
+from reach.report.alike import once
+
+WIDTH, COLUMN = 100, 11  # of the text, and where its second column begins
 
 
 def describe_cell(cell: Cell) -> str:
@@ -27,9 +32,14 @@ def describe_cell(cell: Cell) -> str:
         _log_lines(cell, arm, start),
         _accept_lines(cell),
         _gap_lines(cell, limits),
-        [f"note: {note}" for note in cell.notes],
+        [f"Note       {note}" for note in once(cell.notes, arm.names)],
     ]
-    return "\n\n".join("\n".join(lines) for lines in blocks if lines) + "\n"
+    return "\n\n".join("\n".join(map(_wrapped, lines)) for lines in blocks if lines) + "\n"
+
+
+def _wrapped(line: str) -> str:
+    """A line in as many as it takes, under its own column."""
+    return textwrap.fill(line, WIDTH, subsequent_indent=" " * COLUMN, break_long_words=False)
 
 
 def _arm_lines(cell: Cell, arm: Arm) -> list[str]:

@@ -50,6 +50,10 @@ class SolverFailure(ReachError):
     """No quadratic-programming solver gave a usable answer to a problem that has one."""
 
 
+class WorkerLost(ReachError):
+    """A process that ran part of a search died."""
+
+
 class OutputError(ReachError):
     """Results can't be written where they were asked for."""
 

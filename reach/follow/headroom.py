@@ -6,12 +6,18 @@ from collections.abc import Sequence
 
 from reach.cell import Cell
 from reach.follow.search import Runner, least_that_holds
-from reach.follow.variants import scaled_limits
+from reach.follow.variants import FIELDS, scaled_limits
 
 # Factors on every limit but position that are tried, rising; the answer is refined to RESOLUTION of the factor.
 SHRINK = (0.1, 0.2, 0.35, 0.5, 0.65, 0.8, 0.9, 1.0)
 GROW = (1.25, 1.6, 2.0, 2.5, 3.2, 4.0, 6.0, 10.0)
 RESOLUTION = 0.02
+
+
+def cell_has_unknown(cell: Cell) -> bool:
+    """Whether a required limit of some joint is not stated."""
+    fields = [FIELDS[limit] for limit in cell.accept.require if limit in FIELDS]
+    return any(getattr(joint.limits, field) is None for joint in cell.arm.joints for field in fields)
 
 
 def headroom(cell: Cell, runs: Runner, passes_as_is: bool) -> tuple[float | None, str]:
@@ -36,6 +42,8 @@ def headroom(cell: Cell, runs: Runner, passes_as_is: bool) -> tuple[float | None
         text = f"every limit but position would have to be {-100 * share:.0f} % higher"
     else:
         text = "no limit to spare: a few per cent less of every limit but position and it fails"
+    if cell_has_unknown(cell):
+        text += ", unknown ones taken as unlimited"
     if failed is not None:
         text += f" (a planner need not be monotone: at {failed:.3g} times the limits it failed again)"
     return share, text

@@ -41,7 +41,18 @@ def needs(
     units = {(use.limit, use.joint): use.unit for use in base.evidence.uses}
     found = _unknown_needs(cell, base, runs, units)
     grown = 1.0 if headroom_share is None else max(1.0 - headroom_share, 1.0)
+    found += _duty_needs(base, deciding)
     return (*found, *_failing_needs(cell, deciding, runs, units, base, grown))
+
+
+def _duty_needs(base: Run, deciding: Sequence[Key]) -> list[Need]:
+    """Continuous torques that are passed: what the motion takes, which is measured and not planned."""
+    found = []
+    for use in base.evidence.uses:
+        if (use.limit, use.joint) in deciding and use.limit == "duty":
+            text = f"{use.joint}: this motion takes a continuous torque of {_number(use.peak)} {use.unit}"
+            found.append(Need(use.joint, use.limit, use.peak, use.peak, use.unit, text))
+    return found
 
 
 def _unknown_needs(cell: Cell, base: Run, runs: Runner, units: dict[Key, str]) -> list[Need]:

@@ -5,13 +5,14 @@ from __future__ import annotations
 import math
 import os
 from collections.abc import Callable, Iterator, Sequence
-from concurrent.futures import Executor, ProcessPoolExecutor
+from concurrent.futures import BrokenExecutor, Executor, ProcessPoolExecutor
 from contextlib import contextmanager
 from dataclasses import dataclass
 from functools import partial
 from multiprocessing import get_context
 
 from reach.cell import Cell
+from reach.errors import WorkerLost
 from reach.follow.bench import run
 
 BATCH = 2  # values tried at once, one a worker on a two-core machine
@@ -60,7 +61,10 @@ class Runner:
         self.runs += len(cells)
         if self._pool is None or len(cells) < 2:
             return [outcome(cell, quick) for cell in cells]
-        return list(self._pool.map(partial(outcome, quick=quick), cells))
+        try:
+            return list(self._pool.map(partial(outcome, quick=quick), cells))
+        except BrokenExecutor as error:
+            raise WorkerLost("a worker process died (out of memory?); run again with --workers 1") from error
 
     def passes(self, cells: Sequence[Cell]) -> list[bool]:
         """Whether each of some changed cells passes."""
