@@ -55,6 +55,7 @@ class Arm:
     def __init__(self, spec: ArmSpec, paddle: Paddle):
         self.spec = spec
         self.n = len(spec.joints)
+        self._jacobian_shape = (6, self.n)  # Pinocchio drops an axis for an arm of one joint
         self.names = tuple(joint.name for joint in spec.joints)
         self.sliding = np.array([joint.sliding for joint in spec.joints])
         limits = [joint.limits for joint in spec.joints]
@@ -89,9 +90,11 @@ class Arm:
             slope = self.damping + self._rub_slope * (1 - rub)
         else:
             bias, slope = data.nle + self.damping * v, self.damping
+        shape = self._jacobian_shape
+        change = pin.getFrameJacobianTimeVariation(model, data, frame, WORLD_AXES).reshape(shape)
         return State(
-            pin.getFrameJacobian(model, data, frame, WORLD_AXES),
-            pin.getFrameJacobianTimeVariation(model, data, frame, WORLD_AXES).dot(v),
+            pin.getFrameJacobian(model, data, frame, WORLD_AXES).reshape(shape),
+            change.dot(v),
             data.M,
             slope,
             bias,
@@ -123,14 +126,15 @@ class Arm:
         pin.computeJointJacobians(self._model, self._scratch, q)
         placement = pin.updateFramePlacement(self._model, self._scratch, self._frame)
         matrix = pin.getFrameJacobian(self._model, self._scratch, self._frame, WORLD_AXES)
-        return placement.translation.copy(), placement.rotation.copy(), matrix
+        return placement.translation.copy(), placement.rotation.copy(), matrix.reshape(self._jacobian_shape)
 
     def twist_terms(self, q: Array, v: Array) -> tuple[Array, Array]:
         """Jacobian (6, n) and its drift J̇ v (6,) at posture q (n,) and joint velocity v (n,)."""
         pin.computeJointJacobiansTimeVariation(self._model, self._scratch, q, v)
         pin.updateFramePlacement(self._model, self._scratch, self._frame)
-        change = pin.getFrameJacobianTimeVariation(self._model, self._scratch, self._frame, WORLD_AXES)
-        return pin.getFrameJacobian(self._model, self._scratch, self._frame, WORLD_AXES), change.dot(v)
+        at = (self._model, self._scratch, self._frame, WORLD_AXES)
+        change = pin.getFrameJacobianTimeVariation(*at).reshape(self._jacobian_shape)
+        return pin.getFrameJacobian(*at).reshape(self._jacobian_shape), change.dot(v)
 
     def torque(self, q: Array, v: Array, a: Array) -> Array:
         """Joint torques (m, n) in N·m of m states at once, friction, damping and rotor inertia included.
@@ -175,7 +179,8 @@ class Arm:
         links = []
         for i in range(self.n):
             placement = self._model.jointPlacements[i + 1]
-            column = pin.getJointJacobian(self._model, self._scratch, i + 1, pin.LOCAL)[:, i]
+            local = pin.getJointJacobian(self._model, self._scratch, i + 1, pin.LOCAL)
+            column = local.reshape(self._jacobian_shape)[:, i]
             axis = column[:3] if self.sliding[i] else column[3:]
             links.append((placement.rotation.copy(), placement.translation.copy(), axis.copy()))
         return links

@@ -1,9 +1,9 @@
-"""A single hinge whose every motion has a closed form, and logs for it; commands from a given joint motion for any arm."""
+"""A hinge whose every motion has a closed form, logs for it, and logs from a given joint motion for any arm."""
 
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import fields, replace
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -15,7 +15,6 @@ from reach.cell import Accept, Array, Bound, Cell, CommandLog, Follow, JointLimi
 LENGTH_M = 0.5
 MASS_KG = 1.0
 INERTIA_KG_M2 = MASS_KG * LENGTH_M**2
-FAR = 1e5
 UPRIGHT = np.array([0.0, 0.0, 1.0])
 LEVEL = np.array([0.0, -1.0, 0.0])  # a positive angle raises the arm
 WIDE = Accept(strike_tilt_error_rad=0.2, strike_lateral_m_s=0.2)
@@ -34,15 +33,15 @@ def hinge(known: JointLimits | None = None, axis: Array = UPRIGHT, start: float 
     """A point mass on a massless link about one axis through the origin, stretched along x at zero.
 
     About the upright axis no torque is needed to stand. The face looks where a positive angle moves it. A second joint
-    spins the paddle about its normal and weighs nothing but its rotor; no command asks it to move, and its limits, of
-    the same kinds as the first one's, are far away. The null-space return is off: nothing but the command moves the arm.
+    spins the paddle about its normal; it carries nothing but its rotor, as much as the first one carries, and has the
+    first one's limits, and no command asks it to move. The null-space return is off.
     """
     known = known or JointLimits()
     axes = turn(np.array([1.0, 0.0, 0.0]), -np.pi / 2) if axis is UPRIGHT else np.eye(3)
     tip = np.array([LENGTH_M, 0.0, 0.0])
     bodies = [Body(np.zeros(3), axis, MASS_KG, tip), Body(tip, axes[:, 2])]
-    far = {f.name: Bound(-FAR, FAR, "invented") for f in fields(known) if isinstance(getattr(known, f.name), Bound)}
-    spec = chain_arm(bodies, np.zeros(3), axes, [known, JointLimits(**far, armature=0.01)])  # type: ignore[arg-type]
+    spin = replace(known, armature=INERTIA_KG_M2)
+    spec = chain_arm(bodies, np.zeros(3), axes, [known, spin])
     spec = replace(spec, start=(start, 0.0), start_velocity=(more.pop("start_velocity", 0.0), 0.0))
     settings: dict[str, Any] = {"period_s": 0.001, "solver": SolverSpec(posture_gain_per_s=0.0), **more}
     return Cell("built", spec, WEIGHTLESS, **settings)

@@ -73,13 +73,17 @@ def test_delay_and_lag_together(delay_s: float) -> None:
     drive = Drive(delay_s, LAG)
     v, _ = response(drive, 3.0 * TIMES)
     # Where a ramp begins inside a period its corner is cut: at most slope·dt/8 over one period of a lag of ten.
-    np.testing.assert_allclose(v, 3.0 * ramp_behind_lag(TIMES - delay_s, LAG), rtol=0, atol=3.0 * DT / 8 * DT / LAG)
+    np.testing.assert_allclose(
+        v, 3.0 * ramp_behind_lag(TIMES - delay_s, LAG), rtol=0, atol=3.0 * DT / 8 * DT / LAG
+    )
     sent = np.sin(30 * TIMES) * np.minimum(1.0, 20 * TIMES)
     v, _ = response(drive, sent)
     for k in (5, 23, 60, 150):
         delayed = np.interp(TIMES - delay_s, TIMES, sent)  # linear between the period's ends
         answer_, _ = quad_vec(
-            lambda s, k=k, delayed=delayed: np.exp(-(TIMES[k] - s) / LAG) / LAG * np.interp(s, TIMES, delayed),
+            lambda s, k=k, delayed=delayed: (
+                np.exp(-(TIMES[k] - s) / LAG) / LAG * np.interp(s, TIMES, delayed)
+            ),
             0.0,
             TIMES[k],
             points=TIMES[:k],

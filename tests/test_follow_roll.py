@@ -58,9 +58,7 @@ def rolled(cell: Cell, give_up: Callable[[int, Array, Array], bool] | None = Non
 def reference_of(cell: Cell) -> Reference:
     """The reference of a cell, begun at its start posture."""
     assert cell.follow is not None
-    return build_reference(
-        cell, cell.follow, *Arm(cell.arm, cell.paddle).pose(np.array(cell.arm.start))
-    )
+    return build_reference(cell, cell.follow, *Arm(cell.arm, cell.paddle).pose(np.array(cell.arm.start)))
 
 
 @cache
@@ -106,6 +104,14 @@ def test_integration_is_exact_for_constant_acceleration() -> None:
     assert np.all(a[-1] == 0)
 
 
+@pytest.mark.parametrize("known", [{}, {"velocity": 5.0}, {"torque": 50.0}, {"torque_rate": 1e4}], ids=str)
+def test_torque_at_each_step_whatever_is_limited(known: dict[str, float]) -> None:
+    t = 0.001 * np.arange(60)
+    found = rolled(hinge_log(hinge(limits(**known)), t, 4.0 * t, interpolation="linear"))
+    np.testing.assert_allclose(found.torque, INERTIA_KG_M2 * found.sent.a[:-1], rtol=0, atol=1e-9)
+    np.testing.assert_allclose(found.torque[:58, 0], INERTIA_KG_M2 * 4.0, rtol=SHORT)
+
+
 def test_motion_between_rows() -> None:
     sent, dt = clean().sent, 0.001
     rng = np.random.default_rng(3)
@@ -114,7 +120,9 @@ def test_motion_between_rows() -> None:
     speed = np.array([np.interp(t, sent.t_s, column) for column in sent.v.T]).T  # linear inside a period
     np.testing.assert_allclose(v, speed, rtol=0, atol=1e-9)
     for at, position, acceleration in zip(t, q, a, strict=True):
-        knots = np.append(sent.t_s[sent.t_s < at], at)  # trapezia are exact for a speed that is linear between
+        knots = np.append(
+            sent.t_s[sent.t_s < at], at
+        )  # trapezia are exact for a speed that is linear between
         speeds = np.array([np.interp(knots, sent.t_s, column) for column in sent.v.T])
         np.testing.assert_allclose(
             position, sent.q[0] + np.trapezoid(speeds, knots, axis=1), rtol=0, atol=1e-11
@@ -124,7 +132,11 @@ def test_motion_between_rows() -> None:
 
 def test_motion_outside_its_rows_and_on_the_fine_grid() -> None:
     motion = Motion(
-        2.0, 0.1, np.array([[0.0], [0.05], [0.15]]), np.array([[0.0], [1.0], [1.0]]), np.array([[10.0], [0], [0]])
+        2.0,
+        0.1,
+        np.array([[0.0], [0.05], [0.15]]),
+        np.array([[0.0], [1.0], [1.0]]),
+        np.array([[10.0], [0], [0]]),
     )
     q, v, _ = motion.at(np.array([1.0, 2.05, 2.1, 2.15]))
     np.testing.assert_allclose(q[:, 0], [0.0, 0.0125, 0.05, 0.1], atol=1e-12)
@@ -507,7 +519,9 @@ def busy_step() -> int:
     return int(steps[len(steps) // 2])
 
 
-def spoil(monkeypatch: pytest.MonkeyPatch, step: int, bad: Callable[[Any], Any], who: set[str], tries: int) -> list[str]:
+def spoil(
+    monkeypatch: pytest.MonkeyPatch, step: int, bad: Callable[[Any], Any], who: set[str], tries: int
+) -> list[str]:
     """Let solvers `who` give bad answers in one step, for the first so many asks; returns who was asked there."""
     now, asked = [-1], []
     one_step, attempt = roll_module._Roller._step, Solver.attempt
@@ -602,6 +616,19 @@ def test_a_start_above_the_velocity_limit_gives_way_and_is_recorded() -> None:
         assert item.amount == pytest.approx(speed[item.step + 1] - 1.0, rel=1e-4)
     assert np.abs(found.sent.a).max() * INERTIA_KG_M2 <= 4.0 + 1e-6  # torque stays hard
     assert found.sent.v[149, 0] == pytest.approx(0.5, rel=0.01)  # the arm is by then turned ahead of the log
+
+
+def test_every_limit_that_gives_way_is_recorded() -> None:
+    # Braking harder than 5 rad/s² breaks the acceleration limit, braking softer the velocity limit for longer.
+    known = limits(velocity=1.0, acceleration=5.0, torque=40.0)
+    cell = replace(hinge(known, start_velocity=2.0), margins=NO_MARGINS)
+    found = rolled(hinge_log(cell, 0.001 * np.arange(150), np.full(150, 0.5)))
+    gave_way = {(item.step, item.limit) for item in found.gave_way}
+    too_fast = np.flatnonzero(found.sent.v[1:, 0] > 1.0 + 1e-5)
+    too_hard = np.flatnonzero(np.abs(found.sent.a[:, 0]) > 5.0 + 1e-2)
+    assert len(too_fast) or len(too_hard)
+    assert gave_way >= {(int(k), "velocity") for k in too_fast}
+    assert gave_way >= {(int(k), "acceleration") for k in too_hard}
 
 
 def test_holding_the_start_takes_more_torque_than_there_is() -> None:

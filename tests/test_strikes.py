@@ -315,7 +315,9 @@ def test_the_normal_is_that_of_the_commanded_paddle() -> None:
     twist[:, 0] = np.exp(-(((t - 0.2) / 0.05) ** 2)) * 0.09 + np.exp(-(((t - 0.8) / 0.05) ** 2))
     log = CommandLog(t, twist)
     settings = Follow("world", "strike", log)
-    found = contacts(settings, build_reference(replace(hinge(), follow=settings), settings, np.zeros(3), np.eye(3)))
+    found = contacts(
+        settings, build_reference(replace(hinge(), follow=settings), settings, np.zeros(3), np.eye(3))
+    )
     np.testing.assert_allclose(found.t_s, [0.8])
 
 
@@ -346,7 +348,10 @@ def test_guessed_contacts_leave_it_undecided_until_accepted() -> None:
 
 
 def test_a_missed_guess_is_a_miss() -> None:
-    assert run(bumped(None, replace(FAR, velocity=limits(velocity=0.4).velocity))).verdict.verdict == NOT_DELIVERABLE
+    assert (
+        run(bumped(None, replace(FAR, velocity=limits(velocity=0.4).velocity))).verdict.verdict
+        == NOT_DELIVERABLE
+    )
 
 
 def test_no_strike_at_all_is_judged_throughout() -> None:
@@ -364,7 +369,9 @@ def test_throughout_judges_beyond_the_strikes() -> None:
     early = np.arange(301) == 60
     slow = replace(FAR, velocity=limits(velocity=0.4).velocity)
     assert run(bumped(early, slow, interpolation="linear")).verdict.verdict == DELIVERABLE
-    assert run(bumped(early, slow, at="throughout", interpolation="linear")).verdict.verdict == NOT_DELIVERABLE
+    assert (
+        run(bumped(early, slow, at="throughout", interpolation="linear")).verdict.verdict == NOT_DELIVERABLE
+    )
 
 
 def flat_track(**changed: Array) -> Track:
@@ -389,7 +396,10 @@ def flat_track(**changed: Array) -> Track:
         ({}, None),
         ({"delivered_normal": np.array([0.0, 1.0, 0.471, 0.0])}, None),  # 3 % of the largest
         (
-            {"delivered_normal": np.array([0.0, 1.0, 0.469, 0.0]), "velocity_error": np.array([0, 0, 0.031, 0])},
+            {
+                "delivered_normal": np.array([0.0, 1.0, 0.469, 0.0]),
+                "velocity_error": np.array([0, 0, 0.031, 0]),
+            },
             "speed along the normal off by 0.031 m/s at 0.200 s",
         ),
         ({"velocity_error": np.array([0, 0.06, 0, 0])}, "0.060 m/s sideways at 0.100 s"),

@@ -50,6 +50,7 @@ class Attribution:
         self.names = self.arm.names
 
     def time(self, row: int) -> float:
+        """Time in s of a row of the motion as sent."""
         return float(self.roll.sent.start_s + row * self.cell.period_s)
 
     def of_strike(self, strike: Strike) -> list[Reason]:

@@ -12,7 +12,7 @@ from reach.cell import Array, Cell
 from reach.evidence.measure import Measured
 from reach.evidence.motion import Motion
 from reach.follow.reference import Reference
-from reach.follow.step import POSTURE_WEIGHT, task_weight
+from reach.follow.step import POSTURE_WEIGHT, start_velocity, task_weight
 
 RUNAWAY = 1e3  # rad/s or m/s: a demand beyond it (at a singularity) is cut there, which is far past any joint
 
@@ -26,7 +26,7 @@ class Demand:
 
 
 def demanded_motion(cell: Cell, arm: Arm, reference: Reference, start: Array) -> Motion:
-    """The joint motion (from rest at `start`) that tracks the command exactly, as far as the posture lets it.
+    """The joint motion (from the start state) that tracks the command exactly, as far as the posture lets it.
 
     Each period's end velocity is the damped least-squares answer for the commanded twist, the same cost as the
     step's without its limits. Damping and the null-space return are the step's own.
@@ -38,7 +38,7 @@ def demanded_motion(cell: Cell, arm: Arm, reference: Reference, start: Array) ->
     gain, column = cell.solver.posture_gain_per_s, weight[:, None]
     task, matrix = np.empty((6, n)), np.empty((n, n))
     flat, diagonal = task.reshape(-1), matrix.reshape(-1)[:: n + 1]
-    q, v = start.copy(), np.zeros(n)
+    q, v = start.copy(), start_velocity(cell)
     rows_q, rows_v = [q], [v]
     for target in targets:
         jacobian, drift = arm.twist_terms(q, v)

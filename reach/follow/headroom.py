@@ -33,6 +33,8 @@ def headroom(cell: Cell, runs: Runner, passes_as_is: bool) -> tuple[float | None
 
     scan = SHRINK if passes_as_is else GROW
     least, failed = least_that_holds(passes, scan, RESOLUTION, below=None if passes_as_is else 1.0)
+    if least is None and passes_as_is:
+        least = 1.0  # it passes as it is, but not steadily a little above
     if least is None:
         return None, f"not deliverable even with {scan[-1]:g} times every limit but position"
     share = 1.0 - least

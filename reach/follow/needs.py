@@ -15,6 +15,7 @@ from reach.follow.variants import with_bounds
 Key = tuple[str, str | None]
 
 RESOLUTION = 0.1  # relative, of a needed value
+NOTHING = 1e-6  # in any unit: smaller is written as 0
 COARSE = 0.2  # the same of what is necessary alone, a figure to ask a maker about
 SCAN = (0.02, 0.1, 0.4, 1.02, 2.0, 4.0)  # of a joint's measure (below) that are tried for an unknown limit
 GROW_SCAN = (1.0, 1.25, 1.6, 2.0, 2.8, 4.0, 8.0)  # multiples of a stated limit that are tried
@@ -69,14 +70,14 @@ def _unknown_needs(cell: Cell, base: Run, runs: Runner, units: dict[Key, str]) -
         limit, joint = key
         unit = units[key]
         least = _least(cell, {key: measures[key]}, runs)
-        if common is not None:
-            sufficient = _spared(cell, key, common * measures[key])
+        sufficient = None if common is None else _spared(cell, key, common * measures[key])
+        if sufficient is not None:
             text = f"{joint}: deliverable if {limit} is at least {_number(sufficient)} {unit}"
             text += ", with the others named here" if len(wanted) > 1 else ""
         else:
-            sufficient = peaks[key]
-            text = f"{joint}: the motion that passes takes {_number(sufficient)} {unit} of {limit}"
-        necessary = None if least is None else _spared(cell, key, least * measures[key])
+            text = f"{joint}: the motion that passes takes {_number(peaks[key])} {unit} of {limit}"
+        tried = least is not None and least > SCAN[0]  # something lower was, and failed
+        necessary = _spared(cell, key, least * measures[key]) if least is not None and tried else None
         if necessary is not None:
             text += f"; with less than {_number(necessary)} {unit} it fails even if the others are unlimited"
         found.append(Need(joint, limit, necessary, sufficient, unit, text + ": ask the maker"))
@@ -165,7 +166,7 @@ def _failing_needs(
             sufficient = necessary = (factor or common) * stated[key]
         elif key in first:
             factor = least([key], dict.fromkeys(k for k in keys if k != key), COARSE)
-            if factor is not None and factor <= common:
+            if factor is not None and GROW_SCAN[0] < factor <= common:
                 necessary = factor * stated[key]
         name = f"{limit} of {joint}" if joint else limit
         text = f"{name}: {_number(sufficient)} {units[key]} (now {_number(stated[key])}) "
@@ -221,4 +222,6 @@ def _all_in_the_way(cell: Cell, first: list[Key], stated: dict[Key, float], runs
 
 
 def _number(value: float | None) -> str:
-    return "an unknown value" if value is None else f"{value:,.3g}" if value < 1000 else f"{value:,.0f}"
+    if value is None:
+        return "an unknown value"
+    return f"{value:,.0f}" if abs(value) >= 1000 else f"{value:.3g}" if abs(value) > NOTHING else "0"

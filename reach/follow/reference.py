@@ -23,6 +23,7 @@ class Reference:
     slope : (k, 6) its rate until the next instant (zero with "hold")
     position : (k, 3), rotation : (k, 3, 3)
     end_s : the instant at which the command ends
+    interpolation : "hold" or "linear"
     """
 
     t_s: Array
@@ -31,6 +32,7 @@ class Reference:
     position: Array
     rotation: Array
     end_s: float
+    interpolation: str
 
     def at(self, t_s: Array) -> tuple[Array, Array, Array]:
         """Commanded twist (m, 6), position (m, 3) and axes (m, 3, 3) at times (m,)."""
@@ -49,6 +51,9 @@ class Reference:
         before it comes. With "linear" it is the command at the period's end.
         """
         begin = self.t_s[0] + period_s * np.arange(steps)
+        if self.interpolation == "linear":
+            due = begin + period_s
+            return self.at(np.where(due < self.end_s - 1e-9, due, due - SNAP_SHARE * period_s))[0]
         k = np.clip(np.searchsorted(self.t_s, begin + 1e-12, side="right") - 1, 0, len(self.t_s) - 1)
         ahead = np.clip(begin + period_s - self.t_s[k], 0.0, None)[:, None]
         targets = self.twist[k] + self.slope[k] * ahead
@@ -96,7 +101,7 @@ def build_reference(cell: Cell, follow: Follow, position: Array, rotation: Array
     )
     slope = np.where(span[:, None] > 0, (next_twist - twist) / np.maximum(span, 1e-300)[:, None], 0.0)
     slope[t >= end_s - 1e-12] = 0.0
-    return Reference(t, twist, slope, positions, rotations, end_s)
+    return Reference(t, twist, slope, positions, rotations, end_s, follow.interpolation)
 
 
 def _products(first: Array, turns: Array, before: bool) -> Array:

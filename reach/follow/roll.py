@@ -12,7 +12,7 @@ from reach.follow.direction import same_direction
 from reach.follow.drive import DriveState
 from reach.follow.reference import Reference
 from reach.follow.rolled import GaveWay, Roll, motion_of, now_at
-from reach.follow.step import BLOCK, Step, Stepper
+from reach.follow.step import BLOCK, Step, Stepper, start_velocity
 from reach.limits.base import SIGNS, Brake, Limit, Now
 from reach.limits.brake import BrakeModel
 
@@ -78,7 +78,7 @@ class _Roller:
         if gain > 0:
             instants = reference.t_s[0] + self.dt * np.arange(self.commanded)
             _, self.wanted_position, self.wanted_rotation = reference.at(instants)
-        v = np.array(cell.arm.start_velocity) if cell.arm.start_velocity else np.zeros(arm.n)
+        v = start_velocity(cell)
         self.drive = DriveState(cell.drive, start, v, self.dt) if cell.drive else None
         self.q: list[Array] = [start.copy()]
         self.v: list[Array] = [v]
@@ -305,26 +305,26 @@ class _Roller:
         )
 
     def _gave_way(self) -> list[GaveWay]:
-        """What elastic steps could not keep, each joint's box named by the lane that is most overrun."""
+        """What elastic steps could not keep."""
         found = []
         n = self.arm.n
         for k, step in self.noted.items():
             if step.slack is None:
                 continue
-            kinds = self._overrun(k, step.change)
-            kinds += ["tool speed"] * step.tool
-            kinds += ["torque"] * (len(step.slack) - len(kinds))
-            for i, (kind, amount) in enumerate(zip(kinds, step.slack, strict=True)):
+            found += self._overrun(k, step.change)
+            kinds = ["tool speed"] * step.tool
+            kinds += ["torque"] * (len(step.slack) - n - len(kinds))
+            for kind, amount in zip(kinds, step.slack[n:].tolist(), strict=True):
                 if amount > GAVE_WAY:
-                    found.append(GaveWay(k, kind, i if i < n else -1, float(amount)))
+                    found.append(GaveWay(k, kind, -1, amount))
         return found
 
-    def _overrun(self, k: int, change: Array) -> list[str]:
-        """For each joint the joint-family kind whose lane step k overruns most."""
+    def _overrun(self, k: int, change: Array) -> list[GaveWay]:
+        """The joint-family limits that step k's change of velocity (n,) overruns."""
         lanes = self.stepper.rows.joint
-        now = now_at(self.arm, self.q[k], self.v[k], self.change, self.torque, self.brake_of[k], k)
-        lanes.tightest(now)
+        lanes.tightest(now_at(self.arm, self.q[k], self.v[k], self.change, self.torque, self.brake_of[k], k))
         over = (SIGNS * change - lanes.values).max(axis=1)
-        return (
-            [lanes.kinds[i].name for i in np.argmax(over, axis=0)] if lanes.kinds else ["none"] * self.arm.n
-        )
+        return [
+            GaveWay(k, lanes.kinds[kind].name, joint, float(over[kind, joint]))
+            for kind, joint in np.argwhere(over > GAVE_WAY).tolist()
+        ]

@@ -104,8 +104,8 @@ class Rows:
         np.multiply(SIGNS, change, out=signed)
         if np.count_nonzero(signed > self.joint.tightest(now, close)):
             return False
+        self._sum_inertia(now)
         if self.limited.size:
-            self._sum_inertia(now)
             np.multiply(SIGNS, self.torque_of(now.state, change), out=signed)
             if np.count_nonzero(signed > self.torque.tightest(now)):
                 return False
@@ -120,8 +120,8 @@ class Rows:
         most = self.joint.tightest(now, close)
         p.ub[:] = most[0]
         np.negative(most[1], out=p.lb)
+        self._sum_inertia(now)
         if self.limited.size:
-            self._sum_inertia(now)
             self._fill_torque(now, p)
         extra = None
         if self.tool is not None:

@@ -113,6 +113,7 @@ class Stepper:
         problem, diagonal = self.block.problems[slot], self._slots[slot][-1]
         diagonal += self._calm
         problem.q -= self._calm * self.ideal
+        self._calm = 0.0  # once a cost
         return self.rows.fill(now, problem, close)
 
     def quick(self, problem: QpProblem, slot: int) -> Array | None:
@@ -144,6 +145,12 @@ class Stepper:
                 slack = np.maximum(solution.x[n:], 0.0)
                 return Step(solution.x[:n], "elastic", None, None, slack, tool, solution.fell_back)
         return Step(np.zeros(n), "failed", None, None, None, tool, True)
+
+
+def start_velocity(cell: Cell) -> Array:
+    """Joint velocity (n,) that a cell starts with; at rest where it says nothing."""
+    n = len(cell.arm.joints)
+    return np.array(cell.arm.start_velocity) if cell.arm.start_velocity else np.zeros(n)
 
 
 def task_weight(cell: Cell) -> Array:

@@ -47,19 +47,21 @@ class BrakeModel:
 
     def at(self, state: State, bias_before: Array) -> Brake:
         """Ability at a state; bias_before (n,) is the torque at zero acceleration one period earlier."""
-        own, top = self._acceleration, self._acceleration
+        own = ramp = top = self._acceleration
         if not self._all_stated:
-            own, top = self._by_torque(state)
+            own, ramp, top = self._by_torque(state)
         spare = self._spare
         spare[0] = state.bias
         np.subtract(state.bias, bias_before, out=spare[1])
         np.abs(spare, out=spare)
         np.minimum(spare, self._claim, out=spare)
         np.subtract(self._limit, spare, out=spare)
-        spare /= np.abs(state.mass).dot(own)
+        inertia = np.abs(state.mass)
+        spare[0] /= inertia.dot(own)
+        spare[1] /= inertia.dot(ramp)
         force, speed = np.minimum.reduce(spare, axis=1).tolist()
         deceleration = own * (BRAKE_SHARE * min(1.0, max(force, STANDSTILL_SHARE)))
-        rate = own * (BRAKE_SHARE * speed / self._period_s)
+        rate = ramp * (BRAKE_SHARE * speed / self._period_s)
         return Brake(deceleration, np.minimum(rate, self._jerk, out=rate), top)
 
     def cautious(self, state: State) -> tuple[Brake, Caution]:
@@ -70,15 +72,19 @@ class BrakeModel:
         caution = Caution(1 / (2 * beta * dt * dt), 1 / (beta * dt), alpha / beta + dt, 1 / (2 * alpha))
         return Brake(alpha, beta, fresh.top), caution
 
-    def _by_torque(self, state: State) -> tuple[Array, Array]:
-        """Accelerations where none is stated: the share that torque leaves each joint, and the most it can have."""
-        torque = self._limit[0]
-        alone = np.minimum(torque / np.diagonal(state.mass), UNLIMITED)
+    def _by_torque(self, state: State) -> tuple[Array, Array, Array]:
+        """Where no acceleration is stated: its share by torque, by torque rate, and the most that a joint can have.
+
+        A share only sets the proportion of the joints to each other. By rate it is each joint's own, so that one with
+        much torque and a modest rate does not slow the others' brakes.
+        """
+        torque, own_inertia = self._limit[0], np.diagonal(state.mass)
+        alone = np.minimum(torque / own_inertia, UNLIMITED)
         together = np.abs(np.linalg.inv(state.mass)) @ (torque + np.abs(state.bias))
         most = np.minimum(together, UNLIMITED)
-        return np.where(self._stated, self._acceleration, alone), np.where(
-            self._stated, self._acceleration, most
-        )
+        ramp = np.minimum(self._limit[1] / own_inertia, UNLIMITED)
+        own = np.where(self._stated, self._acceleration, alone)
+        return own, ramp, np.where(self._stated, self._acceleration, most)
 
 
 def stopping_distance(v: float, a: float, deceleration: float, rate: float) -> float:

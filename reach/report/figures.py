@@ -6,6 +6,7 @@ The only module that imports the drawing library: the others take its names from
 from __future__ import annotations
 
 import io
+import re
 import warnings
 from collections.abc import Iterator
 from contextlib import contextmanager
@@ -60,4 +61,12 @@ def svg_of(figure: Figure) -> bytes:
     out = io.BytesIO()
     FigureCanvasSVG(figure)
     figure.savefig(out, format="svg", metadata={"Date": None, "Creator": None})
-    return out.getvalue()
+    return _steady_names(out.getvalue())
+
+
+def _steady_names(svg: bytes) -> bytes:
+    """The picture with its clip paths numbered: the library names them by memory address."""
+    names: dict[bytes, bytes] = {}
+    return re.sub(
+        rb"\bp[0-9a-f]{10}\b", lambda found: names.setdefault(found[0], b"clip%d" % len(names)), svg
+    )
