@@ -38,11 +38,11 @@ IMPACT_M_S2 = -3.0  # along the normal at contact: slowing down, as a rally that
 RETURN_S = 0.40  # from a contact down to that wait, where the flight leaves so much
 EDGE_S = 0.40  # at rest before the first ball falls, and from the last contact to rest
 
-STEADY_STRIKES = 11
-# Flight times: into strikes 1 to 11 and out of the 11th the held rally, then a higher apex with every strike.
-# The last flight is the one that strike 15 starts.
+STEADY_STRIKES = 8
+# Flight times: into strikes 1 to 8 and out of the 8th the held rally, then a higher apex with every strike.
+# The last flight is the one that strike 12 starts.
 FLIGHTS_S = np.array([0.508] * (STEADY_STRIKES + 1) + [0.640, 0.760, 0.880, 1.000])
-BALL_OFFSETS_M = {5: (0.0, 0.012), 6: (0.008, 0.004), 7: (-0.006, 0.0), 8: (0.004, -0.010)}  # strike: x, y
+BALL_OFFSETS_M = {3: (0.0, 0.012), 4: (0.008, 0.004), 5: (-0.006, 0.0), 6: (0.004, -0.010)}  # strike: x, y
 
 REST = (*START_M, 0.0, 0.0)  # x, y, z and the two parts of the tilt, at both ends of the log
 COLUMNS = "t_s vx_m_s vy_m_s vz_m_s wx_rad_s wy_rad_s wz_rad_s strike px_m py_m pz_m qw qx qy qz".split()

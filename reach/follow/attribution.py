@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import defaultdict
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -21,7 +21,6 @@ LOOKED_AT = 400  # steps of an episode whose multipliers are looked at, evenly s
 CALM_S = 0.05  # a shortfall this long ago, with none since, belongs to an earlier episode
 MINOR_SHARE = 0.1  # of the largest gain in an episode: limits below it are left out
 SINGULAR_SHARE = 0.5  # of a shortfall that stays without any limit: above it the posture is to blame
-NOT_DECIDING_SHOWN = 6
 STEP_SHARE = 0.3  # of the strike's speed: a command that changes more inside its window is pointed out
 
 
@@ -158,14 +157,14 @@ class Attribution:
         top = max(gains.values())
         ordered = sorted((k for k in gains if gains[k] >= MINOR_SHARE * top), key=lambda k: -gains[k])
         worst = max(
-            (s for s in range(episode.first, episode.last + 1) if self.blames.of(s)),
+            (s for s in range(episode.first, episode.last + 1, stride) if self.blames.of(s)),
             key=lambda s: float(self.roll.shortfall[s]),
         )
-        any_of = self._not_unique(worst)
-        return [
-            self._reason(key, spans[key], decides, text, strike, any_of and len(ordered) > 1)
-            for key in ordered
-        ]
+        any_of = self._not_unique(worst) and len(ordered) > 1
+        found = [self._reason(key, spans[key], decides, text, strike, any_of) for key in ordered]
+        if any(beyond(reason) for reason in found):  # the others only make up for those
+            found = [reason if beyond(reason) else replace(reason, decides=False) for reason in found]
+        return found
 
     def _reason(
         self,
