@@ -33,7 +33,8 @@ def needs(
     """Needs of every unknown limit and of every limit that decides the verdict.
 
     *sufficient*: a motion was planned under it and passed. *necessary*: the least value at which the command still
-    passes with the other unknown (or failing) limits unlimited; of failing ones for those that decide the verdict.
+    passes with the other unknown limits unlimited, or the other failing ones as sufficient here; of failing ones for
+    those that decide the verdict.
 
     Parameters
     ----------
@@ -165,7 +166,7 @@ def _failing_needs(
             factor = least(keys, {}, RESOLUTION)
             sufficient = necessary = (factor or common) * stated[key]
         elif key in first:
-            factor = least([key], dict.fromkeys(k for k in keys if k != key), COARSE)
+            factor = least([key], {k: grown[k] for k in keys if k != key}, COARSE)
             if factor is not None and GROW_SCAN[0] < factor <= common:
                 necessary = factor * stated[key]
         name = f"{limit} of {joint}" if joint else limit

@@ -39,8 +39,8 @@ def meaning(needs: list[Need]) -> str:
     if len(needs) == 1:
         return "necessary: with less it fails; sufficient: with this it passes; –: not found"
     return (
-        "necessary: with less it fails, even if the other limits here were unlimited; sufficient: with this "
-        "and the others here it passes, if nothing else is said; –: not found"
+        "necessary: with less it fails, even with the others here granted (unknown ones unlimited, others at "
+        "their sufficient value); sufficient: with this and the others here it passes; –: not found"
     )
 
 
