@@ -11,10 +11,10 @@ from typing import Literal, get_args
 import numpy as np
 from numpy.typing import ArrayLike
 
+from reach.advice.answer import answer
 from reach.cell import Cell, CommandLog, Follow, Vec3
 from reach.describe import describe_cell as describe_cell
 from reach.errors import Fault, FaultList, InputError
-from reach.follow.answer import answer
 from reach.formats import check_arrays
 from reach.result import FollowResult
 

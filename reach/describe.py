@@ -6,11 +6,11 @@ import textwrap
 
 import numpy as np
 
+from reach.advice.reading import better_reading, reading_in_words, stamp_statistics
 from reach.arm import Arm
 from reach.cell import Array, Bound, Cell
 from reach.follow.bench import build_limits, not_checked
 from reach.follow.contacts import contacts
-from reach.follow.reading import better_reading, reading_in_words, stamp_statistics
 from reach.follow.reference import build_reference
 from reach.limits.base import Limit
 from reach.paddle import paddle_mass

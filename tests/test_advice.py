@@ -25,20 +25,14 @@ from follow_case import (
 )
 from scipy.spatial.transform import Rotation
 
-from reach.arm import Arm
-from reach.cell import Accept, Array, Cell, CommandLog, Paddle, Pose, SolverSpec
-from reach.evidence.record import Need, Remedy
-from reach.follow.answer import answer
-from reach.follow.bench import run
-from reach.follow.headroom import RESOLUTION as HEADROOM_RESOLUTION
-from reach.follow.headroom import headroom
-from reach.follow.needs import ALONE
-from reach.follow.needs import RESOLUTION as NEED_RESOLUTION
-from reach.follow.reference import build_reference
-from reach.follow.remedies import RESOLUTION as REMEDY_RESOLUTION
-from reach.follow.search import HOLD, Runner, least_passing, least_that_holds
-from reach.follow.step import task_weight
-from reach.follow.variants import (
+from reach.advice.answer import answer
+from reach.advice.headroom import RESOLUTION as HEADROOM_RESOLUTION
+from reach.advice.headroom import headroom
+from reach.advice.needs import ALONE
+from reach.advice.needs import RESOLUTION as NEED_RESOLUTION
+from reach.advice.remedies import RESOLUTION as REMEDY_RESOLUTION
+from reach.advice.search import HOLD, Runner, least_passing, least_that_holds
+from reach.advice.variants import (
     lighter,
     raised_base,
     scaled_limits,
@@ -47,6 +41,12 @@ from reach.follow.variants import (
     with_bounds,
     with_position_range,
 )
+from reach.arm import Arm
+from reach.cell import Accept, Array, Cell, CommandLog, Paddle, Pose, SolverSpec
+from reach.evidence.record import Need, Remedy
+from reach.follow.bench import run
+from reach.follow.reference import build_reference
+from reach.follow.step import task_weight
 from reach.result import FollowResult
 from reach.verdict import DELIVERABLE, NOT_DELIVERABLE, UNDECIDED
 

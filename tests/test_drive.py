@@ -9,12 +9,12 @@ import pytest
 from follow_case import LENGTH_M, WIDE, bump, hinge, hinge_log, limits
 from scipy.integrate import quad_vec
 
+from reach.advice.answer import answer
 from reach.arm import Arm
 from reach.cell import Array, Cell, CommandLog, Drive, Follow
 from reach.evidence.motion import Motion
 from reach.evidence.record import Strike
 from reach.evidence.strikes import judge_strike
-from reach.follow.answer import answer
 from reach.follow.drive import DriveState, behind
 from reach.kinematics import Chain
 from reach.verdict import DELIVERABLE, NOT_DELIVERABLE

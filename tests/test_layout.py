@@ -32,6 +32,7 @@ LEVELS = (
     ("result",),
     ("qp",),
     ("follow",),
+    ("advice",),
     ("formats",),
     ("report",),
     ("describe",),
@@ -74,7 +75,7 @@ LINES = 350
 FUNCTION_LINES = 60
 LONG_FUNCTIONS = {
     "api.follow_commands": "two thirds are its signature and docstring",
-    "follow.answer.answer": "one call after another, and then the result with its many fields",
+    "advice.answer.answer": "one call after another, and then the result with its many fields",
 }
 
 TOP_NAMES = ("README.md", "DEVELOPERS.md", "LICENSE", "pyproject.toml", ".ci/run")

@@ -10,10 +10,10 @@ import pytest
 from builders import WORKING, robot_cell
 from scipy.spatial.transform import Rotation
 
+from reach.advice.answer import answer
+from reach.advice.reading import better_reading, fit_to_pose, reading_in_words, stamp_statistics
 from reach.arm import Arm
 from reach.cell import Array, Cell, CommandLog, Follow, Pose
-from reach.follow.answer import answer
-from reach.follow.reading import better_reading, fit_to_pose, reading_in_words, stamp_statistics
 
 BASE = Pose((0.0, 0.1, 0.2), (0.2, 0.1, 1.2))
 EMPTY = CommandLog(np.zeros(0), np.zeros((0, 6)))

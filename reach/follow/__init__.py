@@ -1,1 +1,1 @@
-"""From a command log to a finished motion: reference, one step, the whole roll, what fell short, what helps."""
+"""From a command log to a finished motion and its evidence: reference, one step, the whole roll, one run of a cell."""

@@ -2,9 +2,9 @@
 
 Run by name: python tests/bench/bench_follow.py [CELL]
 
-The floor is what no implementation in Python can do without: `computeAllTerms`, the frame Jacobian and one raw solve of a
-quadratic program of the same size by daqp. CPU time in rounds taken in turns, the floor's as long as a roll; of a
-round's ratios the median counts, since machines are seldom quiet.
+The floor is what no implementation in Python can do without: `computeAllTerms`, the frame Jacobian and one raw solve
+of a quadratic program of the same size by daqp. CPU time in rounds taken in turns, the floor's as long as a roll; of
+a round's ratios the median counts, since machines are seldom quiet.
 """
 
 from __future__ import annotations
@@ -24,11 +24,11 @@ import numpy as np  # noqa: E402
 import pinocchio as pin  # noqa: E402
 
 from reach import load_cell  # noqa: E402
+from reach.advice.answer import answer  # noqa: E402
+from reach.advice.demand import demanded_motion  # noqa: E402
 from reach.arm import Arm  # noqa: E402
-from reach.follow.answer import answer  # noqa: E402
-from reach.follow.bench import build_limits, run  # noqa: E402
-from reach.follow.demand import demanded_motion  # noqa: E402
 from reach.evidence.measure import measure  # noqa: E402
+from reach.follow.bench import build_limits, run  # noqa: E402
 from reach.follow.roll import roll  # noqa: E402
 from reach.kinematics import Chain  # noqa: E402
 

@@ -6,10 +6,10 @@ from collections import defaultdict
 from collections.abc import Iterable
 from dataclasses import replace
 
+from reach.advice.attribution import Attribution, Episode
+from reach.advice.demand import Demand
 from reach.evidence.record import Reason, Strike, Use
-from reach.follow.attribution import Attribution, Episode
 from reach.follow.bench import Run
-from reach.follow.demand import Demand
 from reach.verdict import broken_limits
 
 NOT_DECIDING_SHOWN = 6

@@ -4,13 +4,13 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 
+from reach.advice.reasons import deciding as deciding_keys
+from reach.advice.reasons import reasons
+from reach.advice.search import Runner, least_passing
+from reach.advice.variants import with_bounds
 from reach.cell import Cell
 from reach.evidence.record import Need
 from reach.follow.bench import Run, run
-from reach.follow.reasons import deciding as deciding_keys
-from reach.follow.reasons import reasons
-from reach.follow.search import Runner, least_passing
-from reach.follow.variants import with_bounds
 
 Key = tuple[str, str | None]
 

@@ -7,20 +7,20 @@ from dataclasses import replace
 
 import numpy as np
 
+from reach.advice.demand import Demand, demanded_motion
+from reach.advice.headroom import headroom
+from reach.advice.needs import needs
+from reach.advice.reading import better_reading, reading_in_words
+from reach.advice.reasons import deciding, reasons
+from reach.advice.remedies import remedies
+from reach.advice.search import runner
+from reach.advice.variants import without_margins, without_pose_gain
 from reach.arm import Arm
 from reach.cell import Cell
 from reach.evidence.measure import measure
 from reach.evidence.record import Evidence, Need, Remedy, SolverCount, Use
 from reach.follow.bench import Run, build_limits, run
-from reach.follow.demand import Demand, demanded_motion
-from reach.follow.headroom import headroom
-from reach.follow.needs import needs
-from reach.follow.reading import better_reading, reading_in_words
-from reach.follow.reasons import deciding, reasons
-from reach.follow.remedies import remedies
 from reach.follow.rolled import Roll
-from reach.follow.search import runner
-from reach.follow.variants import without_margins, without_pose_gain
 from reach.kinematics import Chain
 from reach.result import FollowResult
 from reach.verdict import judge

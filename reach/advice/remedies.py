@@ -6,13 +6,13 @@ from collections.abc import Sequence
 
 import numpy as np
 
+from reach.advice.needs import ALONE
+from reach.advice.search import Outcome, Runner, least_that_holds
+from reach.advice.variants import lighter, raised_base, slower, started_at, with_position_range
 from reach.arm import Arm
 from reach.cell import Cell
 from reach.evidence.record import Need, Remedy
 from reach.follow.bench import Run
-from reach.follow.needs import ALONE
-from reach.follow.search import Outcome, Runner, least_that_holds
-from reach.follow.variants import lighter, raised_base, slower, started_at, with_position_range
 from reach.posture import postures
 
 SLOWER_SCAN = (1.1, 1.25, 1.5, 1.75, 2.0, 2.5, 3.0, 4.0, 6.0, 10.0)

@@ -7,12 +7,12 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from reach.advice.blame import BLAME_FROM_M_S, Blame, Blames
+from reach.advice.demand import Demand
 from reach.arm import Arm
 from reach.evidence.record import Reason, Strike
 from reach.evidence.strikes import judge_strike
 from reach.follow.bench import Run
-from reach.follow.blame import BLAME_FROM_M_S, Blame, Blames
-from reach.follow.demand import Demand
 from reach.follow.drive import behind
 from reach.follow.step import task_weight
 from reach.kinematics import Chain
