@@ -15,7 +15,7 @@ from reach.advice.answer import answer
 from reach.cell import Cell, CommandLog, Follow, Vec3
 from reach.describe import describe_cell as describe_cell
 from reach.errors import Fault, FaultList, InputError
-from reach.formats import check_arrays
+from reach.formats import check_arrays, check_span
 from reach.result import FollowResult
 
 Frame = Literal["world", "base", "paddle"]
@@ -81,7 +81,10 @@ def follow_commands(
     settings = _settings(cell, frame, point)
     if t_s is not None and twists is not None:
         gaps = (settings.max_gap_s, settings.time_faults)
-        settings = replace(settings, commands=check_arrays(t_s, twists, strikes, poses, *gaps))
+        log, faults = check_arrays(t_s, twists, strikes, poses, *gaps), FaultList("arrays")
+        check_span(log, cell.period_s, faults, "t_s")
+        faults.raise_if_any()
+        settings = replace(settings, commands=log)
     return answer(replace(cell, follow=settings), workers, advice, progress, seed)
 
 

@@ -26,8 +26,8 @@ class State(NamedTuple):
     jacobian : (6, n) linear then angular rows, world axes, about the strike point
     drift : (6,) J̇ v, classical acceleration of the strike point at zero joint acceleration
     mass : (n, n) joint-space inertia with reflected rotor inertia, kg·m²
-    slope : (n,) how the torque at zero acceleration grows with each joint's own speed by damping and dry
-        friction, N·m·s/rad
+    slope : (n, n) how the torque at zero acceleration grows with joint velocity, N·m·s/rad: twice the Coriolis
+        matrix of Christoffel symbols, damping and dry friction on its diagonal
     bias : (n,) torque at zero joint acceleration: Coriolis, gravity, damping, dry friction, N·m
     """
 
@@ -73,6 +73,8 @@ class Arm:
             tip.parentJoint, pin.Inertia(body.mass_kg, body.com_m, body.inertia_kg_m2), face
         )
         self._frame = self._model.addFrame(pin.Frame("strike", tip.parentJoint, 0, face, pin.OP_FRAME))
+        self._slope = np.empty((self.n, self.n))
+        self._slope_diagonal = self._slope.reshape(-1)[:: self.n + 1]
         self._data = self._model.createData()
         self._scratch = self._model.createData()  # keeps the arrays of `at` untouched
         self._floating: pin.Model | None = None
@@ -82,14 +84,15 @@ class Arm:
         model, data, frame = self._model, self._data, self._frame
         pin.computeAllTerms(model, data, q, v)
         pin.updateFramePlacement(model, data, frame)
+        bias, own = data.nle + self.damping * v, self.damping
         if self._rubs:
             rub = np.tanh(v / self._friction_width)
-            bias = data.nle + self.damping * v
             bias += self.friction * rub
             rub *= rub
-            slope = self.damping + self._rub_slope * (1 - rub)
-        else:
-            bias, slope = data.nle + self.damping * v, self.damping
+            own = own + self._rub_slope * (1 - rub)
+        slope = self._slope
+        np.multiply(pin.computeCoriolisMatrix(model, self._scratch, q, v), 2.0, out=slope)
+        self._slope_diagonal += own
         shape = self._jacobian_shape
         change = pin.getFrameJacobianTimeVariation(model, data, frame, WORLD_AXES).reshape(shape)
         return State(

@@ -8,6 +8,7 @@ import os
 import sys
 import traceback
 from collections.abc import Callable, Sequence
+from pathlib import Path
 
 from reach import __version__
 from reach.errors import ReachError
@@ -54,6 +55,12 @@ def _parser() -> argparse.ArgumentParser:
         formatter_class=argparse.RawDescriptionHelpFormatter,
     )
     parser.add_argument("--version", action="version", version=f"strikecheck {__version__}")
+    parser.add_argument(
+        "--keys",
+        action=_Keys,
+        nargs=0,
+        help="print every key of the input files, with units and defaults",
+    )
     commands = parser.add_subparsers(title="commands", metavar="COMMAND", required=True)
     describe = commands.add_parser("describe", help="what did you understand of this cell?")
     describe.add_argument("cell", metavar="CELL", help="the cell file (TOML)")
@@ -69,6 +76,16 @@ def _parser() -> argparse.ArgumentParser:
     _common(follow, "follow")
     follow.set_defaults(run=_follow)
     return parser
+
+
+class _Keys(argparse.Action):
+    """Prints the table of keys and ends, as --version does."""
+
+    def __call__(self, parser: argparse.ArgumentParser, *rest: object) -> None:
+        from reach.formats import keys_text
+
+        print(keys_text(), end="")
+        parser.exit()
 
 
 def _common(parser: argparse.ArgumentParser, command: str) -> None:
@@ -94,9 +111,9 @@ def _common(parser: argparse.ArgumentParser, command: str) -> None:
 
 
 def _count(text: str) -> int:
-    number = int(text)
+    number = int(text) if text.isascii() and text.isdigit() else 0
     if not 1 <= number <= 256:
-        raise argparse.ArgumentTypeError("must be between 1 and 256")
+        raise argparse.ArgumentTypeError("must be a whole number between 1 and 256")
     return number
 
 
@@ -109,9 +126,10 @@ def _describe(options: argparse.Namespace) -> int:
 
 def _follow(options: argparse.Namespace) -> int:
     from reach import follow_commands, load_cell, write_results
-    from reach.report import WRITERS
+    from reach.report import WRITERS, check_targets
 
     cell = load_cell(options.cell, need_follow=True)
+    check_targets(Path(options.out), options.junit, [options.cell, *(item.path for item in cell.inputs)])
     result = follow_commands(
         cell,
         workers=options.workers,

@@ -10,7 +10,7 @@ from reach.advice.reading import better_reading, reading_in_words, stamp_statist
 from reach.arm import Arm
 from reach.cell import Array, Bound, Cell
 from reach.follow.bench import build_limits, not_checked
-from reach.follow.contacts import contacts
+from reach.follow.contacts import aslant, contacts
 from reach.follow.reference import build_reference
 from reach.limits.base import Limit
 from reach.paddle import paddle_mass
@@ -143,6 +143,8 @@ def _log_lines(cell: Cell, arm: Arm, start: Array | None) -> list[str]:
     lines.append(
         f"Strikes    {len(found.t_s)} {origin}" + (f", at {times} s" if times else ": judged throughout")
     )
+    if reference is not None and (odd := aslant(found, reference)):
+        lines.append(f"           {odd}")
     if better := better_reading(cell):
         lines.append(f"           {better}")
     lines += [f"           mended: {mend}" for mend in follow.commands.mends]

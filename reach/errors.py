@@ -6,6 +6,8 @@ import difflib
 from collections.abc import Iterable
 from dataclasses import dataclass
 
+LONGEST_NAME = 100  # characters that are compared for a near miss
+
 
 @dataclass(frozen=True, order=True)
 class Fault:
@@ -78,7 +80,8 @@ class FaultList:
 def nearest(name: str, known: Iterable[str]) -> str:
     """Say which known names come close to `name`: '; did you mean "a" or "b"?', or the known ones."""
     names = list(known)
-    close = difflib.get_close_matches(name, names, n=2, cutoff=0.5)
+    short = [n for n in names if len(n) <= LONGEST_NAME]
+    close = difflib.get_close_matches(name[:LONGEST_NAME], short, n=2, cutoff=0.5)
     if close:
         return "; did you mean " + " or ".join(f'"{c}"' for c in close) + "?"
     if not names:

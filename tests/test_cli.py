@@ -326,11 +326,22 @@ def test_an_out_path_that_is_a_file(tmp_path: Path) -> None:
     (tmp_path / "taken").write_text("mine", encoding="utf-8")
     before = files_in(tmp_path)
     done = call("follow", cell, "--out", tmp_path / "taken", "--quiet", *NO_ADVICE)
-    assert (done.code, done.out) == (4, "")
+    assert (done.code, done.out) == (2, "")
     assert len(done.err.splitlines()) == 1
-    assert str(tmp_path / "taken") in done.err and "can't be written" in done.err
+    assert str(tmp_path / "taken") in done.err and "is a file" in done.err
     assert files_in(tmp_path) == before
     assert (tmp_path / "taken").read_text(encoding="utf-8") == "mine"
+
+
+def test_a_junit_file_replaces_no_input_and_no_result(tmp_path: Path) -> None:
+    cell = write_case(tmp_path)
+    before = files_in(tmp_path)
+    out = tmp_path / "out"
+    for target in (cell, out / "verdict.json", tmp_path, ""):
+        done = call("follow", cell, "--out", out, "--junit", target, "--quiet", *NO_ADVICE)
+        assert (done.code, done.out) == (2, "")
+        assert "--junit" in done.err and len(done.err.splitlines()) == 1
+        assert files_in(tmp_path) == before
 
 
 @pytest.mark.parametrize(
@@ -433,7 +444,7 @@ BAD = {
     "infinity": Bad("cell.toml", "mass_kg = 0.1", "mass_kg = inf", "paddle.mass_kg", ("finite",)),
     "negative radius": Bad("cell.toml", "radius_m = 0.05", "radius_m = -1", "paddle.radius_m", ("above 0",)),
     "negative period": Bad(
-        "cell.toml", "period_s = 0.002", "period_s = -0.002", "control.period_s", ("above 0",)
+        "cell.toml", "period_s = 0.002", "period_s = -0.002", "control.period_s", ("at least 1e-05",)
     ),
     "no frame": Bad("cell.toml", 'frame = "world"\n', "", "follow.frame", ('"world"', "no default")),
     "no point": Bad("cell.toml", 'point = "strike"\n', "", "follow.point", ('"strike"', "no default")),
@@ -551,3 +562,11 @@ def test_all_faults_at_once_in_a_process_of_its_own(tmp_path: Path) -> None:
 def test_describe_tells_bad_input_too(tmp_path: Path) -> None:
     cell = write_case(tmp_path, urdf="no XML")
     expect_bad_input(call("describe", cell), tmp_path / "arm.urdf", "line 1", ("not well-formed",))
+
+
+def test_keys_are_printed(capsys: pytest.CaptureFixture[str]) -> None:
+    with pytest.raises(SystemExit) as ended:
+        main(["--keys"])
+    assert ended.value.code == 0
+    shown = capsys.readouterr().out
+    assert all(key in shown for key in ("arm.start_rad", "follow.frame", "torque_rate_nm_s", "qw"))

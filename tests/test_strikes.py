@@ -400,7 +400,7 @@ def flat_track(**changed: Array) -> Track:
                 "delivered_normal": np.array([0.0, 1.0, 0.469, 0.0]),
                 "velocity_error": np.array([0, 0, 0.031, 0]),
             },
-            "speed along the normal off by 0.031 m/s at 0.200 s",
+            "speed along the normal off by 0.0310 m/s at 0.200 s",
         ),
         ({"velocity_error": np.array([0, 0.06, 0, 0])}, "0.060 m/s sideways at 0.100 s"),
         ({"position_error": np.array([0, 0.004, 0.007, 0])}, "7.0 mm off the commanded path at 0.200 s"),

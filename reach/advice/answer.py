@@ -20,6 +20,7 @@ from reach.cell import Cell
 from reach.evidence.measure import measure
 from reach.evidence.record import Evidence, Need, Remedy, SolverCount, Use
 from reach.follow.bench import Run, build_limits, run
+from reach.follow.contacts import aslant
 from reach.follow.rolled import Roll
 from reach.kinematics import Chain
 from reach.result import FollowResult
@@ -68,6 +69,8 @@ def answer(
     notes = [*cell.notes, REPLAYED, *_roll_notes(base.roll)]
     if better := better_reading(cell):
         notes.insert(0, better)
+    if base.reference is not None and (odd := aslant(base.contacts, base.reference)):
+        notes.insert(0, odd)
     plain = None
     if follow.pose_gain_per_s > 0 and base.roll is not None:
         plain = run(without_pose_gain(cell)).verdict.verdict
@@ -77,7 +80,7 @@ def answer(
     share, headroom_text = None, "not searched"
     wanted: tuple[Need, ...] = ()
     helps: tuple[Remedy, ...] = ()
-    if advice and base.roll is not None:
+    if advice and cell.arm.start is not None:
         with runner(workers, progress) as runs:
             share, headroom_text = headroom(cell, runs, base.passed)
             wanted = needs(cell, base, deciding(found), share, runs)

@@ -68,6 +68,7 @@ class Attribution:
                 f"{text}: even exact tracking misses behind the drive (delay {1000 * drive.delay_s:g} ms, "
                 f"lag {1000 * drive.lag_s:g} ms, jitter ±{1000 * drive.jitter_s:g} ms)"
             )
+            found = [replace(reason, decides=False) for reason in found]  # without them it would miss too
             found.insert(0, self._without_limit("drive tracking", strike, words))
         if not found:
             words = f"{text}: no limit held the arm back; the command changes within one control period"

@@ -43,7 +43,7 @@ def needs(
     units = {(use.limit, use.joint): use.unit for use in base.evidence.uses}
     found = _unknown_needs(cell, base, runs, units)
     grown = 1.0 if headroom_share is None else max(1.0 - headroom_share, 1.0)
-    found += _duty_needs(base, deciding)
+    found += _duty_needs(base, deciding) + _holding_needs(base)
     return (*found, *_failing_needs(cell, deciding, runs, units, base, grown))
 
 
@@ -54,6 +54,17 @@ def _duty_needs(base: Run, deciding: Sequence[Key]) -> list[Need]:
         if (use.limit, use.joint) in deciding and use.limit == "duty":
             text = f"{use.joint}: this motion takes a continuous torque of {_number(use.peak)} {use.unit}"
             found.append(Need(use.joint, use.limit, use.peak, use.peak, use.unit, text))
+    return found
+
+
+def _holding_needs(base: Run) -> list[Need]:
+    """Torques that holding the start posture takes where a stated one is below: necessary, and maybe not enough."""
+    found = []
+    for reason in base.evidence.blocked:
+        if reason.limit == "torque" and reason.value is not None:
+            least = abs(reason.value)
+            text = f"{reason.joint}: holding the start posture alone takes {_number(least)} {reason.unit}"
+            found.append(Need(reason.joint, "torque", least, None, reason.unit, text))
     return found
 
 

@@ -12,8 +12,9 @@ from reach.advice.variants import lighter, raised_base, slower, started_at, with
 from reach.arm import Arm
 from reach.cell import Cell
 from reach.evidence.record import Need, Remedy
-from reach.follow.bench import Run
-from reach.posture import postures
+from reach.follow.bench import Run, first_pose
+from reach.posture import SAME_POSTURE_RAD, postures
+from reach.verdict import DELIVERABLE
 
 SLOWER_SCAN = (1.1, 1.25, 1.5, 1.75, 2.0, 2.5, 3.0, 4.0, 6.0, 10.0)
 LIGHTER_SCAN = (1.1, 1.25, 1.5, 2.0, 3.0, 5.0, 10.0)
@@ -33,13 +34,15 @@ def remedies(
     seed: int,
 ) -> tuple[Remedy, ...]:
     """Changes that make a log deliverable, or more of its strikes, in the order in which a user can make them."""
-    if base.passed or base.evidence.motion is None:
+    if base.passed:
         return ()
+    posture = _start_posture(cell, base, runs, seed)
+    enough = posture is not None and posture.effect == DELIVERABLE
     found: list[Remedy | None] = [
-        _start_posture(cell, base, runs, seed),
+        posture,
         _slower(cell, base, runs),
         _lighter(cell, runs),
-        _base_height(cell, base, runs),
+        None if enough else _base_height(cell, base, runs),
         *(_wider(cell, joint, runs) for limit, joint in deciding if limit == "position" and joint),
         *(_limit(need) for need in needs),
     ]
@@ -50,8 +53,9 @@ def _start_posture(cell: Cell, base: Run, runs: Runner, seed: int) -> Remedy | N
     """Another posture for the same paddle pose."""
     runs.say("remedy: another start posture")
     arm, start = Arm(cell.arm, cell.paddle), np.array(cell.arm.start)
-    answer = postures(arm, *arm.pose(start), near=start, seed=seed, starts=POSTURE_STARTS)
-    others = [tuple(float(x) for x in q) for q in answer.q[1 : POSTURES_TRIED + 1]]
+    answer = postures(arm, *first_pose(cell, arm, start), near=start, seed=seed, starts=POSTURE_STARTS)
+    moved = [q for q in answer.q if np.abs(q - start).max() > SAME_POSTURE_RAD]
+    others = [tuple(float(x) for x in q) for q in moved[:POSTURES_TRIED]]
     outcomes = runs.outcomes([started_at(cell, q) for q in others], quick=False)
     best = _best(outcomes, base)
     if best is None:
@@ -100,7 +104,7 @@ def _base_height(cell: Cell, base: Run, runs: Runner) -> Remedy | None:
     """The base higher or lower, the paddle started at the same place in the cell."""
     runs.say("remedy: base height")
     start = np.array(cell.arm.start)
-    position, rotation = Arm(cell.arm, cell.paddle).pose(start)
+    position, rotation = first_pose(cell, Arm(cell.arm, cell.paddle), start)
     cells, steps = [], []
     for step in BASE_STEPS_M:
         moved = raised_base(cell, step)
@@ -149,5 +153,5 @@ def _effect(outcome: Outcome, base: Run) -> str:
     total = len(base.evidence.strikes)
     hit = sum(s.delivered for s in base.evidence.strikes)
     if outcome.passed:
-        return "deliverable"
+        return DELIVERABLE
     return f"{outcome.delivered} of {total} strikes instead of {hit}; still not deliverable"

@@ -12,6 +12,7 @@ from reach.evidence.motion import FINE, Motion
 from reach.evidence.record import Strike, Track
 from reach.kinematics import Chain
 
+STILL_M_S = 1e-3  # speed errors up to here never fail a log judged throughout
 Wanted = Callable[[Array], tuple[Array, Array, Array]]  # times -> twist, position, axes of the command
 
 
@@ -167,7 +168,7 @@ def throughout_faults(track_: Track, accept: Accept) -> tuple[str, ...]:
     allowed = accept.strike_speed_error_share * peak
     lateral = np.sqrt(np.maximum(track_.velocity_error**2 - speed**2, 0.0))
     checks = (
-        (speed, max(allowed, 1e-6), "speed along the normal off by {:.3f} m/s", 1.0),
+        (speed, max(allowed, STILL_M_S), "speed along the normal off by {:.4f} m/s", 1.0),
         (lateral, accept.strike_lateral_m_s, "{:.3f} m/s sideways", 1.0),
         (track_.position_error, accept.strike_position_m, "{:.1f} mm off the commanded path", 1000.0),
         (track_.tilt_error, accept.strike_tilt_error_rad, "tilted by {:.2f}°", 180 / np.pi),

@@ -74,14 +74,15 @@ def run(cell: Cell, quick: bool = False, seed: int = 0) -> Run:
     arm = Arm(cell.arm, cell.paddle)
     limits = build_limits(cell)
     cell, blocked = _with_start(cell, arm, seed)
-    if cell.arm.start is None:
+    if cell.arm.start is not None:
+        blocked += _static_overload(cell, arm, np.array(cell.arm.start))
+    if blocked or cell.arm.start is None:  # no motion to speak of
         found = contacts(follow, None)
         evidence = _no_motion(cell, limits, found, blocked)
         return Run(cell, found, None, None, None, evidence, judge(evidence, cell.accept))
     start = np.array(cell.arm.start)
-    reference = build_reference(cell, follow, *_first_pose(cell, arm, start))
+    reference = build_reference(cell, follow, *first_pose(cell, arm, start))
     found = contacts(follow, reference)
-    blocked = blocked + _static_overload(cell, arm, start)
     accept = cell.accept
     watch = _Watch(cell, arm, reference, found, accept) if quick else None
     rolled = roll(cell, arm, limits, reference, start, follow.pose_gain_per_s, watch)
@@ -90,11 +91,11 @@ def run(cell: Cell, quick: bool = False, seed: int = 0) -> Run:
         return Run(cell, found, reference, rolled, None, evidence, judge(evidence, accept))
     chain = Chain.of(arm)
     measured = measure(arm, chain, limits, rolled.delivered)
-    evidence = _evidence(cell, limits, chain, reference, found, rolled, measured, blocked)
+    evidence = _evidence(cell, limits, chain, reference, found, rolled, measured)
     return Run(cell, found, reference, rolled, measured, evidence, judge(evidence, accept))
 
 
-def _first_pose(cell: Cell, arm: Arm, start: Array) -> tuple[Array, Array]:
+def first_pose(cell: Cell, arm: Arm, start: Array) -> tuple[Array, Array]:
     """Where the reference begins: the log's first pose where it has one, else the start posture's."""
     assert cell.follow is not None
     pose = cell.follow.commands.pose
@@ -134,9 +135,11 @@ def _with_start(cell: Cell, arm: Arm, seed: int) -> tuple[Cell, tuple[Reason, ..
     position, rotation = arm.pose(np.array(cell.arm.start))
     off = float(np.linalg.norm(pose[0, :3] - position))
     turn = float(np.linalg.norm(logarithm(rotation_of(pose[0, 3:]) @ rotation.T)))
-    if off > cell.accept.strike_position_m or turn > cell.accept.strike_tilt_error_rad:
+    accept, gain = cell.accept, cell.follow.pose_gain_per_s
+    if gain == 0 and (off > accept.strike_position_m or turn > accept.strike_tilt_error_rad):
         text = (
-            f"the start posture is {1000 * off:.1f} mm and {np.degrees(turn):.1f}° from the log's first pose"
+            f"the start posture is {1000 * off:.1f} mm and {np.degrees(turn):.1f}° from the log's first pose, "
+            'and a replay without pose feedback stays so; start = "auto" looks for a posture there'
         )
         return cell, (_block("reach", "proved", text),)
     return cell, ()
@@ -195,7 +198,6 @@ def _evidence(
     found: Contacts,
     rolled: Roll,
     measured: Measured,
-    blocked: tuple[Reason, ...],
 ) -> Evidence:
     motion, accept = rolled.delivered, cell.accept
     jitter = cell.drive.jitter_s if cell.drive else 0.0
@@ -220,7 +222,7 @@ def _evidence(
         stopped=rolled.stopped,
         unknown=_unknown(limits),
         not_checked=not_checked(cell, limits),
-        blocked=blocked,
+        blocked=(),
         failed_steps=rolled.failed_steps,
     )
 

@@ -9,6 +9,8 @@ import numpy as np
 from reach.cell import Array, Follow
 from reach.follow.reference import Reference
 
+ALONG_SHARE = 0.7  # of a strike's speed that must go along the face normal for the strike to look meant
+
 
 @dataclass(frozen=True, eq=False)
 class Contacts:
@@ -46,3 +48,22 @@ def contacts(follow: Follow, reference: Reference | None) -> Contacts:
         speed, height=follow.strike_min_m_s, prominence=follow.strike_min_m_s, distance=apart
     )
     return Contacts(even[peaks], False)
+
+
+def aslant(found: Contacts, reference: Reference) -> str | None:
+    """A note where commanded strikes go across the face or away from it; None where all go along its normal.
+
+    A wrong mount or a wrong frame is the likeliest cause.
+    """
+    twist, _, axes = reference.at(found.t_s)
+    along = np.einsum("ki,ki->k", twist[:, :3], axes[:, :, 2])
+    speed = np.linalg.norm(twist[:, :3], axis=1)
+    odd = np.flatnonzero(along < ALONG_SHARE * speed)
+    if len(odd) == 0:
+        return None
+    worst = odd[np.argmin(along[odd])]
+    return (
+        f"{len(odd)} of {len(speed)} strikes are commanded across the face or away from it "
+        f"(at {found.t_s[worst]:.3f} s {along[worst]:.3f} of {speed[worst]:.3f} m/s along its normal): "
+        "check the paddle's mount and the frame of the twists"
+    )

@@ -16,12 +16,17 @@ from reach.follow.step import BLOCK, Step, Stepper, start_velocity
 from reach.limits.base import SIGNS, Brake, Limit, Now
 from reach.limits.brake import BrakeModel
 
+HOPELESS_STEPS = 200  # in a row without keeping all rows: what came after would be no physics
 CLOSE_FOR = 20  # steps for which all rows stay in once a step came near a position or velocity limit
 CAUTIOUS_FOR = 5  # steps for which a cautious braking ability serves
 POSTURE_EVERY = 5  # steps between looks at that return
 POSTURE_SPEED = 0.2  # rad/s or m/s: cap of the slow return toward the start posture
 REST_SPEED = 1e-7  # rad/s or m/s: below it the arm stands
-STOP_WITHIN_S = 5.0  # an arm that does not stand this long after the command's end counts as not stopping
+STOP_WITHIN_S = (
+    2.0  # an arm that does not stand this long after the command's end, its drive's settling apart, does
+)
+# not stop: it sags under a load that its torque can't hold
+SETTLING_LAGS = 20  # time constants in which a drive comes to rest
 GAVE_WAY = 1e-6  # smaller slack is rounding
 
 
@@ -95,6 +100,7 @@ class _Roller:
         self.checked = 0
         self.free_slots: set[int] = set()  # slots whose step kept every row without being asked to
         self.was_free = True
+        self.in_vain = 0  # steps in a row that could not keep their rows
         self.careful_at = -1  # step that is to be checked at once
         self.close_until = 0  # step up to which no row is left out
         self.cautious_until = 0  # step up to which the cautious braking ability serves
@@ -103,10 +109,16 @@ class _Roller:
         self.last_change, self.last_torque = np.zeros(arm.n), self.state.bias
 
     def run(self) -> Roll:
-        last = self.commanded + int(STOP_WITHIN_S / self.dt)
+        drive = self.cell.drive
+        settling = drive.delay_s + SETTLING_LAGS * drive.lag_s if drive else 0.0
+        last = self.commanded + int((STOP_WITHIN_S + settling) / self.dt)
         stopped, k = False, 0
         while True:
-            ended = k >= last or (self.give_up is not None and self._gives_up(k))
+            ended = (
+                k >= last
+                or self.in_vain >= HOPELESS_STEPS
+                or (self.give_up is not None and self._gives_up(k))
+            )
             stopped = not ended and k >= self.commanded and self._at_rest()
             if ended or stopped or k - self.checked == BLOCK:
                 if (bad := self._settle(k)) is not None:
@@ -224,6 +236,7 @@ class _Roller:
     def _noted(self, k: int, step: Step) -> Array:
         """Keep a step that was checked at once out of the block's check, and what it says."""
         self.noted[k] = step
+        self.in_vain = 0 if step.status == "solved" else self.in_vain + 1
         block, slot, m = self.stepper.block, k - self.checked, self.stepper.rows.count
         self.was_free = False
         block.x[slot] = step.change

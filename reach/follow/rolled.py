@@ -78,10 +78,14 @@ def now_at(
 def motion_of(
     begin: float, dt: float, q: list[Array], v: list[Array], change: list[Array], stopped: bool
 ) -> Motion:
-    """The motion of states q, v (m, n) and changes of velocity (m - 1, n); its last row at rest if `stopped`."""
+    """The motion of states q, v (m, n) and changes of velocity (m - 1, n).
+
+    Its last row is at rest if `stopped`; a motion that was cut goes on as it went, so that the cut breaks no limit.
+    """
     speeds = np.array(v)
     if stopped:
         speeds[-1] = 0.0
     n = speeds.shape[1]
-    accelerations = np.vstack([np.array(change).reshape(-1, n) / dt, np.zeros((1, n))])
+    last = change[-1:] if change and not stopped else [np.zeros(n)]
+    accelerations = np.array([*change, *last]).reshape(-1, n) / dt
     return Motion(begin, dt, np.array(q), speeds, accelerations)

@@ -65,8 +65,8 @@ class Rows:
     matrix, so both become one interval; rows are scaled by the torque limit, or by the torque that one
     period's rate allows where only that is known.
 
-    Torque moves inside a period while the rows hold one instant of it. The fastest part of that, damping and dry
-    friction that change with the joint's own speed, is put into the matrix, (M + PHASE dt S)/dt with their slope S: so
+    Torque moves inside a period while the rows hold one instant of it. What it does because of the step's own change of
+    velocity (Coriolis torque, damping, dry friction) is put into the matrix, (M + PHASE dt S)/dt with their slope S: so
     the rows hold the torque at the last of the fine samples.
 
     Attributes
@@ -89,7 +89,6 @@ class Rows:
         self._matrix_scale = (self.scale / period_s)[:, None]
         self._signed = np.empty((2, n))
         self.matrix = np.empty((n, n))
-        self._diagonal = self.matrix.reshape(-1)[:: n + 1]
 
     @property
     def count(self) -> int:
@@ -147,8 +146,8 @@ class Rows:
         return np.asarray(torque)
 
     def _sum_inertia(self, now: Now) -> None:
-        np.copyto(self.matrix, now.state.mass)
-        self._diagonal += now.state.slope * (PHASE * self._period_s)
+        np.multiply(now.state.slope, PHASE * self._period_s, out=self.matrix)
+        self.matrix += now.state.mass
 
     def _fill_torque(self, now: Now, p: QpProblem) -> None:
         m = len(self.limited)

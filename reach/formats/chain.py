@@ -2,16 +2,15 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
+from functools import partial
 
 from reach.errors import FaultList, nearest
+from reach.formats.capped import ByKind
 from reach.formats.urdf import HELD_AS_DRAWN, MOVING, Urdf, UrdfJoint, UrdfLink
 
-MOVABLE_KG_M2 = (
-    1e-9  # inertia about its joint below which a body counts as having none; a servo horn has 1e-7
-)
-MOVABLE_KG = 1e-6
+MAX_JOINTS = 20  # moving joints between root and tip; arms have 6 or 7, arms on rails and trunks 10
 
 
 @dataclass(frozen=True)
@@ -63,10 +62,11 @@ def read_tree(urdf: Urdf, tip: str, tip_where: tuple[FaultList, str], faults: Fa
     _unique(urdf.links, "link", faults)
     _unique(urdf.joints, "joint", faults)
     parent_of: dict[str, UrdfJoint] = {}
+    kinds = ByKind(faults)
     for joint in urdf.joints:
         for role, name in (("parent", joint.parent), ("child", joint.child)):
             if name not in links:
-                faults.add(joint.place, f'its {role} link "{name}" does not exist{nearest(name, links)}')
+                kinds.add("links that do not exist", joint.place, partial(_no_link, role, name, links))
         other = parent_of.setdefault(joint.child, joint)
         if other is not joint:
             faults.add(
@@ -74,6 +74,7 @@ def read_tree(urdf: Urdf, tip: str, tip_where: tuple[FaultList, str], faults: Fa
                 f'link "{joint.child}" already hangs on joint "{other.name}" (line {other.line}); '
                 "a link has one parent, so loops can't be described",
             )
+    kinds.close()
     if len(faults.faults) > before:
         return None
     order, root = _ordered(urdf, parent_of, faults)
@@ -93,9 +94,17 @@ def read_tree(urdf: Urdf, tip: str, tip_where: tuple[FaultList, str], faults: Fa
         kind = "is the root link" if tip == root else "is fixed to the root link"
         tip_faults.add(where, f'"{tip}" {kind}: no joint moves it; name the link that carries the paddle')
         return None
+    if len(tree.chain) > MAX_JOINTS:
+        told = f"{len(tree.chain)} moving joints lead to it, more than the {MAX_JOINTS} of a chain"
+        tip_faults.add(where, f"{told}; name a nearer tip, or make joints fixed")
+        return None
     for joint in path:
         _fit_for_chain(joint, faults)
     return tree if len(faults.faults) == before else None
+
+
+def _no_link(role: str, name: str, known: Iterable[str]) -> str:
+    return f'its {role} link "{name}" does not exist{nearest(name, known)}'
 
 
 def _unique(items: tuple[UrdfLink, ...] | tuple[UrdfJoint, ...], what: str, faults: FaultList) -> None:

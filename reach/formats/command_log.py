@@ -9,7 +9,9 @@ from numpy.typing import ArrayLike, NDArray
 
 from reach.cell import Array, CommandLog
 from reach.errors import FaultList
-from reach.formats.log_time import TIME_COLUMN, ByKind, Place, TimeOrder
+from reach.formats.capped import MAX_SHOWN, ByKind
+from reach.formats.log_time import TIME_COLUMN, Place, TimeOrder
+from reach.formats.magnitude import LARGEST, LARGEST_STAMP_S
 
 TWIST_COLUMNS = ("vx_m_s", "vy_m_s", "vz_m_s", "wx_rad_s", "wy_rad_s", "wz_rad_s")
 POSE_COLUMNS = ("px_m", "py_m", "pz_m", "qw", "qx", "qy", "qz")
@@ -65,15 +67,14 @@ def check_arrays(
     if times is not None and len(times) < 2:
         few = "no rows" if len(times) == 0 else "one row"
         faults.add("whole log", f"has {few}; at least two are needed")
-    faults.raise_if_any()
+    columns.raise_if_any()
     assert times is not None and twists is not None
     columns.plausible(twists, poses)
     if poses is not None:
         poses = columns.unit_quaternions(poses)
     order = TimeOrder(max_gap_s, time_faults == "mend", columns.place, columns.kinds)
     keep, marks = order.rows(times[:, 0], marks)
-    columns.kinds.close()
-    faults.raise_if_any()
+    columns.raise_if_any()
     return CommandLog(
         _frozen(times[keep, 0]),
         _frozen(twists[keep]),
@@ -98,7 +99,12 @@ class _Columns:
     """The checks, sharing the fault list and the way places are told."""
 
     def __init__(self, faults: FaultList, place: Place):
-        self.faults, self.place, self.kinds = faults, place, ByKind(faults)
+        self.faults, self.place, self.kinds = faults, place, ByKind(faults, "whole log")
+
+    def raise_if_any(self) -> None:
+        """Raise InputError with what was found so far, long lists of a kind cut short."""
+        self.kinds.close()
+        self.faults.raise_if_any()
 
     def table(self, values: ArrayLike, name: str, rows: int | None, columns: tuple[str, ...]) -> Array | None:
         """Values as a finite (N, len(columns)) array of numbers."""
@@ -106,7 +112,8 @@ class _Columns:
             array = np.asarray(values)
             if array.dtype.kind not in "iuf" and array.size:
                 raise TypeError
-            array = array.astype(np.float64)
+            with np.errstate(over="ignore"):
+                array = array.astype(np.float64)
         except (TypeError, ValueError):
             self.faults.add(name, "is no array of numbers; give one")
             return None
@@ -123,10 +130,21 @@ class _Columns:
             shape = np.shape(values)
             self.faults.add(name, f"has shape {shape}; give {wanted}: {', '.join(columns)}")
             return None
-        for row, column in np.argwhere(~np.isfinite(array)):
-            where = self.place(int(row), columns[column])
-            self.kinds.add("not finite", where, f"is {array[row, column]}; give a finite number")
+        self._each("not finite", ~np.isfinite(array), array, columns, "give a finite number")
+        most = LARGEST_STAMP_S if name == TIME_COLUMN else LARGEST
+        beyond = np.isfinite(array) & (np.abs(array) > most)
+        told = f"out of any range that means something; give a size of at most {most:g}"
+        self._each("out of range", beyond, array, columns, told)
         return array
+
+    def _each(
+        self, kind: str, bad: NDArray[np.bool_], array: Array, columns: tuple[str, ...], told: str
+    ) -> None:
+        """Note a fault for every bad element of a table; texts are made for those that are shown."""
+        found = np.argwhere(bad)
+        for row, column in found[:MAX_SHOWN].tolist():
+            self.kinds.add(kind, self.place(row, columns[column]), f"is {array[row, column]:g}; {told}")
+        self.kinds.count[kind] = self.kinds.count.get(kind, 0) + max(0, len(found) - MAX_SHOWN)
 
     def marks(self, strike: ArrayLike, rows: int | None) -> NDArray[np.bool_] | None:
         """Strike marks as (N,) truth values."""

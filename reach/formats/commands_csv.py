@@ -10,14 +10,10 @@ import numpy as np
 
 from reach.cell import Array, CommandLog
 from reach.errors import FaultList, InputError, nearest
-from reach.formats.command_log import (
-    POSE_COLUMNS,
-    STRIKE_COLUMN,
-    TWIST_COLUMNS,
-    check_arrays,
-)
+from reach.formats.capped import ByKind
+from reach.formats.command_log import POSE_COLUMNS, STRIKE_COLUMN, TWIST_COLUMNS, check_arrays
 from reach.formats.files import decode
-from reach.formats.log_time import TIME_COLUMN, ByKind
+from reach.formats.log_time import TIME_COLUMN
 
 REQUIRED = (TIME_COLUMN, *TWIST_COLUMNS)
 KNOWN = (*REQUIRED, STRIKE_COLUMN, *POSE_COLUMNS)
@@ -88,12 +84,12 @@ def _header(line: str, faults: FaultList) -> list[str]:
     try:
         names = [name.strip() for name in next(csv.reader([line], strict=True))]
     except csv.Error as error:
-        faults.add(where, f"header can't be read ({error}); start with {wanted}")
+        faults.add(where, f"header can't be read: {_reason(error)}; start with {wanted}")
         return []
     if all(re.fullmatch(r"[-+.\deE]*|nan|inf", name) for name in names):
         faults.add(where, f"holds numbers, not names; columns are found by name: add the header {wanted}")
         return []
-    kinds = ByKind(faults)
+    kinds = ByKind(faults, where)
     for number, name in enumerate(names, 1):
         if name not in KNOWN:
             told = f'unknown column "{name}"' if name else f"column {number} has no name"
@@ -128,7 +124,7 @@ def _line_by_line(body: str, names: list[str], faults: FaultList) -> tuple[Array
     """Every row with its line number; each field that is no number is a fault with its place."""
     rows: list[list[float]] = []
     lines: list[int] = []
-    kinds = ByKind(faults)
+    kinds = ByKind(faults, "whole log")
     reader = csv.reader(io.StringIO(body), strict=True)
     try:
         for fields in reader:
@@ -142,9 +138,16 @@ def _line_by_line(body: str, names: list[str], faults: FaultList) -> tuple[Array
             lines.append(line)
             rows.append([_number(*pair, line, kinds) for pair in zip(fields, names, strict=True)])
     except csv.Error as error:
-        faults.add(f"line {reader.line_num + 1}", f"can't be read ({error}); correct its quotes")
+        faults.add(f"line {reader.line_num + 1}", f"can't be read: {_reason(error)}")
     kinds.close()
     return np.array(rows, dtype=np.float64).reshape(len(rows), len(names)), lines
+
+
+def _reason(error: csv.Error) -> str:
+    """The library's reason, but for the one that speaks of its own settings."""
+    if "field limit" in str(error):
+        return f"a field is longer than {csv.field_size_limit()} characters; is a quote left open?"
+    return f"{error}; correct its quotes"
 
 
 def _number(text: str, column: str, line: int, kinds: ByKind) -> float:

@@ -14,9 +14,12 @@ from dataclasses import dataclass, field
 from typing import Any, Protocol
 
 from reach.errors import FaultList, nearest
+from reach.formats.capped import MAX_SHOWN
+from reach.formats.magnitude import DUST, LEAST_POSITIVE, misfit, without_dust
 
 INF = math.inf
-MAX_UNKNOWN = 20  # unknown keys of one table that are told one by one
+MAX_ITEMS_SHOWN = 6  # of a list that stands where it must not
+LONGEST_WHOLE_BITS = 200  # a longer whole number is not printed
 _BARE_KEY = re.compile(r"[A-Za-z0-9_-]+")
 
 
@@ -40,19 +43,35 @@ def shown(value: Any) -> str:
         return "true" if value else "false"
     if isinstance(value, dict):
         return "a table"
+    if isinstance(value, list):
+        return _shown_list(value)
+    if isinstance(value, int) and value.bit_length() > LONGEST_WHOLE_BITS:
+        return "a number with too many digits"
     text = json.dumps(value, ensure_ascii=False) if isinstance(value, str) else str(value)
     return text if len(text) <= 60 else text[:57] + "..."
 
 
+def _shown_list(value: list[Any]) -> str:
+    if value and all(isinstance(item, dict) for item in value):
+        return "an array of tables"
+    items = ["[…]" if isinstance(item, list) else shown(item) for item in value[:MAX_ITEMS_SHOWN]]
+    return f"[{', '.join([*items, '…'] if len(value) > MAX_ITEMS_SHOWN else items)}]"
+
+
 @dataclass(frozen=True)
 class Number:
-    """A finite number in a range; `above` and `below` exclude their end, `hint` tells the likely slip."""
+    """A finite number in a range; `above` and `below` exclude their end, `hint` tells the likely slip.
+
+    Unless `least` says it, the smallest size other than 0 follows from the range. Where both signs may
+    stand, what rounding leaves of a zero is read as 0.
+    """
 
     lo: float = -INF
     hi: float = INF
     above: float = -INF
     below: float = INF
     hint: str = ""
+    least: float | None = None
 
     def read(self, value: Any, where: str, faults: FaultList) -> float | None:
         """Return the number as a float."""
@@ -68,11 +87,25 @@ class Number:
             return None
         if not (self.lo <= number <= self.hi and self.above < number < self.below):
             hint = f" ({self.hint})" if self.hint else ""
-            faults.add(where, f"is {number:g}; it must be {self._range()}{hint}")
+            faults.add(where, f"is {number:g}; it must be {self.range_text()}{hint}")
+            return None
+        if self.lo < 0 and self.above < 0 and self.least is None:
+            number = without_dust(number)
+        wrong = misfit(number, self.smallest)
+        if wrong:
+            faults.add(where, wrong)
             return None
         return number
 
-    def _range(self) -> str:
+    @property
+    def smallest(self) -> float:
+        """Smallest size of a number that is not 0."""
+        if self.least is not None:
+            return self.least
+        return LEAST_POSITIVE if self.above >= 0 else DUST
+
+    def range_text(self) -> str:
+        """The range in words, empty without one."""
         words = []
         if self.above > -INF:
             words.append(f"above {self.above:g}")
@@ -146,12 +179,13 @@ class OneOf:
 
 @dataclass(frozen=True)
 class ListOf:
-    """A list of one kind, of a fixed or a least length."""
+    """A list of one kind, of a fixed length or between a least and a greatest."""
 
     item: Kind
     length: int | None = None
     least: int = 0
     what: str = "values"
+    most: int | None = None
 
     def read(self, value: Any, where: str, faults: FaultList) -> tuple[Any, ...] | None:
         """Return the items as a tuple."""
@@ -164,6 +198,9 @@ class ListOf:
             return None
         if len(value) < self.least:
             faults.add(where, f"has {len(value)} {self.what}; it must have at least {self.least}")
+            return None
+        if self.most is not None and len(value) > self.most:
+            faults.add(where, f"has {len(value)} {self.what}; it must have at most {self.most}")
             return None
         items = [self.item.read(item, f"{where}[{i}]", faults) for i, item in enumerate(value)]
         return None if any(item is None for item in items) else tuple(items)
@@ -217,10 +254,10 @@ class Table:
             faults.add(where, f"is {shown(value)}; give a table, such as [{where}]")
             return {key: spec.default for key, spec in self.keys.items()}
         unknown = [key for key in value if key not in self.keys]
-        for key in unknown[:MAX_UNKNOWN]:
+        for key in unknown[:MAX_SHOWN]:
             faults.add(dotted(where, key), f"unknown key{nearest(key, self.keys)}")
-        if len(unknown) > MAX_UNKNOWN:
-            faults.add(where or "file", f"… and {len(unknown) - MAX_UNKNOWN} more unknown keys")
+        if len(unknown) > MAX_SHOWN:
+            faults.add(where or "file", f"… and {len(unknown) - MAX_SHOWN} more unknown keys")
         read: dict[str, Any] = {}
         for key, spec in self.keys.items():
             if key in value:

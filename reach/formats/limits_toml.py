@@ -3,14 +3,17 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field, fields, replace
+from functools import partial
 from typing import Any, Literal
 
 from reach.cell import Bound, Joint, JointLimits
 from reach.errors import FaultList, nearest
+from reach.formats.capped import ByKind
 from reach.formats.kinds import Flag, ListOf, Number, Text, dotted, shown
-from reach.formats.schema import LIMIT_KEYS, NOT_NEGATIVE
+from reach.formats.magnitude import LEAST_LIMIT
+from reach.formats.schema import DRIVE_VALUE, LIMIT_KEYS
 from reach.formats.urdf import UrdfJoint, stricter
 
 MANY_TURNS_RAD = 20.0  # a position limit beyond three turns is more often in degrees
@@ -21,7 +24,10 @@ _KINDS: dict[str, Literal["revolute", "continuous", "prismatic"]] = {
     "continuous": "continuous",
     "prismatic": "prismatic",
 }
-_PAIR = ListOf(Number(), 2, what="numbers lo, hi")
+_PAIRS = {
+    "range": ListOf(Number(), 2, what="numbers lo, hi"),
+    "around zero": ListOf(Number(least=LEAST_LIMIT), 2, what="numbers lo, hi"),
+}
 
 
 @dataclass(frozen=True)
@@ -42,23 +48,30 @@ def read_limits(
     document : the parsed TOML
     urdf_joints : every joint of the URDF by name, to tell turning from sliding
     """
+    kinds = ByKind(faults)
     for key in document:
         if key != "joints":
-            faults.add(dotted("", key), f"unknown key{nearest(key, ['joints'])}")
+            kinds.add("unknown keys", dotted("", key), f"unknown key{nearest(key, ['joints'])}")
     tables = document.get("joints")
     if not isinstance(tables, dict):
+        kinds.close()
         faults.add("joints", "missing; give one table per joint, such as [joints.j1]")
         return {}
     read: dict[str, Stated] = {}
     for name, table in tables.items():
         where = dotted("joints", name)
         if name not in urdf_joints:
-            faults.add(where, f"the URDF has no joint of that name{nearest(name, urdf_joints)}")
+            kinds.add("joints that the URDF does not have", where, partial(_no_joint, name, urdf_joints))
         elif not isinstance(table, dict):
             faults.add(where, f"is {shown(table)}; give a table [{where}]")
         else:
             read[name] = _joint(table, urdf_joints[name].kind == "prismatic", where, faults)
+    kinds.close()
     return read
+
+
+def _no_joint(name: str, known: Iterable[str]) -> str:
+    return f"the URDF has no joint of that name{nearest(name, known)}"
 
 
 def _joint(table: Mapping[str, Any], sliding: bool, where: str, faults: FaultList) -> Stated:
@@ -87,9 +100,9 @@ def _joint(table: Mapping[str, Any], sliding: bool, where: str, faults: FaultLis
 
 def _value(value: Any, holds: str, source: str, where: str, faults: FaultList) -> Bound | float | None:
     if holds == "value":
-        return NOT_NEGATIVE.read(value, where, faults)
+        return DRIVE_VALUE.read(value, where, faults)
     if isinstance(value, list):
-        pair = _PAIR.read(value, where, faults)
+        pair = _PAIRS[holds].read(value, where, faults)
         if pair is None:
             return None
         lo, hi = pair
@@ -106,7 +119,7 @@ def _value(value: Any, holds: str, source: str, where: str, faults: FaultList) -
         faults.add(where, f"is {shown(value)}; give [lo, hi]")
         return None
     hint = "leave it out when it is not known"
-    size = Number(above=0, hint=hint).read(value, where, faults)
+    size = Number(above=0, hint=hint, least=LEAST_LIMIT).read(value, where, faults)
     return None if size is None else Bound(-size, size, source)
 
 

@@ -2,16 +2,18 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 
 import numpy as np
 from numpy.typing import NDArray
 
-from reach.cell import Array
+from reach.cell import Array, CommandLog
 from reach.errors import FaultList
+from reach.formats.capped import ByKind
 
 TIME_COLUMN = "t_s"
-MAX_SHOWN = 20  # faults of one kind that are told one by one
+MAX_PERIODS = 2_000_000  # control periods of a log; half an hour and more at 1 kHz
 MENDABLE_GAPS = 3.0  # a gap up to so many times max_gap_s can be mended
 _ROUNDING = 1 + 1e-9  # stamps at exactly max_gap_s are no gap, whatever their last digit
 
@@ -21,24 +23,15 @@ Place = Callable[[int, str], str]
 Marks = NDArray[np.bool_]
 
 
-class ByKind:
-    """Adds faults of each kind up to a number, and then says how many more there were."""
-
-    def __init__(self, faults: FaultList):
-        self.faults = faults
-        self.count: dict[str, int] = {}
-
-    def add(self, kind: str, where: str, what: str) -> None:
-        """Note one fault of that kind."""
-        self.count[kind] = self.count.get(kind, 0) + 1
-        if self.count[kind] <= MAX_SHOWN:
-            self.faults.add(where, what)
-
-    def close(self) -> None:
-        """Say what was left out."""
-        for kind, count in self.count.items():
-            if count > MAX_SHOWN:
-                self.faults.add("whole log", f"… and {count - MAX_SHOWN} more: {kind}")
+def check_span(log: CommandLog, period_s: float, faults: FaultList, where: str = "follow.commands") -> None:
+    """Add a fault at `where` when following the log would take more than MAX_PERIODS control periods."""
+    span = float(log.t_s[-1] - log.t_s[0])
+    if span / period_s > MAX_PERIODS:
+        faults.add(
+            where,
+            f"the log spans {span:.6g} s, {math.ceil(span / period_s)} control periods of {period_s:g} s, "
+            f"more than {MAX_PERIODS}; cut it or raise control.period_s",
+        )
 
 
 class TimeOrder:

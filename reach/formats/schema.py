@@ -6,32 +6,40 @@ from typing import get_args
 
 from reach.cell import STANDARD_GRAVITY_M_S2, LimitName
 from reach.formats.kinds import ByName, Either, Flag, Integer, Key, ListOf, Number, OneOf, Table, Text
+from reach.formats.magnitude import LARGEST_DRIVE, LEAST_LIMIT
 from reach.formats.presets import BALLS
 
 SOLVERS = ("daqp", "piqp", "clarabel")
 """Solvers that are let in: others hung, or called false answers found, when tried (DEVELOPERS.md)."""
+
+MAX_ROWS = 1000  # paddle parts, rows of restitution
 
 LIMIT_NAMES: tuple[str, ...] = get_args(LimitName)
 
 FINITE = Number()
 POSITIVE = Number(above=0)
 NOT_NEGATIVE = Number(lo=0)
+GAIN_PER_S = Number(lo=0, hi=1e6)
 SHARE_KEPT_BACK = Number(lo=0, below=1)
 SHARE_REQUIRED = Number(above=0, hi=1)
 RESTITUTION = Number(above=0, hi=1)
 NEAR_M = Number(lo=-10, hi=10, hint="metres; is this in mm?")
 MASS_KG = Number(above=0, hi=1000, hint="kg; is this in g?")
+TOOL_M_S = Number(above=0, hi=1000, hint="m/s; is this in mm/s?", least=LEAST_LIMIT)
+DRIVE_VALUE = Number(lo=0, hi=LARGEST_DRIVE)
 SIZE_M = Number(above=0, hi=2, hint="metres; is this in mm?")
 
 _VECTOR = ListOf(FINITE, 3, what="numbers")
 _NEAR_VECTOR = ListOf(NEAR_M, 3, what="numbers")
+_BASE_VECTOR = ListOf(Number(lo=-1000, hi=1000, hint="metres; is this in mm?"), 3, what="numbers")
+_GRAVITY = ListOf(Number(lo=-100, hi=100, hint="m/s²"), 3, what="numbers")
 _BEARINGS = ListOf(FINITE, least=1, what="bearings")
 _OFFSETS = ListOf(NOT_NEGATIVE, least=1, what="offsets")
 _INERTIA = ListOf(FINITE, 6, what="numbers xx, yy, zz, xy, xz, yz")
 _ZERO3 = (0.0, 0.0, 0.0)
 
 PLACEMENT = Table({"xyz_m": Key(_NEAR_VECTOR, _ZERO3), "rpy_deg": Key(_VECTOR, _ZERO3)})
-BASE = Table({"xyz_m": Key(_VECTOR, _ZERO3), "rpy_deg": Key(_VECTOR, _ZERO3)})
+BASE = Table({"xyz_m": Key(_BASE_VECTOR, _ZERO3), "rpy_deg": Key(_VECTOR, _ZERO3)})
 _NO_PLACEMENT = {"xyz_m": _ZERO3, "rpy_deg": _ZERO3}
 
 ARM = Table(
@@ -42,7 +50,7 @@ ARM = Table(
         "locked_rad": Key(ByName(FINITE), {}),
         "locked_m": Key(ByName(FINITE), {}),
         "base": Key(BASE, _NO_PLACEMENT),
-        "gravity_m_s2": Key(_VECTOR, (0.0, 0.0, -STANDARD_GRAVITY_M_S2)),
+        "gravity_m_s2": Key(_GRAVITY, (0.0, 0.0, -STANDARD_GRAVITY_M_S2)),
         "start_rad": Key(ByName(FINITE), {}),
         "start_deg": Key(ByName(FINITE), {}),
         "start_m": Key(ByName(FINITE), {}),
@@ -72,13 +80,13 @@ PADDLE = Table(
         "thickness_m": Key(Number(lo=0, hi=1, hint="metres; is this in mm?"), 0.0),
         "com_m": Key(_NEAR_VECTOR),
         "inertia_kg_m2": Key(_INERTIA),
-        "part": Key(ListOf(PART, what="tables"), ()),
+        "part": Key(ListOf(PART, what="tables", most=MAX_ROWS), ()),
     }
 )
 
 TOOL = Table(
     {
-        "speed_m_s": Key(POSITIVE, required="give the cap on the strike point's speed, or drop [tool]"),
+        "speed_m_s": Key(TOOL_M_S, required="give the cap on the strike point's speed, or drop [tool]"),
         "source": Key(Text(), "cell"),
     }
 )
@@ -98,14 +106,16 @@ CONTACT = Table(
     {
         "restitution": Key(RESTITUTION, required="give the restitution of ball and face, from a drop test"),
         "restitution_spread": Key(SHARE_KEPT_BACK, 0.0),
-        "restitution_at": Key(ListOf(ListOf(FINITE, 2, what="numbers speed, restitution"), what="rows"), ()),
+        "restitution_at": Key(
+            ListOf(ListOf(FINITE, 2, what="numbers speed, restitution"), what="rows", most=MAX_ROWS), ()
+        ),
         "friction": Key(NOT_NEGATIVE, 0.0),
         "tangential_restitution": Key(Number(lo=-1, hi=1), 0.0),
         "source": Key(Text(), "cell"),
     }
 )
 
-CONTROL = Table({"period_s": Key(Number(above=0, hi=0.1, hint="seconds; is this in ms?"), 0.001)})
+CONTROL = Table({"period_s": Key(Number(lo=1e-5, hi=0.1, hint="seconds; is this in ms?"), 0.001)})
 
 _LAG = Key(Number(lo=0, hi=1, hint="seconds; is this in ms?"), 0.0)
 DRIVE = Table({"delay_s": _LAG, "lag_s": _LAG, "jitter_s": _LAG})
@@ -116,14 +126,14 @@ SOLVER = Table(
         "name": Key(_SOLVER, "daqp"),
         "fallback": Key(_SOLVER, "piqp"),
         "rotation_length_m": Key(SIZE_M),
-        "posture_gain_per_s": Key(NOT_NEGATIVE, 0.5),
+        "posture_gain_per_s": Key(GAIN_PER_S, 0.5),
     }
 )
 
 MARGINS = Table(
     {
-        "position_rad": Key(NOT_NEGATIVE, 0.002),
-        "position_m": Key(NOT_NEGATIVE, 0.0005),
+        "position_rad": Key(Number(lo=0, hi=10, hint="radians; is this in degrees?"), 0.002),
+        "position_m": Key(Number(lo=0, hi=10, hint="metres; is this in mm?"), 0.0005),
         "velocity_share": Key(SHARE_KEPT_BACK, 0.02),
         "acceleration_share": Key(SHARE_KEPT_BACK, 0.02),
         "torque_share": Key(SHARE_KEPT_BACK, 0.10),
@@ -136,13 +146,14 @@ ACCEPT = Table(
     {
         "at": Key(OneOf(("strikes", "throughout")), "strikes"),
         "strike_speed_error_share": Key(SHARE_REQUIRED, 0.03),
-        "strike_lateral_m_s": Key(POSITIVE, 0.05),
-        "strike_position_m": Key(POSITIVE, 0.005),
+        "strike_lateral_m_s": Key(Number(above=0, hi=100, hint="m/s; is this in mm/s?"), 0.05),
+        "strike_position_m": Key(Number(above=0, hi=10, hint="metres; is this in mm?"), 0.005),
         "strike_tilt_error_deg": Key(Number(above=0, hi=180), 1.0),
         "strike_window_s": Key(Number(lo=0, hi=1, hint="seconds; is this in ms?"), 0.010),
         "strikes_share": Key(SHARE_REQUIRED, 1.0),
         "require": Key(
-            ListOf(OneOf(LIMIT_NAMES), what="limit names"), ("position", "velocity", "torque", "torque rate")
+            ListOf(OneOf(LIMIT_NAMES), what="limit names", most=100),
+            ("position", "velocity", "torque", "torque rate"),
         ),
     }
 )
@@ -162,7 +173,7 @@ FOLLOW = Table(
         ),
         "interpolation": Key(OneOf(("hold", "linear")), "hold"),
         "shortfall": Key(OneOf(("closest", "same-direction")), "closest"),
-        "pose_gain_per_s": Key(NOT_NEGATIVE, 0.0),
+        "pose_gain_per_s": Key(GAIN_PER_S, 0.0),
         "time_faults": Key(OneOf(("refuse", "mend")), "refuse"),
         "max_gap_s": Key(POSITIVE, 0.1),
         "strikes": Key(OneOf(("marked", "guessed-ok")), "marked"),

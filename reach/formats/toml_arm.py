@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
+from functools import partial
 from typing import Any
 
 from reach.cell import ArmSpec, HeldJoint, Joint, Pose
 from reach.errors import FaultList, nearest
 from reach.formats.bodies import check_inertias
+from reach.formats.capped import ByKind
 from reach.formats.chain import Tree, read_tree
 from reach.formats.files import MAX_TEXT_BYTES, Reading, beside
 from reach.formats.kinds import dotted
@@ -103,10 +105,12 @@ def _held(tree: Tree, arm: Mapping[str, Any], faults: FaultList) -> tuple[dict[s
     known = {joint.name: joint for joint in tree.order}
     values: dict[str, float] = {}
     for key, sliding in (("locked_rad", False), ("locked_m", True)):
+        kinds = ByKind(faults, f"arm.{key}")
         for name, value in arm[key].items():
             where = dotted(f"arm.{key}", name)
             if name not in beside_chain:
-                faults.add(where, _not_lockable(name, known, beside_chain))
+                told = partial(_not_lockable, name, known, beside_chain)
+                kinds.add("joints that can't be locked", where, told)
                 continue
             joint = beside_chain[name]
             if (joint.kind == "prismatic") != sliding:
@@ -117,6 +121,7 @@ def _held(tree: Tree, arm: Mapping[str, Any], faults: FaultList) -> tuple[dict[s
             if bound is not None and not bound.lo <= value <= bound.hi:
                 faults.add(where, f"is {value:g}, outside its limits [{bound.lo:g}, {bound.hi:g}]")
             values[name] = value
+        kinds.close()
     notes: list[str] = []
     at_zero: list[str] = []
     for name, joint in beside_chain.items():
@@ -146,6 +151,10 @@ def _not_lockable(name: str, known: Mapping[str, UrdfJoint], beside_chain: Mappi
     return "the joint is on the chain to the tip, so it moves; only joints off the chain can be locked"
 
 
+def _no_joint(name: str, known: Iterable[str]) -> str:
+    return f"the chain has no joint of that name{nearest(name, known)}"
+
+
 def _by_joint(
     chain: tuple[Joint, ...],
     off_chain: set[str],
@@ -157,6 +166,7 @@ def _by_joint(
     joints = {joint.name: joint for joint in chain}
     found: dict[str, tuple[float, str]] = {}
     for key, sliding, unit in tables:
+        kinds = ByKind(faults, f"arm.{key}")
         for name, value in arm[key].items():
             where = dotted(f"arm.{key}", name)
             if name in off_chain:
@@ -164,7 +174,7 @@ def _by_joint(
                     where, "the joint is not on the chain to the tip; hold it with locked_rad or locked_m"
                 )
             elif name not in joints:
-                faults.add(where, f"the chain has no joint of that name{nearest(name, joints)}")
+                kinds.add("joints that the chain does not have", where, partial(_no_joint, name, joints))
             elif joints[name].sliding != sliding:
                 other = next(k for k, slides, _ in tables if slides != sliding)
                 motion = "slides" if joints[name].sliding else "turns"
@@ -173,6 +183,7 @@ def _by_joint(
                 faults.add(where, f"given twice, also as {found[name][1]}; keep one")
             else:
                 found[name] = value * unit, where
+        kinds.close()
     return found
 
 

@@ -5,13 +5,16 @@ from __future__ import annotations
 import math
 import os
 import re
+import unicodedata
 from collections.abc import Mapping
 from typing import Any
 
 from reach.cell import Accept, Ball, Cell, Contact, Drive, Follow, Margins, Paddle, Part, SolverSpec, Tool
 from reach.errors import Fault, FaultList, InputError, nearest
+from reach.formats.capped import cut_short
 from reach.formats.cross_checks import check_ball, check_contact, check_paddle, check_room, check_sections
 from reach.formats.files import MAX_LOG_BYTES, MAX_TEXT_BYTES, Reading, beside
+from reach.formats.log_time import check_span
 from reach.formats.presets import BALLS
 from reach.formats.readers import READERS
 from reach.formats.schema import ACCEPT, CELL, CONTROL, MARGINS, SOLVER
@@ -19,7 +22,7 @@ from reach.formats.toml_arm import pose_of, read_arm
 from reach.formats.toml_text import parse_toml
 
 LONGEST_MESSAGE = 800  # characters; a fault is to fit a screen
-_CONTROL = re.compile(r"[\x00-\x1f\x7f-\x9f\u2028\u2029]")
+_ESCAPED = ("Cc", "Cf", "Zl", "Zp")  # control, format (such as bidi overrides), line and paragraph ends
 
 
 def load_cell(path: str | os.PathLike[str], need_follow: bool = False) -> Cell:
@@ -49,15 +52,25 @@ def load_cell(path: str | os.PathLike[str], need_follow: bool = False) -> Cell:
     cell = None if document is None else _cell(document, need_follow, faults, reading)
     found = [*reading.faults, *faults.faults]
     if found or cell is None:
-        plain = dict.fromkeys(Fault(*map(_one_line, (f.file, f.where, f.what))) for f in found)
+        plain = dict.fromkeys(Fault(*map(_one_line, (f.file, f.where, f.what))) for f in cut_short(found))
         raise InputError(sorted(plain, key=_in_order))
     return cell
 
 
 def _one_line(text: str) -> str:
-    """The text with control characters (a file may hold any) escaped, and cut where it leads nowhere."""
-    escaped = _CONTROL.sub(lambda found: f"\\u{ord(found[0]):04x}", text)
+    """The text with characters that steer a terminal (a file may hold any) escaped, and cut to a screen."""
+    if text.isascii() and text.isprintable():
+        escaped = text
+    else:
+        escaped = "".join(map(_plain, text[: LONGEST_MESSAGE + 1]))
     return escaped if len(escaped) <= LONGEST_MESSAGE else escaped[:LONGEST_MESSAGE] + "…"
+
+
+def _plain(character: str) -> str:
+    if unicodedata.category(character) not in _ESCAPED:
+        return character
+    code = ord(character)
+    return f"\\u{code:04x}" if code < 0x10000 else f"\\U{code:08x}"
 
 
 def _in_order(fault: Fault) -> tuple[str, list[tuple[int, str]], str]:
@@ -85,6 +98,9 @@ def _cell(document: Mapping[str, Any], need_follow: bool, faults: FaultList, rea
     if "follow" not in document and need_follow:
         faults.add("follow", "missing; name the command log and how to read it in a table [follow]")
     follow = _follow(read["follow"], faults, reading) if read["follow"] else None
+    period_s = (read["control"] or CONTROL.read({}, "", quiet))["period_s"]
+    if follow is not None:
+        check_span(follow.commands, period_s, faults)
     if "start" in given.get("arm", {}) and not _log_may_be_posed(follow, "follow" in document):
         faults.add("arm.start", '"auto" needs a command log with pose columns; give start_rad instead')
     if arm is not None:
@@ -96,7 +112,7 @@ def _cell(document: Mapping[str, Any], need_follow: bool, faults: FaultList, rea
         path=faults.file,
         arm=arm,
         paddle=paddle,
-        period_s=(read["control"] or CONTROL.read({}, "", quiet))["period_s"],
+        period_s=period_s,
         tool=Tool(**read["tool"]) if read["tool"] else None,
         ball=ball,
         contact=Contact(**read["contact"]) if read["contact"] else None,

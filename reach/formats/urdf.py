@@ -7,6 +7,15 @@ from dataclasses import dataclass, field, replace
 
 from reach.cell import Bound, JointLimits, Pose, Vec3
 from reach.errors import FaultList, nearest
+from reach.formats.magnitude import (
+    DUST,
+    LARGEST,
+    LARGEST_DRIVE,
+    LEAST_LIMIT,
+    LEAST_POSITIVE,
+    misfit,
+    without_dust,
+)
 from reach.formats.xml_tree import Element, parse
 
 MOVING = ("revolute", "continuous", "prismatic")
@@ -142,9 +151,18 @@ class _Reader:
         return name
 
     def _number(
-        self, element: Element | None, key: str, place: str, least: float = -math.inf
+        self,
+        element: Element | None,
+        key: str,
+        place: str,
+        least: float = 0.0,
+        most: float = LARGEST,
+        signed: bool = True,
     ) -> float | None:
-        """The number in an attribute, None where it is absent, or unusable and noted."""
+        """The number in an attribute, None where it is absent, or unusable and noted.
+
+        Its size is 0 or from `least` to `most`; rests of rounding around 0 count as 0 where `least` is 0.
+        """
         text = None if element is None else element.attributes.get(key)
         if element is None or text is None:
             return None
@@ -152,9 +170,15 @@ class _Reader:
         where = f"{place}, <{element.tag} {key}>"
         if value is None:
             self.faults.add(where, f'"{text[:60]}" is no finite number; correct it')
-        elif value < least:
+            return None
+        if value < 0 and not signed:
             self.faults.add(where, f"{value:g} is negative; give its size, or drop it when unknown")
-            value = None
+            return None
+        value = value if least else without_dust(value)
+        wrong = misfit(value, least, most)
+        if wrong:
+            self.faults.add(where, wrong)
+            return None
         return value
 
     def _vector(self, element: Element | None, key: str, default: Vec3, place: str) -> Vec3:
@@ -167,7 +191,11 @@ class _Reader:
                 f"{place}, <{element.tag} {key}>", f'"{text[:60]}" is not three finite numbers; correct it'
             )
             return default
-        x, y, z = (float(value) for value in values if value is not None)
+        x, y, z = (without_dust(value) for value in values if value is not None)
+        wrong = next(filter(None, (misfit(value, DUST) for value in (x, y, z))), "")
+        if wrong:
+            self.faults.add(f"{place}, <{element.tag} {key}>", wrong)
+            return default
         return x, y, z
 
     def _origin(self, element: Element, place: str) -> Pose:
@@ -191,7 +219,7 @@ class _Reader:
     def _inertial(self, element: Element, link: str) -> Inertial | None:
         place = _place(element.line, "link", link)
         mass_element, inertia_element = self._only(element, "mass"), self._only(element, "inertia")
-        mass = self._number(mass_element, "value", place)
+        mass = self._number(mass_element, "value", place, LEAST_POSITIVE)
         if mass_element is None or "value" not in mass_element.attributes:
             self.faults.add(place, '<inertial> has no mass; add <mass value="…"/>, or drop <inertial>')
         keys = ("ixx", "iyy", "izz", "ixy", "ixz", "iyz")
@@ -211,11 +239,11 @@ class _Reader:
         limit, dynamics = self._only(element, "limit"), self._only(element, "dynamics")
 
         def symmetric(key: str, source: str = "URDF") -> Bound | None:
-            value = self._number(limit, key, place, least=0.0)
+            value = self._number(limit, key, place, LEAST_LIMIT, signed=False)
             return Bound(-value, value, source) if value else None
 
         def stated(key: str) -> float | None:
-            value = self._number(dynamics, key, place, least=0.0)
+            value = self._number(dynamics, key, place, DUST, LARGEST_DRIVE, signed=False)
             if value == 0:
                 self.notes.append(f"{place}: {key} 0 read as unknown; the limits file can state a true zero")
             return value or None
@@ -228,7 +256,8 @@ class _Reader:
             damping=stated("damping"),
             friction=stated("friction"),
         )
-        lower, upper = (self._number(limit, key, place) for key in ("lower", "upper"))
+        most = math.inf if kind == "continuous" else LARGEST  # what is ignored may be any number
+        lower, upper = (self._number(limit, key, place, most=most) for key in ("lower", "upper"))
         if kind == "continuous":
             if lower or upper:
                 self.notes.append(f"{place}: continuous, so lower and upper are ignored")

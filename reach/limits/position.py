@@ -6,7 +6,7 @@ import numpy as np
 
 from reach.cell import Array, Cell
 from reach.limits.base import SIGNS, Ahead, Fine, Limit, Now
-from reach.limits.brake import largest_velocity
+from reach.limits.brake import BRAKE_SHARE, largest_velocity
 
 LOOSEST_FACTOR = 8  # times the largest acceleration: a change of velocity that other rows forbid anyway
 APPROACH_PER_S = (
@@ -67,7 +67,11 @@ class Position(Limit):
         loosest = LOOSEST_FACTOR * float(now.brake.top[i]) * dt
         change = largest_velocity(room, v, v + loosest, alpha, beta, dt) - v
         if change < loosest:
-            most[side, i] = change
+            # Never more than the ability itself, which another joint's load may shrink faster than the brake builds
+            # up: rows that ask for more would only push jerk, torque rate or acceleration over their limits.
+            before = float(now.change[i]) if side == 0 else -float(now.change[i])
+            fastest = max(before - beta / BRAKE_SHARE * dt * dt, -float(now.brake.top[i]) * dt)
+            most[side, i] = max(change, fastest)
 
     def clear(self, ahead: Ahead) -> bool:
         # The longest stop: the ramp at the highest speed, then braking from there.

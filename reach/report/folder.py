@@ -8,7 +8,7 @@ import secrets
 from collections.abc import Iterable, Iterator, Mapping
 from pathlib import Path
 
-from reach.errors import OutputError
+from reach.errors import FaultList, OutputError
 from reach.report.evidence import evidence_files
 from reach.report.writers import WRITERS
 from reach.result import FollowResult
@@ -40,6 +40,33 @@ def write_folder(result: FollowResult, out_dir: Path, junit: Path | None = None)
     for name, kind in FILES:
         contents[out_dir / name] = as_bytes(WRITERS[kind](result))
     return write_files(contents)
+
+
+def check_targets(out_dir: Path, junit: str | None, inputs: Iterable[str]) -> None:
+    """Refuse places where results can't or must not go, before anything is run.
+
+    Raises
+    ------
+    InputError
+        A JUnit file that has no name, is no regular file, or is one of the inputs or the results; a folder that is
+        a file, or that can't be written to.
+    """
+    faults = FaultList("command line")
+    place = next((p for p in (out_dir, *out_dir.absolute().parents) if p.exists()), Path("."))
+    if not place.is_dir():
+        faults.add("--out", f"{place} is a file; name a folder")
+    elif not os.access(place, os.W_OK | os.X_OK):
+        faults.add("--out", f"{place} can't be written to; name another folder")
+    if junit is not None:
+        target = Path(junit)
+        taken = [*(Path(path) for path in inputs), *(out_dir / name for name, _ in FILES)]
+        if not target.name:
+            faults.add("--junit", "it has no file name; name a file")
+        elif target.exists() and not target.is_file():
+            faults.add("--junit", f"{junit} is no regular file; name another")
+        elif target.resolve() in {path.resolve() for path in taken}:
+            faults.add("--junit", f"{junit} is an input or a result of this run; name another file")
+    faults.raise_if_any()
 
 
 def write_files(contents: Mapping[Path, str | bytes | None]) -> list[Path]:
