@@ -216,8 +216,8 @@ def test_an_arm_too_weak_to_stop() -> None:
     found = rolled(hinge_log(cell, 0.005 * np.arange(10), np.full(10, 12.0)))
     assert not found.stopped
     v, end = found.sent.v[:, 0], found.end_row
-    assert v[end] == pytest.approx(12.0, rel=5e-3) and len(v) - 1 - end == 1000
-    np.testing.assert_allclose(v[end:], v[end] - 1.8 * 0.005 * np.arange(1001), rtol=1e-6)
+    assert v[end] == pytest.approx(12.0, rel=5e-3) and len(v) - 1 - end == 400
+    np.testing.assert_allclose(v[end:], v[end] - 1.8 * 0.005 * np.arange(401), rtol=1e-6)
     done = run(hinge_log(cell, 0.005 * np.arange(10), np.full(10, 12.0)))
     assert done.verdict.verdict == NOT_DELIVERABLE
     assert any("stand" in ground for ground in done.verdict.grounds)
@@ -585,8 +585,9 @@ def test_roll_back_behind_a_drive(monkeypatch: pytest.MonkeyPatch) -> None:
     spoil(monkeypatch, busy_step(), BAD["infeasible point"], {"daqp"}, tries=1)
     found = rolled(cell)
     same_motion(plain, found)
+    # Both answers pass the check at 1e-6, but a redundant direction weighs 1e-4 of the task: there they may part.
     np.testing.assert_allclose(found.delivered.q, plain.delivered.q, rtol=0, atol=SAME)
-    np.testing.assert_allclose(found.delivered.v, plain.delivered.v, rtol=0, atol=SAME)
+    np.testing.assert_allclose(found.delivered.v, plain.delivered.v, rtol=0, atol=10 * SAME)
 
 
 @pytest.mark.parametrize("kind", ["not finite", "wrong sign", "raises"])

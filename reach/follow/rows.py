@@ -10,7 +10,7 @@ from reach.limits.base import SIGNS, Ahead, Caution, Limit, Now
 from reach.limits.tool_speed import ToolSpeed
 from reach.qp.problem import QpProblem
 
-PHASE = 0.75  # of a period: the last of the fine samples in it
+PHASE = 0.375  # of a period: midway between its first and its last fine sample, so that drift errs equally at both
 FREE = 1e3  # rad/s or m/s: stands for "no bound" on a change of velocity, and binds nowhere
 
 
@@ -67,7 +67,7 @@ class Rows:
 
     Torque moves inside a period while the rows hold one instant of it. What it does because of the step's own change of
     velocity (Coriolis torque, damping, dry friction) is put into the matrix, (M + PHASE dt S)/dt with their slope S: so
-    the rows hold the torque at the last of the fine samples.
+    the rows hold the torque midway between the period's first and last fine sample.
 
     Attributes
     ----------
