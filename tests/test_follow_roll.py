@@ -573,7 +573,8 @@ def test_the_second_solver_steps_in_and_is_counted(kind: str, monkeypatch: pytes
     asked = spoil(monkeypatch, step, BAD[kind], {"daqp"}, tries=99)
     found = rolled(violent())
     assert asked[0] == "daqp" and asked[-1] == "piqp"
-    same_motion(plain, found)
+    # Either solver's answer passes the check at 1e-6, but redundant directions weigh 1e-4: there they may part more.
+    same_motion(plain, found, 10 * SAME)
     assert (found.failed_steps, found.fallback_steps, found.elastic_steps) == (0, 1, plain.elastic_steps)
 
 
@@ -585,9 +586,8 @@ def test_roll_back_behind_a_drive(monkeypatch: pytest.MonkeyPatch) -> None:
     spoil(monkeypatch, busy_step(), BAD["infeasible point"], {"daqp"}, tries=1)
     found = rolled(cell)
     same_motion(plain, found)
-    # Both answers pass the check at 1e-6, but a redundant direction weighs 1e-4 of the task: there they may part.
     np.testing.assert_allclose(found.delivered.q, plain.delivered.q, rtol=0, atol=SAME)
-    np.testing.assert_allclose(found.delivered.v, plain.delivered.v, rtol=0, atol=10 * SAME)
+    np.testing.assert_allclose(found.delivered.v, plain.delivered.v, rtol=0, atol=SAME)
 
 
 @pytest.mark.parametrize("kind", ["not finite", "wrong sign", "raises"])
