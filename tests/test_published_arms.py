@@ -6,10 +6,12 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from builders import cell_text, following, load_text, published_urdf
+from builders import cell_text, following, load_text, published_urdf, robot_cell
 
+import reach
 from reach.advice.answer import answer
-from reach.cell import Cell
+from reach.cell import Bound, Cell
+from reach.follow.bench import run
 
 UR = (
     "shoulder_pan_joint",
@@ -69,3 +71,50 @@ def test_a_gentle_stroke_is_followed(name: str) -> None:
     assert result.verdict.verdict == "undecided"
     assert "torque rate" in result.verdict.sentence
     assert all(use.utilisation is None or use.utilisation <= 1 for use in evidence.uses)
+
+
+def test_a_position_row_does_not_break_jerk_and_acceleration() -> None:
+    # A posture and limits at which the shoulder's load takes braking ability from the wrist faster than jerk lets a
+    # brake build up. Rows that insisted on stopping in time drove the wrist to 569 % of its jerk, a radian before its end.
+    folder, file, _, joints, _ = ARMS["xarm7"]
+    posture = (-1.08403, 0.99046, 1.18167, 0.66450, 1.68451, 2.24885, -1.23538)
+    text = cell_text(published_urdf(folder, file), "link_eef", dict(zip(joints, posture, strict=True)))
+    plain = load_text(text)
+    tight = tuple(
+        replace(
+            joint,
+            limits=replace(
+                joint.limits,
+                acceleration=Bound(-15.0, 15.0, "guessed"),
+                jerk=Bound(-3000.0, 3000.0, "guessed"),
+                torque_rate=Bound(-1000.0, 1000.0, "guessed"),
+            ),
+        )
+        for joint in plain.arm.joints
+    )
+    t = np.arange(0.0, 2.0, 0.005)
+    twist = np.zeros((len(t), 6))
+    twist[:, 2] = 0.3 * np.sin(2 * np.pi * t) * np.minimum(t, 1.0)
+    done = run(following(replace(plain, arm=replace(plain.arm, joints=tight)), t, twist))
+    used = {(u.limit, u.joint): u.utilisation for u in done.evidence.uses if u.utilisation is not None}
+    assert max(used.values()) <= 1 + 1e-6
+    assert used["acceleration", "joint2"] > 0.9  # the motion is no easy one
+    assert done.evidence.stopped
+
+
+def test_strikes_across_the_face_are_pointed_out() -> None:
+    cell = stroke(robot_cell("bench7"))  # its face looks up, and the stroke goes up
+    assert not any("across the face" in note for note in answer(cell, advice=False).notes)
+    aside = replace(cell.paddle, mount=replace(cell.paddle.mount, rpy_rad=(np.pi / 2, 0.0, 0.0)))
+    notes = answer(replace(cell, paddle=aside), advice=False).notes
+    assert any("1 of 1 strikes are commanded across the face" in note for note in notes)
+
+
+def test_arrays_that_span_too_many_periods_are_refused() -> None:
+    folder, file, tip, joints, posture = ARMS["ur5"]
+    cell = load_text(cell_text(published_urdf(folder, file), tip, dict(zip(joints, posture, strict=True))))
+    t = np.arange(30000) * 0.1
+    with pytest.raises(reach.InputError, match="control periods"):
+        reach.follow_commands(
+            replace(cell, period_s=1e-3), t, np.zeros((30000, 6)), frame="world", point="strike"
+        )
