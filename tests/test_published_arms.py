@@ -75,7 +75,7 @@ def test_a_gentle_stroke_is_followed(name: str) -> None:
 
 def test_a_position_row_does_not_break_jerk_and_acceleration() -> None:
     # A posture and limits at which the shoulder's load takes braking ability from the wrist faster than jerk lets a
-    # brake build up. Rows that insisted on stopping in time drove the wrist to 569 % of its jerk, a radian from its end.
+    # brake build up. Rows that insisted on stopping in time drove the wrist to 569 % of its jerk, far from its end.
     folder, file, _, joints, _ = ARMS["xarm7"]
     posture = (-1.08403, 0.99046, 1.18167, 0.66450, 1.68451, 2.24885, -1.23538)
     text = cell_text(published_urdf(folder, file), "link_eef", dict(zip(joints, posture, strict=True)))
