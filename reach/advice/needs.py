@@ -7,7 +7,7 @@ from collections.abc import Callable, Sequence
 from reach.advice.reasons import deciding as deciding_keys
 from reach.advice.reasons import reasons
 from reach.advice.search import Runner, least_passing
-from reach.advice.variants import with_bounds
+from reach.advice.variants import scaled_limits, with_bounds
 from reach.cell import Cell
 from reach.evidence.record import Need
 from reach.follow.bench import Run, run
@@ -159,7 +159,11 @@ def _failing_needs(
 
         return least_passing(passes, scan, resolution)
 
-    keys = _all_in_the_way(cell, first, stated, runs)
+    runs.runs += 1
+    if grown_all > 1:
+        keys = _used_beyond(run(scaled_limits(cell, grown_all)), first, stated)
+    else:
+        keys = _all_in_the_way(cell, first, stated, runs)
     likely = [grown_all * further for further in (1.0, 1.05, 1.2)] if grown_all > 1 else []
     common = least(keys, {}, RESOLUTION, likely) or least(keys, {}, RESOLUTION)
     if common is None:
@@ -177,8 +181,9 @@ def _failing_needs(
             factor = least(keys, {}, RESOLUTION)
             sufficient = necessary = (factor or common) * stated[key]
         elif key in first:
-            factor = least([key], {k: grown[k] for k in keys if k != key}, COARSE)
-            if factor is not None and GROW_SCAN[0] < factor <= common:
+            scan = [*(factor for factor in GROW_SCAN if factor < common), common]
+            factor = least([key], {k: grown[k] for k in keys if k != key}, COARSE, scan)
+            if factor is not None and factor > GROW_SCAN[0]:
                 necessary = factor * stated[key]
         name = f"{limit} of {joint}" if joint else limit
         text = f"{name}: {_number(sufficient)} {units[key]} (now {_number(stated[key])}) "
@@ -213,6 +218,15 @@ def _hopeless(key: Key, stated: float, unit: str) -> Need:
     text = f"{name}: up to {GROW_SCAN[-1]:g} times the stated {_number(stated)} {unit} is not enough"
     text += ", nor is it with the limits that bind then grown alike"
     return Need(joint, limit, None, None, unit, text)
+
+
+def _used_beyond(grown: Run, first: list[Key], stated: dict[Key, float]) -> list[Key]:
+    """The deciding limits, and those that a motion which passes with all limits grown uses beyond what is stated."""
+    peaks = {(use.limit, use.joint): abs(use.peak) for use in grown.evidence.uses}
+    others = [
+        k for k in stated if k not in first and k[0] not in NEVER_SEARCHED and peaks.get(k, 0.0) > stated[k]
+    ]
+    return [*first, *others]
 
 
 def _all_in_the_way(cell: Cell, first: list[Key], stated: dict[Key, float], runs: Runner) -> list[Key]:
