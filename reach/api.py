@@ -6,7 +6,7 @@ from collections.abc import Callable
 from dataclasses import replace
 from os import PathLike
 from pathlib import Path
-from typing import Literal, get_args
+from typing import Literal, cast, get_args
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -110,9 +110,10 @@ def _settings(cell: Cell, frame: object, point: object) -> Follow:
     if not isinstance(point, tuple) and point not in ("strike", "tip"):
         faults.add("point", "it must be strike, tip, or three finite numbers x, y, z in m in the face frame")
     faults.raise_if_any()
+    read_as: tuple[Frame, Point] = cast(Frame, frame), cast(Point, point)  # both checked above
     if settings is None:
-        return Follow(frame=frame, point=point, commands=NO_LOG)  # type: ignore[arg-type]  # checked above
-    return replace(settings, frame=frame, point=point)  # type: ignore[arg-type]  # checked above
+        return Follow(*read_as, commands=NO_LOG)
+    return replace(settings, frame=read_as[0], point=read_as[1])
 
 
 def write_results(

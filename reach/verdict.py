@@ -47,7 +47,7 @@ def judge(evidence: Evidence, accept: Accept) -> Verdict:
     doubts = _doubts(evidence, accept)
     if failures:
         verdict, grounds = NOT_DELIVERABLE, failures
-        if evidence.failed_steps and not evidence.blocked:
+        if evidence.failed_steps:
             verdict, grounds = UNDECIDED, doubts
     elif doubts:
         verdict, grounds = UNDECIDED, doubts

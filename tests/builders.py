@@ -186,7 +186,7 @@ def robot_cell(name: str, arm: str = "", paddle: str = PADDLE_TOML, rest: str = 
 def following(cell: Cell, t_s: Array, twist: Array, **follow: object) -> Cell:
     """The cell with a command log, world axes, about the strike point."""
     log = CommandLog(np.asarray(t_s), np.asarray(twist), source="made by the test")
-    return replace(cell, follow=Follow("world", "strike", log, **follow))  # type: ignore[arg-type]
+    return replace(cell, follow=Follow("world", "strike", log, **follow))
 
 
 # Limits of the seven-axis research arm FER from its maker's documentation (frankarobotics/docs @5f28326,

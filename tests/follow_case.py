@@ -26,7 +26,7 @@ def limits(**values: float | tuple[float, float]) -> JointLimits:
         name: Bound(*(value if isinstance(value, tuple) else (-value, value)), "invented")
         for name, value in values.items()
     }
-    return JointLimits(**bounds)  # type: ignore[arg-type]
+    return JointLimits(**bounds)
 
 
 def hinge(known: JointLimits | None = None, axis: Array = UPRIGHT, start: float = 0.0, **more: Any) -> Cell:

@@ -118,7 +118,7 @@ def replaced(text: str, old: str, new: str) -> str:
 
 def load(folder: Path, **files: str | bytes) -> Cell:
     """Write and read a cell."""
-    return load_cell(write_cell(folder, **files))  # type: ignore[arg-type]
+    return load_cell(write_cell(folder, **files))
 
 
 def faults_of(folder: Path, **files: str | bytes) -> tuple[Fault, ...]:

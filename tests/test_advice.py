@@ -471,7 +471,7 @@ def bound_by(joint: str, limit: str) -> FollowResult:
     cell = replace(unlimited(robot_cell("bench6")), accept=WIDE)
     for k in range(6):
         cell = limited(cell, k, velocity=30.0, acceleration=1e3, position=6.0)
-    return answer(one_joint(limited(cell, i, **{limit: value}), i, MOVES, LASTS_S, START), advice=False)  # type: ignore[arg-type]
+    return answer(one_joint(limited(cell, i, **{limit: value}), i, MOVES, LASTS_S, START), advice=False)
 
 
 @pytest.mark.parametrize("joint", AT)

@@ -111,7 +111,7 @@ def test_the_point_matters(bare: Cell, by_arrays: reach.FollowResult) -> None:
 @pytest.mark.parametrize("point", [[0.02, 0.0, 0.0], np.array([0.02, 0.0, 0.0])], ids=["list", "array"])
 def test_a_point_may_come_as_list_or_array(bare: Cell, point: object) -> None:
     found = [
-        reach.follow_commands(bare, T_S, TWISTS, strikes=MARKS, frame="world", point=one, advice=False)  # type: ignore[arg-type]
+        reach.follow_commands(bare, T_S, TWISTS, strikes=MARKS, frame="world", point=one, advice=False)
         for one in ((0.02, 0.0, 0.0), point)
     ]
     same_answer(*found)
@@ -197,7 +197,7 @@ BAD_ARRAYS = {
 def test_bad_arrays(bare: Cell, name: str) -> None:
     t_s, twists, where, words = BAD_ARRAYS[name]
     with pytest.raises(reach.InputError) as caught:
-        reach.follow_commands(bare, t_s, twists, frame="world", point="strike", advice=False)  # type: ignore[arg-type]
+        reach.follow_commands(bare, t_s, twists, frame="world", point="strike", advice=False)
     assert any(
         fault.file == "arrays" and fault.where == where and words in fault.what
         for fault in caught.value.faults
@@ -207,7 +207,7 @@ def test_bad_arrays(bare: Cell, name: str) -> None:
 @pytest.mark.parametrize("given", [{}, {"frame": "world"}, {"point": "strike"}], ids=str)
 def test_frame_and_point_are_asked_for(bare: Cell, given: dict[str, str]) -> None:
     with pytest.raises(reach.InputError, match=r"frame.*point"):
-        reach.follow_commands(bare, T_S, TWISTS, **given)  # type: ignore[arg-type]
+        reach.follow_commands(bare, T_S, TWISTS, **given)
 
 
 @pytest.mark.parametrize(
@@ -222,7 +222,7 @@ def test_frame_and_point_are_asked_for(bare: Cell, given: dict[str, str]) -> Non
 )
 def test_a_wrong_frame_or_point_is_refused(bare: Cell, given: dict[str, object]) -> None:
     with pytest.raises(reach.InputError):
-        reach.follow_commands(bare, T_S, TWISTS, advice=False, **given)  # type: ignore[arg-type]
+        reach.follow_commands(bare, T_S, TWISTS, advice=False, **given)
 
 
 def test_no_log_at_all(bare: Cell) -> None:
@@ -237,7 +237,7 @@ def test_no_log_at_all(bare: Cell) -> None:
 @pytest.mark.parametrize("more", [{"strikes": MARKS}, {"poses": np.zeros((31, 7))}], ids=["strikes", "poses"])
 def test_marks_or_poses_without_a_log_are_not_dropped_in_silence(cell: Cell, more: dict[str, object]) -> None:
     with pytest.raises(reach.InputError):
-        reach.follow_commands(cell, advice=False, **more)  # type: ignore[arg-type]
+        reach.follow_commands(cell, advice=False, **more)
 
 
 def test_same_bytes_every_run(cell: Cell, by_file: reach.FollowResult, tmp_path: Path, folder: Path) -> None:

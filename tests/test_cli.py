@@ -369,7 +369,7 @@ def test_failures(
 
 def test_steps_that_no_solver_answers(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     def no_number(_: Solver, problem: QpProblem, name: str) -> tuple[Array, Array, Array]:
-        return tuple(np.full(len(part), np.nan) for part in (problem.q, problem.h, problem.q))  # type: ignore[return-value]
+        return tuple(np.full(len(part), np.nan) for part in (problem.q, problem.h, problem.q))
 
     monkeypatch.setattr(Solver, "attempt", no_number)
     done = call("follow", write_case(tmp_path), "--out", tmp_path / "o", *NO_ADVICE)

@@ -234,7 +234,7 @@ def test_a_verdict_of_its_own() -> None:
 
     def verdict(drive: Drive | None) -> str:
         cell = hinge(wide, drive=drive, accept=WIDE)
-        log = CommandLog(t, hinge_log(cell, t, speed).follow.commands.twist, marks)  # type: ignore[union-attr]
+        log = CommandLog(t, hinge_log(cell, t, speed).follow.commands.twist, marks)
         return answer(replace(cell, follow=Follow("paddle", "strike", log)), advice=False).verdict.verdict
 
     assert verdict(None) == DELIVERABLE == verdict(Drive(0.002, 0.003))

@@ -438,7 +438,7 @@ def drifting(gain: float) -> tuple[Array, Array]:
     t = 0.001 * np.arange(200)
     held = following(replace(cell, arm=replace(cell.arm, start=tuple(off))), t, np.zeros((200, 6)))
     arm = Arm(cell.arm, cell.paddle)
-    follow = replace(held.follow, pose_gain_per_s=gain)  # type: ignore[type-var]
+    follow = replace(held.follow, pose_gain_per_s=gain)
     wanted = arm.pose(START)
     reference = build_reference(held, follow, *wanted)
     sent = roll(held, arm, build_limits(held), reference, off, gain).sent

@@ -229,7 +229,7 @@ TIMES, TWISTS = np.array([0.0, 0.1, 0.2]), np.zeros((3, 6))
 def test_arrays_get_the_same_checks(arguments: dict[str, object], where: str, words: tuple[str, ...]) -> None:
     given: dict[str, object] = {"t_s": TIMES, "twist": TWISTS, "source": "mine"} | arguments
     with pytest.raises(InputError) as caught:
-        check_arrays(**given)  # type: ignore[arg-type]
+        check_arrays(**given)
     expect_fault(caught.value.faults, "mine", where, *words)
 
 

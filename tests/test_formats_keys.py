@@ -68,9 +68,7 @@ def test_keys_of_examples_stand_in_it(path: Path) -> None:
     document = tomllib.loads(path.read_text(encoding="utf-8"))
     words = first_words()
     keys = [
-        key
-        for name, table in document.items()
-        for key in written_keys(table, CELL.keys[name].kind, name)  # type: ignore[arg-type]
+        key for name, table in document.items() for key in written_keys(table, CELL.keys[name].kind, name)
     ]
     assert keys and all(key in words for key in keys)
 

@@ -64,7 +64,7 @@ def logged(frame: str, point: str, noise_m: float = 0.0) -> Cell:
     pose = np.hstack([position, np.roll(Rotation.from_matrix(axes).as_quat(), 1, axis=1)])
     pose[:, :3] += noise_m * np.random.default_rng(1).normal(size=(200, 3))
     log = CommandLog(t, twist, pose=pose)
-    return replace(cell, follow=Follow(frame, point, log))  # type: ignore[arg-type]
+    return replace(cell, follow=Follow(frame, point, log))
 
 
 def differences(frame: str, point: Array, axes: Array) -> Array:

@@ -85,7 +85,7 @@ class Rows:
         self.limited = np.flatnonzero(np.any(known, axis=0))
         self.scale = self._scale(n, period_s)
         self._tool_calm = 0  # steps for which the tool's cap is surely out of reach
-        self._n, self._all, self._period_s = n, len(self.limited) == n, period_s
+        self._all, self._period_s = len(self.limited) == n, period_s
         self._matrix_scale = (self.scale / period_s)[:, None]
         self._signed = np.empty((2, n))
         self.matrix = np.empty((n, n))

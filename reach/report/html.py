@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from reach.evidence.record import Reason, Strike, Use
+from reach.evidence.record import Reason, Use
 from reach.report import needs
 from reach.report.alike import once
 from reach.report.cautions import cautions
@@ -17,12 +17,12 @@ from reach.report.wording import (
     fixed,
     force_unit,
     number,
-    outcome,
     owner,
     percent,
     remedy_line,
     solver_line,
     span,
+    strike_cells,
     tilt_meaning,
     unknown_limits,
 )
@@ -124,22 +124,7 @@ def _strikes(result: FollowResult) -> str:
     missed = [not strike.delivered for strike in strikes]
     guessed = any(not strike.marked for strike in strikes)
     source = paragraph("The contacts are guessed from the command's peaks.") if guessed else ""
-    return table(header, [_strike(strike) for strike in strikes], missed) + source
-
-
-def _strike(strike: Strike) -> tuple[str, ...]:
-    shift = strike.next_contact_shift_m
-    return (
-        fixed(strike.time_s, 3),
-        fixed(strike.commanded_m_s, 3),
-        fixed(strike.delivered_m_s, 3),
-        percent(strike.delivered_share),
-        fixed(strike.lateral_m_s, 3),
-        fixed(strike.tilt_error_deg, 2),
-        fixed(1000 * strike.position_error_m, 2),
-        fixed(None if shift is None else 1000 * shift, 1),
-        outcome(strike),
-    )
+    return table(header, [strike_cells(strike) for strike in strikes], missed) + source
 
 
 def _pictures(result: FollowResult) -> list[str]:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 
-from reach.evidence.record import Reason, Strike, Use
+from reach.evidence.record import Reason, Use
 from reach.report import needs
 from reach.report.alike import alike, with_count
 from reach.report.cautions import cautions
@@ -17,13 +17,13 @@ from reach.report.wording import (
     fixed,
     force_unit,
     number,
-    outcome,
     owner,
     percent,
     plain,
     remedy_line,
     solver_line,
     stated,
+    strike_cells,
     tilt_meaning,
     unknown_limits,
 )
@@ -78,7 +78,7 @@ def _strikes(result: FollowResult) -> list[str]:
     shown = hit if len(hit) <= FIRST_STRIKES + 1 else hit[:FIRST_STRIKES]
     listed = sorted([*shown, *missed[:MISSED_STRIKES]], key=lambda strike: strike.time_s)
     header = ("at s", "commanded", "delivered", "worst %", "lateral", "tilt °", "off mm", "next mm", "result")
-    lines = table(header, [_strike(strike) for strike in listed])
+    lines = table(header, [strike_cells(strike) for strike in listed])
     for count, word in ((len(missed) - MISSED_STRIKES, "missed"), (len(hit) - len(shown), "delivered")):
         if count > 0:
             lines.append(f"  … and {count} more {word}")
@@ -91,21 +91,6 @@ def _strikes(result: FollowResult) -> list[str]:
         lines += wrap("contacts guessed from the command's peaks", "  ")
     meaning = tilt_meaning(result)
     return lines + (wrap(meaning, "  ") if meaning else [])
-
-
-def _strike(strike: Strike) -> tuple[str, ...]:
-    shift = strike.next_contact_shift_m
-    return (
-        fixed(strike.time_s, 3),
-        fixed(strike.commanded_m_s, 3),
-        fixed(strike.delivered_m_s, 3),
-        percent(strike.delivered_share),
-        fixed(strike.lateral_m_s, 3),
-        fixed(strike.tilt_error_deg, 2),
-        fixed(1000 * strike.position_error_m, 2),
-        fixed(None if shift is None else 1000 * shift, 1),
-        outcome(strike),
-    )
 
 
 def _reasons(reasons: list[Reason]) -> list[str]:

@@ -99,6 +99,22 @@ def outcome(strike: Strike) -> str:
     return f"missed: {text}"
 
 
+def strike_cells(strike: Strike) -> tuple[str, ...]:
+    """Return a strike's row of the strikes table: speeds in m/s, tilt in degrees, distances in mm, and how it ended."""
+    shift = strike.next_contact_shift_m
+    return (
+        fixed(strike.time_s, 3),
+        fixed(strike.commanded_m_s, 3),
+        fixed(strike.delivered_m_s, 3),
+        percent(strike.delivered_share),
+        fixed(strike.lateral_m_s, 3),
+        fixed(strike.tilt_error_deg, 2),
+        fixed(1000 * strike.position_error_m, 2),
+        fixed(None if shift is None else 1000 * shift, 1),
+        outcome(strike),
+    )
+
+
 def remedy_line(remedy: Remedy) -> str:
     """Return a change, what it does, and whether a run has shown it."""
     return f"{remedy.change}: {remedy.effect} ({'verified by a run' if remedy.verified else 'not verified'})"
