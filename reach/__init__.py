@@ -17,11 +17,13 @@ from typing import TYPE_CHECKING
 if TYPE_CHECKING:
     from reach.api import describe_cell as describe_cell
     from reach.api import follow_commands as follow_commands
+    from reach.api import survey_strikes as survey_strikes
     from reach.api import write_results as write_results
     from reach.cell import Cell as Cell
     from reach.errors import InputError as InputError
     from reach.formats import load_cell as load_cell
     from reach.result import FollowResult as FollowResult
+    from reach.result import SurveyResult as SurveyResult
 
 __version__ = "0.1.0"
 
@@ -29,9 +31,11 @@ _HOMES = {
     "Cell": "reach.cell",
     "FollowResult": "reach.result",
     "InputError": "reach.errors",
+    "SurveyResult": "reach.result",
     "describe_cell": "reach.api",
     "follow_commands": "reach.api",
     "load_cell": "reach.formats",
+    "survey_strikes": "reach.api",
     "write_results": "reach.api",
 }
 

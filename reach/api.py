@@ -1,4 +1,4 @@
-"""The library's verbs: follow a log, describe a cell, write what came out."""
+"""The library's verbs: follow a log, survey strikes, describe a cell, write what came out."""
 
 from __future__ import annotations
 
@@ -11,12 +11,13 @@ from typing import Literal, cast, get_args
 import numpy as np
 from numpy.typing import ArrayLike
 
-from reach.advice.answer import answer
+from reach.advice.answer import answer as follow_answer
 from reach.cell import Cell, CommandLog, Follow, Vec3
 from reach.describe import describe_cell as describe_cell
 from reach.errors import Fault, FaultList, InputError
 from reach.formats import check_arrays, check_span
-from reach.result import FollowResult
+from reach.result import FollowResult, Result, SurveyResult
+from reach.survey.answer import answer as survey_answer
 
 Frame = Literal["world", "base", "paddle"]
 Point = Literal["strike", "tip"] | Vec3
@@ -78,6 +79,10 @@ def follow_commands(
         )
     if not arrays and cell.follow is None:
         raise InputError([Fault(cell.path, "follow", "the cell has no [follow] table; give t_s and twists")])
+    if cell.follow is None and cell.arm.start is None:
+        raise InputError(
+            [Fault(cell.path, "arm.start_rad", "missing; give the posture that the log starts from")]
+        )
     settings = _settings(cell, frame, point)
     if t_s is not None and twists is not None:
         gaps = (settings.max_gap_s, settings.time_faults)
@@ -85,7 +90,41 @@ def follow_commands(
         check_span(log, cell.period_s, faults, "t_s")
         faults.raise_if_any()
         settings = replace(settings, commands=log)
-    return answer(replace(cell, follow=settings), workers, advice, progress, seed)
+    return follow_answer(replace(cell, follow=settings), workers, advice, progress, seed)
+
+
+def survey_strikes(
+    cell: Cell,
+    *,
+    workers: int = 1,
+    seed: int = 0,
+    advice: bool = True,
+    progress: Callable[[str], None] | None = None,
+) -> SurveyResult:
+    """Say where a cell's arm can strike, and how fast, at every strike of its [survey] table.
+
+    Parameters
+    ----------
+    cell : Cell
+        From `load_cell`.
+    workers, seed, progress
+        As for `follow_commands`; the answer is the same for any number of workers.
+    advice : bool
+        False leaves out the searches (remedies, headroom), which take most of the time.
+
+    Returns
+    -------
+    SurveyResult
+        After an interrupt with what was done until then, the rest undecided.
+
+    Raises
+    ------
+    InputError
+        Where the cell has no [survey] table.
+    """
+    if cell.survey is None:
+        raise InputError([Fault(cell.path, "survey", "the cell has no [survey] table")])
+    return survey_answer(cell, workers, advice, progress, seed)
 
 
 def _settings(cell: Cell, frame: object, point: object) -> Follow:
@@ -117,9 +156,9 @@ def _settings(cell: Cell, frame: object, point: object) -> Follow:
 
 
 def write_results(
-    result: FollowResult, folder: str | PathLike[str], junit: str | PathLike[str] | None = None
+    result: Result, folder: str | PathLike[str], junit: str | PathLike[str] | None = None
 ) -> list[Path]:
-    """Write verdict.json, motion.csv, report.html and evidence/ into a folder, each whole or not at all.
+    """Write verdict.json, motion.csv or survey.csv, report.html and evidence/ into a folder, each whole or not at all.
 
     `junit` names one more file, in JUnit's XML.
 

@@ -149,7 +149,7 @@ class Arm:
         out = np.zeros((self.n, len(q)), order="F")
         columns = [np.asfortranarray(x.T) for x in (q, v, a)]
         pin.rneaInParallel(1, pin.ModelPool(self._model, 1), *columns, out)
-        return np.asarray(out.T + self._losses(v))
+        return np.asarray(out.T + self.losses(v))
 
     def base_wrench(self, q: Array, v: Array, a: Array) -> Array:
         """The wrench (m, 6) that the stand must give to the arm's moving part in m states (m, n).
@@ -176,6 +176,15 @@ class Arm:
         """Torque (n,) in N·m that holds posture q (n,) still."""
         return np.asarray(pin.rnea(self._model, self._scratch, q, np.zeros(self.n), np.zeros(self.n))).copy()
 
+    def inertia_diagonals(self, q: Array) -> Array:
+        """What each joint feels by itself (m, n), kg·m², in postures (m, n), rotor inertia included."""
+        return np.array([np.diagonal(self.inertia(x)) for x in q]).reshape(q.shape)
+
+    def inertia(self, q: Array) -> Array:
+        """Joint-space inertia (n, n) in kg·m² at posture q (n,), reflected rotor inertia included."""
+        upper = np.triu(pin.crba(self._model, self._scratch, q))
+        return np.asarray(upper + np.triu(upper, 1).T)
+
     def chain(self) -> list[tuple[Array, Array, Array]]:
         """For each joint: rotation (3, 3) and offset (3,) from the joint before, and its axis (3,)."""
         pin.computeJointJacobians(self._model, self._scratch, np.zeros(self.n))
@@ -198,7 +207,8 @@ class Arm:
         inertias = [inertia.mass for inertia in self._model.inertias][1:]
         return float(sum(inertias)), float(inertias[-1])
 
-    def _losses(self, v: Array) -> Array:
+    def losses(self, v: Array) -> Array:
+        """Damping and dry friction (m, n) in N·m at joint velocities (m, n)."""
         losses = self.damping * v
         if self._rubs:
             losses += self.friction * np.tanh(v / self._friction_width)

@@ -281,11 +281,58 @@ class Follow:
     time_faults: Literal["refuse", "mend"] = "refuse"
 
 
+@dataclass(frozen=True, eq=False)
+class Survey:
+    """Strikes to be tried: every face at every point of a box, or a list of strikes.
+
+    Attributes
+    ----------
+    box_m : two corners, low and high; None where strikes are listed
+    spacing_m : of the points, from the low corner on
+    listed : (k, 3) points of listed strikes, row k with face k; None for a box
+    normals, directions : (k, 3) unit vectors, world axes: face normal and direction of the strike
+    speeds_m_s : (k,) required paddle speed along the normal
+    ball_in_m_s : the incoming ball's velocity where the cell gives it
+    rotation : whether the paddle may turn at the strike
+    run_up_m : paddle travel allowed before and after the strike; None: joint travel alone
+    required_share : of the strikes
+    exact : the full optimisation at every point
+    max_points : largest number of strikes
+    """
+
+    box_m: tuple[Vec3, Vec3] | None
+    spacing_m: float
+    listed: Array | None
+    normals: Array
+    directions: Array
+    speeds_m_s: Array
+    ball_in_m_s: Vec3 | None = None
+    rotation: Literal["still", "free"] = "still"
+    run_up_m: float | None = None
+    required_share: float = 1.0
+    exact: bool = False
+    max_points: int = 2_000_000
+
+    @property
+    def counts(self) -> tuple[int, int, int]:
+        """Points of the box along x, y and z; a hair over the last one still counts."""
+        if self.box_m is None:
+            return (0, 0, 0)
+        x, y, z = (int((hi - lo) / self.spacing_m + 1e-9) + 1 for lo, hi in zip(*self.box_m, strict=True))
+        return x, y, z
+
+    @property
+    def size(self) -> int:
+        """How many strikes."""
+        x, y, z = self.counts
+        return len(self.normals) * (x * y * z if self.listed is None else 1)
+
+
 @dataclass(frozen=True)
 class Cell:
     """A whole cell file, checked.
 
-    `follow` is None where the file has no [follow] table. `inputs` are the files read; `notes` are things
+    `follow` and `survey` are None where the file has no such table. `inputs` are the files read; `notes` are things
     the readers found worth saying that are no faults (a limit ignored, a joint held at zero by default).
     """
 
@@ -301,5 +348,6 @@ class Cell:
     margins: Margins = Margins()
     accept: Accept = Accept()
     follow: Follow | None = None
+    survey: Survey | None = None
     inputs: tuple[Input, ...] = ()
     notes: tuple[str, ...] = ()

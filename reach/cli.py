@@ -9,9 +9,13 @@ import sys
 import traceback
 from collections.abc import Callable, Sequence
 from pathlib import Path
+from typing import TYPE_CHECKING, Literal
 
 from reach import __version__
 from reach.errors import ReachError
+
+if TYPE_CHECKING:
+    from reach.result import Result
 
 EXITS = """exit codes:
   0  deliverable          1  not deliverable      2  bad input, nothing written
@@ -65,16 +69,29 @@ def _parser() -> argparse.ArgumentParser:
     describe = commands.add_parser("describe", help="what did you understand of this cell?")
     describe.add_argument("cell", metavar="CELL", help="the cell file (TOML)")
     describe.set_defaults(run=_describe)
-    follow = commands.add_parser(
-        "follow",
-        help="can this arm deliver these paddle commands? if not: what, when, which limit, what would help",
-        epilog=EXITS,
-        formatter_class=argparse.RawDescriptionHelpFormatter,
-    )
-    follow.add_argument("cell", metavar="CELL", help="the cell file (TOML), with a [follow] table")
-    follow.add_argument("--no-advice", action="store_true", help="leave out headroom, needs and remedies")
-    _common(follow, "follow")
-    follow.set_defaults(run=_follow)
+    for name, run, without, told, needed in (
+        (
+            "follow",
+            _follow,
+            "leave out headroom, needs and remedies",
+            "can this arm deliver these paddle commands? if not: what, when, which limit, what would help",
+            "with a [follow] table",
+        ),
+        (
+            "survey",
+            _survey,
+            "leave out headroom and remedies",
+            "where can it strike, and how fast? which regions and speeds can it not deliver?",
+            "with a [survey] table",
+        ),
+    ):
+        command = commands.add_parser(
+            name, help=told, epilog=EXITS, formatter_class=argparse.RawDescriptionHelpFormatter
+        )
+        command.add_argument("cell", metavar="CELL", help=f"the cell file (TOML), {needed}")
+        command.add_argument("--no-advice", action="store_true", help=without)
+        _common(command, name)
+        command.set_defaults(run=run)
     return parser
 
 
@@ -125,12 +142,27 @@ def _describe(options: argparse.Namespace) -> int:
 
 
 def _follow(options: argparse.Namespace) -> int:
-    from reach import follow_commands, load_cell, write_results
+    from reach import follow_commands
+
+    return _answered(options, "follow", follow_commands)
+
+
+def _survey(options: argparse.Namespace) -> int:
+    from reach import survey_strikes
+
+    return _answered(options, "survey", survey_strikes)
+
+
+def _answered(
+    options: argparse.Namespace, command: Literal["follow", "survey"], verb: Callable[..., Result]
+) -> int:
+    """Load the cell, ask, write what came out, show it; returns the exit code."""
+    from reach import load_cell, write_results
     from reach.report import WRITERS, check_targets
 
-    cell = load_cell(options.cell, need_follow=True)
+    cell = load_cell(options.cell, need=command)
     check_targets(Path(options.out), options.junit, [options.cell, *(item.path for item in cell.inputs)])
-    result = follow_commands(
+    result = verb(
         cell,
         workers=options.workers,
         seed=options.seed,
@@ -139,11 +171,11 @@ def _follow(options: argparse.Namespace) -> int:
     )
     written = write_results(result, options.out, options.junit)
     if options.json:
-        print(WRITERS["json"](result), end="")
+        print(WRITERS[command]["json"](result), end="")
     elif not options.quiet:
-        print(WRITERS["text"](result), end="")
+        print(WRITERS[command]["text"](result), end="")
         print(f"\nwritten: {', '.join(str(path) for path in written)}")
-    return 4 if result.evidence.failed_steps else result.verdict.exit_code
+    return 4 if result.failed else result.verdict.exit_code
 
 
 def _progress(quiet: bool) -> Callable[[str], None] | None:

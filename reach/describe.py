@@ -9,10 +9,10 @@ import numpy as np
 from reach.advice.reading import better_reading, reading_in_words, stamp_statistics
 from reach.arm import Arm
 from reach.cell import Array, Bound, Cell
-from reach.follow.bench import build_limits, not_checked
 from reach.follow.contacts import aslant, contacts
 from reach.follow.reference import build_reference
 from reach.limits.base import Limit
+from reach.limits.build import build_limits, not_checked
 from reach.paddle import paddle_mass
 from reach.report.alike import once
 

@@ -1,45 +1,103 @@
-"""The frozen result of `follow`: the question, the evidence, the verdict and what would help."""
+"""The frozen results of the commands: the question, the evidence, the verdict and what would help."""
 
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import ClassVar
 
 from reach.cell import Cell
+from reach.evidence.points import SurveyEvidence
 from reach.evidence.record import Evidence, Need, Reason, Remedy, SolverCount
 from reach.verdict import Verdict
 
 
-@dataclass(frozen=True, eq=False)
-class FollowResult:
-    """Everything a report needs.
+@dataclass(frozen=True, eq=False, kw_only=True)
+class Result:
+    """What every command's answer has.
 
     Attributes
     ----------
-    cell : Cell, the log in it
-    reading : how frame, point and interpolation of the log were read, in words
-    evidence : Evidence
+    command : the command's own name
+    cell : Cell, the question
     verdict : Verdict
     without_margins : the verdict with the margins at zero
-    without_pose_gain : the verdict of a plain replay where the cell asks for pose feedback, else None
     reasons : deciding ones first
     needs, remedies : in the order in which a user can act on them
     headroom_share : how much all limits but position could shrink together beyond the margins and still deliver;
         negative where they must grow; None where no factor tried does
     headroom_text : the same in words
-    solver : SolverCount
+    not_checked : names of what was not checked at all
+    failed : whether a solver failed, so that the verdict can't be trusted
     notes : what else is worth saying, a line each
     """
 
+    command: ClassVar[str]
+
     cell: Cell
-    reading: str
-    evidence: Evidence
     verdict: Verdict
     without_margins: str
-    without_pose_gain: str | None
     reasons: tuple[Reason, ...]
     needs: tuple[Need, ...]
     remedies: tuple[Remedy, ...]
     headroom_share: float | None
     headroom_text: str
-    solver: SolverCount
     notes: tuple[str, ...]
+
+    @property
+    def not_checked(self) -> tuple[str, ...]:
+        """Names of what was not checked at all."""
+        raise NotImplementedError
+
+    @property
+    def failed(self) -> bool:
+        """Whether a solver failed, so that the verdict can't be trusted."""
+        return False
+
+
+@dataclass(frozen=True, eq=False, kw_only=True)
+class FollowResult(Result):
+    """The answer on a command log, the log in its cell.
+
+    Attributes
+    ----------
+    reading : how frame, point and interpolation of the log were read, in words
+    evidence : Evidence
+    without_pose_gain : the verdict of a plain replay where the cell asks for pose feedback, else None
+    solver : SolverCount
+    """
+
+    command: ClassVar[str] = "follow"
+
+    reading: str
+    evidence: Evidence
+    without_pose_gain: str | None
+    solver: SolverCount
+
+    @property
+    def not_checked(self) -> tuple[str, ...]:
+        """Names of what was not checked at all."""
+        return self.evidence.not_checked
+
+    @property
+    def failed(self) -> bool:
+        """Whether a step was answered by no solver."""
+        return self.evidence.failed_steps > 0
+
+
+@dataclass(frozen=True, eq=False, kw_only=True)
+class SurveyResult(Result):
+    """The answer on where the arm can strike, and how fast.
+
+    Attributes
+    ----------
+    evidence : SurveyEvidence
+    """
+
+    command: ClassVar[str] = "survey"
+
+    evidence: SurveyEvidence
+
+    @property
+    def not_checked(self) -> tuple[str, ...]:
+        """Names of what was not checked at all."""
+        return self.evidence.not_checked

@@ -3,9 +3,11 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Iterable
 from dataclasses import dataclass
 
 from reach.cell import Accept
+from reach.evidence.points import SurveyEvidence
 from reach.evidence.record import Evidence, Use
 
 ROUNDING = 1e-6  # of a limit: a use above 1 by less is rounding
@@ -83,11 +85,7 @@ def _doubts(evidence: Evidence, accept: Accept) -> list[str]:
     found = []
     if evidence.failed_steps:
         found.append(f"{evidence.failed_steps} steps that no solver answered")
-    for limit in accept.require:
-        joints = [joint for name, joint in evidence.unknown if name == limit]
-        if joints:
-            named = ", ".join(str(joint) for joint in joints if joint)
-            found.append(f"{limit} unknown" + (f" for {named}" if named else ""))
+    found += unknown_required(evidence.unknown, accept)
     if evidence.guessed:
         found.append('contacts guessed from the command\'s peaks; accept them with strikes = "guessed-ok"')
     return found
@@ -100,15 +98,64 @@ def _merits(evidence: Evidence) -> list[str]:
     return ["tracked throughout"]
 
 
+def unknown_required(unknown: Iterable[tuple[str, str | None]], accept: Accept) -> list[str]:
+    """What must be known for a "deliverable" and is not, in words."""
+    found = []
+    for limit in accept.require:
+        joints = [joint for name, joint in unknown if name == limit]
+        if joints:
+            named = ", ".join(str(joint) for joint in joints if joint)
+            found.append(f"{limit} unknown" + (f" for {named}" if named else ""))
+    return found
+
+
+def judge_survey(evidence: SurveyEvidence, required_share: float, accept: Accept) -> Verdict:
+    """Judge a survey by the share of its strikes that are deliverable.
+
+    Not deliverable: so many strikes are not that the share can't be reached. Undecided: the strikes left open,
+    for an unknown limit too, could still reach it.
+    """
+    verdicts = evidence.points.verdict
+    total = len(verdicts)
+    done, lost = (int((verdicts == word).sum()) for word in (DELIVERABLE, NOT_DELIVERABLE))
+    needed = math.ceil(required_share * total - 1e-9)
+    if done >= needed:
+        verdict = DELIVERABLE
+    elif total - lost < needed:
+        verdict = NOT_DELIVERABLE
+    else:
+        verdict = UNDECIDED
+    grounds = [f"{done} of {total} strikes deliverable, {lost} not, {total - done - lost} undecided"]
+    grounds.append(f"required {100 * required_share:g} %")
+    if verdict == UNDECIDED:
+        grounds += unknown_required(evidence.unknown, accept)
+    if evidence.stopped:
+        grounds.append("stopped before all were looked at")
+    sentence = _worded(verdict, grounds, evidence.kinds, evidence.unknown, evidence.not_checked)
+    return Verdict(verdict, sentence, tuple(grounds))
+
+
 def _sentence(verdict: str, grounds: list[str], evidence: Evidence) -> str:
     kinds = list(dict.fromkeys(use.limit for use in evidence.uses))
-    unknown = {limit for limit, _ in evidence.unknown}
-    checked = [kind for kind in kinds if kind not in unknown]
+    return _worded(verdict, grounds, kinds, evidence.unknown, evidence.not_checked)
+
+
+def _worded(
+    verdict: str,
+    grounds: list[str],
+    kinds: Iterable[str],
+    unknown: Iterable[tuple[str, str | None]],
+    not_checked: Iterable[str],
+) -> str:
+    """The verdict in words, with how many kinds of limit were checked and what was not."""
+    kinds, lacking = list(kinds), {limit for limit, _ in unknown}
+    checked = [kind for kind in kinds if kind not in lacking]
     if verdict == DELIVERABLE:
         text = f"{verdict} on {len(checked)} of {len(kinds)} limits: {'; '.join(grounds)}"
     else:
         text = f"{verdict}: {'; '.join(grounds)}"
         text += f"; {len(checked)} of {len(kinds)} limits checked" if kinds else ""
-    if evidence.not_checked:
-        text += f"; not checked: {', '.join(evidence.not_checked)}"
+    left = list(not_checked)
+    if left:
+        text += f"; not checked: {', '.join(left)}"
     return text

@@ -101,11 +101,23 @@ LOG = """t_s,vx_m_s,vy_m_s,vz_m_s,wx_rad_s,wy_rad_s,wz_rad_s,strike
 """
 
 
+STRIKES = """x_m,y_m,z_m,nx,ny,nz,paddle_speed_m_s,dx,dy,dz
+0.3,0,0.5,0,0,2,1.0,0,0,1
+0.4,-0.1,0.5,0.6,0,0.8,0.5,0,3,4
+"""
+
+
 def write_cell(
-    folder: Path, cell: str = CELL, urdf: str | bytes = URDF, limits: str = LIMITS, log: str | bytes = LOG
+    folder: Path,
+    cell: str | bytes = CELL,
+    urdf: str | bytes = URDF,
+    limits: str | bytes = LIMITS,
+    log: str | bytes = LOG,
+    strikes: str | bytes = STRIKES,
 ) -> Path:
-    """Write the four files and return the cell's path."""
-    for name, content in (("cell.toml", cell), ("arm.urdf", urdf), ("limits.toml", limits), ("log.csv", log)):
+    """Write the files and return the cell's path."""
+    names = ("cell.toml", "arm.urdf", "limits.toml", "log.csv", "strikes.csv")
+    for name, content in zip(names, (cell, urdf, limits, log, strikes), strict=True):
         (folder / name).write_bytes(content if isinstance(content, bytes) else content.encode())
     return folder / "cell.toml"
 

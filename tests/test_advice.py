@@ -32,7 +32,14 @@ from reach.advice.needs import ALONE
 from reach.advice.needs import RESOLUTION as NEED_RESOLUTION
 from reach.advice.remedies import RESOLUTION as REMEDY_RESOLUTION
 from reach.advice.search import HOLD, Runner, least_passing, least_that_holds
-from reach.advice.variants import (
+from reach.arm import Arm
+from reach.cell import Accept, Array, Cell, CommandLog, Paddle, Pose, SolverSpec
+from reach.evidence.record import Need, Remedy
+from reach.follow.bench import run
+from reach.follow.reference import build_reference
+from reach.follow.step import task_weight
+from reach.result import FollowResult
+from reach.variants import (
     lighter,
     raised_base,
     scaled_limits,
@@ -41,13 +48,6 @@ from reach.advice.variants import (
     with_bounds,
     with_position_range,
 )
-from reach.arm import Arm
-from reach.cell import Accept, Array, Cell, CommandLog, Paddle, Pose, SolverSpec
-from reach.evidence.record import Need, Remedy
-from reach.follow.bench import run
-from reach.follow.reference import build_reference
-from reach.follow.step import task_weight
-from reach.result import FollowResult
 from reach.verdict import DELIVERABLE, NOT_DELIVERABLE, UNDECIDED
 
 G = 9.80665

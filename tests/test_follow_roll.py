@@ -31,13 +31,14 @@ from reach.arm import Arm
 from reach.cell import Array, Cell, CommandLog, Follow, Pose
 from reach.evidence.motion import FINE, Motion
 from reach.follow import roll as roll_module
-from reach.follow.bench import build_limits, run
+from reach.follow.bench import run
 from reach.follow.reference import Reference, build_reference
 from reach.follow.roll import roll
 from reach.follow.rolled import Roll
 from reach.follow.rows import Rows
 from reach.follow.step import BLOCK, Stepper
 from reach.kinematics import Chain
+from reach.limits.build import build_limits
 from reach.qp.backends import Solver
 from reach.verdict import NOT_DELIVERABLE, UNDECIDED
 

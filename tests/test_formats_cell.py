@@ -113,6 +113,7 @@ def test_every_section(tmp_path: Path) -> None:
     assert cell.margins.torque_share == 0.0
     assert cell.accept.strike_tilt_error_rad == pytest.approx(math.radians(2))
     assert cell.accept.require == ("position",)
+    assert cell.survey is not None and cell.survey.exact and cell.survey.max_points == 10
 
 
 def test_defaults_are_those_of_the_contract(tmp_path: Path) -> None:
@@ -229,17 +230,6 @@ BAD_SECTIONS = [
         "contact.restitution_at[0]",
         ("at most 1",),
     ),
-    ("[survey]\n", "survey.box_m", ("missing",)),
-    ("[survey]\nbox_m = [[0, 0, 1], [0, 0, 0]]\n", "survey.box_m", ("z goes from 1 down to 0",)),
-    ("[survey]\nbox_m = [[0, 0, 0], [0, 0, 0]]\nnormals = [[0, 0, 0]]\n", "survey.normals[0]", ("zero",)),
-    ("[survey]\nbox_m = [[0, 0, 0], [0, 0, 0]]\nexact = 1\n", "survey.exact", ("true or false",)),
-    ("[survey]\nbox_m = [[0, 0, 0], [0, 0, 0]]\nmax_points = 1.5\n", "survey.max_points", ("whole",)),
-    ("[survey]\nbox_m = [[0, 0, 0], [0, 0, 0]]\nball_in_m_s = [0, 0, 1]\n", "survey.ball_in_m_s", ("both",)),
-    (
-        "[survey]\nbox_m = [[0, 0, 0], [0, 0, 0]]\nbearings_deg = [0]\n",
-        "survey.bearings_deg",
-        ("face_tilts",),
-    ),
     ("[rally]\ncentre_m = [0, 0, 0]\napexes_m = []\n", "rally.apexes_m", ("at least 1",)),
     ("[rally]\napexes_m = [1]\n", "rally.centre_m", ("missing",)),
     ("[trial]\nstarts = { ofsets_m = [0] }\n", "trial.starts.ofsets_m", ('did you mean "offsets_m"',)),
@@ -349,7 +339,7 @@ def test_follow_table_can_be_needed(tmp_path: Path) -> None:
     path = write_cell(tmp_path, cell=CELL[: CELL.index("[follow]")])
     assert load_cell(path).follow is None
     with pytest.raises(InputError) as caught:
-        load_cell(path, need_follow=True)
+        load_cell(path, need="follow")
     only_fault(caught.value.faults, "cell.toml", "follow", "missing", "[follow]")
 
 

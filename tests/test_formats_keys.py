@@ -10,10 +10,11 @@ from typing import Any
 import pytest
 
 from reach.formats import keys_text
-from reach.formats.commands_csv import KNOWN
+from reach.formats.commands_csv import COLUMNS
 from reach.formats.keys import WIDTH
 from reach.formats.kinds import ByName, ListOf, Table
 from reach.formats.schema import CELL, LIMIT_KEYS
+from reach.formats.strikes_csv import COLUMNS as STRIKES
 
 EXAMPLES = sorted((Path(__file__).parents[1] / "examples").glob("*/*.toml"))
 
@@ -53,8 +54,9 @@ def test_every_key_stands_once() -> None:
 
 
 def test_every_column_stands_in_it() -> None:
-    columns = keys_text().partition("COMMAND LOG")[2].replace(",", " ").split()
-    assert set(KNOWN) <= set(columns)
+    log, _, strikes = keys_text().partition("COMMAND LOG")[2].partition("FILE OF STRIKES")
+    assert set(COLUMNS.known) <= set(log.replace(",", " ").split())
+    assert set(STRIKES.known) <= set(strikes.replace(",", " ").split())
 
 
 def test_width() -> None:
@@ -84,6 +86,7 @@ def test_examples_are_found() -> None:
         ("paddle.shape", 'one of "disc", "plate", "given"; default "disc"'),
         ("arm.urdf", "must be given"),
         ("survey.exact", "true or false; default false"),
+        ("survey.max_points", "whole number of at least 1 and at most 10000000; default 2000000"),
         ("follow.point", 'one of "strike", "tip"; or list of 3 numbers'),
         ("accept.require", 'default ["position", "velocity", "torque", "torque rate"]'),
         ("paddle.part", "tables [[paddle.part]], at most 1000"),
@@ -97,6 +100,7 @@ def test_what_a_key_takes(key: str, words: str) -> None:
 
 def test_unused_sections_say_so() -> None:
     text = " ".join(keys_text().split())
-    for section in ("survey", "rally", "trial"):
+    for section in ("rally", "trial"):
         start = text.index(f"[{section}] ")
         assert "checked, used by no command of this version" in text[start : start + 150]
+    assert "used by no command" not in text[text.index("[survey] ") : text.index("[rally] ")]

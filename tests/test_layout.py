@@ -21,9 +21,9 @@ PACKAGE = TOP / "reach"
 
 # Low to high: a module imports from its own level or a lower one. The longest entry that fits counts.
 LEVELS = (
-    ("errors",),
+    ("errors", "workers"),
     ("cell",),
-    ("paddle",),
+    ("paddle", "ball", "variants"),
     ("arm",),
     ("kinematics", "posture"),
     ("limits",),
@@ -31,7 +31,8 @@ LEVELS = (
     ("verdict",),
     ("result",),
     ("qp",),
-    ("follow",),
+    ("strike",),
+    ("survey", "follow"),
     ("advice",),
     ("formats",),
     ("report",),
@@ -46,10 +47,11 @@ ALONE = {
     "errors": (),
     "cell": ("errors",),
     "paddle": ("cell", "errors"),
-    "verdict": ("cell", "evidence.record"),
-    "formats": ("cell", "errors"),
+    "verdict": ("cell", "evidence.record", "evidence.points"),
+    "ball": ("cell", "errors"),
+    "formats": ("cell", "errors", "ball"),
     "qp": ("cell", "errors"),
-    "report": ("cell", "errors", "evidence.record", "evidence.motion", "verdict", "result"),
+    "report": ("cell", "errors", "evidence.record", "evidence.motion", "evidence.points", "verdict", "result"),
 }
 
 # The one module that imports each of these.

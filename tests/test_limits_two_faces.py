@@ -14,7 +14,6 @@ from reach.arm import Arm, State
 from reach.cell import Cell, Joint, Margins
 from reach.evidence.measure import measure
 from reach.evidence.motion import FINE, Motion
-from reach.follow.bench import build_limits
 from reach.follow.reference import build_reference
 from reach.follow.roll import roll
 from reach.follow.rolled import Roll, now_at
@@ -22,6 +21,7 @@ from reach.follow.rows import Rows
 from reach.kinematics import Chain
 from reach.limits import LIMITS
 from reach.limits.base import Fine, Limit, Now
+from reach.limits.build import build_limits
 from reach.qp.problem import QpProblem
 
 PLANNED = [name for name, kind in LIMITS.items() if kind.family != "none"]

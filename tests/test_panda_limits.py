@@ -9,8 +9,9 @@ import pytest
 from builders import FER, NO_MARGINS, fer_cell, following
 
 from reach.cell import Bound, Cell
-from reach.follow.bench import build_limits, run
+from reach.follow.bench import run
 from reach.limits.base import Fine
+from reach.limits.build import build_limits
 
 # The table is in builders.FER, with its source: frankarobotics/docs @5f28326 and libfranka @6474466.
 BOTH_WAYS = ("velocity", "acceleration", "jerk", "torque", "torque_rate")

@@ -12,10 +12,10 @@ from scipy.optimize import linprog, lsq_linear
 from reach.arm import Arm, State
 from reach.cell import Bound, Cell, Joint, JointLimits, SolverSpec
 from reach.errors import SolverFailure
-from reach.follow.bench import build_limits
 from reach.follow.direction import same_direction
 from reach.follow.step import CALM_WEIGHT, POSTURE_WEIGHT, Step, Stepper, task_weight
 from reach.limits.base import Brake, Now
+from reach.limits.build import build_limits
 from reach.qp.backends import BACKENDS, Solver
 from reach.qp.problem import KKT_TOLERANCE, PRIMAL_TOLERANCE, QpBlock, QpProblem, QpStatus, residuals
 

@@ -37,19 +37,22 @@ from reach.evidence.record import (
     Track,
     Use,
 )
-from reach.report import WRITERS, write_files, write_folder
+from reach.report import WRITERS as ALL_WRITERS
+from reach.report import write_files, write_folder
 from reach.report.alike import once
 from reach.report.columns import width, wrap
-from reach.report.csv import quaternions
 from reach.report.document import document, versions
-from reach.report.evidence import evidence_files
+from reach.report.follow.csv import quaternions
+from reach.report.follow.evidence import evidence_files
+from reach.report.follow.series import keep, keep_way, shares
+from reach.report.follow.wording import demand_note, tilt_meaning
 from reach.report.page import table
-from reach.report.series import keep, keep_way, shares
-from reach.report.wording import all_notes, demand_note, number, plain, span, tilt_meaning
+from reach.report.wording import all_notes, number, plain, span
 from reach.result import FollowResult
 from reach.verdict import judge
 
 NAMES = ("a b", '<b>"x"&\'', "关节$1_{}^")
+WRITERS = ALL_WRITERS["follow"]
 PERIOD_S = 0.001
 KINDS = (  # name, unit, stated limit, share kept; all invented
     ("position", "rad", 2.9, 0.999),
@@ -182,7 +185,11 @@ def made_strikes(track: Track, count: int = 2) -> tuple[Strike, ...]:
 
 def made_cell(names: tuple[str, ...]) -> Cell:
     """A cell with those joints."""
-    limits = JointLimits(velocity=Bound(-2.6, 2.6, "invented"), position=Bound(-np.inf, np.inf, "continuous"))
+    limits = JointLimits(
+        velocity=Bound(-2.6, 2.6, "invented"),
+        position=Bound(-np.inf, np.inf, "continuous"),
+        torque=Bound(-87.0, 87.0, "invented"),
+    )
     joints = tuple(Joint(name, "revolute", limits) for name in names)
     log = CommandLog(np.array([0.0, 1.0]), np.zeros((2, 6)))
     return Cell(
@@ -220,22 +227,25 @@ def made_result(names: tuple[str, ...] = NAMES, seconds: float = 3.0, strikes: i
     )
     reason = f"torque of {names[1]} stops it from 1.900 s to 2.100 s"
     return FollowResult(
-        cell,
-        "twist in world axes, of the strike point, held between samples",
-        evidence,
-        judge(evidence, cell.accept),
-        "not deliverable",
-        "undecided",
-        (
+        cell=cell,
+        reading="twist in world axes, of the strike point, held between samples",
+        evidence=evidence,
+        verdict=judge(evidence, cell.accept),
+        without_margins="not deliverable",
+        without_pose_gain="undecided",
+        reasons=(
             Reason(True, "torque", names[1], "impact", 1.9, 2.1, 88.0, 87.0, "N·m", "demonstrated", reason),
             replace(SHORTFALL, joint=names[0]),
         ),
-        (Need(names[1], "torque", 90.0, float("inf"), "N·m", f"{names[1]} needs 90 N·m"),),
-        (Remedy(f"lighter paddle at {names[1]}", "2 of 2 strikes", True), Remedy("slower", "1 of 2", False)),
-        -0.07,
-        "limits would have to grow by 7 %",
-        SolverCount("daqp", "piqp", len(motion.q), 12, 0, 1),
-        ("note with <i>markup</i>",),
+        needs=(Need(names[1], "torque", 90.0, float("inf"), "N·m", f"{names[1]} needs 90 N·m"),),
+        remedies=(
+            Remedy(f"lighter paddle at {names[1]}", "2 of 2 strikes", True),
+            Remedy("slower", "1 of 2", False),
+        ),
+        headroom_share=-0.07,
+        headroom_text="limits would have to grow by 7 %",
+        solver=SolverCount("daqp", "piqp", len(motion.q), 12, 0, 1),
+        notes=("note with <i>markup</i>",),
     )
 
 
@@ -324,7 +334,9 @@ def test_writers_work_without_a_motion(kind: str) -> None:
 
 def test_import_loads_no_drawing_library() -> None:
     code = (
-        "import sys, reach.report.text, reach.report.json, reach.report.csv, reach.report.junit\n"
+        "import sys, reach.report.json\n"
+        "from reach.report.follow import csv, evidence, junit, text\n"
+        "from reach.report.survey import csv, evidence, junit, text\n"
         "loaded = {name.split('.')[0] for name in sys.modules}\n"
         "print(sorted(loaded & {'matplotlib', 'pinocchio', 'qpsolvers', 'scipy'}))"
     )
@@ -631,7 +643,7 @@ def test_evidence_reads_back_to_the_last_digit(result: FollowResult) -> None:
     assert cell["arm"]["model_xml"] == result.cell.arm.model_xml
     assert [joint["name"] for joint in cell["arm"]["joints"]] == list(NAMES)
     assert cell["arm"]["joints"][0]["limits"]["position"] == {"lo": None, "hi": None, "source": "continuous"}
-    assert cell["arm"]["joints"][0]["limits"]["torque"] is None
+    assert cell["arm"]["joints"][0]["limits"]["torque_rate"] is None
     assert cell["arm"]["gravity_m_s2"] == [0.0, 0.0, -9.80665]
     assert cell["accept"]["strike_tilt_error_rad"] == result.cell.accept.strike_tilt_error_rad
     assert [strike["commanded_m_s"] for strike in cell["strikes"]] == [

@@ -11,11 +11,11 @@ from builders import fer_cell, following, robot_cell
 from reach.arm import Arm
 from reach.cell import Cell, Margins
 from reach.evidence.measure import measure
-from reach.follow.bench import build_limits
 from reach.follow.reference import build_reference
 from reach.follow.roll import roll
 from reach.kinematics import Chain
 from reach.limits.brake import largest_velocity, stopping_distance
+from reach.limits.build import build_limits
 
 NO_DELAY = 1e13  # rad/s³: a brake that is there at once, the second-order case
 

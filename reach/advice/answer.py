@@ -14,16 +14,17 @@ from reach.advice.reading import better_reading, reading_in_words
 from reach.advice.reasons import deciding, reasons
 from reach.advice.remedies import remedies
 from reach.advice.search import runner
-from reach.advice.variants import without_margins, without_pose_gain
 from reach.arm import Arm
 from reach.cell import Cell
 from reach.evidence.measure import measure
 from reach.evidence.record import Evidence, Need, Remedy, SolverCount, Use
-from reach.follow.bench import Run, build_limits, run
+from reach.follow.bench import Run, run
 from reach.follow.contacts import aslant
 from reach.follow.rolled import Roll
 from reach.kinematics import Chain
+from reach.limits.build import build_limits
 from reach.result import FollowResult
+from reach.variants import without_margins, without_pose_gain
 from reach.verdict import judge
 
 REPLAYED = (

@@ -9,10 +9,10 @@ import numpy as np
 
 from reach.arm import Arm
 from reach.cell import Cell
-from reach.follow.bench import build_limits
 from reach.follow.rolled import Roll, now_at
 from reach.follow.rows import Lanes, Rows
 from reach.limits.base import SIGNS, Now
+from reach.limits.build import build_limits
 
 BLAME_FROM_M_S = 1e-3  # shortfall of a step from which its multipliers are looked at
 ACTIVE = 1e-12  # multipliers up to here are none

@@ -5,8 +5,8 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from reach.advice.search import Runner, least_that_holds
-from reach.advice.variants import FIELDS, scaled_limits
 from reach.cell import Cell
+from reach.variants import FIELDS, scaled_limits
 
 # Factors on every limit but position that are tried, rising; the answer is refined to RESOLUTION of the factor.
 SHRINK = (0.1, 0.2, 0.35, 0.5, 0.65, 0.8, 0.9, 1.0)

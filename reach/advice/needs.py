@@ -7,10 +7,10 @@ from collections.abc import Callable, Sequence
 from reach.advice.reasons import deciding as deciding_keys
 from reach.advice.reasons import reasons
 from reach.advice.search import Runner, least_passing
-from reach.advice.variants import scaled_limits, with_bounds
 from reach.cell import Cell
 from reach.evidence.record import Need
 from reach.follow.bench import Run, run
+from reach.variants import scaled_limits, with_bounds
 
 Key = tuple[str, str | None]
 

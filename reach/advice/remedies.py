@@ -8,12 +8,12 @@ import numpy as np
 
 from reach.advice.needs import ALONE
 from reach.advice.search import Outcome, Runner, least_that_holds
-from reach.advice.variants import lighter, raised_base, slower, started_at, with_position_range
 from reach.arm import Arm
 from reach.cell import Cell
 from reach.evidence.record import Need, Remedy
 from reach.follow.bench import Run, first_pose
 from reach.posture import SAME_POSTURE_RAD, postures
+from reach.variants import lighter, raised_base, slower, started_at, with_position_range
 from reach.verdict import DELIVERABLE
 
 SLOWER_SCAN = (1.1, 1.25, 1.5, 1.75, 2.0, 2.5, 3.0, 4.0, 6.0, 10.0)

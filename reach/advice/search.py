@@ -3,21 +3,19 @@
 from __future__ import annotations
 
 import math
-import os
 from collections.abc import Callable, Iterator, Sequence
-from concurrent.futures import BrokenExecutor, Executor, ProcessPoolExecutor
+from concurrent.futures import BrokenExecutor, Executor
 from contextlib import contextmanager
 from dataclasses import dataclass
 from functools import partial
-from multiprocessing import get_context
 
 from reach.cell import Cell
 from reach.errors import WorkerLost
 from reach.follow.bench import run
+from reach.workers import LOST, worker_pool
 
 BATCH = 2  # values tried at once, one a worker on a two-core machine
 HOLD = (1.02, 1.05, 1.1)  # multiples of a value that must pass as well
-THREAD_VARIABLES = ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS")
 
 
 @dataclass(frozen=True)
@@ -64,7 +62,7 @@ class Runner:
         try:
             return list(self._pool.map(partial(outcome, quick=quick), cells))
         except BrokenExecutor as error:
-            raise WorkerLost("a worker process died (out of memory?); run again with --workers 1") from error
+            raise WorkerLost(LOST) from error
 
     def passes(self, cells: Sequence[Cell]) -> list[bool]:
         """Whether each of some changed cells passes."""
@@ -73,21 +71,9 @@ class Runner:
 
 @contextmanager
 def runner(workers: int, progress: Callable[[str], None] | None = None) -> Iterator[Runner]:
-    """A Runner with its workers, spawned so that no thread or lock of this process is copied."""
-    if workers < 2:
-        yield Runner(None, progress)
-        return
-    kept = {name: os.environ.get(name) for name in THREAD_VARIABLES}
-    os.environ.update(dict.fromkeys(THREAD_VARIABLES, "1"))  # read by a worker's numpy as it loads
-    try:
-        with ProcessPoolExecutor(workers, mp_context=get_context("spawn")) as pool:
-            yield Runner(pool, progress)
-    finally:
-        for name, value in kept.items():
-            if value is None:
-                os.environ.pop(name, None)
-            else:
-                os.environ[name] = value
+    """A Runner with its workers."""
+    with worker_pool(workers) as pool:
+        yield Runner(pool, progress)
 
 
 def least_passing(

@@ -22,8 +22,6 @@ class Motion:
     q, v, a : (m, n) rad, rad/s, rad/s² (m for sliding joints)
         q and v are the values at row k's instant; a holds from there until the next row. The last row's a
         is zero: the arm rests there.
-    before : (n,)
-        Acceleration that counts as the one before row 0 (zero: at rest, or coasting in a given state).
     """
 
     start_s: float

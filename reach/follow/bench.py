@@ -24,12 +24,10 @@ from reach.follow.reference import Reference, build_reference
 from reach.follow.roll import roll
 from reach.follow.rolled import Roll
 from reach.kinematics import Chain, logarithm
-from reach.limits import LIMITS
 from reach.limits.base import Limit
+from reach.limits.build import build_limits, not_checked, unknown_limits
 from reach.posture import postures
 from reach.verdict import Verdict, judge
-
-ALWAYS_UNCHECKED = ("clearance", "stand flexibility")
 
 
 @dataclass(frozen=True, eq=False)
@@ -54,11 +52,6 @@ class Run:
     def passed(self) -> bool:
         """Whether nothing speaks against the motion; what is unknown counts as unlimited."""
         return self.verdict.verdict != "not deliverable"
-
-
-def build_limits(cell: Cell) -> dict[str, Limit]:
-    """Every limit kind of LIMITS for a cell, by name."""
-    return {name: kind(cell) for name, kind in LIMITS.items()}
 
 
 def run(cell: Cell, quick: bool = False, seed: int = 0) -> Run:
@@ -220,7 +213,7 @@ def _evidence(
         guessed=found.guessed and cell.follow is not None and cell.follow.strikes != "guessed-ok",
         throughout_faults=throughout_faults(beside, accept) if throughout else (),
         stopped=rolled.stopped,
-        unknown=_unknown(limits),
+        unknown=unknown_limits(limits),
         not_checked=not_checked(cell, limits),
         blocked=(),
         failed_steps=rolled.failed_steps,
@@ -241,30 +234,8 @@ def _no_motion(
         guessed=found.guessed,
         throughout_faults=(),
         stopped=False,
-        unknown=_unknown(limits),
+        unknown=unknown_limits(limits),
         not_checked=not_checked(cell, limits),
         blocked=blocked,
         failed_steps=0,
     )
-
-
-def _unknown(limits: dict[str, Limit]) -> tuple[tuple[str, str | None], ...]:
-    return tuple(
-        (name, joint)
-        for name, limit in limits.items()
-        for joint, known in zip(limit.joints, limit.known, strict=True)
-        if not known
-    )
-
-
-def not_checked(cell: Cell, limits: dict[str, Limit]) -> tuple[str, ...]:
-    """Names of what a verdict on this cell leaves out: limits with an unknown joint, then the model's gaps."""
-    names = [name for name, limit in limits.items() if not limit.known.all()]
-    if cell.drive is None:
-        names.append("drive tracking")
-    joints = [joint.limits for joint in cell.arm.joints]
-    if any(item.friction is None for item in joints):
-        names.append("friction")
-    if any(item.armature is None for item in joints):
-        names.append("reflected inertia")
-    return (*names, *ALWAYS_UNCHECKED)

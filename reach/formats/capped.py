@@ -3,8 +3,12 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Callable, Iterable, Iterator
+from collections.abc import Callable, Iterable, Iterator, Sequence
 
+import numpy as np
+from numpy.typing import NDArray
+
+from reach.cell import Array
 from reach.errors import Fault, FaultList
 
 MAX_SHOWN = 20  # faults of one kind in one file that are told one by one
@@ -23,6 +27,21 @@ class ByKind:
         self.count[kind] = self.count.get(kind, 0) + 1
         if self.count[kind] <= MAX_SHOWN:
             self.faults.add(where, what if isinstance(what, str) else what())
+
+    def add_each(
+        self,
+        kind: str,
+        bad: NDArray[np.bool_],
+        array: Array,
+        place: Callable[[int, str], str],
+        columns: Sequence[str],
+        told: str,
+    ) -> None:
+        """Note a fault of that kind for every bad element of an array of (rows, columns), its value told first."""
+        found = np.argwhere(bad)
+        for row, column in found[:MAX_SHOWN].tolist():
+            self.add(kind, place(row, columns[column]), f"is {array[row, column]:g}; {told}")
+        self.count[kind] = self.count.get(kind, 0) + max(0, len(found) - MAX_SHOWN)
 
     def close(self) -> None:
         """Say what was left out."""

@@ -2,14 +2,15 @@
 
 from __future__ import annotations
 
-from typing import Any, Literal
+from typing import Literal
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from reach.cell import Array, CommandLog
 from reach.errors import FaultList
-from reach.formats.capped import MAX_SHOWN, ByKind
+from reach.formats.capped import ByKind
+from reach.formats.fixed import read_only
 from reach.formats.log_time import TIME_COLUMN, Place, TimeOrder
 from reach.formats.magnitude import LARGEST, LARGEST_STAMP_S
 
@@ -76,10 +77,10 @@ def check_arrays(
     keep, marks = order.rows(times[:, 0], marks)
     columns.raise_if_any()
     return CommandLog(
-        _frozen(times[keep, 0]),
-        _frozen(twists[keep]),
-        None if marks is None else _frozen(marks[keep]),
-        None if poses is None else _frozen(poses[keep]),
+        read_only(times[keep, 0]),
+        read_only(twists[keep]),
+        None if marks is None else read_only(marks[keep]),
+        None if poses is None else read_only(poses[keep]),
         tuple(order.mends),
         source,
     )
@@ -87,12 +88,6 @@ def check_arrays(
 
 def _by_row(row: int, column: str) -> str:
     return f"row {row + 1}, column {column}" if column else f"row {row + 1}"
-
-
-def _frozen(array: NDArray[Any]) -> NDArray[Any]:
-    own = np.array(array, copy=True)
-    own.flags.writeable = False
-    return own
 
 
 class _Columns:
@@ -130,21 +125,14 @@ class _Columns:
             shape = np.shape(values)
             self.faults.add(name, f"has shape {shape}; give {wanted}: {', '.join(columns)}")
             return None
-        self._each("not finite", ~np.isfinite(array), array, columns, "give a finite number")
+        self.kinds.add_each(
+            "not finite", ~np.isfinite(array), array, self.place, columns, "give a finite number"
+        )
         most = LARGEST_STAMP_S if name == TIME_COLUMN else LARGEST
         beyond = np.isfinite(array) & (np.abs(array) > most)
         told = f"out of any range that means something; give a size of at most {most:g}"
-        self._each("out of range", beyond, array, columns, told)
+        self.kinds.add_each("out of range", beyond, array, self.place, columns, told)
         return array
-
-    def _each(
-        self, kind: str, bad: NDArray[np.bool_], array: Array, columns: tuple[str, ...], told: str
-    ) -> None:
-        """Note a fault for every bad element of a table; texts are made for those that are shown."""
-        found = np.argwhere(bad)
-        for row, column in found[:MAX_SHOWN].tolist():
-            self.kinds.add(kind, self.place(row, columns[column]), f"is {array[row, column]:g}; {told}")
-        self.kinds.count[kind] = self.kinds.count.get(kind, 0) + max(0, len(found) - MAX_SHOWN)
 
     def marks(self, strike: ArrayLike, rows: int | None) -> NDArray[np.bool_] | None:
         """Strike marks as (N,) truth values."""

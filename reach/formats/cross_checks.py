@@ -2,8 +2,7 @@
 
 from __future__ import annotations
 
-import math
-from collections.abc import Mapping
+from collections.abc import Container, Mapping
 from typing import Any
 
 from reach.cell import Joint, Margins
@@ -16,6 +15,11 @@ _SHAPES: dict[str, tuple[tuple[str, ...], tuple[str, ...]]] = {
     "given": (("com_m", "inertia_kg_m2"), ()),
 }
 """Shape -> (keys it needs, keys it may have)."""
+
+_FACE_KEYS = ("normals", "face_tilts_deg", "bearings_deg")
+_BALL_KEYS = ("ball_in_m_s", "ball_out_m_s")
+_IN_STRIKES_FILE = ("spacing_m", *_FACE_KEYS, "direction", "paddle_speed_m_s", *_BALL_KEYS)
+"""Keys of [survey] that a file of strikes stands in place of."""
 
 _SHAPE_KEYS = ("radius_m", "size_m", "thickness_m", "com_m", "inertia_kg_m2")
 
@@ -76,34 +80,56 @@ def check_contact(contact: Mapping[str, Any], given: Mapping[str, Any], faults: 
         before = max(before, speed)
 
 
-def check_sections(read: Mapping[str, Any], given: Mapping[str, Any], faults: FaultList) -> None:
-    """Either-or keys of [survey] and repeated names in accept.require."""
-    if read["accept"]:
-        names = read["accept"]["require"]
-        for name in sorted({name for name in names if names.count(name) > 1}):
-            faults.add("accept.require", f'"{name}" stands twice; keep one')
-    if not read["survey"]:
+def check_accept(accept: Mapping[str, Any], faults: FaultList) -> None:
+    """No name stands twice in accept.require."""
+    names = accept["require"]
+    for name in sorted({name for name in names if names.count(name) > 1}):
+        faults.add("accept.require", f'"{name}" stands twice; keep one')
+
+
+def check_survey(written: Container[str], has_contact: bool, faults: FaultList) -> None:
+    """One way to say where, and one to say how to strike: by face and speed, or by the ball."""
+    if "strikes" in written:
+        for key in ("box_m", *_IN_STRIKES_FILE):
+            if key in written:
+                faults.add(f"survey.{key}", "stands beside strikes, whose file says it; keep one")
         return
-    survey, written = read["survey"], given["survey"]
-    if survey["box_m"] is not None:
-        for axis, low, high in zip("xyz", *survey["box_m"], strict=True):
-            if low > high:
-                faults.add("survey.box_m", f"{axis} goes from {low:g} down to {high:g}; swap them")
-    for row, normal in enumerate(survey["normals"] or ()):
-        if math.hypot(*normal) < 1e-9:
-            faults.add(f"survey.normals[{row}]", "is zero; give a direction")
-    by_ball = [key for key in ("ball_in_m_s", "ball_out_m_s") if key in written]
-    by_face = [key for key in ("normals", "face_tilts_deg", "bearings_deg") if key in written]
-    if len(by_ball) == 1:
-        faults.add(f"survey.{by_ball[0]}", "needs both ball_in_m_s and ball_out_m_s")
-    if by_ball and (by_face or "paddle_speed_m_s" in written):
+    if "box_m" not in written:
+        told = "missing; give two corners, [[x, y, z], [x, y, z]], or name a file in strikes"
+        faults.add("survey.box_m", told)
+    by_ball = [key for key in _BALL_KEYS if key in written]
+    if by_ball:
+        _check_ball_keys(by_ball, written, has_contact, faults)
+        return
+    if not any(key in written for key in _FACE_KEYS):
         faults.add(
-            f"survey.{by_ball[0]}", "fixes normal and paddle speed; drop those, or the ball's velocities"
+            "survey.normals",
+            "missing; give normals, face_tilts_deg and bearings_deg, or ball_in_m_s and ball_out_m_s; there is "
+            "no default because the verdict depends on it",
         )
-    if "normals" in written and len(by_face) > 1:
+    if "normals" in written and any(key in written for key in _FACE_KEYS[1:]):
         faults.add("survey.normals", "stands beside face_tilts_deg or bearings_deg; keep one way")
-    if "bearings_deg" in written and "face_tilts_deg" not in written:
+    elif "bearings_deg" in written and "face_tilts_deg" not in written:
         faults.add("survey.bearings_deg", "needs face_tilts_deg")
+    if "paddle_speed_m_s" not in written:
+        faults.add(
+            "survey.paddle_speed_m_s",
+            "missing; give the speed needed along the normal, or ball_in_m_s and ball_out_m_s",
+        )
+
+
+def _check_ball_keys(
+    by_ball: list[str], written: Container[str], has_contact: bool, faults: FaultList
+) -> None:
+    where = f"survey.{by_ball[0]}"
+    if len(by_ball) == 1:
+        faults.add(where, "needs both ball_in_m_s and ball_out_m_s")
+    beside = [key for key in (*_FACE_KEYS, "paddle_speed_m_s", "direction") if key in written]
+    if beside:
+        told = "fixes normal, direction and paddle speed; drop"
+        faults.add(where, f"{told} {', '.join(beside)}, or the ball's velocities")
+    if not has_contact:
+        faults.add(where, "needs the restitution of ball and face; give it in a table [contact]")
 
 
 def check_room(joints: tuple[Joint, ...], margins: Margins, cell: FaultList) -> None:

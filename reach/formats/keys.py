@@ -1,4 +1,4 @@
-"""Every key of a cell file and of a limits file, and every column of a command log, as plain text."""
+"""Every key of a cell file and of a limits file, and every column of a command log and a file of strikes."""
 
 from __future__ import annotations
 
@@ -17,7 +17,8 @@ from reach.formats.command_log import (
 from reach.formats.kinds import ByName, Either, Flag, Integer, Key, Kind, ListOf, Number, OneOf, Table, Text
 from reach.formats.log_time import TIME_COLUMN
 from reach.formats.magnitude import LARGEST, LARGEST_DRIVE, LEAST_LIMIT
-from reach.formats.schema import CELL, LIMIT_KEYS
+from reach.formats.schema import CELL, FASTEST_PADDLE_M_S, LIMIT_KEYS, WORLD_M
+from reach.formats.strikes_csv import DIRECTION, NORMAL, POINT, SPEED
 
 WIDTH = 100
 _KEY_WIDTH = 34
@@ -51,9 +52,10 @@ _UNITS = {
 _UNUSED = "checked, used by no command of this version"
 
 _SECTIONS = {
-    "arm": "URDF, limits, what is held, where the base stands, and the posture at the start. The start takes "
-    'one value for every joint of the chain (start_rad or start_deg, and start_m), or start = "auto" with a '
-    "log that has pose columns. Placements are xyz_m, then roll, pitch, yaw about fixed axes in degrees.",
+    "arm": "URDF, limits, what is held, where the base stands, and the posture at the start. The start takes one "
+    'value for every joint of the chain (start_rad or start_deg, and start_m), or start = "auto" with a log that has '
+    "pose columns; without [follow] it may be left out. Placements are xyz_m, then roll, pitch, yaw about fixed axes "
+    "in degrees.",
     "paddle": "The rigid paddle. The face frame has its origin at the strike point on the face and z out of "
     'the face; mount places it on the tip link. Shape "disc" needs radius_m, "plate" needs size_m, "given" '
     "needs com_m and inertia_kg_m2 (about the centre of mass, along the face frame's axes).",
@@ -67,7 +69,11 @@ _SECTIONS = {
     "the others.",
     "accept": "What a cell must do to pass.",
     "follow": "The command log, and how it is meant.",
-    "survey": f"Face placements over a box; {_UNUSED}.",
+    "survey": "Where the paddle is to strike and how fast, for the command survey. Every face goes to every point of "
+    "a box, from its low corner on; or a file names the strikes one by one. Faces are normals, out of the face "
+    "along the world's axes, or tilts from the world's +z toward bearings from +x, counter-clockwise seen from "
+    "above; or the ball's velocities right before and after contact, with [contact], give face and speed. The "
+    "strike goes along the normal unless direction says otherwise.",
     "rally": f"Ball flights to keep up; {_UNUSED}.",
     "trial": f"Simulated rallies under a law of control; {_UNUSED}.",
 }
@@ -95,7 +101,7 @@ def keys_text() -> str:
         for key, told in _rows(name, spec):
             lines += _row(key, told)
         lines.append("")
-    return "\n".join([*lines, *_limits_file(), "", *_command_log()]) + "\n"
+    return "\n".join([*lines, *_limits_file(), "", *_command_log(), "", *_strikes_file()]) + "\n"
 
 
 def _wrapped(text: str, first: str, rest: str) -> list[str]:
@@ -133,7 +139,7 @@ def _takes(kind: Kind, name: str) -> str:
         case Number():
             return " ".join(f"number{unit} {kind.range_text()}".split())
         case Integer():
-            return f"whole number of at least {kind.lo}"
+            return f"whole number {kind.range_text()}"
         case Flag():
             return "true or false"
         case Text():
@@ -224,5 +230,26 @@ def _command_log() -> list[str]:
         "of the face.",
         "  ",
         "  ",
+    )
+    return lines
+
+
+def _strikes_file() -> list[str]:
+    lines = ["FILE OF STRIKES (CSV, named by survey.strikes): columns by name in the first line", ""]
+    lines += _row(
+        ", ".join(POINT), f"strike point in the world, in m, at most {WORLD_M:g} either way; must be given"
+    )
+    lines += _row(
+        ", ".join(NORMAL), "normal out of the face along the world's axes, any length; must be given"
+    )
+    lines += _row(
+        SPEED,
+        "paddle speed needed along the normal, in m/s, above 0 and at most "
+        f"{FASTEST_PADDLE_M_S:g}; must be given",
+    )
+    lines += _row(
+        ", ".join(DIRECTION),
+        "direction of the strike along the world's axes, any length, going out of the face; all three columns or "
+        "none, which stands for the normal",
     )
     return lines

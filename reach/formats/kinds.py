@@ -15,7 +15,7 @@ from typing import Any, Protocol
 
 from reach.errors import FaultList, nearest
 from reach.formats.capped import MAX_SHOWN
-from reach.formats.magnitude import DUST, LEAST_POSITIVE, misfit, without_dust
+from reach.formats.magnitude import DUST, LARGEST, LEAST_POSITIVE, misfit, without_dust
 
 INF = math.inf
 MAX_ITEMS_SHOWN = 6  # of a list that stands where it must not
@@ -120,19 +120,24 @@ class Number:
 
 @dataclass(frozen=True)
 class Integer:
-    """A whole number, at least `lo`."""
+    """A whole number from `lo` to `hi`."""
 
     lo: int = 0
+    hi: int = int(LARGEST)
 
     def read(self, value: Any, where: str, faults: FaultList) -> int | None:
         """Return the whole number."""
         if isinstance(value, bool) or not isinstance(value, int):
             faults.add(where, f"is {shown(value)}; give a whole number")
             return None
-        if not self.lo <= value < 2**63:
-            faults.add(where, f"is {shown(value)}; it must be at least {self.lo} and fit 63 bits")
+        if not self.lo <= value <= self.hi:
+            faults.add(where, f"is {shown(value)}; it must be a whole number {self.range_text()}")
             return None
         return value
+
+    def range_text(self) -> str:
+        """The range in words."""
+        return f"of at least {self.lo} and at most {self.hi}"
 
 
 @dataclass(frozen=True)

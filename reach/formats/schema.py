@@ -12,7 +12,12 @@ from reach.formats.presets import BALLS
 SOLVERS = ("daqp", "piqp", "clarabel")
 """Solvers that are let in: others hung, or called false answers found, when tried (DEVELOPERS.md)."""
 
-MAX_ROWS = 1000  # paddle parts, rows of restitution
+MAX_ROWS = 1000  # paddle parts, rows of restitution, normals
+MOST_POINTS = 10_000_000  # strikes of a survey, whatever its max_points
+WORLD_M = 1000.0  # of a place in the world from its origin
+FASTEST_PADDLE_M_S = 100.0
+FASTEST_BALL_M_S = 200.0  # along one axis
+IN_MM_S = "m/s; is this in mm/s?"
 
 LIMIT_NAMES: tuple[str, ...] = get_args(LimitName)
 
@@ -25,13 +30,14 @@ SHARE_REQUIRED = Number(above=0, hi=1)
 RESTITUTION = Number(above=0, hi=1)
 NEAR_M = Number(lo=-10, hi=10, hint="metres; is this in mm?")
 MASS_KG = Number(above=0, hi=1000, hint="kg; is this in g?")
-TOOL_M_S = Number(above=0, hi=1000, hint="m/s; is this in mm/s?", least=LEAST_LIMIT)
+TOOL_M_S = Number(above=0, hi=1000, hint=IN_MM_S, least=LEAST_LIMIT)
 DRIVE_VALUE = Number(lo=0, hi=LARGEST_DRIVE)
 SIZE_M = Number(above=0, hi=2, hint="metres; is this in mm?")
 
 _VECTOR = ListOf(FINITE, 3, what="numbers")
 _NEAR_VECTOR = ListOf(NEAR_M, 3, what="numbers")
-_BASE_VECTOR = ListOf(Number(lo=-1000, hi=1000, hint="metres; is this in mm?"), 3, what="numbers")
+_WORLD_VECTOR = ListOf(Number(lo=-WORLD_M, hi=WORLD_M, hint="metres; is this in mm?"), 3, what="numbers")
+_BALL_VELOCITY = ListOf(Number(lo=-FASTEST_BALL_M_S, hi=FASTEST_BALL_M_S, hint=IN_MM_S), 3, what="numbers")
 _GRAVITY = ListOf(Number(lo=-100, hi=100, hint="m/s²"), 3, what="numbers")
 _BEARINGS = ListOf(FINITE, least=1, what="bearings")
 _OFFSETS = ListOf(NOT_NEGATIVE, least=1, what="offsets")
@@ -39,7 +45,7 @@ _INERTIA = ListOf(FINITE, 6, what="numbers xx, yy, zz, xy, xz, yz")
 _ZERO3 = (0.0, 0.0, 0.0)
 
 PLACEMENT = Table({"xyz_m": Key(_NEAR_VECTOR, _ZERO3), "rpy_deg": Key(_VECTOR, _ZERO3)})
-BASE = Table({"xyz_m": Key(_BASE_VECTOR, _ZERO3), "rpy_deg": Key(_VECTOR, _ZERO3)})
+BASE = Table({"xyz_m": Key(_WORLD_VECTOR, _ZERO3), "rpy_deg": Key(_VECTOR, _ZERO3)})
 _NO_PLACEMENT = {"xyz_m": _ZERO3, "rpy_deg": _ZERO3}
 
 ARM = Table(
@@ -146,7 +152,7 @@ ACCEPT = Table(
     {
         "at": Key(OneOf(("strikes", "throughout")), "strikes"),
         "strike_speed_error_share": Key(SHARE_REQUIRED, 0.03),
-        "strike_lateral_m_s": Key(Number(above=0, hi=100, hint="m/s; is this in mm/s?"), 0.05),
+        "strike_lateral_m_s": Key(Number(above=0, hi=100, hint=IN_MM_S), 0.05),
         "strike_position_m": Key(Number(above=0, hi=10, hint="metres; is this in mm?"), 0.005),
         "strike_tilt_error_deg": Key(Number(above=0, hi=180), 1.0),
         "strike_window_s": Key(Number(lo=0, hi=1, hint="seconds; is this in ms?"), 0.010),
@@ -184,21 +190,21 @@ FOLLOW = Table(
 
 SURVEY = Table(
     {
-        "box_m": Key(
-            ListOf(_VECTOR, 2, what="corners"), required="give the two corners, [[x, y, z], [x, y, z]]"
-        ),
-        "spacing_m": Key(POSITIVE, 0.05),
-        "normals": Key(ListOf(_VECTOR, least=1, what="normals")),
-        "face_tilts_deg": Key(ListOf(Number(lo=0, hi=180), least=1, what="tilts")),
-        "bearings_deg": Key(_BEARINGS),
+        "box_m": Key(ListOf(_WORLD_VECTOR, 2, what="corners")),
+        "strikes": Key(Text()),
+        "spacing_m": Key(Number(above=0, hi=WORLD_M, hint="metres; is this in mm?"), 0.05),
+        "normals": Key(ListOf(_VECTOR, least=1, what="normals", most=MAX_ROWS)),
+        "face_tilts_deg": Key(ListOf(Number(lo=0, hi=180), least=1, what="tilts", most=MAX_ROWS)),
+        "bearings_deg": Key(ListOf(FINITE, least=1, what="bearings", most=MAX_ROWS)),
+        "direction": Key(_VECTOR),
         "rotation": Key(OneOf(("still", "free")), "still"),
-        "paddle_speed_m_s": Key(POSITIVE),
-        "ball_in_m_s": Key(_VECTOR),
-        "ball_out_m_s": Key(_VECTOR),
-        "run_up_m": Key(POSITIVE),
+        "paddle_speed_m_s": Key(Number(above=0, hi=FASTEST_PADDLE_M_S, hint=IN_MM_S, least=LEAST_LIMIT)),
+        "ball_in_m_s": Key(_BALL_VELOCITY),
+        "ball_out_m_s": Key(_BALL_VELOCITY),
+        "run_up_m": Key(Number(above=0, hi=10, hint="metres; is this in mm?")),
         "required_share": Key(SHARE_REQUIRED, 1.0),
         "exact": Key(Flag(), False),
-        "max_points": Key(Integer(lo=1), 2_000_000),
+        "max_points": Key(Integer(lo=1, hi=MOST_POINTS), 2_000_000),
     }
 )
 

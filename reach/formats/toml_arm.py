@@ -30,7 +30,12 @@ def pose_of(placement: Mapping[str, Any]) -> Pose:
 
 
 def read_arm(
-    arm: Mapping[str, Any], given: Mapping[str, Any], torque_counts: bool, faults: FaultList, reading: Reading
+    arm: Mapping[str, Any],
+    given: Mapping[str, Any],
+    torque_counts: bool,
+    needs_start: bool,
+    faults: FaultList,
+    reading: Reading,
 ) -> ArmSpec | None:
     """Read the arm that a checked [arm] table describes.
 
@@ -39,6 +44,7 @@ def read_arm(
     arm : the table as the schema read it
     given : the table as written, to tell what was given from what is a default
     torque_counts : whether torque or torque rate is among what is required
+    needs_start : whether the start posture must be given
     faults : those of the cell file
     reading : gathers the faults, inputs and notes of the URDF and the limits file
 
@@ -70,7 +76,7 @@ def read_arm(
             reading.notes.extend(check_inertias(tree, held, torque_counts, urdf_faults))
             chain, notes = merge(tree.chain, stated, urdf_faults, limits_faults)
             reading.notes.extend(notes)
-            spec = _spec(tree, chain, held, arm, given, faults)
+            spec = _spec(tree, chain, held, arm, given, needs_start, faults)
     for found in (urdf_faults, limits_faults):
         reading.faults.extend(found.faults)
     return spec
@@ -82,6 +88,7 @@ def _spec(
     held: Mapping[str, float],
     arm: Mapping[str, Any],
     given: Mapping[str, Any],
+    needs_start: bool,
     faults: FaultList,
 ) -> ArmSpec:
     off_chain = {joint.name for joint in tree.order} - {joint.name for joint in chain}
@@ -94,7 +101,7 @@ def _spec(
         held=tuple(HeldJoint(name, model_names[name], value) for name, value in held.items()),
         base=pose_of(arm["base"]),
         gravity_m_s2=arm["gravity_m_s2"],
-        start=_start(chain, off_chain, arm, given, faults),
+        start=_start(chain, off_chain, arm, given, needs_start, faults),
         start_velocity=_velocity(chain, off_chain, arm, faults),
     )
 
@@ -192,12 +199,15 @@ def _start(
     off_chain: set[str],
     arm: Mapping[str, Any],
     given: Mapping[str, Any],
+    needed: bool,
     faults: FaultList,
 ) -> tuple[float, ...] | None:
     named = [key for key, _, _ in _STARTS if key in given]
     if "start" in given:
         if named:
             faults.add("arm.start", f'stands beside {", ".join(named)}; keep the posture, or start = "auto"')
+        return None
+    if not named and not needed:
         return None
     if not named:
         names = ", ".join(f"{joint.name} = 0.0" for joint in chain)

@@ -7,32 +7,36 @@ import os
 import re
 import unicodedata
 from collections.abc import Mapping
-from typing import Any
+from typing import Any, Literal
 
 from reach.cell import Accept, Ball, Cell, Contact, Drive, Follow, Margins, Paddle, Part, SolverSpec, Tool
 from reach.errors import Fault, FaultList, InputError, nearest
 from reach.formats.capped import cut_short
-from reach.formats.cross_checks import check_ball, check_contact, check_paddle, check_room, check_sections
+from reach.formats.cross_checks import check_accept, check_ball, check_contact, check_paddle, check_room
 from reach.formats.files import MAX_LOG_BYTES, MAX_TEXT_BYTES, Reading, beside
 from reach.formats.log_time import check_span
 from reach.formats.presets import BALLS
 from reach.formats.readers import READERS
 from reach.formats.schema import ACCEPT, CELL, CONTROL, MARGINS, SOLVER
 from reach.formats.toml_arm import pose_of, read_arm
+from reach.formats.toml_survey import read_survey
 from reach.formats.toml_text import parse_toml
 
 LONGEST_MESSAGE = 800  # characters; a fault is to fit a screen
+_NEEDED = {
+    "follow": "name the command log and how to read it",
+    "survey": "say where and how to strike",
+}
 _ESCAPED = ("Cc", "Cf", "Zl", "Zp")  # control, format (such as bidi overrides), line and paragraph ends
 
 
-def load_cell(path: str | os.PathLike[str], need_follow: bool = False) -> Cell:
-    """Read a cell file with its URDF, limits file and command log.
+def load_cell(path: str | os.PathLike[str], need: Literal["follow", "survey"] | None = None) -> Cell:
+    """Read a cell file with its URDF, limits file, command log and file of strikes.
 
     Parameters
     ----------
     path : str or path
-    need_follow : bool
-        Without a [follow] table the cell is then a fault.
+    need : the table, named as its command, without which the cell is a fault
 
     Returns
     -------
@@ -49,7 +53,7 @@ def load_cell(path: str | os.PathLike[str], need_follow: bool = False) -> Cell:
     faults = FaultList(name)
     text = reading.read_text(name, MAX_TEXT_BYTES)
     document = None if text is None else parse_toml(text, faults)
-    cell = None if document is None else _cell(document, need_follow, faults, reading)
+    cell = None if document is None else _cell(document, need, faults, reading)
     found = [*reading.faults, *faults.faults]
     if found or cell is None:
         plain = dict.fromkeys(Fault(*map(_one_line, (f.file, f.where, f.what))) for f in cut_short(found))
@@ -79,7 +83,7 @@ def _in_order(fault: Fault) -> tuple[str, list[tuple[int, str]], str]:
     return fault.file, [(int(p), "") if p.isdecimal() else (-1, p) for p in parts], fault.what
 
 
-def _cell(document: Mapping[str, Any], need_follow: bool, faults: FaultList, reading: Reading) -> Cell | None:
+def _cell(document: Mapping[str, Any], need: str | None, faults: FaultList, reading: Reading) -> Cell | None:
     read = CELL.read(document, "", faults)
     quiet = FaultList(faults.file)
     given = {key: table if isinstance(table, dict) else {} for key, table in document.items()}
@@ -88,19 +92,24 @@ def _cell(document: Mapping[str, Any], need_follow: bool, faults: FaultList, rea
     arm = paddle = None
     if read["arm"]:
         torque_counts = "torque" in accept.require or "torque rate" in accept.require
-        arm = read_arm(read["arm"], given["arm"], torque_counts, faults, reading)
+        needs_start = "follow" in document or need == "follow"
+        arm = read_arm(read["arm"], given["arm"], torque_counts, needs_start, faults, reading)
     if read["paddle"]:
         check_paddle(read["paddle"], given["paddle"], faults, reading.notes)
     ball = _ball(read["ball"], given["ball"], faults) if read["ball"] else None
-    if read["contact"]:
-        check_contact(read["contact"], given["contact"], faults)
-    check_sections(read, given, faults)
-    if "follow" not in document and need_follow:
-        faults.add("follow", "missing; name the command log and how to read it in a table [follow]")
+    contact = _contact(read["contact"], given["contact"], faults) if read["contact"] else None
+    if read["accept"]:
+        check_accept(read["accept"], faults)
+    if need is not None and need not in document:
+        faults.add(need, f"missing; {_NEEDED[need]} in a table [{need}]")
     follow = _follow(read["follow"], faults, reading) if read["follow"] else None
     period_s = (read["control"] or CONTROL.read({}, "", quiet))["period_s"]
     if follow is not None:
         check_span(follow.commands, period_s, faults)
+    survey = None
+    if isinstance(document.get("survey"), dict):
+        has_contact = "contact" in document
+        survey = read_survey(read["survey"], given["survey"], contact, has_contact, faults, reading)
     if "start" in given.get("arm", {}) and not _log_may_be_posed(follow, "follow" in document):
         faults.add("arm.start", '"auto" needs a command log with pose columns; give start_rad instead')
     if arm is not None:
@@ -115,12 +124,13 @@ def _cell(document: Mapping[str, Any], need_follow: bool, faults: FaultList, rea
         period_s=period_s,
         tool=Tool(**read["tool"]) if read["tool"] else None,
         ball=ball,
-        contact=Contact(**read["contact"]) if read["contact"] else None,
+        contact=contact,
         drive=Drive(**read["drive"]) if read["drive"] is not None else None,
         solver=SolverSpec(**(read["solver"] or SOLVER.read({}, "", quiet))),
         margins=margins,
         accept=accept,
         follow=follow,
+        survey=survey,
         inputs=tuple(reading.inputs),
         notes=tuple(map(_one_line, reading.notes)),
     )
@@ -150,6 +160,13 @@ def _ball(table: Mapping[str, Any], given: Mapping[str, Any], faults: FaultList)
         values[key] = getattr(preset, key) if values[key] is None else values[key]
     source = preset.source + (f"; {', '.join(own)} from the cell" if own else "")
     return Ball(**values, source=source)
+
+
+def _contact(table: Mapping[str, Any], given: Mapping[str, Any], faults: FaultList) -> Contact | None:
+    """Ball and face, None where a fault of theirs was noted."""
+    check_contact(table, given, faults)
+    sound = not any(fault.where.partition(".")[0] == "contact" for fault in faults.faults)
+    return Contact(**table) if sound else None
 
 
 def _follow(table: Mapping[str, Any], faults: FaultList, reading: Reading) -> Follow | None:

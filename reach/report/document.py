@@ -1,22 +1,21 @@
-"""The result as plain data: what verdict.json holds and the other reports share."""
+"""Results as plain data: what verdict.json holds and the other reports share."""
 
 from __future__ import annotations
 
 import importlib.metadata
 import math
 import platform
+from collections.abc import Iterable, Mapping
 from dataclasses import asdict
 from typing import Any
 
 import numpy as np
 
 import reach
-from reach.evidence.record import Strike, Track, Use
-from reach.report.cautions import cautions
-from reach.report.wording import all_notes, tilt_meaning
-from reach.result import FollowResult
+from reach.report.wording import all_notes
+from reach.report.writers import part
+from reach.result import Result
 
-SCHEMA = "strikecheck/follow/1"
 DIGITS = 9  # significant digits of a value that leaves the program
 TIME_DECIMALS = 9  # of an instant: nanoseconds, whatever the log's zero is
 TIMES = ("time_s", "until_s")
@@ -31,32 +30,41 @@ DISTRIBUTIONS = {
 }
 
 
-def document(result: FollowResult) -> dict[str, Any]:
+def document(result: Result) -> dict[str, Any]:
     """Return the result as dicts, lists, strings, numbers and None, in the order of the published schema."""
-    evidence = result.evidence
+    content: dict[str, Any] = part(result.command, "document").document(result)
+    return content
+
+
+def whole(
+    result: Result,
+    version: int,
+    own: Mapping[str, Any],
+    unknown: Iterable[tuple[str, str | None]],
+    cautions: tuple[str, ...],
+) -> dict[str, Any]:
+    """Return what every command's document has, with what is a command's own between head and foot.
+
+    Parameters
+    ----------
+    version : of the command's schema
+    unknown : (limit, joint) pairs nobody stated
+    """
     content = {
-        "schema": SCHEMA,
+        "schema": f"strikecheck/{result.command}/{version}",
         "verdict": result.verdict.verdict,
         "sentence": result.verdict.sentence,
         "without_margins": result.without_margins,
-        "without_pose_gain": result.without_pose_gain,
         "reasons": [asdict(reason) for reason in result.reasons],
-        "not_checked": evidence.not_checked,
+        "not_checked": result.not_checked,
+        "unknown": [{"limit": limit, "joint": joint} for limit, joint in unknown],
         "needs": [asdict(need) for need in result.needs],
         "remedies": [asdict(remedy) for remedy in result.remedies],
         "headroom_share": result.headroom_share,
         "headroom_text": result.headroom_text,
-        "limits": [_limit(use) for use in evidence.uses],
-        "unknown": [{"limit": limit, "joint": joint} for limit, joint in evidence.unknown],
-        "strikes": [_strike(strike) for strike in evidence.strikes],
-        "tilt_meaning": tilt_meaning(result),
-        "tracking": tracking(evidence.track),
-        "base_load": None if evidence.base_load is None else asdict(evidence.base_load),
-        "rms_torque_nm": _rms_torque(result),
-        "solver": asdict(result.solver),
-        "reading": result.reading,
+        **own,
         "notes": all_notes(result),
-        "cautions": cautions(result),
+        "cautions": cautions,
         "inputs": [asdict(source) for source in result.cell.inputs],
         "versions": versions(),
     }
@@ -90,21 +98,6 @@ def encodable(text: str) -> str:
     return text.encode("utf-8", "backslashreplace").decode("utf-8")
 
 
-def tracking(track: Track | None) -> dict[str, float | None]:
-    """Return the tracking errors while the command lasts; None each where there is no motion."""
-    names = ("velocity_rms_m_s", "velocity_peak_m_s", "position_peak_m", "tilt_peak_deg")
-    if track is None or not np.any(track.during):
-        return dict.fromkeys(names)
-    velocity = track.velocity_error[track.during]
-    values = (
-        np.sqrt(np.mean(velocity**2)),
-        velocity.max(),
-        track.position_error[track.during].max(),
-        np.degrees(track.tilt_error[track.during].max()),
-    )
-    return {name: float(value) for name, value in zip(names, values, strict=True)}
-
-
 def versions() -> dict[str, str | None]:
     """Return the versions of what produced the result; None for what is not installed as a distribution."""
     found: dict[str, str | None] = {"strikecheck": reach.__version__}
@@ -123,32 +116,3 @@ def _rounded(value: float, key: str, digits: int | None) -> float | None:
         return value
     rounded = round(value, TIME_DECIMALS) if key in TIMES else float(f"{value:.{digits}g}")
     return rounded + 0.0  # no negative zero
-
-
-def _limit(use: Use) -> dict[str, Any]:
-    return {
-        "joint": use.joint,
-        "limit": use.limit,
-        "unit": use.unit,
-        "bound": [use.lo, use.hi] if use.known else None,
-        "kept_bound": [use.kept_lo, use.kept_hi] if use.known else None,
-        "source": use.source,
-        "demand_peak": use.demand_peak,
-        "delivered_peak": use.peak,
-        "utilisation": use.utilisation,
-        "time_s": use.time_s,
-    }
-
-
-def _strike(strike: Strike) -> dict[str, Any]:
-    return {**asdict(strike), "delivered": strike.delivered}
-
-
-def _rms_torque(result: FollowResult) -> list[dict[str, Any]]:
-    rms = result.evidence.rms_torque
-    if rms is None:
-        return []
-    return [
-        {"joint": joint.name, "rms": float(value)}
-        for joint, value in zip(result.cell.arm.joints, rms, strict=True)
-    ]

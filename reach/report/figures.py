@@ -1,4 +1,4 @@
-"""What the drawings share: their width, clock and look, and how they become SVG.
+"""What the drawings share: their width and look, and how they become SVG.
 
 The only module that imports the drawing library: the others take its names from here.
 """
@@ -13,18 +13,24 @@ from contextlib import contextmanager
 from typing import NamedTuple
 
 import matplotlib as mpl
+from matplotlib import colormaps as colormaps
+from matplotlib.artist import Artist as Artist
 from matplotlib.axes import Axes as Axes
 from matplotlib.backends.backend_svg import FigureCanvasSVG
+from matplotlib.cm import ScalarMappable as ScalarMappable
+from matplotlib.colors import Normalize as Normalize
 from matplotlib.figure import Figure as Figure
+from matplotlib.figure import SubFigure as SubFigure
+from matplotlib.patches import Circle as Circle
+from matplotlib.patches import PathPatch as PathPatch
 from matplotlib.patches import Polygon as Polygon
 from matplotlib.patches import Rectangle as Rectangle
+from matplotlib.path import Path as Path
 
-from reach.evidence.record import Track
-from reach.report.captions import Caption
+from reach.report.caption import Caption
 from reach.report.looks import STYLE
 
 WIDTH_IN = 9.8  # 940 px at 96 px an inch: the page's width
-FAR_ZERO_S = 1e5  # logs that start later than this are drawn from zero
 
 
 class Picture(NamedTuple):
@@ -32,19 +38,6 @@ class Picture(NamedTuple):
 
     caption: Caption
     svg: bytes
-
-
-class Clock(NamedTuple):
-    """Instants as drawn: those of the log, or since its start where the log's zero is far away."""
-
-    zero_s: float
-    label: str
-
-    @classmethod
-    def of(cls, track: Track) -> Clock:
-        """Return the clock for a track of one row at least."""
-        start = float(track.t_s[0])
-        return cls(0.0, "time, s") if abs(start) < FAR_ZERO_S else cls(start, f"time after {start:.3f} s, s")
 
 
 @contextmanager

@@ -9,17 +9,14 @@ from collections.abc import Iterable, Iterator, Mapping
 from pathlib import Path
 
 from reach.errors import FaultList, OutputError
-from reach.report.evidence import evidence_files
-from reach.report.writers import WRITERS
-from reach.result import FollowResult
+from reach.report.writers import COMMANDS, WRITERS, part
+from reach.result import Result
 
-# File name and the kind of writer; the verdict comes last, so a folder that has one is complete.
-FILES = (("motion.csv", "csv"), ("report.html", "html"), ("verdict.json", "json"))
-EVIDENCE = "evidence"
+PAGE, VERDICT, EVIDENCE = "report.html", "verdict.json", "evidence"
 
 
-def write_folder(result: FollowResult, out_dir: Path, junit: Path | None = None) -> list[Path]:
-    """Write verdict.json, motion.csv, report.html and evidence/ into a folder, which is made where needed.
+def write_folder(result: Result, out_dir: Path, junit: Path | None = None) -> list[Path]:
+    """Write verdict.json, the command's table, report.html and evidence/ into a folder, which is made where needed.
 
     Returns
     -------
@@ -32,13 +29,16 @@ def write_folder(result: FollowResult, out_dir: Path, junit: Path | None = None)
         When the folder or a file can't be written; no half file and no temporary file is left, and no
         verdict beside the files of another run.
     """
-    contents: dict[Path, bytes | None] = {
-        out_dir / EVIDENCE / name: content for name, content in evidence_files(result).items()
+    writers = WRITERS[result.command]
+    stored: Mapping[str, bytes | None] = part(result.command, "evidence").evidence_files(result)
+    contents: dict[Path, str | bytes | None] = {
+        out_dir / EVIDENCE / name: content for name, content in stored.items()
     }
     if junit is not None:
-        contents[junit] = as_bytes(WRITERS["junit"](result))
-    for name, kind in FILES:
-        contents[out_dir / name] = as_bytes(WRITERS[kind](result))
+        contents[junit] = writers["junit"](result)
+    # The verdict comes last, so a folder that has one is complete.
+    for name, kind in ((COMMANDS[result.command], "csv"), (PAGE, "html"), (VERDICT, "json")):
+        contents[out_dir / name] = writers[kind](result)
     return write_files(contents)
 
 
@@ -59,7 +59,8 @@ def check_targets(out_dir: Path, junit: str | None, inputs: Iterable[str]) -> No
         faults.add("--out", f"{place} can't be written to; name another folder")
     if junit is not None:
         target = Path(junit)
-        taken = [*(Path(path) for path in inputs), *(out_dir / name for name, _ in FILES)]
+        results = [out_dir / name for name in (*COMMANDS.values(), PAGE, VERDICT)]
+        taken = [*(Path(path) for path in inputs), *results]
         if not target.name:
             faults.add("--junit", "it has no file name; name a file")
         elif target.exists() and not target.is_file():

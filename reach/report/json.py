@@ -5,9 +5,14 @@ from __future__ import annotations
 import json
 
 from reach.report.document import document
-from reach.result import FollowResult
+from reach.result import Result
 
 
-def write(result: FollowResult) -> str:
+def write(result: Result) -> str:
     """Return the verdict document as JSON text."""
-    return json.dumps(document(result), ensure_ascii=False, allow_nan=False, indent=1) + "\n"
+    return json_text(document(result))
+
+
+def json_text(content: object) -> str:
+    """Return plain data as JSON text."""
+    return json.dumps(content, ensure_ascii=False, allow_nan=False, indent=1) + "\n"

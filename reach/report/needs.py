@@ -2,30 +2,33 @@
 
 from __future__ import annotations
 
-from reach.evidence.record import Need, Use
-from reach.report.alike import once
-from reach.report.wording import number, plain
-from reach.result import FollowResult
+from collections.abc import Iterable
 
+from reach.cell import Bound, Cell
+from reach.evidence.record import Need
+from reach.report.alike import once
+from reach.report.wording import number, owner
+from reach.result import Result
+
+FIELDS = {"torque rate": "torque_rate", "duty": "torque_continuous"}  # of a joint's limits, by their kinds
 HEADER = ("limit", "joint", "now", "necessary", "sufficient", "unit")
 
 
-def split(result: FollowResult) -> tuple[list[Need], list[Need]]:
-    """Return the needs that were searched for, and those of unknown limits that nobody requires."""
-    unknown = set(result.evidence.unknown)
-    spare = {limit for limit, _ in unknown} - set(result.cell.accept.require)
-    beyond = [need for need in result.needs if need.limit in spare and (need.limit, need.joint) in unknown]
+def split(result: Result, unknown: Iterable[tuple[str, str | None]]) -> tuple[list[Need], list[Need]]:
+    """Return the needs that were searched for, and those of unknown (limit, joint) pairs that nobody requires."""
+    pairs = set(unknown)
+    spare = {limit for limit, _ in pairs} - set(result.cell.accept.require)
+    beyond = [need for need in result.needs if need.limit in spare and (need.limit, need.joint) in pairs]
     return [need for need in result.needs if need not in beyond], beyond
 
 
-def rows(result: FollowResult, needs: list[Need]) -> list[tuple[str, ...]]:
+def rows(cell: Cell, needs: list[Need]) -> list[tuple[str, ...]]:
     """Return the cells under HEADER, a row each need."""
-    uses = {(use.limit, use.joint): use for use in result.evidence.uses}
     return [
         (
             need.limit,
-            "tool" if need.joint is None else plain(need.joint),
-            _now(uses.get((need.limit, need.joint))),
+            owner(need.joint),
+            _now(cell, need),
             number(need.necessary),
             number(need.sufficient),
             need.unit,
@@ -56,7 +59,12 @@ def not_searched(needs: list[Need]) -> str:
     return f"{kinds}: not required, so not searched; peaks in verdict.json" if kinds else ""
 
 
-def _now(use: Use | None) -> str:
-    if use is None or use.lo is None or use.hi is None:
-        return "unknown"
-    return number(max(abs(use.lo), abs(use.hi)))
+def _now(cell: Cell, need: Need) -> str:
+    """The stated limit that a need is of, the larger side."""
+    if need.joint is None:
+        return (
+            number(cell.tool.speed_m_s) if cell.tool is not None and need.limit == "tool speed" else "unknown"
+        )
+    limits = {joint.name: joint.limits for joint in cell.arm.joints}.get(need.joint)
+    bound = getattr(limits, FIELDS.get(need.limit, need.limit), None)
+    return number(max(abs(bound.lo), abs(bound.hi))) if isinstance(bound, Bound) else "unknown"

@@ -28,9 +28,10 @@ from reach.advice.answer import answer  # noqa: E402
 from reach.advice.demand import demanded_motion  # noqa: E402
 from reach.arm import Arm  # noqa: E402
 from reach.evidence.measure import measure  # noqa: E402
-from reach.follow.bench import build_limits, run  # noqa: E402
+from reach.follow.bench import run  # noqa: E402
 from reach.follow.roll import roll  # noqa: E402
 from reach.kinematics import Chain  # noqa: E402
+from reach.limits.build import build_limits  # noqa: E402
 
 EXAMPLE = Path(__file__).parents[2] / "examples" / "wear_bench" / "cell.toml"
 ROUNDS = 7
@@ -63,7 +64,7 @@ def floor_step(arm: Arm) -> Callable[[], None]:
 
 
 def main() -> None:
-    cell = load_cell(sys.argv[1] if len(sys.argv) > 1 else EXAMPLE, need_follow=True)
+    cell = load_cell(sys.argv[1] if len(sys.argv) > 1 else EXAMPLE, need="follow")
     first = run(cell)
     cell = first.cell
     arm, limits = Arm(cell.arm, cell.paddle), build_limits(cell)

@@ -8,8 +8,12 @@ import numpy as np
 
 from reach.cell import Array
 from reach.evidence.record import Strike, Track
-from reach.report.captions import of_errors, of_speed
-from reach.report.figures import WIDTH_IN, Axes, Clock, Figure, Picture, looks, svg_of
+from reach.report.figures import WIDTH_IN, Axes, Figure, Picture, looks, svg_of
+from reach.report.follow.captions import of_errors, of_speed
+from reach.report.follow.clock import Clock
+from reach.report.follow.path_figure import draw_path
+from reach.report.follow.series import keep
+from reach.report.follow.use_figures import draw_peaks, draw_uses
 from reach.report.looks import (
     BLUE,
     COMMANDED_STYLE,
@@ -20,9 +24,6 @@ from reach.report.looks import (
     STRIKE_STYLES,
     WINDOW_STYLES,
 )
-from reach.report.path_figure import draw_path
-from reach.report.series import keep
-from reach.report.use_figures import draw_peaks, draw_uses
 from reach.result import FollowResult
 
 POINTS = 2000  # a line, at most

@@ -2,21 +2,18 @@
 
 from __future__ import annotations
 
-import io
-import json
 from dataclasses import asdict
 
 import numpy as np
 
-from reach.report.document import strict
+from reach.report.stored import archive, cell_file
 from reach.result import FollowResult
-
-SCHEMA = "strikecheck/evidence/1"
 
 
 def evidence_files(result: FollowResult) -> dict[str, bytes | None]:
     """Return the content of motion.npz and cell.json by file name; None for a file that must not be there."""
-    return {"motion.npz": _motion(result), "cell.json": _cell(result)}
+    strikes = [asdict(strike) for strike in result.evidence.strikes]
+    return {"motion.npz": _motion(result), "cell.json": cell_file(result, {"strikes": strikes})}
 
 
 def _motion(result: FollowResult) -> bytes | None:
@@ -29,9 +26,7 @@ def _motion(result: FollowResult) -> bytes | None:
     motion, track, torque = evidence.motion, evidence.track, evidence.torque
     if motion is None or track is None or torque is None:
         return None
-    out = io.BytesIO()
-    np.savez(
-        out,
+    return archive(
         q=motion.q,
         v=motion.v,
         a=motion.a,
@@ -45,25 +40,3 @@ def _motion(result: FollowResult) -> bytes | None:
         wanted_twist=track.wanted_twist,
         during=track.during,
     )
-    return out.getvalue()
-
-
-def _cell(result: FollowResult) -> bytes:
-    """Return the arm, its stated limits, the paddle and what counts as delivered, to full precision.
-
-    A limit that is null is unknown; a side of a limit that is null is known to be unlimited.
-    """
-    cell = result.cell
-    content = {
-        "schema": SCHEMA,
-        "verdict": result.verdict.verdict,
-        "period_s": cell.period_s,
-        "arm": asdict(cell.arm),
-        "paddle": asdict(cell.paddle),
-        "tool": None if cell.tool is None else asdict(cell.tool),
-        "accept": asdict(cell.accept),
-        "strikes": [asdict(strike) for strike in result.evidence.strikes],
-        "inputs": [asdict(source) for source in cell.inputs],
-    }
-    tidy = strict(content, digits=None)
-    return (json.dumps(tidy, ensure_ascii=False, allow_nan=False, indent=1) + "\n").encode()

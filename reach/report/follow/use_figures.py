@@ -9,9 +9,11 @@ import numpy as np
 
 from reach.cell import Array
 from reach.evidence.record import Track, Use
-from reach.report.captions import of_peaks, of_uses
 from reach.report.columns import shorten
-from reach.report.figures import WIDTH_IN, Axes, Clock, Figure, Picture, Polygon, Rectangle, svg_of
+from reach.report.figures import WIDTH_IN, Axes, Figure, Picture, Polygon, Rectangle, svg_of
+from reach.report.follow.captions import of_peaks, of_uses
+from reach.report.follow.clock import Clock
+from reach.report.follow.series import kept_share, shares, worst_per_bin
 from reach.report.looks import (
     BROKEN,
     BROKEN_PALE,
@@ -22,7 +24,6 @@ from reach.report.looks import (
     OTHER_COLOUR,
     PALE,
 )
-from reach.report.series import kept_share, shares, worst_per_bin
 from reach.report.wording import owner
 from reach.result import FollowResult
 from reach.verdict import ROUNDING
@@ -46,7 +47,7 @@ def draw_peaks(result: FollowResult) -> Picture:
         _peak_cell(axes, use, kinds.index(use.limit), owners.index(use.joint))
     axes.set(xlim=(-0.5, len(kinds) - 0.5), ylim=(len(owners) - 0.5, -0.5))
     axes.set_xticks(range(len(kinds)), kinds)
-    axes.set_yticks(range(len(owners)), [_name(uses, joint) for joint in owners])
+    axes.set_yticks(range(len(owners)), [_name(joint) for joint in owners])
     axes.tick_params(length=0, labeltop=True, labelbottom=False)
     axes.grid(False)
     axes.spines[:].set_visible(False)
@@ -59,8 +60,8 @@ def draw_peaks(result: FollowResult) -> Picture:
     return Picture(of_peaks(result), svg_of(figure))
 
 
-def _name(uses: tuple[Use, ...], joint: str | None) -> str:
-    return shorten(next(owner(use) for use in uses if use.joint == joint), NAME_COLUMNS)
+def _name(joint: str | None) -> str:
+    return shorten(owner(joint), NAME_COLUMNS)
 
 
 def _breaks(share: float | None) -> bool:
@@ -111,7 +112,7 @@ def draw_uses(result: FollowResult, track: Track) -> Picture:
     for axes, joint in zip(panels, owners, strict=False):
         mine = sorted((use for use in drawn if use.joint == joint), key=lambda use: -(use.utilisation or 0.0))
         _panel(axes, mine[:LANES], t)
-        axes.set_title(_name(result.evidence.uses, joint), weight="bold")
+        axes.set_title(_name(joint), weight="bold")
     for axes in panels[len(owners) :]:
         axes.set_visible(False)
     for axes in panels[max(len(owners) - 2, 0) : len(owners)]:

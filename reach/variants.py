@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from dataclasses import replace
 from typing import Any
@@ -39,6 +40,26 @@ def scaled_limits(cell: Cell, factor: float) -> Cell:
 
     tool = replace(cell.tool, speed_m_s=cell.tool.speed_m_s * factor) if cell.tool else None
     return replace(_with_limits(cell, lambda _, limits: scaled(limits)), tool=tool)
+
+
+def one_limit_scaled(cell: Cell, limit: str, joint: str | None, factor: float) -> Cell:
+    """One kind of limit times a factor, of one joint or (None) of all; a range of position about its middle."""
+    if limit == "tool speed":
+        tool = replace(cell.tool, speed_m_s=cell.tool.speed_m_s * factor) if cell.tool else None
+        return replace(cell, tool=tool)
+
+    def scaled(name: str, limits: JointLimits) -> JointLimits:
+        bound: Bound | None = getattr(limits, FIELDS[limit])
+        if bound is None or joint not in (None, name):
+            return limits
+        middle = (
+            (bound.lo + bound.hi) / 2 if limit == "position" and math.isfinite(bound.hi - bound.lo) else 0.0
+        )
+        lo, hi = (middle + (side - middle) * factor for side in (bound.lo, bound.hi))
+        changed: dict[str, Any] = {FIELDS[limit]: Bound(lo, hi, bound.source)}
+        return replace(limits, **changed)
+
+    return _with_limits(cell, scaled)
 
 
 def with_bounds(cell: Cell, values: dict[tuple[str, str | None], float | None], source: str) -> Cell:

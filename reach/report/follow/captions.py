@@ -2,21 +2,12 @@
 
 from __future__ import annotations
 
-from typing import NamedTuple
-
 import numpy as np
 
 from reach.evidence.record import Track
+from reach.report.caption import Caption
 from reach.result import FollowResult
 from reach.verdict import broken_limits
-
-
-class Caption(NamedTuple):
-    """A figure's title, what it shows, and the gist in words for who can't see it."""
-
-    title: str
-    text: str
-    alt: str
 
 
 def of_speed(result: FollowResult) -> Caption:

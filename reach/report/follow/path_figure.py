@@ -6,10 +6,10 @@ import numpy as np
 
 from reach.cell import Array
 from reach.evidence.record import Track
-from reach.report.captions import of_path
 from reach.report.figures import WIDTH_IN, Axes, Figure, Picture, svg_of
+from reach.report.follow.captions import of_path
+from reach.report.follow.series import keep_way
 from reach.report.looks import START_STYLE, STRIKE_STYLES, WAY_COMMANDED_STYLE, WAY_DELIVERED_STYLE
-from reach.report.series import keep_way
 from reach.result import FollowResult
 
 VIEWS = (("from the side", 0, 2), ("from the front", 1, 2), ("from above", 0, 1))

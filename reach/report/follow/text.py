@@ -4,68 +4,40 @@ from __future__ import annotations
 
 import math
 
-from reach.evidence.record import Reason, Use
-from reach.report import needs
-from reach.report.alike import alike, with_count
-from reach.report.cautions import cautions
+from reach.evidence.record import Use
+from reach.report import summary
 from reach.report.columns import shorten, table, wrap
-from reach.report.document import tracking
-from reach.report.wording import (
-    NOTHING,
-    all_notes,
-    demand_note,
-    fixed,
-    force_unit,
-    number,
-    owner,
-    percent,
-    plain,
-    remedy_line,
-    solver_line,
-    stated,
-    strike_cells,
-    tilt_meaning,
-    unknown_limits,
-)
+from reach.report.follow.document import cautions, tracking
+from reach.report.follow.wording import demand_note, solver_line, stated, strike_cells, tilt_meaning
+from reach.report.summary import NAME_COLUMNS, bullets
+from reach.report.wording import NOTHING, fixed, force_unit, number, owner, percent, plain
 from reach.result import FollowResult
 
 FIRST_STRIKES = 3  # delivered strikes shown
 MISSED_STRIKES = 20  # missed strikes shown
-OTHER_REASONS = 5
 WORST_LIMITS = 8
-NOTE_LINES = 8
-NAME_COLUMNS = 24
-
-Section = tuple[str, list[str]]
 
 
 def write(result: FollowResult) -> str:
     """Return the summary; the verdict's sentence comes first."""
-    lines = wrap(plain(result.verdict.sentence))
-    for heading, content in (
-        ("", _standing(result)),
-        ("Strikes", _strikes(result)),
-        ("What decides", _reasons([reason for reason in result.reasons if reason.decides])),
-        ("What else fell short", _other_reasons(result)),
-        ("Limits used most", _limits(result)),
-        ("Limits unknown", _unknown(result)),
-        ("What the limits would have to be", _needs(result)),
-        ("What would help", _remedies(result)),
-        ("The motion", _motion(result)),
-        ("How the log was read", _bullets([result.reading])),
-        ("Notes", _notes(result)),
-        ("Caution", _bullets(cautions(result))),
-    ):
-        if content:
-            lines += ["", *([heading] if heading else []), *content]
-    return "\n".join(lines) + "\n"
-
-
-def _standing(result: FollowResult) -> list[str]:
-    lines = wrap(f"without margins: {result.without_margins}", rest="  ")
-    if result.without_pose_gain is not None:
-        lines += wrap(f"without pose feedback: {result.without_pose_gain}", rest="  ")
-    return lines + wrap(f"headroom: {plain(result.headroom_text)}", rest="  ")
+    unknown, bare = result.evidence.unknown, result.without_pose_gain
+    return summary.written(
+        result,
+        (
+            ("", summary.standing(result, [] if bare is None else [f"without pose feedback: {bare}"])),
+            ("Strikes", _strikes(result)),
+            summary.deciding(result),
+            summary.other_reasons(result),
+            ("Limits used most", _limits(result)),
+            summary.unknown_list(unknown),
+            summary.needed(result, unknown),
+            summary.remedies(result),
+            ("The motion", _motion(result)),
+            ("How the log was read", bullets([result.reading])),
+            summary.notes(result),
+            ("Caution", bullets(cautions(result))),
+        ),
+    )
 
 
 def _strikes(result: FollowResult) -> list[str]:
@@ -93,16 +65,6 @@ def _strikes(result: FollowResult) -> list[str]:
     return lines + (wrap(meaning, "  ") if meaning else [])
 
 
-def _reasons(reasons: list[Reason]) -> list[str]:
-    return _bullets([reason.text for reason in reasons])
-
-
-def _other_reasons(result: FollowResult) -> list[str]:
-    others = [reason for reason in result.reasons if not reason.decides]
-    left = len(others) - OTHER_REASONS
-    return _reasons(others[:OTHER_REASONS]) + ([f"  … and {left} more in verdict.json"] if left > 0 else [])
-
-
 def _limits(result: FollowResult) -> list[str]:
     used = [
         (use.utilisation, use)
@@ -120,7 +82,7 @@ def _limits(result: FollowResult) -> list[str]:
 def _use(use: Use) -> tuple[str, ...]:
     return (
         use.limit,
-        shorten(owner(use), NAME_COLUMNS),
+        shorten(owner(use.joint), NAME_COLUMNS),
         number(use.peak),
         stated(use),
         percent(use.utilisation),
@@ -130,46 +92,10 @@ def _use(use: Use) -> tuple[str, ...]:
     )
 
 
-def _unknown(result: FollowResult) -> list[str]:
-    return _bullets([f"{limit}: {joints}" for limit, joints in unknown_limits(result)])
-
-
-def _needs(result: FollowResult) -> list[str]:
-    sought, beyond = needs.split(result)
-    lines = []
-    if sought:
-        cells = [
-            (limit, shorten(joint, NAME_COLUMNS), *rest) for limit, joint, *rest in needs.rows(result, sought)
-        ]
-        lines = table(needs.HEADER, cells, left=2) + wrap(needs.meaning(sought), "  ")
-    return lines + _bullets([*needs.remarks(sought), needs.not_searched(beyond)])
-
-
-def _notes(result: FollowResult) -> list[str]:
-    """As many notes as a few lines hold, those that are alike told once."""
-    notes = all_notes(result)
-    lines: list[str] = []
-    told = 0
-    for note, count in alike(notes, [joint.name for joint in result.cell.arm.joints]):
-        more = _bullets([with_count(note, count)])
-        if lines and len(lines) + len(more) > NOTE_LINES:
-            break
-        lines += more
-        told += count
-    return lines + ([f"  … and {len(notes) - told} more in verdict.json"] if told < len(notes) else [])
-
-
-def _remedies(result: FollowResult) -> list[str]:
-    lines = []
-    for place, remedy in enumerate(result.remedies, start=1):
-        lines += wrap(plain(remedy_line(remedy)), f"  {place}. ")
-    return lines
-
-
 def _motion(result: FollowResult) -> list[str]:
     evidence = result.evidence
     if evidence.track is None:
-        lines = _bullets(["There is no motion.", *(reason.text for reason in evidence.blocked)])
+        lines = bullets(["There is no motion.", *(reason.text for reason in evidence.blocked)])
     else:
         errors = tracking(evidence.track)
         tilt = errors["tilt_peak_deg"]
@@ -197,7 +123,3 @@ def _motion(result: FollowResult) -> list[str]:
 
 def _millimetres(value_m: float | None) -> str:
     return NOTHING if value_m is None else number(1000 * value_m)
-
-
-def _bullets(texts: list[str] | tuple[str, ...]) -> list[str]:
-    return [line for text in texts if text for line in wrap(plain(text), "  - ")]

@@ -1,0 +1,98 @@
+"""Parts of the terminal summary that every command's has: lines of plain text, 100 columns at most."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+
+from reach.evidence.record import Reason
+from reach.report import needs
+from reach.report.alike import alike, with_count
+from reach.report.columns import shorten, table, wrap
+from reach.report.wording import all_notes, plain, remedy_line, unknown_limits
+from reach.result import Result
+
+OTHER_REASONS = 5
+NOTE_LINES = 8
+NAME_COLUMNS = 24
+
+Section = tuple[str, list[str]]
+Unknown = Iterable[tuple[str, str | None]]
+
+
+def written(result: Result, sections: Iterable[Section]) -> str:
+    """Return the verdict's sentence, and below it each section that has lines under its heading."""
+    lines = wrap(plain(result.verdict.sentence))
+    for heading, content in sections:
+        if content:
+            lines += ["", *([heading] if heading else []), *content]
+    return "\n".join(lines) + "\n"
+
+
+def standing(result: Result, own: Iterable[str] = ()) -> list[str]:
+    """Return how the verdict stands to margins and limits; `own` are a command's own lines."""
+    texts = [f"without margins: {result.without_margins}", *own, f"headroom: {result.headroom_text}"]
+    return [line for text in texts for line in wrap(plain(text), rest="  ")]
+
+
+def deciding(result: Result) -> Section:
+    """Return the reasons that decide."""
+    return "What decides", _reasons([reason for reason in result.reasons if reason.decides])
+
+
+def other_reasons(result: Result) -> Section:
+    """Return some of the reasons that do not."""
+    others = [reason for reason in result.reasons if not reason.decides]
+    left = len(others) - OTHER_REASONS
+    more = [f"  … and {left} more in verdict.json"] if left > 0 else []
+    return "What else fell short", _reasons(others[:OTHER_REASONS]) + more
+
+
+def unknown_list(unknown: Unknown) -> Section:
+    """Return the limits nobody stated."""
+    return "Limits unknown", bullets(f"{limit}: {joints}" for limit, joints in unknown_limits(unknown))
+
+
+def needed(result: Result, unknown: Unknown) -> Section:
+    """Return what the limits would have to be."""
+    sought, beyond = needs.split(result, unknown)
+    lines = []
+    if sought:
+        cells = [
+            (limit, shorten(joint, NAME_COLUMNS), *rest)
+            for limit, joint, *rest in needs.rows(result.cell, sought)
+        ]
+        lines = table(needs.HEADER, cells, left=2) + wrap(needs.meaning(sought), "  ")
+    lines += bullets([*needs.remarks(sought), needs.not_searched(beyond)])
+    return "What the limits would have to be", lines
+
+
+def remedies(result: Result) -> Section:
+    """Return what would help, by number."""
+    lines = []
+    for place, remedy in enumerate(result.remedies, start=1):
+        lines += wrap(plain(remedy_line(remedy)), f"  {place}. ")
+    return "What would help", lines
+
+
+def notes(result: Result) -> Section:
+    """Return as many notes as a few lines hold, those that are alike told once."""
+    found = all_notes(result)
+    lines: list[str] = []
+    told = 0
+    for note, count in alike(found, [joint.name for joint in result.cell.arm.joints]):
+        more = bullets([with_count(note, count)])
+        if lines and len(lines) + len(more) > NOTE_LINES:
+            break
+        lines += more
+        told += count
+    more = [f"  … and {len(found) - told} more in verdict.json"] if told < len(found) else []
+    return "Notes", lines + more
+
+
+def bullets(texts: Iterable[str]) -> list[str]:
+    """Return texts as items of a list, empty ones left out."""
+    return [line for text in texts if text for line in wrap(plain(text), "  - ")]
+
+
+def _reasons(reasons: list[Reason]) -> list[str]:
+    return bullets(reason.text for reason in reasons)

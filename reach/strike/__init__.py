@@ -1,0 +1,1 @@
+"""How fast an arm can strike at one place: upper bounds, whole motions, and what a hit does to the arm."""

@@ -1,0 +1,208 @@
+"""Strikes looked at, a chunk at a time: postures, both sides of the speed, the motion that shows it, what stops it."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from reach.cell import Array, Cell
+from reach.posture import reach_bound
+from reach.strike.setting import Setting
+from reach.strike.sides import AT_BOUND
+from reach.survey.family import folds
+from reach.survey.grid import Strikes
+from reach.survey.inverse import Found, Library, from_library, from_postures, merged
+from reach.survey.judged import Scribe
+from reach.survey.rows import Rows
+from reach.survey.selfmotion import LEADERS, best_first, improved, own_bound
+from reach.survey.stops import gains, loosened, stop_at_bound, stop_of
+from reach.survey.weigh import Effort, Shown, Weighed, largest, show, weigh
+from reach.variants import without_margins
+from reach.verdict import DELIVERABLE
+
+CLOSE = 0.7  # of the required speed: a bound from here on is worth a wider search before it says no
+DEEP_LEADERS = 8  # postures of a strike that are moved in that search
+BETTER = 1 + 1e-3  # times the bound: a neighbour's posture that gives more is moved too
+
+
+@dataclass(frozen=True, eq=False)
+class Searched:
+    """Postures of a chunk's m strikes, and the starts (m,) and postures compared (m,) that it took."""
+
+    found: Found
+    starts: NDArray[np.int64]
+    postures: NDArray[np.int64]
+
+
+class Looker:
+    """Looks at strikes of one cell; made once a process.
+
+    Parameters
+    ----------
+    cell : with a survey
+    seed : of the random postures
+    full : also say what stops each strike, and how it stands without margins
+    """
+
+    def __init__(self, cell: Cell, seed: int, full: bool = True):
+        assert cell.survey is not None
+        self.setting = Setting.of(cell)
+        self.folds = folds(self.setting.chain, self.setting.arm.names)
+        exact = cell.survey.exact
+        self._first, self._then = (Effort.FULL, Effort.FULL) if exact else (Effort.QUICK, Effort.DECIDE)
+        self._library = Library(self.setting, seed)
+        self._origin, self._length = reach_bound(self.setting.arm)
+        bare = without_margins(cell)
+        self._bare = Setting.of(bare) if full and bare.margins != cell.margins else None
+        self._loose = loosened(cell) if full else {}
+        self._scribe = Scribe(cell, self.setting, self.folds, self._origin, self._length)
+
+    def search(self, strikes: Strikes) -> Searched:
+        """Postures of strikes: inverse kinematics from seeded starts, moved along the freedom that is left."""
+        m = len(strikes)
+        starts, postures = np.zeros(m, dtype=np.int64), np.zeros(m, dtype=np.int64)
+        near = np.flatnonzero(np.linalg.norm(strikes.position - self._origin, axis=1) <= self._length)
+        if not len(near):
+            return Searched(Found.none(self.setting.arm.n), starts, postures)
+        part = strikes.take(near)
+        found, starts[near] = from_library(self.setting, self._library, part.position, part.normal)
+        found, postures[near] = self._moved(part, found, LEADERS)
+        return Searched(Found(found.q, near[found.owner]), starts, postures)
+
+    def judge(self, strikes: Strikes, searched: Searched, neighbours: Found) -> Rows:
+        """The rows of strikes from their postures and from their neighbours'.
+
+        A posture that fails numerically leaves its own row undecided, with the reason.
+        """
+        try:
+            return self._judged(strikes, searched, neighbours)
+        except (ArithmeticError, ValueError, np.linalg.LinAlgError) as error:
+            rows = self.empty(strikes)
+            if len(strikes) == 1:
+                rows.set(0, reason=f"failed numerically: {error}")
+                rows.bare[0] = rows.get(0, "verdict")
+                return rows
+        for k in range(len(strikes)):
+            one = Searched(searched.found.of([k]), searched.starts[k : k + 1], searched.postures[k : k + 1])
+            rows.put([k], self.judge(strikes.take(slice(k, k + 1)), one, neighbours.of([k])))
+        return rows
+
+    def empty(self, strikes: Strikes, reason: str = "") -> Rows:
+        """Rows with nothing in them yet, undecided."""
+        return Rows(strikes, self.setting.arm.n, len(self.folds.families), reason)
+
+    def _judged(self, strikes: Strikes, searched: Searched, neighbours: Found) -> Rows:
+        rows = self.empty(strikes)
+        found, postures = self._with_neighbours(strikes, searched, neighbours)
+        rows.counts["starts"][:], rows.counts["postures"][:] = searched.starts, postures
+        self._filled(rows, found, self._first)
+        again = self._worth_more(rows)
+        if len(again):
+            part = strikes.take(again)
+            more, starts = from_library(self.setting, self._library, part.position, part.normal, deep=True)
+            wide, tried = self._moved(part, merged([found.of(again), more]), DEEP_LEADERS)
+            second = self.empty(part)
+            second.counts["starts"][:] = rows.counts["starts"][again] + starts
+            second.counts["postures"][:] = rows.counts["postures"][again] + tried
+            self._filled(second, wide, self._then)
+            rows.put(again.tolist(), second)
+        return rows
+
+    def _worth_more(self, rows: Rows) -> NDArray[np.int64]:
+        """Strikes that a wider search may still change: reached, not delivered, their bound not far below."""
+        bound = rows.values["bound_still_m_s" if self.setting.still else "bound_free_m_s"]
+        with np.errstate(invalid="ignore"):
+            close = bound >= CLOSE * rows.strikes.required_m_s
+            short = ~(rows.values["demonstrated_m_s"] >= rows.strikes.required_m_s)
+        return np.flatnonzero(close & short)
+
+    def _moved(self, strikes: Strikes, found: Found, count: int) -> tuple[Found, NDArray[np.int64]]:
+        """Postures, best first, after moving the best of each strike; and how many (m,) were compared."""
+        found = best_first(found, self._own(strikes, found))
+        moved = improved(self.setting, found, strikes.position, strikes.normal, strikes.direction, count)
+        both = merged([moved.found, found])
+        return best_first(both, self._own(strikes, both)), moved.tried
+
+    def _own(self, strikes: Strikes, found: Found) -> Array:
+        return own_bound(self.setting, found.q, strikes.direction[found.owner])
+
+    def _with_neighbours(
+        self, strikes: Strikes, searched: Searched, neighbours: Found
+    ) -> tuple[Found, NDArray[np.int64]]:
+        """Postures with those reached from the neighbours', and how many (m,) were compared."""
+        found, postures, m = searched.found, searched.postures.copy(), len(strikes)
+        if not len(neighbours.q):
+            return found, postures
+        more = from_postures(self.setting, neighbours, strikes.position, strikes.normal)
+        postures += np.bincount(more.owner, minlength=m)
+        tops = [np.full(m, -np.inf), np.full(m, -np.inf)]
+        for top, some in zip(tops, (found, more), strict=True):
+            np.maximum.at(top, some.owner, self._own(strikes, some))
+        found = merged([found, more])
+        gained = np.flatnonzero(tops[1] > tops[0] * BETTER)
+        if len(gained):
+            wide, tried = self._moved(strikes.take(gained), found.of(gained), LEADERS)
+            postures[gained] += tried
+            found = merged([Found(wide.q, gained[wide.owner]), found])
+        return found, postures
+
+    def _filled(self, rows: Rows, found: Found, effort: Effort) -> None:
+        """Write what the postures show into the rows."""
+        self._scribe.unreached(rows, found.owner)
+        rows.bare[:] = rows.texts["verdict"]
+        if not len(found.q):
+            return
+        weighed = weigh(self.setting, self.folds, rows.strikes, found)
+        self._scribe.bounds(rows, weighed)
+        reached = np.unique(found.owner).tolist()
+        shown = {k: show(self.setting, rows.strikes, k, weighed, effort) for k in reached}
+        for k, one in shown.items():
+            self._scribe.motion(rows, k, one)
+        loose = self._loosened(rows.strikes, weighed, shown)
+        for k, one in shown.items():
+            if one.best is None:
+                stop = self._scribe.stopped_at(weighed, one.index)
+            elif k in loose:
+                stop = stop_of(self.setting, one.best, float(weighed.below.speed[one.index]), loose[k])
+            else:
+                stop = stop_at_bound(self.setting, weighed.above, int(weighed.pick[one.index]))
+            self._scribe.verdict(rows, k, stop)
+        self._without_margins(rows, found, effort)
+
+    def _loosened(
+        self, strikes: Strikes, weighed: Weighed, shown: dict[int, Shown]
+    ) -> dict[int, dict[str, float]]:
+        """For strikes whose motion stays below its posture's bound: quick speed with each limit loosened."""
+        own = weighed.above.own(self.setting.still)[weighed.pick]
+        short = [
+            (k, one.index)
+            for k, one in shown.items()
+            if one.best is not None and one.best.speed < AT_BOUND * own[one.index]
+        ]
+        if not short or not self._loose:
+            return {k: {} for k, _ in short}
+        at, index = (np.array(column) for column in zip(*short, strict=True))
+        q = weighed.found.q[weighed.pick[index]]
+        speeds = gains(self._loose, q, strikes.normal[at], strikes.direction[at])
+        return {
+            k: {kind: float(found[j]) for kind, found in speeds.items()} for j, (k, _) in enumerate(short)
+        }
+
+    def _without_margins(self, rows: Rows, found: Found, effort: Effort) -> None:
+        """How the strikes stand with the margins at zero: those delivered with them stay so."""
+        rows.bare[:] = rows.texts["verdict"]
+        lost = np.flatnonzero(rows.texts["verdict"] != DELIVERABLE)
+        part = found.of(lost)
+        if self._bare is None or not len(part.q):
+            return
+        strikes = rows.strikes.take(lost)
+        weighed = weigh(self._bare, self.folds, strikes, part)
+        own = weighed.above.own(self._bare.still)
+        bound = largest(own, weighed.found.owner, len(lost))
+        for j in np.unique(part.owner).tolist():
+            one = show(self._bare, strikes, j, weighed, effort)
+            rows.bare[lost[j]] = self._scribe.word(
+                strikes, j, one, float(weighed.above.own(self._bare.still)[bound[j]])
+            )
