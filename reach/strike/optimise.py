@@ -26,8 +26,9 @@ ENOUGH = 2e-4  # relative gain of speed below which it has converged
 ITERATIONS = 25
 AT_TOP = 1 - 1e-4  # of the largest speed that joints and tool may have at the strike: nothing is left to gain
 COST = 3.0  # of a relative violation, in speeds of the starting side: more than slowing it away would cost
+SETTLED = 1e-7  # relative change of the merit that is none
 QUIET = 2  # such gains in a row
-WATCHED, WATCHED_RATE = 0.5, 0.9  # relative value, and largest relative rate, from which a limit has a row
+WATCHED = 0.9  # of a limit: what may come that far in a step has a row
 VAST = 1e9  # stands for "no limit known"
 MOST_JERK = 5.0  # of the last answer's largest: keeps the linear program's numbers of one size
 LEAST_LENGTH_M = 1e-3  # of a side: below it there is nothing to optimise
@@ -113,10 +114,13 @@ class SideProblem:
         distances = self._distances(way, speed)
         state = (distances, speed, acceleration, np.repeat(np.eye(count), 3, axis=0))
         rows, sides = [], []
-        for (value, slopes), watched in ((self._value(at), WATCHED), (self._rates(at), WATCHED_RATE)):
-            # How far a value may come: it, and for a rate all that the jerk could add.
-            most = np.abs(value) + (np.abs(slopes[3]) * self._most_jerk(jerks) if len(slopes) > 3 else 0.0)
-            e, r = np.nonzero(most > watched)
+        swing, jerk = 2 * float(np.abs(at.a).max()), self._most_jerk(jerks)
+        for value, slopes in (self._value(at), self._rates(at)):
+            # How far a value may come: it, and all that a turned acceleration, and for a rate the jerk, could add.
+            most = np.abs(value) + np.abs(slopes[2]) * swing
+            if len(slopes) > 3:
+                most += np.abs(slopes[3]) * jerk
+            e, r = np.nonzero(most > WATCHED)
             slope = sum(part[e, r][:, None] * by[e] for part, by in zip(slopes, state, strict=False))
             for sign in (1.0, -1.0):
                 rows.append(sign * slope)
@@ -227,7 +231,12 @@ def optimised(problem: SideProblem, start: Side, pieces: int) -> Side:
         else:
             quiet = quiet + 1 if gained < ENOUGH * at.v[-1] else 0
             jerks, at, merit, trust = tried, there, merit + gained, trust * WIDER
-        if trust < LEAST_TRUST * way or quiet >= QUIET or merit >= AT_TOP * problem.top:
+        if (
+            abs(gained) < SETTLED * at.v[-1]
+            or trust < LEAST_TRUST * way
+            or quiet >= QUIET
+            or merit >= AT_TOP * problem.top
+        ):
             break
     duration = np.append(np.full(pieces, horizon / pieces), problem.hold_s)
     found = Side(duration, np.append(jerks, 0.0))
