@@ -287,17 +287,14 @@ class Survey:
 
     Attributes
     ----------
-    box_m : two corners, low and high; None where strikes are listed
-    spacing_m : of the points, from the low corner on
+    box_m, spacing_m : two corners, low and high, and the points' spacing from the low one; box None for a list
     listed : (k, 3) points of listed strikes, row k with face k; None for a box
     normals, directions : (k, 3) unit vectors, world axes: face normal and direction of the strike
     speeds_m_s : (k,) required paddle speed along the normal
     ball_in_m_s : the incoming ball's velocity where the cell gives it
     rotation : whether the paddle may turn at the strike
     run_up_m : paddle travel allowed before and after the strike; None: joint travel alone
-    required_share : of the strikes
-    exact : the full optimisation at every point
-    max_points : largest number of strikes
+    required_share : of the strikes; exact : the full optimisation at every point; max_points : strikes at most
     """
 
     box_m: tuple[Vec3, Vec3] | None

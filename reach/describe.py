@@ -30,6 +30,7 @@ def describe_cell(cell: Cell) -> str:
         _limit_lines(cell, limits),
         _paddle_lines(cell),
         _log_lines(cell, arm, start),
+        _survey_lines(cell),
         _accept_lines(cell),
         _gap_lines(cell, limits),
         [f"Note       {note}" for note in once(cell.notes, arm.names)],
@@ -60,6 +61,8 @@ def _arm_lines(cell: Cell, arm: Arm) -> list[str]:
 
 
 def _start_lines(cell: Cell, arm: Arm, start: Array | None) -> list[str]:
+    if start is None and cell.follow is None:
+        return ["Start      none given; a log would need one"]
     if start is None:
         return ["Start      a posture for the log's first pose, by inverse kinematics"]
     position, rotation = arm.pose(start)
@@ -149,6 +152,27 @@ def _log_lines(cell: Cell, arm: Arm, start: Array | None) -> list[str]:
         lines.append(f"           {better}")
     lines += [f"           mended: {mend}" for mend in follow.commands.mends]
     return lines
+
+
+def _survey_lines(cell: Cell) -> list[str]:
+    survey = cell.survey
+    if survey is None:
+        return []
+    if survey.box_m is None:
+        where = f"{survey.size} listed strikes"
+    else:
+        counts = " × ".join(map(str, survey.counts))
+        low, high = map(_vector, survey.box_m)
+        where = (
+            f"{counts} points from {low} to {high} m, {len(survey.normals)} faces each: {survey.size} strikes"
+        )
+    speeds = [f"{speed:.4g}" for speed in (survey.speeds_m_s.min(), survey.speeds_m_s.max())]
+    run_up = "joint travel alone" if survey.run_up_m is None else f"{survey.run_up_m:g} m before and after"
+    return [
+        f"Survey     {where}",
+        f"           {' to '.join(dict.fromkeys(speeds))} m/s along the normal for {100 * survey.required_share:g} % "
+        f"of the strikes; paddle {survey.rotation} at the strike; run-up: {run_up}",
+    ]
 
 
 def _accept_lines(cell: Cell) -> list[str]:

@@ -11,7 +11,7 @@ from reach.report.columns import shorten, table, wrap
 from reach.report.wording import all_notes, plain, remedy_line, unknown_limits
 from reach.result import Result
 
-OTHER_REASONS = 5
+DECIDING_REASONS, OTHER_REASONS = 10, 5
 NOTE_LINES = 8
 NAME_COLUMNS = 24
 
@@ -36,15 +36,13 @@ def standing(result: Result, own: Iterable[str] = ()) -> list[str]:
 
 def deciding(result: Result) -> Section:
     """Return the reasons that decide."""
-    return "What decides", _reasons([reason for reason in result.reasons if reason.decides])
+    return "What decides", _first([reason for reason in result.reasons if reason.decides], DECIDING_REASONS)
 
 
 def other_reasons(result: Result) -> Section:
     """Return some of the reasons that do not."""
     others = [reason for reason in result.reasons if not reason.decides]
-    left = len(others) - OTHER_REASONS
-    more = [f"  … and {left} more in verdict.json"] if left > 0 else []
-    return "What else fell short", _reasons(others[:OTHER_REASONS]) + more
+    return "What else fell short", _first(others, OTHER_REASONS)
 
 
 def unknown_list(unknown: Unknown) -> Section:
@@ -94,5 +92,7 @@ def bullets(texts: Iterable[str]) -> list[str]:
     return [line for text in texts if text for line in wrap(plain(text), "  - ")]
 
 
-def _reasons(reasons: list[Reason]) -> list[str]:
-    return bullets(reason.text for reason in reasons)
+def _first(reasons: list[Reason], count: int) -> list[str]:
+    left = len(reasons) - count
+    more = [f"  … and {left} more in verdict.json"] if left > 0 else []
+    return bullets(reason.text for reason in reasons[:count]) + more

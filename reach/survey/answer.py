@@ -8,8 +8,8 @@ from dataclasses import replace
 import numpy as np
 
 from reach.cell import Array, Cell
-from reach.evidence.points import Points, SurveyEvidence
-from reach.evidence.record import Need, Reason
+from reach.evidence.points import Points, SurveyEvidence, Texts
+from reach.evidence.record import Reason
 from reach.limits import LIMITS
 from reach.limits.build import not_checked, unknown_limits
 from reach.posture import reach_bound
@@ -18,14 +18,16 @@ from reach.strike.setting import Setting
 from reach.strike.stroke import DUTY
 from reach.survey.family import folds
 from reach.survey.grid import strikes
+from reach.survey.judged import PROVED, SEARCHED
+from reach.survey.needs import needs
 from reach.survey.remedies import Advice, advice
 from reach.survey.rounds import Progress
 from reach.survey.rows import Rows, points_of
 from reach.survey.sweep import Sweep, sweep
-from reach.verdict import DELIVERABLE, NOT_DELIVERABLE, judge_survey
+from reach.verdict import DELIVERABLE, NOT_DELIVERABLE, Verdict, judge_survey, unknown_required
 
 NOT_ASKED = "not looked for"
-QUANTILE = 0.9  # of the strikes, told beside the most that one asks
+UNKNOWN = "not looked for while a limit that must be known is unknown"
 
 
 def answer(
@@ -46,19 +48,20 @@ def answer(
     done = sweep(cell, grid, workers, seed, progress)
     evidence = gathered(cell, done)
     verdict = judge_survey(evidence, survey.required_share, cell.accept)
-    helps = Advice((), None, NOT_ASKED)
-    if with_advice and not done.stopped:
+    blind = bool(unknown_required(evidence.unknown, cell.accept))
+    helps = Advice((), (), None, UNKNOWN if blind else NOT_ASKED)
+    if with_advice and not done.stopped and not blind:
         helps = advice(cell, grid, evidence, workers, seed, progress)
     return SurveyResult(
         cell=cell,
         verdict=verdict,
         without_margins=_without_margins(cell, evidence, done.parts),
-        reasons=reasons(evidence.points),
-        needs=needs(evidence, done.parts),
+        reasons=reasons(evidence.points, verdict),
+        needs=needs(cell, evidence, done.parts),
         remedies=helps.remedies,
         headroom_share=helps.headroom_share,
         headroom_text=helps.headroom_text,
-        notes=_notes(cell),
+        notes=_notes(cell, helps),
         evidence=evidence,
     )
 
@@ -94,63 +97,49 @@ def _outline(setting: Setting, points: Points) -> Array:
     return np.vstack([base, origins[:, 0], position])
 
 
-def reasons(points: Points) -> tuple[Reason, ...]:
-    """What stops the strikes that are not deliverable, the most frequent first; those decide."""
+def reasons(points: Points, verdict: Verdict) -> tuple[Reason, ...]:
+    """What stops the strikes that are not deliverable, the most frequent first; nothing decides against a verdict of
+    deliverable, and only what is open decides one of undecided."""
+    lacking = points.verdict != DELIVERABLE
+    keys = np.stack([points.limit, points.joint, points.phase], axis=1)
+    counts = Counter(tuple(key) for key in keys[lacking].tolist() if key[0])
     found = []
-    open_ones = points.verdict != DELIVERABLE
-    keys = list(zip(points.limit, points.joint, points.phase, points.basis, strict=True))
-    counts = Counter(key for key, lacking in zip(keys, open_ones, strict=True) if lacking and key[0])
-    for (limit, joint, phase, basis), count in sorted(counts.items(), key=lambda item: (-item[1], item[0])):
-        rows = np.array([key == (limit, joint, phase, basis) for key in keys]) & open_ones
+    for (limit, joint, phase), count in sorted(counts.items(), key=lambda item: (-item[1], item[0])):
+        rows = (keys == [limit, joint, phase]).all(axis=1) & lacking
         lost = int((points.verdict[rows] == NOT_DELIVERABLE).sum())
-        with np.errstate(invalid="ignore"):
-            value = _median(points.demonstrated_m_s[rows])
-        of = f" of {joint}" if joint else ""
-        when = f", {phase}" if phase else ""
-        split = f"{lost} not deliverable, {count - lost} undecided" if lost < count else "not deliverable"
-        text = f"{limit}{of}{when}: {count} strikes ({split})"
-        required = _median(points.required_m_s[rows])
+        decisive = lost if verdict.verdict == NOT_DELIVERABLE else count - lost
         found.append(
             Reason(
-                decides=lost > 0,
-                limit=str(limit),
-                joint=str(joint) or None,
-                phase=str(phase) or None,
+                decides=verdict.verdict != DELIVERABLE and decisive > 0,
+                limit=limit,
+                joint=joint or None,
+                phase=phase or None,
                 time_s=None,
                 until_s=None,
-                value=value,
-                bound=required,
+                value=_median(points.demonstrated_m_s[rows]),
+                bound=_median(points.required_m_s[rows]),
                 unit="m/s",
-                basis=str(basis),
-                text=text,
+                basis=_basis(points.basis[rows]),
+                text=_reason_text(limit, joint, phase, lost, count - lost),
             )
         )
     return tuple(sorted(found, key=lambda reason: not reason.decides))
 
 
+def _reason_text(limit: str, joint: str, phase: str, lost: int, left: int) -> str:
+    of, when = f" of {joint}" if joint else "", f", {phase}" if phase else ""
+    parts = [f"{lost} not deliverable"] * (lost > 0) + [f"{left} undecided"] * (left > 0)
+    return f"{limit}{of}{when}: {lost + left} strike{'s' if lost + left > 1 else ''} ({', '.join(parts)})"
+
+
+def _basis(words: Texts) -> str:
+    """The weaker basis of several."""
+    return PROVED if (words == PROVED).all() else SEARCHED
+
+
 def _median(values: Array) -> float | None:
     known = values[np.isfinite(values)]
     return float(np.median(known)) if len(known) else None
-
-
-def needs(evidence: SurveyEvidence, parts: list[Rows]) -> tuple[Need, ...]:
-    """What the limits that nobody stated would have to be, from the motions at the required speed."""
-    peaks = []
-    for part in parts:
-        done = part.values["demonstrated_m_s"] >= part.strikes.required_m_s
-        peaks += [peak for row, peak in sorted(part.peaks.items()) if done[row]]
-    if not peaks:
-        return ()
-    table = np.array(peaks)
-    found = []
-    for column, (limit, joint) in enumerate(evidence.unknown):
-        kind = LIMITS[limit]
-        most, share = float(table[:, column].max()), float(np.quantile(table[:, column], QUANTILE))
-        unit = kind.units[0]
-        some = f"{100 * QUANTILE:.0f} % of the {len(table)} strikes that other limits allow"
-        text = f"{share:.4g} {unit} is enough for {some}"
-        found.append(Need(joint, limit, None, most, unit, text))
-    return tuple(found)
 
 
 def _without_margins(cell: Cell, evidence: SurveyEvidence, parts: list[Rows]) -> str:
@@ -160,7 +149,7 @@ def _without_margins(cell: Cell, evidence: SurveyEvidence, parts: list[Rows]) ->
     return judge_survey(replace(evidence, points=points), cell.survey.required_share, cell.accept).verdict
 
 
-def _notes(cell: Cell) -> tuple[str, ...]:
+def _notes(cell: Cell, helps: Advice) -> tuple[str, ...]:
     survey = cell.survey
     assert survey is not None
     found = []
@@ -174,4 +163,6 @@ def _notes(cell: Cell) -> tuple[str, ...]:
         found.append(
             "the ball's speed is not given: hits are those of a ball that is kept up, as fast out as in"
         )
+    if helps.in_vain:
+        found.append(f"tried without gain: {'; '.join(helps.in_vain)}")
     return tuple(found)

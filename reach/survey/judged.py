@@ -124,6 +124,7 @@ class Scribe:
         if verdict == NOT_DELIVERABLE and self._covered(rows.strikes, k) < required:
             basis = PROVED
         if done >= required and self._unknown:
+            stop = Stop(self._unknown[0])
             text = f"{', '.join(self._unknown)} unknown; on the others {text}"
         rows.set(
             k, verdict=verdict, basis=basis, reason=text, limit=stop.limit, joint=stop.joint, phase=stop.phase

@@ -43,9 +43,10 @@ class Change:
 
 @dataclass(frozen=True)
 class Advice:
-    """What would help, and by how much all limits may shrink or must grow."""
+    """What would help, what was tried in vain (in words), and by how much all limits may shrink or must grow."""
 
     remedies: tuple[Remedy, ...]
+    in_vain: tuple[str, ...]
     headroom_share: float | None
     headroom_text: str
 
@@ -58,14 +59,17 @@ def advice(
     delivered = evidence.points.verdict == DELIVERABLE
     needed = math.ceil(cell.survey.required_share * len(strikes) - 1e-9)
     with retrials(workers, seed, progress) as trial:
-        found = () if delivered.all() else _remedies(cell, strikes, evidence, delivered, trial)
+        found, in_vain = _remedies(cell, strikes, evidence, delivered, trial)
         share, text = _headroom(cell, strikes, evidence, delivered, needed, trial)
-    return Advice(found, share, text)
+    return Advice(found, in_vain, share, text)
 
 
 def _remedies(
     cell: Cell, strikes: Strikes, evidence: SurveyEvidence, delivered: Mask, trial: Retrial
-) -> tuple[Remedy, ...]:
+) -> tuple[tuple[Remedy, ...], tuple[str, ...]]:
+    """The best change of each sort that gains strikes, and the changes that gain none."""
+    if delivered.all():
+        return (), ()
     missing, kept = np.flatnonzero(~delivered), np.flatnonzero(delivered)
     changes = [*_limits(cell, evidence.points, delivered), *_run_ups(cell), *_bases(cell)]
     few, some = _spread(missing, SAMPLE), _spread(kept, SAMPLE)
@@ -91,7 +95,9 @@ def _remedies(
             found.append(
                 (gained - lost, Remedy(change.words, _effect(gained, lost, len(missing), len(strikes)), True))
             )
-    return tuple(remedy for _, remedy in sorted(found, key=lambda pair: -pair[0]))
+    helps = tuple(remedy for _, remedy in sorted(found, key=lambda pair: -pair[0]))
+    claimed = {change.sort for change in chosen if change.words in {remedy.change for remedy in helps}}
+    return helps, tuple(change.words for change in changes if change.sort not in claimed)
 
 
 def _effect(gained: int, lost: int, missing: int, total: int) -> str:

@@ -23,7 +23,7 @@ STOPS_HEADER = (
     "#not deliverable",
     "#undecided",
     "#all strikes",
-    "#share of all %",
+    "#share %",
 )
 FAMILIES_HEADER = ("family", "#delivers alone", "#share %", "#fastest of all", "#median m/s")
 HITS_HEADER = ("joint", "#velocity jump", "unit", "#impulse", "unit")
