@@ -277,7 +277,9 @@ def test_public_names() -> None:
         "InputError",
         "describe_cell",
         "follow_commands",
+        "SurveyResult",
         "load_cell",
+        "survey_strikes",
         "write_results",
     }
     for name in reach.__all__:

@@ -359,7 +359,7 @@ def test_failures(
     def fail(*_: object, **__: object) -> None:
         raise error
 
-    monkeypatch.setattr("reach.api.answer", fail)
+    monkeypatch.setattr("reach.api.follow_answer", fail)
     done = call("follow", write_case(tmp_path), "--out", tmp_path / "o", *NO_ADVICE)
     assert (done.code, done.out) == (4, "")
     assert all(word in done.err for word in words)

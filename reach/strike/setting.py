@@ -70,15 +70,14 @@ class Setting:
     def velocities(self, q: Array) -> tuple[Array, Array]:
         """Joint velocities (m, n) that postures (m, n) can have at all, in a motion from rest to rest.
 
-        Within the kept-back limit, and |v| <= √(2 a · travel): gained on the way behind, lost on the way ahead.
+        Within the kept-back limit, and |v| <= √(2 a · travel): forward it is gained between the low end and here and lost
+        before the high one, backward the other way round.
         """
         velocity, acceleration = self.limits["velocity"], self.limits["acceleration"]
         lo, hi = self.ends
         up, down = np.maximum(hi - q, 0.0), np.maximum(q - lo, 0.0)
-        gain, loss = acceleration.kept_hi, -acceleration.kept_lo
         with np.errstate(invalid="ignore"):
-            forward = np.sqrt(2 * np.fmin(gain * down, loss * up))
-            backward = np.sqrt(2 * np.fmin(loss * up, gain * down))
-        # Where neither travel nor acceleration ends it, the product is infinite, or nan at an end without a limit.
-        forward, backward = (np.where(np.isnan(x), 0.0, x) for x in (forward, backward))
-        return -np.minimum(-velocity.kept_lo, backward), np.minimum(velocity.kept_hi, forward)
+            square = 2 * np.fmin(acceleration.kept_hi * down, -acceleration.kept_lo * up)
+        # Zero travel times an unlimited acceleration is nan: a joint at its end can't have come from there.
+        most = np.sqrt(np.where(np.isnan(square), 0.0, square))
+        return -np.minimum(-velocity.kept_lo, most), np.minimum(velocity.kept_hi, most)
