@@ -51,7 +51,10 @@ def answer(
     blind = bool(unknown_required(evidence.unknown, cell.accept))
     helps = Advice((), (), None, UNKNOWN if blind else NOT_ASKED)
     if with_advice and not done.stopped and not blind:
-        helps = advice(cell, grid, evidence, workers, seed, progress)
+        try:
+            helps = advice(cell, grid, evidence, workers, seed, progress)
+        except KeyboardInterrupt:  # what was found of the strikes stays
+            helps = Advice((), (), None, "not looked for: the run was stopped")
     return SurveyResult(
         cell=cell,
         verdict=verdict,

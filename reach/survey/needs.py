@@ -55,7 +55,7 @@ def _asked(evidence: SurveyEvidence, parts: list[Rows]) -> tuple[Strikes, Array,
         first += len(part)
     strikes = Strikes(points.position, points.normal, points.direction, points.required_m_s)
     chosen = np.array(rows, dtype=np.int64)
-    return strikes.take(chosen), np.array(peaks).reshape(len(rows), -1), points.q[chosen]
+    return strikes.take(chosen), np.array(peaks).reshape(len(rows), len(evidence.unknown)), points.q[chosen]
 
 
 def _shares(cell: Cell, evidence: SurveyEvidence, strikes: Strikes, most: Array, q: Array) -> Array | None:
