@@ -70,8 +70,8 @@ class Setting:
     def velocities(self, q: Array) -> tuple[Array, Array]:
         """Joint velocities (m, n) that postures (m, n) can have at all, in a motion from rest to rest.
 
-        Within the kept-back limit, and |v| <= √(2 a · travel): forward it is gained between the low end and here and lost
-        before the high one, backward the other way round.
+        Within the kept-back limit, and |v| <= √(2 a · travel): forward it is gained after the low end and lost before
+        the high one, backward the other way round.
         """
         velocity, acceleration = self.limits["velocity"], self.limits["acceleration"]
         lo, hi = self.ends

@@ -41,7 +41,8 @@ def of_bounds(result: SurveyResult, left_out: int, away: int) -> Caption:
     if left_out:
         text += f" Strikes without an upper bound, left out: {left_out}."
     f = figures(result)
-    alt = f"Medians {number(f['demonstrated_median_m_s'])} and {number(f['bound_median_m_s'])} m/s."
+    bound = f[f"bound_{f['bound']}_median_m_s"]
+    alt = f"Medians {number(f['demonstrated_median_m_s'])} and {number(bound)} m/s."
     return Caption("Demonstrated speed and upper bound", text, alt)
 
 

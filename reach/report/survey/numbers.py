@@ -77,13 +77,17 @@ class Hit:
     impulse: float
 
 
+def way_of_striking(survey: Survey | None) -> str:
+    """Return which of the two upper bounds holds for the cell: still or free."""
+    return "still" if survey is None else survey.rotation
+
+
 def bound_in_force(points: Points, survey: Survey | None) -> Array:
     """Return the upper bound (m,) that the cell asks for, m/s: the paddle still, or free to turn at the strike.
 
     Zero for unreachable strikes; infinite where none was found.
     """
-    free = survey is not None and survey.rotation == "free"
-    bound = points.bound_free_m_s if free else points.bound_still_m_s
+    bound = points.bound_free_m_s if way_of_striking(survey) == "free" else points.bound_still_m_s
     return np.where(unreachable(points), 0.0, np.where(np.isnan(bound), np.inf, bound))
 
 

@@ -16,7 +16,13 @@ from reach.report.survey.marks import (
     required_speeds,
     thinned,
 )
-from reach.report.survey.numbers import bound_in_force, demonstrated, speed_of_share, unreachable
+from reach.report.survey.numbers import (
+    bound_in_force,
+    demonstrated,
+    speed_of_share,
+    unreachable,
+    way_of_striking,
+)
 from reach.result import SurveyResult
 
 MARKS = 70  # that a side of the scatter holds apart, at most
@@ -33,7 +39,7 @@ def draw_bounds(result: SurveyResult) -> Picture | None:
     if away.all():
         return None
     required = required_speeds(points.required_m_s)
-    side = _top(done, bound, required)
+    side, kind = _top(done, bound, required), way_of_striking(result.cell.survey)
     figure = Figure(figsize=(WIDTH_IN, 5.4))
     axes, aside = figure.subplots(1, 2, width_ratios=[1.6, 1])
     aside.set_axis_off()
@@ -46,7 +52,7 @@ def draw_bounds(result: SurveyResult) -> Picture | None:
     for place, speed in enumerate(required):
         axes.axhline(speed, **REQUIRED_STYLE, label="_" if place else "required")
         axes.axvline(speed, **REQUIRED_STYLE)
-    axes.set(xlim=(0, side), ylim=(0, side), xlabel="upper bound, m/s", ylabel="demonstrated, m/s")
+    axes.set(xlim=(0, side), ylim=(0, side), xlabel=f"upper bound ({kind}), m/s", ylabel="demonstrated, m/s")
     axes.set_aspect("equal")
     aside.legend(*axes.get_legend_handles_labels(), loc="upper left", handlelength=2.4)
     return Picture(of_bounds(result, int((~known & ~away).sum()), int(away.sum())), svg_of(figure))

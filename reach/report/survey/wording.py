@@ -16,6 +16,7 @@ from reach.verdict import DELIVERABLE, NOT_DELIVERABLE
 
 Row = tuple[str, ...]
 
+OTHER_WAY = {"still": "free", "free": "still"}
 STOPS_HEADER = (
     "limit",
     "joint",
@@ -56,12 +57,14 @@ def figure_rows(result: SurveyResult) -> list[tuple[str, str]]:
     required = between(f["required_min_m_s"], f["required_max_m_s"])
     rows.append(("required", f"{required} m/s along the face normal"))
     rows += [
-        (f"{100 * share['strikes_share']:g} % of the strikes", _speeds(share))
+        (f"{100 * share['strikes_share']:g} % of the strikes", _speeds(share, f["bound"]))
         for share in f["speed_for_share"]
     ]
     if f["unreachable"] < f["strikes"]:
-        median, bound = f["demonstrated_median_m_s"], f["bound_median_m_s"]
-        rows.append(("median of those in reach", f"{number(median)} m/s demonstrated, {_bound(bound)}"))
+        done, kind, other = f["demonstrated_median_m_s"], f["bound"], OTHER_WAY[f["bound"]]
+        bound = _bound(f[f"bound_{kind}_median_m_s"], kind)
+        rows.append(("median of those in reach", f"{number(done)} m/s demonstrated, {bound}"))
+        rows.append(("the other bound, median", _bound(f[f"bound_{other}_median_m_s"], other)))
         rows.append(("fastest strike", f"{number(f['demonstrated_max_m_s'])} m/s demonstrated"))
     if math.isfinite(f["effective_mass_median_kg"]):
         mass = number(f["effective_mass_median_kg"])
@@ -174,12 +177,13 @@ def _reach(f: dict[str, Any]) -> str:
     return f"none; {away}" if share is None else f"{percent(share)} % of them deliverable; {away}"
 
 
-def _speeds(share: dict[str, float]) -> str:
-    return f"{number(share['demonstrated_m_s'])} m/s demonstrated, {_bound(share['bound_m_s'])}"
+def _speeds(share: dict[str, float], kind: str) -> str:
+    return f"{number(share['demonstrated_m_s'])} m/s demonstrated, {_bound(share['bound_m_s'], kind)}"
 
 
-def _bound(speed_m_s: float) -> str:
-    return f"upper bound {number(speed_m_s)} m/s" if math.isfinite(speed_m_s) else "no upper bound"
+def _bound(speed_m_s: float, kind: str) -> str:
+    """An upper bound with which of the two it is."""
+    return f"upper bound ({kind}) {number(speed_m_s)} m/s" if math.isfinite(speed_m_s) else "no upper bound"
 
 
 def _region(region: dict[str, float], shape: tuple[int, int, int, int] | None) -> str:
