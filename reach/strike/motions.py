@@ -8,9 +8,9 @@ from reach.cell import Array
 from reach.evidence.points import STRAIGHT, SWING
 from reach.strike.optimise import SideProblem, optimised
 from reach.strike.path import Load, Paths, load_along
-from reach.strike.profile import Profile, double_s
+from reach.strike.profile import Profile
 from reach.strike.setting import Setting
-from reach.strike.sides import Lower, timed
+from reach.strike.sides import Lower, profile_of, timed
 from reach.strike.straight import straight_strokes
 from reach.strike.stroke import Demonstration, demonstrate
 
@@ -33,12 +33,8 @@ def straight(
     timing = timed(setting, paths, load, np.array([ceiling]))
     if timing.speed[0] <= 0:
         return None
-    window = setting.accept.strike_window_s
-    sides = (
-        double_s(float(timing.speed[0]), float(timing.acceleration[0, k]), float(timing.jerk[0, k]), window)
-        for k in (0, 1)
-    )
-    return demonstrate(setting, normal, direction, STRAIGHT, paths, Profile(*sides))
+    profile = profile_of(timing, 0, setting.accept.strike_window_s)
+    return demonstrate(setting, normal, direction, STRAIGHT, paths, profile)
 
 
 def exact(

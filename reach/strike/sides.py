@@ -85,11 +85,17 @@ class Lower:
 
     def profile(self, i: int, window_s: float) -> Profile:
         """The timing of one posture's swing as a profile."""
-        sides = (
-            double_s(float(self.speed[i]), float(a), float(j), window_s)
-            for a, j in zip(self.timing.acceleration[i], self.timing.jerk[i], strict=True)
-        )
-        return Profile(*sides)
+        return profile_of(self.timing, i, window_s)
+
+
+def profile_of(timing: Timing, i: int, window_s: float) -> Profile:
+    """The double-S timing of one stroke as a profile."""
+    speed = float(timing.speed[i])
+    before, after = (
+        double_s(speed, float(a), float(j), window_s)
+        for a, j in zip(timing.acceleration[i], timing.jerk[i], strict=True)
+    )
+    return Profile(before, after)
 
 
 def lower(setting: Setting, q: Array, normal: Array, direction: Array, above: Upper) -> Lower:
