@@ -26,7 +26,6 @@ class Measured:
     torque : (m, n) at the motion's rows
     position (m, 3), rotation (m, 3, 3), twist (m, 6) : strike point at the motion's rows
     uses : tuple of Use, demand_peak not yet filled in (nan)
-    base_load : BaseLoad
     rms_torque : (n,)
     """
 
@@ -36,15 +35,13 @@ class Measured:
     rotation: Array
     twist: Array
     uses: tuple[Use, ...]
-    base_load: BaseLoad
     rms_torque: Array
 
 
 def measure(arm: Arm, chain: Chain, limits: dict[str, Limit], motion: Motion) -> Measured:
     """Measure a finished motion.
 
-    Every limit kind gives its values on the fine grid; each joint's peak is the value of largest use. Base load, at
-    the motion's rows, is that of the moving part on the stand.
+    Every limit kind gives its values on the fine grid; each joint's peak is the value of largest use.
     """
     t, q, v, a = motion.fine()
     torque = arm.torque(q, v, a)
@@ -54,10 +51,14 @@ def measure(arm: Arm, chain: Chain, limits: dict[str, Limit], motion: Motion) ->
         t, q, v, a, torque, _speed(chain, limits, q, v, twist), FINE, np.zeros(arm.n), before, motion.period_s
     )
     uses = tuple(use for limit in limits.values() for use in limit_uses(limit, fine, len(motion.q)))
-    wrench = arm.base_wrench(motion.q, motion.v, motion.a)
-    load = BaseLoad(*(float(np.sqrt((part**2).sum(1).max())) for part in (wrench[:, :3], wrench[:, 3:])))
     rms = np.sqrt(np.mean(fine.torque**2, axis=0))
-    return Measured(fine, fine.torque[::FINE], position, rotation, twist, uses, load, rms)
+    return Measured(fine, fine.torque[::FINE], position, rotation, twist, uses, rms)
+
+
+def base_load(arm: Arm, motion: Motion) -> BaseLoad:
+    """What the moving part puts on its stand at most, over the motion's rows."""
+    wrench = arm.base_wrench(motion.q, motion.v, motion.a)
+    return BaseLoad(*(float(np.sqrt((part**2).sum(1).max())) for part in (wrench[:, :3], wrench[:, 3:])))
 
 
 def _speed(chain: Chain, limits: dict[str, Limit], q: Array, v: Array, twist: Array) -> Array:

@@ -9,7 +9,7 @@ import numpy as np
 from reach.arm import Arm
 from reach.cell import Accept, Array, Cell
 from reach.errors import Fault, InputError
-from reach.evidence.measure import Measured, measure
+from reach.evidence.measure import Measured, base_load, measure
 from reach.evidence.record import Evidence, Reason, Strike
 from reach.evidence.strikes import (
     compare,
@@ -84,7 +84,7 @@ def run(cell: Cell, quick: bool = False, seed: int = 0) -> Run:
         return Run(cell, found, reference, rolled, None, evidence, judge(evidence, accept))
     chain = Chain.of(arm)
     measured = measure(arm, chain, limits, rolled.delivered)
-    evidence = _evidence(cell, limits, chain, reference, found, rolled, measured)
+    evidence = _evidence(cell, limits, arm, chain, reference, found, rolled, measured)
     return Run(cell, found, reference, rolled, measured, evidence, judge(evidence, accept))
 
 
@@ -186,6 +186,7 @@ class _Watch:
 def _evidence(
     cell: Cell,
     limits: dict[str, Limit],
+    arm: Arm,
     chain: Chain,
     reference: Reference,
     found: Contacts,
@@ -209,7 +210,7 @@ def _evidence(
         uses=measured.uses,
         track=beside,
         strikes=strikes,
-        base_load=measured.base_load,
+        base_load=base_load(arm, motion),
         guessed=found.guessed and cell.follow is not None and cell.follow.strikes != "guessed-ok",
         throughout_faults=throughout_faults(beside, accept) if throughout else (),
         stopped=rolled.stopped,

@@ -50,6 +50,8 @@ def cell_file(result: Result, own: Mapping[str, Any]) -> bytes:
         "arm": asdict(cell.arm),
         "paddle": asdict(cell.paddle),
         "tool": None if cell.tool is None else asdict(cell.tool),
+        "ball": None if cell.ball is None else asdict(cell.ball),
+        "contact": None if cell.contact is None else asdict(cell.contact),
         "margins": asdict(cell.margins),
         "accept": asdict(cell.accept),
         **own,

@@ -2,17 +2,21 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+
 import numpy as np
+from numpy.typing import NDArray
 
 from reach.cell import Array
 from reach.evidence.points import STRAIGHT, SWING
 from reach.strike.optimise import SideProblem, optimised
-from reach.strike.path import Load, Paths, load_along
+from reach.strike.path import KEPT_RUN_UP, Load, Paths, load_along
 from reach.strike.profile import Profile
 from reach.strike.setting import Setting
 from reach.strike.sides import Lower, profile_of, timed
 from reach.strike.straight import straight_strokes
 from reach.strike.stroke import Demonstration, demonstrate
+from reach.strike.timing import Timing
 
 PIECES = (20, 40)  # of a side, coarse and then fine; the finer one moves the answer by under 1 %
 
@@ -25,16 +29,35 @@ def swing(setting: Setting, normal: Array, direction: Array, below: Lower, i: in
     return demonstrate(setting, normal, direction, SWING, below.paths.take([i]), profile)
 
 
-def straight(
-    setting: Setting, normal: Array, direction: Array, below: Lower, i: int, ceiling: float
-) -> Demonstration | None:
-    """The quick straight stroke through posture i, attitude held, as a motion."""
-    paths, load = _straight(setting, direction, below, i)
-    timing = timed(setting, paths, load, np.array([ceiling]))
-    if timing.speed[0] <= 0:
-        return None
-    profile = profile_of(timing, 0, setting.accept.strike_window_s)
-    return demonstrate(setting, normal, direction, STRAIGHT, paths, profile)
+@dataclass(frozen=True, eq=False)
+class Straights:
+    """Straight strokes, attitude held, with their quick timing."""
+
+    paths: Paths
+    timing: Timing
+
+    def motion(self, setting: Setting, normal: Array, direction: Array, i: int) -> Demonstration | None:
+        """One of the strokes as a motion."""
+        profile = profile_of(self.timing, i, setting.accept.strike_window_s)
+        return demonstrate(setting, normal, direction, STRAIGHT, self.paths.take([i]), profile)
+
+
+def straights(
+    setting: Setting, direction: Array, below: Lower, index: NDArray[np.int64], ceiling: Array
+) -> Straights:
+    """Straight strokes along directions (c, 3) through some postures `index` (c,), no faster than ceilings (c,)."""
+    paths = straight_strokes(
+        setting.chain,
+        setting.ends,
+        below.paths.q[index, 0, 0],
+        below.tangent[index],
+        direction,
+        setting.spin_free,
+        setting.length_m,
+        None if setting.run_up_m is None else KEPT_RUN_UP * setting.run_up_m,
+    )
+    load = load_along(setting.arm, setting.limits, paths, bends=True)
+    return Straights(paths, timed(setting, paths, load, ceiling))
 
 
 def exact(
@@ -62,18 +85,3 @@ def optimised_profile(
         sides.append(side)
     speed = min(side.end[1] for side in sides)
     return Profile(*(side.slowed(speed / side.end[1]) for side in sides))
-
-
-def _straight(setting: Setting, direction: Array, below: Lower, i: int) -> tuple[Paths, Load]:
-    q, tangent = below.paths.q[i : i + 1, 0, 0], below.tangent[i : i + 1]
-    paths = straight_strokes(
-        setting.chain,
-        setting.ends,
-        q,
-        tangent,
-        direction[None],
-        setting.spin_free,
-        setting.length_m,
-        setting.run_up_m,
-    )
-    return paths, load_along(setting.arm, setting.limits, paths, bends=True)

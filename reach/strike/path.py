@@ -19,6 +19,8 @@ NODES = 17  # a side, the strike's own included
 CROWDING = 1.5  # nodes at (k / 16)^1.5 of the length: closer together near the strike
 LONGEST_M = 2.0  # of a side where neither travel nor run-up ends it sooner
 FARTHEST_TURN_RAD = np.pi  # of a joint without end stops, a side
+KEPT_RUN_UP = 0.998  # of the run-up: what the way's summing over the nodes may be off
+ROUNDS = 2  # of finding where the run-up ends: the second one with nodes that end there
 SPREAD = (np.arange(NODES) / (NODES - 1)) ** CROWDING
 
 
@@ -106,9 +108,8 @@ def swings(
     travel = np.clip(np.minimum(travel, turn[:, None]), 0.0, LONGEST_M)
     slope = np.broadcast_to(tangent[:, None, None, :], (m, 2, NODES, n))
     paths = _straight_nodes(q, slope, travel)
-    if run_up_m is not None:
-        length = _within_run_up(chain, paths, run_up_m)
-        paths = _straight_nodes(q, slope, length)
+    for _ in range(ROUNDS if run_up_m is not None else 0):
+        paths = _straight_nodes(q, slope, _within_run_up(chain, paths, KEPT_RUN_UP * (run_up_m or 0.0)))
     return replace(paths, pace=_pace(chain, paths.q, paths.slope))
 
 

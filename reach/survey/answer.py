@@ -22,7 +22,6 @@ from reach.survey.judged import PROVED, SEARCHED
 from reach.survey.needs import needs
 from reach.survey.remedies import Advice, advice
 from reach.survey.rounds import Progress
-from reach.survey.rows import Rows, points_of
 from reach.survey.sweep import Sweep, sweep
 from reach.verdict import DELIVERABLE, NOT_DELIVERABLE, Verdict, judge_survey, unknown_required
 
@@ -58,9 +57,9 @@ def answer(
     return SurveyResult(
         cell=cell,
         verdict=verdict,
-        without_margins=_without_margins(cell, evidence, done.parts),
+        without_margins=_without_margins(cell, evidence, done.judged.bare),
         reasons=reasons(evidence.points, verdict),
-        needs=needs(cell, evidence, done.parts),
+        needs=needs(cell, evidence, done.judged.peaks),
         remedies=helps.remedies,
         headroom_share=helps.headroom_share,
         headroom_text=helps.headroom_text,
@@ -73,7 +72,7 @@ def gathered(cell: Cell, done: Sweep) -> SurveyEvidence:
     """The evidence of a sweep."""
     assert cell.survey is not None
     setting = Setting.of(cell)
-    points = points_of(done.parts)
+    points = done.judged.points
     faces = len(cell.survey.normals)
     return SurveyEvidence(
         points=points,
@@ -145,9 +144,8 @@ def _median(values: Array) -> float | None:
     return float(np.median(known)) if len(known) else None
 
 
-def _without_margins(cell: Cell, evidence: SurveyEvidence, parts: list[Rows]) -> str:
+def _without_margins(cell: Cell, evidence: SurveyEvidence, bare: Texts) -> str:
     assert cell.survey is not None
-    bare = np.concatenate([part.bare for part in parts]).astype(str)
     points = replace(evidence.points, verdict=bare)
     return judge_survey(replace(evidence, points=points), cell.survey.required_share, cell.accept).verdict
 

@@ -130,11 +130,11 @@ class Scribe:
             k, verdict=verdict, basis=basis, reason=text, limit=stop.limit, joint=stop.joint, phase=stop.phase
         )
 
-    def word(self, strikes: Strikes, k: int, shown: Shown, bound: float) -> str:
-        """The verdict on a strike from its motions and a bound along its direction."""
+    def word(self, strikes: Strikes, k: int, shown: Shown) -> str:
+        """The verdict on a strike, whose bound allows it, from its motions."""
         along = float(strikes.direction[k] @ strikes.normal[k])
         done = shown.best.speed * along if shown.best is not None else np.nan
-        return self._word(done, bound * along, float(strikes.required_m_s[k]))
+        return self._word(done, np.inf, float(strikes.required_m_s[k]))
 
     def _word(self, done: float, bound: float, required: float) -> str:
         if done >= required:

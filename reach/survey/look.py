@@ -15,12 +15,12 @@ from reach.survey.family import folds
 from reach.survey.grid import Strikes
 from reach.survey.inverse import Found, Library, from_library, from_postures, merged
 from reach.survey.judged import Scribe
-from reach.survey.rows import Rows
+from reach.survey.rows import Judged, Rows, judged
 from reach.survey.selfmotion import LEADERS, best_first, improved, own_bound
 from reach.survey.stops import gains, loosened, stop_at_bound, stop_of
-from reach.survey.weigh import Effort, Shown, Weighed, largest, show, weigh
+from reach.survey.weigh import Effort, Shown, Weighed, show, weigh
 from reach.variants import without_margins
-from reach.verdict import DELIVERABLE
+from reach.verdict import DELIVERABLE, NOT_DELIVERABLE
 
 CLOSE = 0.7  # of the required speed: a bound from here on is worth a wider search before it says no
 DEEP_LEADERS = 8  # postures of a strike that are moved in that search
@@ -71,30 +71,32 @@ class Looker:
         found, postures[near] = self._moved(part, found, LEADERS)
         return Searched(Found(found.q, near[found.owner]), starts, postures)
 
-    def judge(self, strikes: Strikes, searched: Searched, neighbours: Found) -> Rows:
-        """The rows of strikes from their postures and from their neighbours'.
+    def judge(self, strikes: Strikes, searched: Searched, neighbours: Found) -> Judged:
+        """What becomes of strikes from their postures and from their neighbours'."""
+        return judged(self._judged(strikes, searched, neighbours))
 
-        A posture that fails numerically leaves its own row undecided, with the reason.
-        """
-        try:
-            return self._judged(strikes, searched, neighbours)
-        except (ArithmeticError, ValueError, np.linalg.LinAlgError) as error:
-            rows = self.empty(strikes)
-            if len(strikes) == 1:
-                rows.set(0, reason=f"failed numerically: {error}")
-                rows.bare[0] = rows.get(0, "verdict")
-                return rows
-        for k in range(len(strikes)):
-            one = Searched(searched.found.of([k]), searched.starts[k : k + 1], searched.postures[k : k + 1])
-            rows.put([k], self.judge(strikes.take(slice(k, k + 1)), one, neighbours.of([k])))
-        return rows
-
-    def empty(self, strikes: Strikes, reason: str = "") -> Rows:
-        """Rows with nothing in them yet, undecided."""
-        return Rows(strikes, self.setting.arm.n, len(self.folds.families), reason)
+    def left(self, strikes: Strikes, reason: str) -> Judged:
+        """Strikes that were not looked at."""
+        return judged(self._empty(strikes, reason))
 
     def _judged(self, strikes: Strikes, searched: Searched, neighbours: Found) -> Rows:
-        rows = self.empty(strikes)
+        """A posture that fails numerically leaves its own row undecided, with the reason."""
+        try:
+            return self._looked_at(strikes, searched, neighbours)
+        except (ArithmeticError, ValueError, np.linalg.LinAlgError) as error:
+            if len(strikes) == 1:
+                return self._empty(strikes, f"failed numerically: {error}")
+        rows = self._empty(strikes)
+        for k in range(len(strikes)):
+            one = Searched(searched.found.of([k]), searched.starts[k : k + 1], searched.postures[k : k + 1])
+            rows.put([k], self._judged(strikes.take(slice(k, k + 1)), one, neighbours.of([k])))
+        return rows
+
+    def _empty(self, strikes: Strikes, reason: str = "") -> Rows:
+        return Rows(strikes, self.setting.arm.n, len(self.folds.families), reason)
+
+    def _looked_at(self, strikes: Strikes, searched: Searched, neighbours: Found) -> Rows:
+        rows = self._empty(strikes)
         found, postures = self._with_neighbours(strikes, searched, neighbours)
         rows.counts["starts"][:], rows.counts["postures"][:] = searched.starts, postures
         self._filled(rows, found, self._first)
@@ -103,7 +105,7 @@ class Looker:
             part = strikes.take(again)
             more, starts = from_library(self.setting, self._library, part.position, part.normal, deep=True)
             wide, tried = self._moved(part, merged([found.of(again), more]), DEEP_LEADERS)
-            second = self.empty(part)
+            second = self._empty(part)
             second.counts["starts"][:] = rows.counts["starts"][again] + starts
             second.counts["postures"][:] = rows.counts["postures"][again] + tried
             self._filled(second, wide, self._then)
@@ -125,8 +127,8 @@ class Looker:
         both = merged([moved.found, found])
         return best_first(both, self._own(strikes, both)), moved.tried
 
-    def _own(self, strikes: Strikes, found: Found) -> Array:
-        return own_bound(self.setting, found.q, strikes.direction[found.owner])
+    def _own(self, strikes: Strikes, found: Found, setting: Setting | None = None) -> Array:
+        return own_bound(setting or self.setting, found.q, strikes.direction[found.owner])
 
     def _with_neighbours(
         self, strikes: Strikes, searched: Searched, neighbours: Found
@@ -156,8 +158,7 @@ class Looker:
             return
         weighed = weigh(self.setting, self.folds, rows.strikes, found)
         self._scribe.bounds(rows, weighed)
-        reached = np.unique(found.owner).tolist()
-        shown = {k: show(self.setting, rows.strikes, k, weighed, effort) for k in reached}
+        shown = show(self.setting, rows.strikes, weighed, effort)
         for k, one in shown.items():
             self._scribe.motion(rows, k, one)
         loose = self._loosened(rows.strikes, weighed, shown)
@@ -198,11 +199,14 @@ class Looker:
         if self._bare is None or not len(part.q):
             return
         strikes = rows.strikes.take(lost)
-        weighed = weigh(self._bare, self.folds, strikes, part)
-        own = weighed.above.own(self._bare.still)
-        bound = largest(own, weighed.found.owner, len(lost))
-        for j in np.unique(part.owner).tolist():
-            one = show(self._bare, strikes, j, weighed, effort)
-            rows.bare[lost[j]] = self._scribe.word(
-                strikes, j, one, float(weighed.above.own(self._bare.still)[bound[j]])
-            )
+        top = np.full(len(lost), -np.inf)
+        np.maximum.at(top, part.owner, self._own(strikes, part, self._bare))
+        need = strikes.required_m_s / np.einsum("mi,mi->m", strikes.direction, strikes.normal)
+        may = np.flatnonzero(np.minimum(top, self._bare.tool_cap_m_s) >= need)
+        rows.bare[lost[np.isfinite(top)]] = NOT_DELIVERABLE
+        if len(may):
+            some = strikes.take(may)
+            for j, one in show(
+                self._bare, some, weigh(self._bare, self.folds, some, part.of(may)), effort
+            ).items():
+                rows.bare[lost[may[j]]] = self._scribe.word(some, j, one)

@@ -11,7 +11,6 @@ from reach.limits import LIMITS
 from reach.strike.setting import Setting
 from reach.strike.sides import lower, upper
 from reach.survey.grid import Strikes
-from reach.survey.rows import Rows
 from reach.variants import with_bounds
 
 QUANTILE = 0.9  # of the strikes, told beside the most that one asks
@@ -20,15 +19,23 @@ HALVINGS = 12  # of the values tried
 RATES = ("torque rate", "jerk")  # kinds that a quick motion uses without bound where nobody limits them
 
 
-def needs(cell: Cell, evidence: SurveyEvidence, parts: list[Rows]) -> tuple[Need, ...]:
+def needs(cell: Cell, evidence: SurveyEvidence, asked: dict[int, Array]) -> tuple[Need, ...]:
     """What unknown limits would have to be, by the motions at the required speed.
 
     A motion that nothing holds back uses any rate; there the least share of those rates is looked for, all joints
     alike, with which the quick timing of a strike still reaches its required speed.
+
+    Parameters
+    ----------
+    asked : by row, what a strike asks of each limit that nobody stated
     """
-    strikes, table, q = _asked(evidence, parts)
-    if not len(table):
+    points = evidence.points
+    done = [k for k in sorted(asked) if points.demonstrated_m_s[k] >= points.required_m_s[k]]
+    if not done:
         return ()
+    rows = np.array(done, dtype=np.int64)
+    table, q = np.array([asked[k] for k in done]), points.q[rows]
+    strikes = Strikes(points.position, points.normal, points.direction, points.required_m_s).take(rows)
     shares = _shares(cell, evidence, strikes, table.max(axis=0), q)
     found = []
     for column, (limit, joint) in enumerate(evidence.unknown):
@@ -40,22 +47,6 @@ def needs(cell: Cell, evidence: SurveyEvidence, parts: list[Rows]) -> tuple[Need
         text = f"{float(np.quantile(peaks, QUANTILE)):.4g} {unit} is enough for {some}"
         found.append(Need(joint, limit, None, float(peaks.max()), unit, text))
     return tuple(found)
-
-
-def _asked(evidence: SurveyEvidence, parts: list[Rows]) -> tuple[Strikes, Array, Array]:
-    """The strikes that known limits allow, what each asks of the unknown ones (m, unknown), and its posture (m, n)."""
-    points = evidence.points
-    rows, peaks, first = [], [], 0
-    for part in parts:
-        done = part.values["demonstrated_m_s"] >= part.strikes.required_m_s
-        for k, peak in sorted(part.peaks.items()):
-            if done[k]:
-                rows.append(first + k)
-                peaks.append(peak)
-        first += len(part)
-    strikes = Strikes(points.position, points.normal, points.direction, points.required_m_s)
-    chosen = np.array(rows, dtype=np.int64)
-    return strikes.take(chosen), np.array(peaks).reshape(len(rows), len(evidence.unknown)), points.q[chosen]
 
 
 def _shares(cell: Cell, evidence: SurveyEvidence, strikes: Strikes, most: Array, q: Array) -> Array | None:

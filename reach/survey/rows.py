@@ -2,16 +2,19 @@
 
 from __future__ import annotations
 
-from typing import Any
+from dataclasses import dataclass, fields
+from typing import Any, TypeVar
 
 import numpy as np
 
 from reach.cell import Array
 from reach.evidence.motion import Motion
-from reach.evidence.points import Points, Profiles
+from reach.evidence.points import Points, Profiles, Texts
 from reach.strike.profile import Profile
 from reach.survey.grid import Strikes
 from reach.verdict import DELIVERABLE, UNDECIDED
+
+T = TypeVar("T")
 
 TEXTS = ("verdict", "basis", "limit", "joint", "phase", "family", "stroke")
 VALUES = (
@@ -95,35 +98,70 @@ def _replace(kept: dict[int, Any], given: dict[int, Any], rows: list[int]) -> No
             kept[row] = given[k]
 
 
-def points_of(parts: list[Rows]) -> Points:
-    """The Points of rows in order."""
-    profiles: list[Profile | None] = []
-    motions: dict[int, Motion] = {}
-    first = 0
-    for part in parts:
-        profiles += [part.profiles.get(k) for k in range(len(part))]
-        motions |= {first + k: motion for k, motion in part.motions.items()}
-        first += len(part)
-    texts: dict[str, Any] = {
-        name: np.array(np.concatenate([part.texts[name] for part in parts]), dtype=str) for name in TEXTS
-    }
-    numbers: dict[str, Any] = {
-        name: np.concatenate([getattr(part, kind)[name] for part in parts])
-        for kind in ("values", "counts")
-        for name in getattr(parts[0], kind)
-    }
-    return Points(
-        position=np.concatenate([part.strikes.position for part in parts]),
-        normal=np.concatenate([part.strikes.normal for part in parts]),
-        direction=np.concatenate([part.strikes.direction for part in parts]),
-        required_m_s=np.concatenate([part.strikes.required_m_s for part in parts]),
-        reason=tuple(str(text) for part in parts for text in part.reason),
-        margin_free=np.concatenate([part.bare == DELIVERABLE for part in parts]).astype(bool),
-        profiles=_pieces(profiles),
-        motions=motions,
-        **texts,
-        **numbers,
+@dataclass(frozen=True, eq=False)
+class Judged:
+    """Strikes that are done.
+
+    Attributes
+    ----------
+    points : Points of m strikes
+    bare : (m,) verdicts with the margins at zero
+    peaks : by row, what a strike asks of each limit that nobody stated
+    """
+
+    points: Points
+    bare: Texts
+    peaks: dict[int, Array]
+
+    def __len__(self) -> int:
+        return len(self.points.verdict)
+
+
+def judged(rows: Rows) -> Judged:
+    """Rows once they are filled."""
+    strikes = rows.strikes
+    columns: dict[str, Any] = {**rows.values, **rows.counts}
+    columns |= {name: np.array(column, dtype=str) for name, column in rows.texts.items()}
+    points = Points(
+        position=strikes.position,
+        normal=strikes.normal,
+        direction=strikes.direction,
+        required_m_s=strikes.required_m_s,
+        reason=tuple(map(str, rows.reason)),
+        margin_free=np.asarray(rows.bare == DELIVERABLE, dtype=bool),
+        profiles=_pieces([rows.profiles.get(k) for k in range(len(rows))]),
+        motions=rows.motions,
+        **columns,
     )
+    return Judged(points, np.array(rows.bare, dtype=str), rows.peaks)
+
+
+def joined(parts: list[Judged]) -> Judged:
+    """Strikes of several chunks as one, in order."""
+    starts = np.cumsum([0, *map(len, parts)]).tolist()
+    points = [part.points for part in parts]
+    columns: dict[str, Any] = {
+        field.name: np.concatenate([getattr(part, field.name) for part in points])
+        for field in fields(Points)
+        if field.name not in ("reason", "profiles", "motions")
+    }
+    columns["reason"] = tuple(text for part in points for text in part.reason)
+    columns["motions"] = _shifted([part.motions for part in points], starts)
+    profiles = [part.profiles for part in points]
+    counts = np.concatenate([[0], *(np.diff(part.first) for part in profiles)])
+    columns["profiles"] = Profiles(
+        np.cumsum(counts),
+        np.concatenate([part.duration_s for part in profiles]),
+        np.concatenate([part.jerk_m_s3 for part in profiles]),
+        np.concatenate([part.before for part in profiles]),
+    )
+    peaks = _shifted([part.peaks for part in parts], starts)
+    return Judged(Points(**columns), np.concatenate([part.bare for part in parts]), peaks)
+
+
+def _shifted(parts: list[dict[int, T]], starts: list[int]) -> dict[int, T]:
+    """What chunks hold by row, by row of the whole."""
+    return {first + k: one for first, part in zip(starts, parts, strict=False) for k, one in part.items()}
 
 
 def _pieces(profiles: list[Profile | None]) -> Profiles:

@@ -18,7 +18,7 @@ from reach.survey.grid import Strikes
 from reach.survey.inverse import TILT_WEIGHT_M, Found
 from reach.survey.look import Looker, Searched
 from reach.survey.rounds import Progress, Rounds
-from reach.survey.rows import Rows
+from reach.survey.rows import Judged, joined
 from reach.survey.selfmotion import leaders
 from reach.verdict import DELIVERABLE
 from reach.workers import worker_pool
@@ -34,9 +34,9 @@ _kept: dict[str, Looker] = {}  # the Looker of this process, by the name of what
 
 @dataclass(frozen=True, eq=False)
 class Sweep:
-    """What was found of m strikes: rows by chunk; those left when it was stopped are undecided and say so."""
+    """What became of m strikes; those left when it was stopped are undecided and say so."""
 
-    parts: list[Rows]
+    judged: Judged
     stopped: bool
 
 
@@ -57,17 +57,17 @@ def sweep(
         run = Rounds(pool, progress)
         first = run.over("survey, postures", _search, [(strikes.take(chunk),) for chunk in chunks])
         found = [done for done in first if done is not None]
-        rows: list[Rows | None] = [None] * len(chunks)
+        rows: list[Judged | None] = [None] * len(chunks)
         if not run.stopped:
             handed = _handed_on(strikes, found, chunks)
             tasks = [(strikes.take(chunk), *pair) for chunk, *pair in zip(chunks, found, handed, strict=True)]
             rows = run.over("survey, strikes", _judge, tasks)
     del _kept["survey"]
     left = [
-        looker.empty(strikes.take(chunk), STOPPED) if part is None else part
+        looker.left(strikes.take(chunk), STOPPED) if part is None else part
         for part, chunk in zip(rows, chunks, strict=True)
     ]
-    return Sweep(left, run.stopped)
+    return Sweep(joined(left), run.stopped)
 
 
 class Retrial:
@@ -110,7 +110,7 @@ def _search(strikes: Strikes) -> Searched:
     return _kept["survey"].search(strikes)
 
 
-def _judge(strikes: Strikes, searched: Searched, neighbours: Found) -> Rows:
+def _judge(strikes: Strikes, searched: Searched, neighbours: Found) -> Judged:
     return _kept["survey"].judge(strikes, searched, neighbours)
 
 
@@ -119,8 +119,8 @@ def _again(name: str, cell: Cell, strikes: Strikes, seed: int) -> NDArray[np.boo
         _kept.clear()
         _kept[name] = Looker(cell, seed, full=False)
     looker = _kept[name]
-    rows = looker.judge(strikes, looker.search(strikes), Found.none(looker.setting.arm.n))
-    return np.asarray(rows.texts["verdict"] == DELIVERABLE, dtype=bool)
+    done = looker.judge(strikes, looker.search(strikes), Found.none(looker.setting.arm.n))
+    return np.asarray(done.points.verdict == DELIVERABLE, dtype=bool)
 
 
 def _handed_on(strikes: Strikes, parts: list[Searched], chunks: list[slice]) -> list[Found]:

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
 from dataclasses import dataclass
 from enum import Enum
 
@@ -10,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from reach.cell import Array
-from reach.strike.motions import exact, straight, swing
+from reach.strike.motions import exact, straights, swing
 from reach.strike.setting import Setting
 from reach.strike.sides import Lower, Upper, lower, part_of, upper
 from reach.strike.stroke import Demonstration
@@ -86,48 +85,74 @@ class Effort(Enum):
     FULL = 2
 
 
-def show(setting: Setting, strikes: Strikes, strike: int, weighed: Weighed, effort: Effort) -> Shown:
-    """The fastest whole motion found for a strike: quick swing first, then what costs more."""
-    normal, direction = strikes.normal[strike], strikes.direction[strike]
-    need = float(strikes.required_m_s[strike] / (direction @ normal))
-    own, below = weighed.own(strike), weighed.below
-    quick = [i for i in own.tolist() if below.speed[i] > 0]
-    if not quick:
-        return Shown(None, int(own[0]), {})
-    top = quick[0]
-    bound = float(weighed.above.own(setting.still)[weighed.pick[own]].max())
-    best = swing(setting, normal, direction, below, top)
-    if setting.still and (best is None or best.speed < need):
-        ceiling = float(weighed.above.still[weighed.pick[top]])
-        best = _faster(best, straight(setting, normal, direction, below, top, ceiling))
-    short = best is None or best.speed < need
-    may_decide = short and need <= min(bound, WITHIN * float(below.speed[top]))
-    if effort is Effort.FULL or (effort is Effort.DECIDE and may_decide):
-        best = _faster(best, exact(setting, normal, direction, below, top))
-    families = {} if best is None else {int(weighed.family[top]): best.speed}
-    for i in _first_of_others(weighed, quick):
-        # Of the other families a motion is made only where it says that they deliver.
-        if below.speed[i] >= need:
-            other = swing(setting, normal, direction, below, i)
+def show(setting: Setting, strikes: Strikes, weighed: Weighed, effort: Effort) -> dict[int, Shown]:
+    """The fastest whole motion found for each strike that a posture reaches: quick ones first, then what costs more."""
+    need = strikes.required_m_s / np.einsum("mi,mi->m", strikes.direction, strikes.normal)
+    below, found = weighed.below, {}
+    quick = {int(k): weighed.own(int(k)) for k in np.unique(weighed.found.owner)}
+    best: dict[int, Demonstration | None] = {}
+    for k, own in quick.items():
+        best[k] = swing(setting, strikes.normal[k], strikes.direction[k], below, int(own[0]))
+    if setting.still:
+        _try_straight(setting, strikes, weighed, need, {k: int(own[0]) for k, own in quick.items()}, best)
+    bounds = weighed.above.own(setting.still)
+    for k, own in quick.items():
+        top, reached = int(own[0]), best[k]
+        bound = float(bounds[weighed.pick[own]].max())
+        short = reached is None or reached.speed < need[k]
+        may_decide = short and need[k] <= min(bound, WITHIN * float(below.speed[top]))
+        if effort is Effort.FULL or (effort is Effort.DECIDE and may_decide):
+            reached = _faster(reached, exact(setting, strikes.normal[k], strikes.direction[k], below, top))
+        found[k] = Shown(reached, top, _by_family(setting, strikes, k, weighed, own, float(need[k]), reached))
+    return found
+
+
+def _try_straight(
+    setting: Setting,
+    strikes: Strikes,
+    weighed: Weighed,
+    need: Array,
+    tops: dict[int, int],
+    best: dict[int, Demonstration | None],
+) -> None:
+    """Put a straight stroke in the place of swings that fall short, where its timing is faster."""
+    short = [k for k, one in best.items() if one is None or one.speed < need[k]]
+    short = [k for k in short if weighed.below.speed[tops[k]] > 0]
+    if not short:
+        return
+    index = np.array([tops[k] for k in short])
+    ceiling = weighed.above.still[weighed.pick[index]]
+    lines = straights(setting, strikes.direction[short], weighed.below, index, ceiling)
+    for j, k in enumerate(short):
+        one = best[k]
+        if lines.timing.speed[j] > (0.0 if one is None else one.speed):
+            best[k] = _faster(one, lines.motion(setting, strikes.normal[k], strikes.direction[k], j))
+
+
+def _by_family(
+    setting: Setting,
+    strikes: Strikes,
+    k: int,
+    weighed: Weighed,
+    own: NDArray[np.int64],
+    need: float,
+    best: Demonstration | None,
+) -> dict[int, float]:
+    """Speeds by family number: the best motion's, and of other families those that by quick timing deliver."""
+    families = {} if best is None else {int(weighed.family[own[0]]): best.speed}
+    for i in own.tolist():
+        number = int(weighed.family[i])
+        if number not in families and weighed.below.speed[i] >= need:
+            other = swing(setting, strikes.normal[k], strikes.direction[k], weighed.below, i)
             if other is not None:
-                families[int(weighed.family[i])] = other.speed
-    return Shown(best, top, families)
+                families[number] = other.speed
+    return families
 
 
 def _faster(best: Demonstration | None, other: Demonstration | None) -> Demonstration | None:
     if best is None or (other is not None and other.speed > best.speed):
         return other
     return best
-
-
-def _first_of_others(weighed: Weighed, quick: list[int]) -> Iterator[int]:
-    """The fastest posture of each family but the first one's."""
-    seen = {int(weighed.family[quick[0]])}
-    for i in quick:
-        number = int(weighed.family[i])
-        if number not in seen:
-            seen.add(number)
-            yield i
 
 
 def largest(values: Array, owner: NDArray[np.int64], count: int) -> NDArray[np.int64]:
