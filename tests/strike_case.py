@@ -14,7 +14,7 @@ from test_published_arms import ARMS
 
 from reach.cell import Array, Bound, Cell, Survey
 from reach.evidence.points import SWING
-from reach.strike.motions import optimised_profile, straight
+from reach.strike.motions import optimised_profile, straights
 from reach.strike.path import Load, Paths
 from reach.strike.profile import Profile
 from reach.strike.setting import Setting
@@ -139,10 +139,10 @@ def straights_of(setting: Setting, q: Array) -> list[Demonstration]:
     normal = frames(setting, q)[0][:, :, 2]
     above = upper(setting, q, normal)
     below = lower(setting, q, normal, normal, above)
+    some = np.flatnonzero(below.speed > 0)
+    lines = straights(setting, normal[some], below, some, above.own(setting.still)[some])
     tried = [
-        straight(setting, normal[i], normal[i], below, i, float(above.own(setting.still)[i]))
-        for i in range(len(q))
-        if below.speed[i] > 0
+        lines.motion(setting, normal[i], normal[i], j) for j, i in enumerate(some) if lines.timing.speed[j] > 0
     ]
     return [done for done in tried if done is not None]
 

@@ -55,19 +55,24 @@ def sweep(
     _kept["survey"] = looker
     with worker_pool(min(workers, len(chunks)), _begin, cell, seed) as pool:
         run = Rounds(pool, progress)
-        first = run.over("survey, postures", _search, [(strikes.take(chunk),) for chunk in chunks])
-        found = [done for done in first if done is not None]
-        rows: list[Judged | None] = [None] * len(chunks)
-        if not run.stopped:
-            handed = _handed_on(strikes, found, chunks)
-            tasks = [(strikes.take(chunk), *pair) for chunk, *pair in zip(chunks, found, handed, strict=True)]
-            rows = run.over("survey, strikes", _judge, tasks)
+        done = _both_rounds(run, strikes, chunks)
     del _kept["survey"]
-    left = [
+    parts = [
         looker.left(strikes.take(chunk), STOPPED) if part is None else part
-        for part, chunk in zip(rows, chunks, strict=True)
+        for part, chunk in zip(done, chunks, strict=True)
     ]
-    return Sweep(joined(left), run.stopped)
+    return Sweep(joined(parts), run.stopped)
+
+
+def _both_rounds(run: Rounds, strikes: Strikes, chunks: list[slice]) -> list[Judged | None]:
+    """Postures for every strike, then what becomes of it; None for chunks that were not looked at."""
+    first = run.over("survey, postures", _search, [(strikes.take(chunk),) for chunk in chunks])
+    found = [part for part in first if part is not None]
+    if run.stopped:
+        return [None] * len(chunks)
+    handed = _handed_on(strikes, found, chunks)
+    tasks = [(strikes.take(chunk), *pair) for chunk, *pair in zip(chunks, found, handed, strict=True)]
+    return run.over("survey, strikes", _judge, tasks)
 
 
 class Retrial:

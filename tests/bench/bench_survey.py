@@ -42,18 +42,19 @@ from reach.strike.sides import lower, upper  # noqa: E402
 from reach.survey.grid import Strikes, strikes  # noqa: E402
 from reach.survey.inverse import STARTS, TOLERANCE, Found, Library  # noqa: E402
 from reach.survey.look import Looker, Searched  # noqa: E402
-from reach.survey.rows import Rows, points_of  # noqa: E402
+from reach.survey.rows import Judged, joined  # noqa: E402
 from reach.survey.sweep import CHUNK, _chunks, _handed_on  # noqa: E402
 from reach.survey.weigh import weigh  # noqa: E402
 
 EXAMPLE = Path(__file__).parents[2] / "examples" / "wear_bench" / "cell.toml"
 BOX = ((-0.8, -0.8, 0.0), (0.8, 0.8, 1.1))  # about all that either arm reaches, m, and a good deal more
 SIZES = (500, 2000, 8000)  # points
-LOOP_POINTS = 16
-EXACT_STROKES = 24
-JUDGED = 256
+LOOP_POINTS = 10
+EXACT_STROKES = 16
+JUDGED = 128
 MANY = 200_000  # points whose results must fit
-SEARCHED_FOR_MANY = 1024  # points really looked at for that; their results are copied
+SEARCHED_FOR_MANY = 256  # points really looked at for that; their results are copied
+BOTH_SIDED = 2048  # postures
 ROUNDS = 3
 
 
@@ -155,7 +156,8 @@ def look(title: str, cell: Cell) -> None:
     line = "  {:58s} {:10,.0f} /s".format
     cost = seconds(lambda: upper(setting, q, reached.direction[at])) / len(q)
     print(line("upper bounds, still and free, kinematics included, postures", 1 / cost))
-    fast = seconds(lambda: both_sides(setting, reached, found)) / len(q)
+    some = Found(q[:BOTH_SIDED], at[:BOTH_SIDED])
+    fast = seconds(lambda: both_sides(setting, reached, some), 2) / len(some.q)
     print(line("both sides, postures", 1 / fast))
     search = seconds(lambda: in_chunks(looker, reached)) / len(reached)
     print(line(f"search, reachable points ({len(reached)})", 1 / search))
@@ -222,7 +224,7 @@ def whole(looker: Looker, reached: Strikes) -> None:
 
 
 def many() -> None:
-    """Print the peak memory of a process that holds what a sweep over MANY points does, on a new process's own scale.
+    """Print the peak memory of a process that holds what a sweep over MANY points does.
 
     Really searched and judged chunks are copied as they would come from workers until there are enough.
     """
@@ -244,15 +246,22 @@ def many() -> None:
     handed = _handed_on(grid, found, chunks)
     tasks = [(grid.take(chunk), *pair) for chunk, *pair in zip(chunks, found, handed, strict=True)]
     two = _peak_mb()
-    parts: list[Rows] = [_copy(rows[k % len(real)]) for k in range(len(tasks))]
+    parts: list[Judged] = [_copy(rows[k % len(real)]) for k in range(len(tasks))]
     three = _peak_mb()
-    points = points_of(parts)
     postures = sum(len(part.found.q) for part in found)
-    print(
-        f"{len(points.verdict)} points, {postures} postures found; peak memory, MB: imports {own:.0f}, looker {base:.0f}, "
-        f"a few chunks {work:.0f}, all postures {one:.0f}, handed on {two:.0f}, rows {three:.0f}, "
-        f"put together {_peak_mb():.0f}"
-    )
+    del found, handed, tasks
+    points = joined(parts).points
+    peaks = {
+        "imports": own,
+        "looker": base,
+        "a few chunks": work,
+        "postures": one,
+        "handed on": two,
+        "rows": three,
+        "put together": _peak_mb(),
+    }
+    print(f"{len(points.verdict)} points of bench7, {postures} postures found; peak memory, MB, after:")
+    print("  " + ", ".join(f"{name} {peak:.0f}" for name, peak in peaks.items()))
 
 
 def _copy(part: Any) -> Any:
