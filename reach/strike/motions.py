@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from reach.cell import Array
 from reach.evidence.points import STRAIGHT, SWING
 from reach.strike.optimise import SideProblem, optimised
-from reach.strike.path import KEPT_RUN_UP, Load, Paths, load_along
+from reach.strike.path import Load, Paths, load_along
 from reach.strike.profile import Profile
 from reach.strike.setting import Setting
 from reach.strike.sides import Lower, profile_of, timed
@@ -18,6 +18,7 @@ from reach.strike.straight import straight_strokes
 from reach.strike.stroke import Demonstration, demonstrate
 from reach.strike.timing import Timing
 
+KEPT_RUN_UP = 0.999  # of the run-up for a straight stroke: the joint path leaves the line by a little
 PIECES = (20, 40)  # of a side, coarse and then fine; the finer one moves the answer by under 1 %
 
 

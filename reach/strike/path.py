@@ -19,8 +19,9 @@ NODES = 17  # a side, the strike's own included
 CROWDING = 1.5  # nodes at (k / 16)^1.5 of the length: closer together near the strike
 LONGEST_M = 2.0  # of a side where neither travel nor run-up ends it sooner
 FARTHEST_TURN_RAD = np.pi  # of a joint without end stops, a side
-KEPT_RUN_UP = 0.998  # of the run-up: what the way's summing over the nodes may be off
-ROUNDS = 2  # of finding where the run-up ends: the second one with nodes that end there
+KEPT_RUN_UP = 0.9998  # of the run-up: what the way's summing over the nodes may be off
+ROUNDS = 4  # of finding where the run-up ends, each with nodes that end where the last one said
+NEWTON_NEAR = 0.1  # relative distance from where on a step along the pace at the end is taken
 SPREAD = (np.arange(NODES) / (NODES - 1)) ** CROWDING
 
 
@@ -108,9 +109,11 @@ def swings(
     travel = np.clip(np.minimum(travel, turn[:, None]), 0.0, LONGEST_M)
     slope = np.broadcast_to(tangent[:, None, None, :], (m, 2, NODES, n))
     paths = _straight_nodes(q, slope, travel)
+    paths = replace(paths, pace=_pace(chain, paths.q, paths.slope))
     for _ in range(ROUNDS if run_up_m is not None else 0):
-        paths = _straight_nodes(q, slope, _within_run_up(chain, paths, KEPT_RUN_UP * (run_up_m or 0.0)))
-    return replace(paths, pace=_pace(chain, paths.q, paths.slope))
+        paths = _straight_nodes(q, slope, _within_run_up(paths, KEPT_RUN_UP * (run_up_m or 0.0)))
+        paths = replace(paths, pace=_pace(chain, paths.q, paths.slope))
+    return paths
 
 
 def _straight_nodes(q: Array, slope: Array, length: Array) -> Paths:
@@ -126,16 +129,27 @@ def _pace(chain: Chain, q: Array, slope: Array) -> Array:
     return np.asarray(np.linalg.norm(twist[:, :3], axis=1).reshape(q.shape[:-1]))
 
 
-def _within_run_up(chain: Chain, paths: Paths, run_up_m: float) -> Array:
-    """Length (m, 2) in s at which the strike point has gone its run-up, by the trapezoid rule over the nodes."""
-    pace = _pace(chain, paths.q, paths.slope)
-    steps = np.diff(paths.distance, axis=2)
-    way = np.cumsum(steps * (pace[:, :, 1:] + pace[:, :, :-1]) / 2, axis=2)
-    way = np.concatenate([np.zeros_like(way[:, :, :1]), way], axis=2)
-    length = paths.distance[:, :, -1].copy()
-    for i, side in np.argwhere(way[:, :, -1] > run_up_m).tolist():
-        length[i, side] = np.interp(run_up_m, way[i, side], paths.distance[i, side])
-    return length
+def _within_run_up(paths: Paths, run_up_m: float) -> Array:
+    """Length (m, 2) in s at which the strike point has gone its run-up, or all there is.
+
+    One interpolation, or near the end one Newton step, from the nodes.
+
+    The way is the integral of the pace by Simpson's rule on uneven steps.
+    """
+    x, f = paths.distance, paths.pace
+    first, second = np.diff(x, axis=2)[:, :, ::2], np.diff(x, axis=2)[:, :, 1::2]
+    both = first + second
+    with np.errstate(divide="ignore", invalid="ignore"):
+        parts = (2 - second / first) * f[:, :, 0:-1:2] + both**2 / (first * second) * f[:, :, 1::2]
+        pieces = both / 6 * (parts + (2 - first / second) * f[:, :, 2::2])
+    way = np.nan_to_num(pieces).cumsum(axis=2)
+    over = way[:, :, -1] > run_up_m
+    length = x[:, :, -1].copy()
+    for i, side in np.argwhere(over).tolist():
+        length[i, side] = np.interp(run_up_m, np.append(0.0, way[i, side]), x[i, side, ::2])
+    near = np.abs(way[:, :, -1] / run_up_m - 1) < NEWTON_NEAR
+    step = (run_up_m - way[:, :, -1]) / np.maximum(f[:, :, -1], 1e-9)
+    return np.where(near & over, x[:, :, -1] + step, length)
 
 
 def load_along(arm: Arm, limits: dict[str, Limit], paths: Paths, bends: bool) -> Load:

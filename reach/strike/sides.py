@@ -102,7 +102,7 @@ def lower(setting: Setting, q: Array, normal: Array, direction: Array, above: Up
     """The quickest safe swing of postures q (c, n) through strikes along directions (c, 3) with normals (c, 3).
 
     The joint direction of the upper bound is tried first; where acceleration or torque end it sooner, so are the
-    direction that gains speed soonest, and the one between.
+    direction that gains speed soonest, and the one between; where the paddle may turn, also that of a still one.
     """
     first = _tangents(above.rows, direction, above.lo, above.hi, above.joints)
     best = _timed(setting, q, normal, direction, above, first)
@@ -111,8 +111,10 @@ def lower(setting: Setting, q: Array, normal: Array, direction: Array, above: Up
         posture, face, along = q[short], normal[short], direction[short]
         near = part_of(above, short)
         quick = _quickest(setting, posture, along, near)
-        middle = (quick + first[short]) / 2
-        for tangent in (quick, middle):
+        tangents = [quick, (quick + first[short]) / 2]
+        if not setting.still:
+            tangents.append(_still(setting, posture, along, near))
+        for tangent in tangents:
             tried = _timed(setting, posture, face, along, near, tangent)
             better = np.flatnonzero(np.asarray(tried.speed > best.speed[short] * (1 + 1e-6)))
             best = _replaced(best, short[better], tried, better)
@@ -160,6 +162,13 @@ def _quickest(setting: Setting, q: Array, direction: Array, above: Upper) -> Arr
     alone = np.clip(np.where(np.isfinite(alone), alone, BEYOND), 1e-3, BEYOND)
     bounds = upper_bounds(above.rows, direction, -alone, alone)
     return _tangents(above.rows, direction, -alone, alone, bounds)
+
+
+def _still(setting: Setting, q: Array, direction: Array, above: Upper) -> Array:
+    """Joint velocity per m/s (c, n) of the upper bound with a paddle that does not turn."""
+    _, rotation, jacobian = setting.chain.jacobians(q)
+    rows = strike_rows(jacobian, rotation, setting.spin_free, setting.length_m)
+    return _tangents(rows, direction, above.lo, above.hi, upper_bounds(rows, direction, above.lo, above.hi))
 
 
 def _held(setting: Setting, q: Array, tangent: Array, normal: Array, direction: Array) -> Array:

@@ -60,10 +60,11 @@ def fastest(load: Load, distance: Array, window_s: float, ceiling: Array) -> Tim
     low = np.where(known, high, low)
     for _ in range(BISECTIONS):
         middle = (low + high) / 2
-        fits = _fits(load, distance, middle, window_s)[0]
-        low, high = np.where(fits, middle, low), np.where(fits, high, middle)
-        if not (high - low > RESOLUTION * high).any():
+        going = high - low > RESOLUTION * high  # a stroke's answer does not depend on who shares its batch
+        if not going.any():
             break
+        fits = _fits(load, distance, middle, window_s)[0]
+        low, high = np.where(fits & going, middle, low), np.where(fits | ~going, high, middle)
     speed = low.min(axis=1)
     speed[speed < AT_REST] = 0.0
     fits, acceleration, jerk = _fits(load, distance, np.repeat(speed[:, None], 2, axis=1), window_s)

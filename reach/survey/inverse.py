@@ -19,6 +19,7 @@ from reach.strike.setting import Setting
 LIBRARY = 20_000  # random postures to choose starts from
 STARTS = 12  # a strike, of the library's nearest
 MORE_STARTS = 48  # where those find nothing
+DEEP_STARTS = 160  # where a verdict hangs on it
 STEPS = 14
 MORE_STEPS = 40
 TOLERANCE = 1e-9  # m, and rad by the paddle's length: a strike is met
@@ -90,12 +91,12 @@ def from_library(
 ) -> tuple[Found, NDArray[np.int64]]:
     """Postures of strikes (m, 3), (m, 3), and from how many starts (m,) each was looked for.
 
-    More starts where the first find nothing, or `deep`: for all.
+    More starts where the first find nothing, or `deep`: many for all.
     """
     m = len(position)
     if deep:
-        wide = library.nearest(position, normal, STARTS + MORE_STARTS)
-        return _solved(setting, wide, position, normal, STEPS), np.full(m, STARTS + MORE_STARTS)
+        wide = library.nearest(position, normal, DEEP_STARTS)
+        return _solved(setting, wide, position, normal, STEPS), np.full(m, DEEP_STARTS)
     starts = np.full(m, STARTS)
     found = _solved(setting, library.nearest(position, normal, STARTS), position, normal, STEPS)
     left = np.setdiff1d(np.arange(m), found.owner)
@@ -129,16 +130,22 @@ def _solved(setting: Setting, starts: Array, position: Array, normal: Array, ste
 
 
 def _distinct(found: Found) -> Found:
-    """Each posture once."""
-    q, owner = found.q, found.owner
-    keep = np.ones(len(q), dtype=bool)
-    longest = int(np.bincount(owner).max()) if len(owner) else 0
-    for gap in range(1, longest):
-        same = owner[gap:] == owner[:-gap]
-        close = np.abs(q[gap:] - q[:-gap]).max(axis=1) <= SAME
-        # A posture goes when one before it, itself kept, is close.
-        keep[gap:] &= ~(same & close & keep[:-gap])
-    return Found(q[keep], owner[keep])
+    """Each posture once: one goes when an earlier one of its strike, itself kept, is close."""
+    if not len(found.owner):
+        return found
+    owners, first, counts = np.unique(found.owner, return_index=True, return_counts=True)
+    most = int(counts.max())
+    place = np.searchsorted(owners, found.owner)
+    rank = np.arange(len(found.owner)) - first[place]
+    table = np.full((len(owners), most, found.q.shape[1]), np.inf)
+    table[place, rank] = found.q
+    kept = np.zeros((len(owners), most), dtype=bool)
+    for k in range(most):
+        with np.errstate(invalid="ignore"):
+            close = np.abs(table[:, :k] - table[:, k : k + 1]).max(axis=2) <= SAME
+        kept[:, k] = ~(close & kept[:, :k]).any(axis=1)
+    keep = kept[place, rank]
+    return Found(found.q[keep], found.owner[keep])
 
 
 def reach_strikes(

@@ -14,7 +14,7 @@ from reach.strike.sides import AT_BOUND
 from reach.survey.family import folds
 from reach.survey.grid import Strikes
 from reach.survey.inverse import Found, Library, from_library, from_postures, merged
-from reach.survey.judged import Scribe
+from reach.survey.judged import REACH, Scribe
 from reach.survey.rows import Judged, Rows, judged
 from reach.survey.selfmotion import LEADERS, best_first, improved, own_bound
 from reach.survey.stops import gains, loosened, stop_at_bound, stop_of
@@ -22,18 +22,29 @@ from reach.survey.weigh import Effort, Shown, Weighed, show, weigh
 from reach.variants import without_margins
 from reach.verdict import DELIVERABLE, NOT_DELIVERABLE
 
-CLOSE = 0.7  # of the required speed: a bound from here on is worth a wider search before it says no
-DEEP_LEADERS = 8  # postures of a strike that are moved in that search
+DEEP_LEADERS = 12  # postures of a strike that are moved in the search on which a "not deliverable" rests
+EFFORTS = {  # by (full, exact): of the first look and of the one after the wider search
+    (False, False): (Effort.QUICK, Effort.QUICK),
+    (False, True): (Effort.QUICK, Effort.QUICK),
+    (True, False): (Effort.QUICK, Effort.DECIDE),
+    (True, True): (Effort.FULL, Effort.FULL),
+}
 BETTER = 1 + 1e-3  # times the bound: a neighbour's posture that gives more is moved too
+
+
+NUMERICAL = (ArithmeticError, ValueError, np.linalg.LinAlgError)
+FAILED = "failed numerically: {}"
 
 
 @dataclass(frozen=True, eq=False)
 class Searched:
-    """Postures of a chunk's m strikes, and the starts (m,) and postures compared (m,) that it took."""
+    """Postures of a chunk's m strikes, the starts (m,) and postures compared (m,) that it took, and by strike why a
+    search failed."""
 
     found: Found
     starts: NDArray[np.int64]
     postures: NDArray[np.int64]
+    failed: dict[int, str]
 
 
 class Looker:
@@ -43,15 +54,14 @@ class Looker:
     ----------
     cell : with a survey
     seed : of the random postures
-    full : also say what stops each strike, and how it stands without margins
+    full : also optimise, say what stops each strike, and how it stands without margins
     """
 
     def __init__(self, cell: Cell, seed: int, full: bool = True):
         assert cell.survey is not None
         self.setting = Setting.of(cell)
         self.folds = folds(self.setting.chain, self.setting.arm.names)
-        exact = cell.survey.exact
-        self._first, self._then = (Effort.FULL, Effort.FULL) if exact else (Effort.QUICK, Effort.DECIDE)
+        self._efforts = EFFORTS[(full, cell.survey.exact)]
         self._library = Library(self.setting, seed)
         self._origin, self._length = reach_bound(self.setting.arm)
         bare = without_margins(cell)
@@ -60,16 +70,34 @@ class Looker:
         self._scribe = Scribe(cell, self.setting, self.folds, self._origin, self._length)
 
     def search(self, strikes: Strikes) -> Searched:
-        """Postures of strikes: inverse kinematics from seeded starts, moved along the freedom that is left."""
+        """Postures of strikes: inverse kinematics from seeded starts, moved along the freedom that is left.
+
+        A strike that fails numerically has none, and the reason.
+        """
+        try:
+            return self._searched(strikes)
+        except NUMERICAL as error:
+            if len(strikes) == 1:
+                none = np.zeros(1, dtype=np.int64)
+                return Searched(Found.none(self.setting.arm.n), none, none, {0: str(error)})
+        ones = [self.search(strikes.take(slice(k, k + 1))) for k in range(len(strikes))]
+        return Searched(
+            Found.joined([Found(one.found.q, one.found.owner + k) for k, one in enumerate(ones)]),
+            np.concatenate([one.starts for one in ones]),
+            np.concatenate([one.postures for one in ones]),
+            {k: one.failed[0] for k, one in enumerate(ones) if one.failed},
+        )
+
+    def _searched(self, strikes: Strikes) -> Searched:
         m = len(strikes)
         starts, postures = np.zeros(m, dtype=np.int64), np.zeros(m, dtype=np.int64)
         near = np.flatnonzero(np.linalg.norm(strikes.position - self._origin, axis=1) <= self._length)
         if not len(near):
-            return Searched(Found.none(self.setting.arm.n), starts, postures)
+            return Searched(Found.none(self.setting.arm.n), starts, postures, {})
         part = strikes.take(near)
         found, starts[near] = from_library(self.setting, self._library, part.position, part.normal)
         found, postures[near] = self._moved(part, found, LEADERS)
-        return Searched(Found(found.q, near[found.owner]), starts, postures)
+        return Searched(Found(found.q, near[found.owner]), starts, postures, {})
 
     def judge(self, strikes: Strikes, searched: Searched, neighbours: Found) -> Judged:
         """What becomes of strikes from their postures and from their neighbours'."""
@@ -83,12 +111,14 @@ class Looker:
         """A posture that fails numerically leaves its own row undecided, with the reason."""
         try:
             return self._looked_at(strikes, searched, neighbours)
-        except (ArithmeticError, ValueError, np.linalg.LinAlgError) as error:
+        except NUMERICAL as error:
             if len(strikes) == 1:
-                return self._empty(strikes, f"failed numerically: {error}")
+                return self._empty(strikes, FAILED.format(error))
         rows = self._empty(strikes)
         for k in range(len(strikes)):
-            one = Searched(searched.found.of([k]), searched.starts[k : k + 1], searched.postures[k : k + 1])
+            failed = {0: searched.failed[k]} if k in searched.failed else {}
+            at = slice(k, k + 1)
+            one = Searched(searched.found.of([k]), searched.starts[at], searched.postures[at], failed)
             rows.put([k], self._judged(strikes.take(slice(k, k + 1)), one, neighbours.of([k])))
         return rows
 
@@ -99,8 +129,8 @@ class Looker:
         rows = self._empty(strikes)
         found, postures = self._with_neighbours(strikes, searched, neighbours)
         rows.counts["starts"][:], rows.counts["postures"][:] = searched.starts, postures
-        self._filled(rows, found, self._first)
-        again = self._worth_more(rows)
+        self._filled(rows, found, self._efforts[0])
+        again = self._open(rows)
         if len(again):
             part = strikes.take(again)
             more, starts = from_library(self.setting, self._library, part.position, part.normal, deep=True)
@@ -108,17 +138,16 @@ class Looker:
             second = self._empty(part)
             second.counts["starts"][:] = rows.counts["starts"][again] + starts
             second.counts["postures"][:] = rows.counts["postures"][again] + tried
-            self._filled(second, wide, self._then)
+            self._filled(second, wide, self._efforts[1])
             rows.put(again.tolist(), second)
+        for k, error in searched.failed.items():
+            rows.put([k], self._empty(strikes.take(slice(k, k + 1)), FAILED.format(error)))
         return rows
 
-    def _worth_more(self, rows: Rows) -> NDArray[np.int64]:
-        """Strikes that a wider search may still change: reached, not delivered, their bound not far below."""
-        bound = rows.values["bound_still_m_s" if self.setting.still else "bound_free_m_s"]
-        with np.errstate(invalid="ignore"):
-            close = bound >= CLOSE * rows.strikes.required_m_s
-            short = ~(rows.values["demonstrated_m_s"] >= rows.strikes.required_m_s)
-        return np.flatnonzero(close & short)
+    def _open(self, rows: Rows) -> NDArray[np.int64]:
+        """Strikes that a wider search may still change: reached and not delivered."""
+        delivered = rows.values["demonstrated_m_s"] >= rows.strikes.required_m_s
+        return np.flatnonzero((rows.texts["limit"] != REACH) & ~delivered)
 
     def _moved(self, strikes: Strikes, found: Found, count: int) -> tuple[Found, NDArray[np.int64]]:
         """Postures, best first, after moving the best of each strike; and how many (m,) were compared."""
@@ -168,7 +197,8 @@ class Looker:
             elif k in loose:
                 stop = stop_of(self.setting, one.best, float(weighed.below.speed[one.index]), loose[k])
             else:
-                stop = stop_at_bound(self.setting, weighed.above, int(weighed.pick[one.index]))
+                i = int(weighed.pick[one.index])
+                stop = stop_at_bound(self.setting, weighed.above, i, weighed.found.q[i])
             self._scribe.verdict(rows, k, stop)
         self._without_margins(rows, found, effort)
 

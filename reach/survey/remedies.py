@@ -182,12 +182,15 @@ def _headroom(
         return None, f"none: {gone} strikes are out of reach, which no limit mends"
     rows = _spread(np.flatnonzero(reached & ~delivered), HEADROOM_SAMPLE)
     lacking = (needed - delivered.sum()) / max(int((reached & ~delivered).sum()), 1)
+    less = 1.0
     for factor in GROWN:
         if _share(cell, strikes, rows, factor, trial) >= lacking - 1e-9:
+            enough, short = (f"{100 * (x - 1):.0f} %" for x in (factor, less))
             return (
                 1 - factor,
-                f"{100 * (1 - factor):.0f} %: all limits but position must grow by {100 * (factor - 1):.0f} %",
+                f"-{enough}: all limits but position must grow; {short} is too little, {enough} enough",
             )
+        less = factor
     return None, f"none: not even with all limits but position at {GROWN[-1]:g} times what is stated"
 
 

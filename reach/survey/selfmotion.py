@@ -70,15 +70,16 @@ def improved(
     step = np.full(len(q), FIRST_STEP)
     for _ in range(ROUNDS if len(q) else 0):
         for null in _null_vectors(setting, q, place, face):
+            left = np.arange(len(q))
             for sign in (1.0, -1.0):
-                other, near = reach_strikes(
-                    setting, q + sign * step[:, None] * null, place, face, RETURN_STEPS, LOOSE_M
-                )
-                there = np.where(near, own_bound(setting, other, along), -np.inf)
-                tried += np.bincount(owner[near], minlength=m)
-                better = there > value
-                q[better], value[better] = other[better], there[better]
-                if better.all():
+                away = q[left] + sign * step[left, None] * null[left]
+                other, near = reach_strikes(setting, away, place[left], face[left], RETURN_STEPS, LOOSE_M)
+                there = np.where(near, own_bound(setting, other, along[left]), -np.inf)
+                tried += np.bincount(owner[left[near]], minlength=m)
+                better = there > value[left]
+                q[left[better]], value[left[better]] = other[better], there[better]
+                left = left[~better]
+                if not len(left):
                     break
         step = step / 2
     q, met = reach_strikes(setting, q, place, face, LAST_STEPS)

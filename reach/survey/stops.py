@@ -55,8 +55,8 @@ def gains(settings: dict[str, Setting], q: Array, normal: Array, direction: Arra
     return found
 
 
-def stop_at_bound(setting: Setting, above: Upper, i: int) -> Stop:
-    """What makes the upper bound of posture i: the tool's cap, or the joint that gives most of it."""
+def stop_at_bound(setting: Setting, above: Upper, i: int, q: Array) -> Stop:
+    """What makes the upper bound of posture i, q (n,): the tool's cap, or the joint that gives most of it."""
     if above.own(setting.still)[i] >= setting.tool_cap_m_s:
         return Stop("tool speed", "", IMPACT)
     y = above.joints.dual[i] @ above.rows[i]
@@ -65,8 +65,16 @@ def stop_at_bound(setting: Setting, above: Upper, i: int) -> Stop:
         joint = int(np.nanargmax(np.where(y == 0, 0.0, y * side)))
     velocity = setting.limits["velocity"]
     kept = (velocity.kept_hi if y[joint] > 0 else velocity.kept_lo)[joint]
-    limit = "velocity" if abs(side[joint]) >= AT_BOUND * abs(kept) else "position"
+    limit = "velocity"
+    if abs(side[joint]) < AT_BOUND * abs(kept):  # narrowed by what acceleration gains over the travel
+        limit = "position" if _near_end(setting, q[joint], joint) else "acceleration"
     return Stop(limit, setting.arm.names[joint], IMPACT)
+
+
+def _near_end(setting: Setting, q: float, joint: int) -> bool:
+    """Whether a joint is nearer to an end of its travel than to its middle."""
+    lo, hi = (side[joint] for side in setting.ends)
+    return bool(min(q - lo, hi - q) < (hi - lo) / 4)
 
 
 def stop_of(setting: Setting, shown: Demonstration, speed: float, loose: dict[str, float]) -> Stop:

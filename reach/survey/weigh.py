@@ -93,7 +93,7 @@ def show(setting: Setting, strikes: Strikes, weighed: Weighed, effort: Effort) -
     best: dict[int, Demonstration | None] = {}
     for k, own in quick.items():
         best[k] = swing(setting, strikes.normal[k], strikes.direction[k], below, int(own[0]))
-    if setting.still:
+    if best:
         _try_straight(setting, strikes, weighed, need, {k: int(own[0]) for k, own in quick.items()}, best)
     bounds = weighed.above.own(setting.still)
     for k, own in quick.items():
@@ -121,7 +121,7 @@ def _try_straight(
     if not short:
         return
     index = np.array([tops[k] for k in short])
-    ceiling = weighed.above.still[weighed.pick[index]]
+    ceiling = weighed.above.own(setting.still)[weighed.pick[index]]
     lines = straights(setting, strikes.direction[short], weighed.below, index, ceiling)
     for j, k in enumerate(short):
         one = best[k]
