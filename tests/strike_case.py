@@ -142,7 +142,9 @@ def straights_of(setting: Setting, q: Array) -> list[Demonstration]:
     some = np.flatnonzero(below.speed > 0)
     lines = straights(setting, normal[some], below, some, above.own(setting.still)[some])
     tried = [
-        lines.motion(setting, normal[i], normal[i], j) for j, i in enumerate(some) if lines.timing.speed[j] > 0
+        lines.motion(setting, normal[i], normal[i], j)
+        for j, i in enumerate(some)
+        if lines.timing.speed[j] > 0
     ]
     return [done for done in tried if done is not None]
 

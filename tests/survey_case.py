@@ -20,7 +20,6 @@ from reach.strike.setting import Setting
 from reach.survey.grid import Strikes, strikes
 from reach.survey.inverse import Found
 from reach.survey.look import Looker
-from reach.survey.rows import points_of
 from reach.survey.selfmotion import own_bound
 from reach.survey.sweep import sweep
 
@@ -95,7 +94,7 @@ def grid_of(cell: Cell) -> Strikes:
 
 def swept(cell: Cell, grid: Strikes | None = None, workers: int = 1, seed: int = 0) -> Points:
     """What a sweep finds of a cell's strikes."""
-    return points_of(sweep(cell, grid_of(cell) if grid is None else grid, workers, seed).parts)
+    return sweep(cell, grid_of(cell) if grid is None else grid, workers, seed).judged.points
 
 
 def highest(setting: Setting, found: Found, direction: Array) -> Array:

