@@ -5,15 +5,18 @@ from __future__ import annotations
 import csv
 import subprocess
 import sys
+from dataclasses import replace
 from functools import cache
 from pathlib import Path
 
 import numpy as np
+import pytest
 from numpy.typing import NDArray
 
-from reach.api import follow_commands
+from reach.api import follow_commands, survey_strikes
 from reach.arm import Arm
 from reach.cell import STANDARD_GRAVITY_M_S2, Array, Cell
+from reach.evidence.points import Points
 from reach.formats import load_cell
 from reach.result import FollowResult
 
@@ -176,3 +179,36 @@ def test_nothing_but_acceleration_and_torque_rate_is_near_its_limit() -> None:
         peak[use.limit] = max(peak.get(use.limit, 0.0), use.utilisation or 0.0)
     spare = {limit: peak[limit] for limit in ("velocity", "torque", "duty", "tool speed")}
     assert max(spare.values()) < 0.8, spare
+
+
+def at_run_up(run_up_m: float, spacing_m: float) -> Points:
+    """What the example's survey finds with another run-up and grid."""
+    survey = cell().survey
+    assert survey is not None
+    asked = replace(cell(), survey=replace(survey, run_up_m=run_up_m, spacing_m=spacing_m))
+    return survey_strikes(asked, advice=False).evidence.points
+
+
+def undecided_share(points: Points) -> float:
+    """Of the strikes within reach."""
+    return float((points.verdict == "undecided")[points.limit != "reach"].mean())
+
+
+def test_few_strikes_stay_undecided_on_a_long_run_up() -> None:
+    points = at_run_up(0.3, 0.2)
+    assert len(points.verdict) == 3 * 5 * 3
+    assert undecided_share(points) <= 0.10
+    assert (points.verdict == "deliverable").sum() >= 30
+
+
+@pytest.mark.campaign
+def test_the_survey_says_what_the_readme_says() -> None:
+    points = at_run_up(0.3, 0.1)
+    counts = {word: int((points.verdict == word).sum()) for word in ("deliverable", "not deliverable")}
+    assert counts == {"deliverable": 217, "not deliverable": 53}
+    assert (points.limit == "reach").sum() == 45
+    # No upper bound knows how short the way is: what a short run-up can't do stays undecided.
+    for run_up, least, most in ((0.1, 0.0, 0.3), (0.05, 0.5, 1.0)):
+        share = undecided_share(at_run_up(run_up, 0.1))
+        print(f"run-up {run_up} m: {share:.3f} undecided")
+        assert least <= share <= most
