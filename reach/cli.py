@@ -42,6 +42,9 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except BrokenPipeError:
         sys.stderr.close()
         return 4
+    except OSError as error:
+        print(f"can't go on: {error.strerror or error}", file=sys.stderr)
+        return 4
     except Exception:  # a fault of this program, said so
         print(
             "strikecheck failed, by a fault of its own; please report this with the lines above it:",
@@ -122,7 +125,7 @@ def _common(parser: argparse.ArgumentParser, command: str) -> None:
         help="processes (default: %(default)s)",
     )
     parser.add_argument(
-        "--seed", metavar="N", type=int, default=0, help="of random starts (default: %(default)s)"
+        "--seed", metavar="N", type=_seed, default=0, help="of random starts (default: %(default)s)"
     )
     parser.add_argument("--junit", metavar="FILE", help="also write a JUnit XML file")
 
@@ -131,6 +134,13 @@ def _count(text: str) -> int:
     number = int(text) if text.isascii() and text.isdigit() else 0
     if not 1 <= number <= 256:
         raise argparse.ArgumentTypeError("must be a whole number between 1 and 256")
+    return number
+
+
+def _seed(text: str) -> int:
+    number = int(text) if text.isascii() and text.isdigit() else -1
+    if not 0 <= number < 2**63:
+        raise argparse.ArgumentTypeError("must be a whole number, 0 or more")
     return number
 
 

@@ -99,14 +99,8 @@ def swings(
     ends : (n,) kept-back ends of travel, low and high, infinite where there are none
     run_up_m : longest way of the strike point a side
     """
-    (m, n), (lo, hi) = q.shape, ends
-    with np.errstate(divide="ignore", invalid="ignore"):
-        up, down = (hi - q) / np.abs(tangent), (q - lo) / np.abs(tangent)
-        ahead = np.where(tangent > 0, up, np.where(tangent < 0, down, np.inf)).min(axis=1)
-        behind = np.where(tangent > 0, down, np.where(tangent < 0, up, np.inf)).min(axis=1)
-        turn = (FARTHEST_TURN_RAD / np.abs(tangent)).min(axis=1)
-    travel = np.stack([behind, ahead], axis=1)
-    travel = np.clip(np.minimum(travel, turn[:, None]), 0.0, LONGEST_M)
+    m, n = q.shape
+    travel = travel_along(ends, q, tangent)
     slope = np.broadcast_to(tangent[:, None, None, :], (m, 2, NODES, n))
     paths = _straight_nodes(q, slope, travel)
     paths = replace(paths, pace=_pace(chain, paths.q, paths.slope))
@@ -114,6 +108,18 @@ def swings(
         paths = _straight_nodes(q, slope, _within_run_up(paths, KEPT_RUN_UP * (run_up_m or 0.0)))
         paths = replace(paths, pace=_pace(chain, paths.q, paths.slope))
     return paths
+
+
+def travel_along(ends: tuple[Array, Array], q: Array, tangent: Array) -> Array:
+    """How far (m, 2) in s joint lines through postures (m, n) may go before and after the strike."""
+    lo, hi = ends
+    with np.errstate(divide="ignore", invalid="ignore"):
+        up, down = (hi - q) / np.abs(tangent), (q - lo) / np.abs(tangent)
+        ahead = np.where(tangent > 0, up, np.where(tangent < 0, down, np.inf)).min(axis=1)
+        behind = np.where(tangent > 0, down, np.where(tangent < 0, up, np.inf)).min(axis=1)
+        turn = (FARTHEST_TURN_RAD / np.abs(tangent)).min(axis=1)
+    travel = np.minimum(np.stack([behind, ahead], axis=1), turn[:, None])
+    return np.asarray(np.clip(travel, 0.0, LONGEST_M))
 
 
 def _straight_nodes(q: Array, slope: Array, length: Array) -> Paths:

@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 
 from reach.cell import Array
 from reach.strike.bound import Bounds, maximisers, strike_rows, upper_bounds, world_dual
-from reach.strike.path import Load, Paths, load_along, swings
+from reach.strike.path import Load, Paths, load_along, swings, travel_along
 from reach.strike.profile import Profile, double_s
 from reach.strike.setting import Setting
 from reach.strike.timing import Timing, fastest
@@ -64,6 +64,20 @@ def upper(setting: Setting, q: Array, direction: Array) -> Upper:
         lo,
         hi,
     )
+
+
+def promise(setting: Setting, above: Upper, q: Array, normal: Array, direction: Array) -> Array:
+    """What to expect of postures (c,), m/s, to rank them by: the bound, what the joints could gain over the way that
+    there is, or what holds over the strike window, whichever is least. A guess, no bound."""
+    tangent = _tangents(above.rows, direction, above.lo, above.hi, above.joints)
+    usable = np.asarray(np.isfinite(tangent).all(axis=1))
+    safe = np.where(usable[:, None], tangent, 1.0)
+    way = travel_along(setting.ends, q, safe).min(axis=1)
+    if setting.run_up_m is not None:
+        way = np.minimum(way, setting.run_up_m)
+    gain = (_alone(setting, q) / np.maximum(np.abs(safe), 1e-12)).min(axis=1)
+    held = _held(setting, q, safe, normal, direction)
+    return np.where(usable, np.minimum.reduce([above.own(setting.still), np.sqrt(2 * gain * way), held]), 0.0)
 
 
 @dataclass(frozen=True, eq=False)
@@ -155,13 +169,18 @@ def _quickest(setting: Setting, q: Array, direction: Array, above: Upper) -> Arr
 
     The same linear program as the bound's, on accelerations: the kept-back limit or what torque gives the joint alone.
     """
+    alone = _alone(setting, q)
+    bounds = upper_bounds(above.rows, direction, -alone, alone)
+    return _tangents(above.rows, direction, -alone, alone, bounds)
+
+
+def _alone(setting: Setting, q: Array) -> Array:
+    """Acceleration (c, n) that each joint could have by itself: its kept-back limit, or what its torque leaves."""
     acceleration, torque = setting.limits["acceleration"], setting.limits["torque"]
     static = setting.arm.torque(q, np.zeros_like(q), np.zeros_like(q))
     spare = np.maximum(np.minimum(torque.kept_hi - static, static - torque.kept_lo), 0.0)
     alone = np.minimum(acceleration.tighter, spare / setting.arm.inertia_diagonals(q))
-    alone = np.clip(np.where(np.isfinite(alone), alone, BEYOND), 1e-3, BEYOND)
-    bounds = upper_bounds(above.rows, direction, -alone, alone)
-    return _tangents(above.rows, direction, -alone, alone, bounds)
+    return np.clip(np.where(np.isfinite(alone), alone, BEYOND), 1e-3, BEYOND)
 
 
 def _still(setting: Setting, q: Array, direction: Array, above: Upper) -> Array:

@@ -20,7 +20,9 @@ from numpy.typing import NDArray
 from reach.cell import Array
 from reach.strike.path import Load
 
-SHARES = np.array([1.0, 0.85, 0.7, 0.55, 0.4, 0.25, 0.15])  # of the largest safe acceleration
+SHARES = np.array(
+    [1.0, 0.85, 0.7, 0.55, 0.4, 0.25, 0.15]
+)  # of the largest acceleration that is safe and left room
 STRETCHES = (16, 13, 10, 7, 5, 3)  # last node of the stretch that may be used
 BISECTIONS = 40
 RESOLUTION = 1e-4  # of the speed
@@ -89,6 +91,10 @@ def _fits(
 ) -> tuple[NDArray[np.bool_], Array, Array]:
     """Whether each side (m, 2) fits a speed (m, 2), and the acceleration and jerk of its shortest stretch."""
     safe, room, drag = _safe(load, speed)
+    # Gaining speed faster than this would use up some rate by itself and leave no jerk to get there.
+    with np.errstate(divide="ignore", invalid="ignore"):
+        spent = np.where(drag > 0, room / drag, np.inf).min(axis=3)
+    safe = np.minimum(safe, np.minimum.accumulate(spent, axis=2))
     best = np.full(speed.shape, np.inf)
     acceleration, jerk = np.zeros(speed.shape), np.zeros(speed.shape)
     most_jerk = np.minimum(load.jerk, UNLIMITED)[:, None]

@@ -22,7 +22,7 @@ from reach.survey.judged import PROVED, SEARCHED
 from reach.survey.needs import needs
 from reach.survey.remedies import Advice, advice
 from reach.survey.rounds import Progress
-from reach.survey.sweep import Sweep, sweep
+from reach.survey.sweep import STOPPED, Sweep, sweep
 from reach.verdict import DELIVERABLE, NOT_DELIVERABLE, Verdict, judge_survey, unknown_required
 
 NOT_ASKED = "not looked for"
@@ -63,7 +63,7 @@ def answer(
         remedies=helps.remedies,
         headroom_share=helps.headroom_share,
         headroom_text=helps.headroom_text,
-        notes=_notes(cell, helps),
+        notes=_notes(cell, evidence, helps),
         evidence=evidence,
     )
 
@@ -150,10 +150,10 @@ def _without_margins(cell: Cell, evidence: SurveyEvidence, bare: Texts) -> str:
     return judge_survey(replace(evidence, points=points), cell.survey.required_share, cell.accept).verdict
 
 
-def _notes(cell: Cell, helps: Advice) -> tuple[str, ...]:
+def _notes(cell: Cell, evidence: SurveyEvidence, helps: Advice) -> tuple[str, ...]:
     survey = cell.survey
     assert survey is not None
-    found = []
+    found = ["duty is left out: one stroke is no cycle"]
     if survey.run_up_m is None:
         found.append("no run-up is given: the stroke may use all the travel of the joints")
     if survey.rotation == "free":
@@ -164,6 +164,9 @@ def _notes(cell: Cell, helps: Advice) -> tuple[str, ...]:
         found.append(
             "the ball's speed is not given: hits are those of a ball that is kept up, as fast out as in"
         )
+    if evidence.stopped:
+        left = sum(reason == STOPPED for reason in evidence.points.reason)
+        found.append(f"{left} strikes were not looked at; the figures count them as speed 0")
     if helps.in_vain:
         found.append(f"tried without gain: {'; '.join(helps.in_vain)}")
     return tuple(found)

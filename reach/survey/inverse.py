@@ -19,7 +19,7 @@ from reach.strike.setting import Setting
 LIBRARY = 20_000  # random postures to choose starts from
 STARTS = 16  # a strike, of the library's nearest
 MORE_STARTS = 48  # where those find nothing
-DEEP_STARTS = 240  # where a verdict hangs on it
+DEEP_STARTS = 240  # before a strike is judged
 STEPS = 14
 MORE_STEPS = 40
 TOLERANCE = 1e-9  # m, and rad by the paddle's length: a strike is met

@@ -14,7 +14,7 @@ from reach.strike.sides import AT_BOUND
 from reach.survey.family import folds
 from reach.survey.grid import Strikes
 from reach.survey.inverse import Found, Library, from_library, from_postures, merged
-from reach.survey.judged import REACH, Scribe
+from reach.survey.judged import Scribe
 from reach.survey.rows import Judged, Rows, judged
 from reach.survey.selfmotion import LEADERS, best_first, improved, own_bound
 from reach.survey.stops import gains, loosened, stop_at_bound, stop_of
@@ -22,14 +22,7 @@ from reach.survey.weigh import Effort, Shown, Weighed, show, weigh
 from reach.variants import without_margins
 from reach.verdict import DELIVERABLE, NOT_DELIVERABLE
 
-DEEP_LEADERS = 40  # postures of a strike that are moved in the search on which a "not deliverable" rests
-EFFORTS = {  # by (full, exact): of the first look and of the one after the wider search
-    (False, False): (Effort.QUICK, Effort.QUICK),
-    (False, True): (Effort.QUICK, Effort.QUICK),
-    (True, False): (Effort.QUICK, Effort.DECIDE),
-    (True, True): (Effort.FULL, Effort.FULL),
-}
-BETTER = 1 + 1e-3  # times the bound: a neighbour's posture that gives more is moved too
+DEEP_LEADERS = 40  # postures of a strike that are moved before it is judged
 
 
 NUMERICAL = (ArithmeticError, ValueError, np.linalg.LinAlgError)
@@ -61,7 +54,8 @@ class Looker:
         assert cell.survey is not None
         self.setting = Setting.of(cell)
         self.folds = folds(self.setting.chain, self.setting.arm.names)
-        self._efforts = EFFORTS[(full, cell.survey.exact)]
+        exact = Effort.FULL if cell.survey.exact else Effort.DECIDE
+        self._effort = exact if full else Effort.QUICK
         self._library = Library(self.setting, seed)
         self._origin, self._length = reach_bound(self.setting.arm)
         bare = without_margins(cell)
@@ -127,27 +121,31 @@ class Looker:
 
     def _looked_at(self, strikes: Strikes, searched: Searched, neighbours: Found) -> Rows:
         rows = self._empty(strikes)
-        found, postures = self._with_neighbours(strikes, searched, neighbours)
-        rows.counts["starts"][:], rows.counts["postures"][:] = searched.starts, postures
-        self._filled(rows, found, self._efforts[0])
-        again = self._open(rows)
-        if len(again):
-            part = strikes.take(again)
-            more, starts = from_library(self.setting, self._library, part.position, part.normal, deep=True)
-            wide, tried = self._moved(part, merged([found.of(again), more]), DEEP_LEADERS)
-            second = self._empty(part)
-            second.counts["starts"][:] = rows.counts["starts"][again] + starts
-            second.counts["postures"][:] = rows.counts["postures"][again] + tried
-            self._filled(second, wide, self._efforts[1])
-            rows.put(again.tolist(), second)
+        found, rows.counts["starts"][:], rows.counts["postures"][:] = self._deeper(
+            strikes, searched, neighbours
+        )
+        self._filled(rows, found)
         for k, error in searched.failed.items():
             rows.put([k], self._empty(strikes.take(slice(k, k + 1)), FAILED.format(error)))
         return rows
 
-    def _open(self, rows: Rows) -> NDArray[np.int64]:
-        """Strikes that a wider search may still change: reached and not delivered."""
-        delivered = rows.values["demonstrated_m_s"] >= rows.strikes.required_m_s
-        return np.flatnonzero((rows.texts["limit"] != REACH) & ~delivered)
+    def _deeper(
+        self, strikes: Strikes, searched: Searched, neighbours: Found
+    ) -> tuple[Found, NDArray[np.int64], NDArray[np.int64]]:
+        """All postures of strikes that are reached: those found, those from the neighbours', and those of many more
+        starts, the best moved along the freedom left; and how many starts (m,) and postures (m,) that took."""
+        starts, postures = searched.starts.copy(), searched.postures.copy()
+        more = from_postures(self.setting, neighbours, strikes.position, strikes.normal)
+        both = merged([searched.found, more])
+        reached = np.unique(both.owner)
+        if not len(reached):
+            return both, starts, postures
+        part = strikes.take(reached)
+        deep, extra = from_library(self.setting, self._library, part.position, part.normal, deep=True)
+        wide, tried = self._moved(part, merged([both.of(reached), deep]), DEEP_LEADERS)
+        starts[reached] += extra
+        postures[reached] += tried
+        return Found(wide.q, reached[wide.owner]), starts, postures
 
     def _moved(self, strikes: Strikes, found: Found, count: int) -> tuple[Found, NDArray[np.int64]]:
         """Postures, best first, after moving the best of each strike; and how many (m,) were compared."""
@@ -159,27 +157,7 @@ class Looker:
     def _own(self, strikes: Strikes, found: Found, setting: Setting | None = None) -> Array:
         return own_bound(setting or self.setting, found.q, strikes.direction[found.owner])
 
-    def _with_neighbours(
-        self, strikes: Strikes, searched: Searched, neighbours: Found
-    ) -> tuple[Found, NDArray[np.int64]]:
-        """Postures with those reached from the neighbours', and how many (m,) were compared."""
-        found, postures, m = searched.found, searched.postures.copy(), len(strikes)
-        if not len(neighbours.q):
-            return found, postures
-        more = from_postures(self.setting, neighbours, strikes.position, strikes.normal)
-        postures += np.bincount(more.owner, minlength=m)
-        tops = [np.full(m, -np.inf), np.full(m, -np.inf)]
-        for top, some in zip(tops, (found, more), strict=True):
-            np.maximum.at(top, some.owner, self._own(strikes, some))
-        found = merged([found, more])
-        gained = np.flatnonzero(tops[1] > tops[0] * BETTER)
-        if len(gained):
-            wide, tried = self._moved(strikes.take(gained), found.of(gained), LEADERS)
-            postures[gained] += tried
-            found = merged([Found(wide.q, gained[wide.owner]), found])
-        return found, postures
-
-    def _filled(self, rows: Rows, found: Found, effort: Effort) -> None:
+    def _filled(self, rows: Rows, found: Found) -> None:
         """Write what the postures show into the rows."""
         self._scribe.unreached(rows, found.owner)
         rows.bare[:] = rows.texts["verdict"]
@@ -187,7 +165,7 @@ class Looker:
             return
         weighed = weigh(self.setting, self.folds, rows.strikes, found)
         self._scribe.bounds(rows, weighed)
-        shown = show(self.setting, rows.strikes, weighed, effort)
+        shown = show(self.setting, rows.strikes, weighed, self._effort)
         for k, one in shown.items():
             self._scribe.motion(rows, k, one)
         loose = self._loosened(rows.strikes, weighed, shown)
@@ -200,7 +178,7 @@ class Looker:
                 i = int(weighed.pick[one.index])
                 stop = stop_at_bound(self.setting, weighed.above, i, weighed.found.q[i])
             self._scribe.verdict(rows, k, stop)
-        self._without_margins(rows, found, effort)
+        self._without_margins(rows, found)
 
     def _loosened(
         self, strikes: Strikes, weighed: Weighed, shown: dict[int, Shown]
@@ -221,7 +199,7 @@ class Looker:
             k: {kind: float(found[j]) for kind, found in speeds.items()} for j, (k, _) in enumerate(short)
         }
 
-    def _without_margins(self, rows: Rows, found: Found, effort: Effort) -> None:
+    def _without_margins(self, rows: Rows, found: Found) -> None:
         """How the strikes stand with the margins at zero: those delivered with them stay so."""
         rows.bare[:] = rows.texts["verdict"]
         lost = np.flatnonzero(rows.texts["verdict"] != DELIVERABLE)
@@ -237,6 +215,6 @@ class Looker:
         if len(may):
             some = strikes.take(may)
             for j, one in show(
-                self._bare, some, weigh(self._bare, self.folds, some, part.of(may)), effort
+                self._bare, some, weigh(self._bare, self.folds, some, part.of(may)), self._effort
             ).items():
                 rows.bare[lost[may[j]]] = self._scribe.word(some, j, one)

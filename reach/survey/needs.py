@@ -23,7 +23,7 @@ def needs(cell: Cell, evidence: SurveyEvidence, asked: dict[int, Array]) -> tupl
     """What unknown limits would have to be, by the motions at the required speed.
 
     A motion that nothing holds back uses any rate; there the least share of those rates is looked for, all joints
-    alike, with which the quick timing of a strike still reaches its required speed.
+    alike, with which the quick timing of a strike still reaches its required speed. To a factor of two.
 
     Parameters
     ----------
@@ -36,17 +36,32 @@ def needs(cell: Cell, evidence: SurveyEvidence, asked: dict[int, Array]) -> tupl
     rows = np.array(done, dtype=np.int64)
     table, q = np.array([asked[k] for k in done]), points.q[rows]
     strikes = Strikes(points.position, points.normal, points.direction, points.required_m_s).take(rows)
-    shares = _shares(cell, evidence, strikes, table.max(axis=0), q)
+    most = _shape(cell, evidence, table.max(axis=0))
+    shares = _shares(cell, evidence, strikes, most, q)
     found = []
     for column, (limit, joint) in enumerate(evidence.unknown):
         peaks = table[:, column]
         if limit in RATES and shares is not None:
-            peaks = shares * peaks.max()
+            peaks = shares * most[column]
         unit = _unit(cell, limit, joint)
         some = f"{100 * QUANTILE:.0f} % of {len(peaks)} strikes that the other limits allow"
-        text = f"{float(np.quantile(peaks, QUANTILE)):.4g} {unit} is enough for {some}"
+        whose = f"{limit} of {joint}" if joint else limit
+        text = f"{whose}: {float(np.quantile(peaks, QUANTILE)):.4g} {unit} is enough for {some}"
         found.append(Need(joint, limit, None, float(peaks.max()), unit, text))
     return tuple(found)
+
+
+def _shape(cell: Cell, evidence: SurveyEvidence, most: Array) -> Array:
+    """The largest values asked (unknown,), those of torque rate in proportion to the joints' torque where it is stated:
+    strong joints are built to change their torque faster."""
+    torque = {joint.name: joint.limits.torque for joint in cell.arm.joints}
+    out = most.copy()
+    columns = [k for k, (limit, _) in enumerate(evidence.unknown) if limit == "torque rate"]
+    stated = [torque[evidence.unknown[k][1] or ""] for k in columns]
+    if columns and all(bound is not None for bound in stated):
+        size = np.array([max(-bound.lo, bound.hi) for bound in stated if bound is not None])
+        out[columns] = size * (most[columns] / size).max()
+    return out
 
 
 def _shares(cell: Cell, evidence: SurveyEvidence, strikes: Strikes, most: Array, q: Array) -> Array | None:

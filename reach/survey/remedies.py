@@ -119,7 +119,9 @@ def _limits(cell: Cell, points: Points, delivered: Mask) -> list[Change]:
     for (limit, joint), _ in stops.most_common(LIMITS_TRIED):
         changed = one_limit_scaled(cell, limit, joint or None, RAISED)
         of = f" of {joint}" if joint else ""
-        changes.append(Change("limit", f"{limit}{of} raised to {RAISED:g} times what is stated", changed))
+        verb = "widened" if limit == "position" else "raised"
+        what = f"travel{of}" if limit == "position" else f"{limit}{of}"
+        changes.append(Change("limit", f"{what} {verb} to {RAISED:g} times what is stated", changed))
     return changes
 
 

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from reach.cell import Array
 from reach.strike.motions import exact, straights, swing
 from reach.strike.setting import Setting
-from reach.strike.sides import Lower, Upper, lower, part_of, upper
+from reach.strike.sides import Lower, Upper, lower, part_of, promise, upper
 from reach.strike.stroke import Demonstration
 from reach.survey.family import Folds
 from reach.survey.grid import Strikes
@@ -19,7 +19,7 @@ from reach.survey.inverse import Found
 from reach.survey.selfmotion import leaders
 
 WITHIN = 1.2  # times the quick speed: what is asked beyond it, no optimisation has ever made up (at most 1.1 measured)
-CANDIDATES = 3  # postures of a strike that get both sides, beside the best of each family
+CANDIDATES, PROMISING = 2, 4  # postures of a strike, by bound and by promise, that get both sides
 
 
 @dataclass(frozen=True, eq=False)
@@ -54,6 +54,10 @@ def weigh(setting: Setting, folds: Folds, strikes: Strikes, found: Found) -> Wei
     family = folds.numbers(found.q)
     picked = np.zeros(len(order), dtype=bool)
     picked[leaders(found, CANDIDATES)] = True
+    at = found.owner
+    hope = promise(setting, above, found.q, strikes.normal[at], strikes.direction[at])
+    hopes = np.lexsort((-hope, at))
+    picked[hopes[leaders(found, PROMISING)]] = True
     if not setting.still:  # where the paddle may turn, the best still one may yet gain speed sooner
         best = largest(above.still, found.owner, len(strikes))
         picked[best[best >= 0]] = True

@@ -18,6 +18,7 @@ COLUMNS = (
     *("bound_still_m_s", "bound_free_m_s", "limit", "joint", "phase", "family"),
 )
 MORE_COLUMNS = (
+    *("dx", "dy", "dz"),
     *(
         "effective_mass_kg",
         "to_limit_share",
@@ -55,6 +56,7 @@ def _columns(points: Points, rows: slice, turning: np.ndarray) -> Iterator[list[
     yield from (_texts(column[rows]) for column in (points.limit, points.joint, points.phase, points.family))
     yield _numbers(
         points.q[rows],
+        points.direction[rows],
         points.effective_mass_kg[rows],
         points.to_limit_share[rows],
         points.approach_m_s[rows],

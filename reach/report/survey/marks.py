@@ -15,7 +15,7 @@ REQUIRED_STYLE: dict[str, Any] = {"color": INK, "linestyle": (0, (5, 2)), "linew
 DONE_STYLE: dict[str, Any] = {"color": BLUE, "linewidth": 2.0, "label": "demonstrated: done"}
 BOUND_STYLE: dict[str, Any] = {
     **{"color": ORANGE, "linewidth": 1.4, "linestyle": (0, (4, 2))},
-    "label": "upper bound: can't be passed",
+    "label": "upper bound: not passed in these postures",
 }
 POINT_STYLES: dict[str, dict[str, Any]] = {
     DELIVERABLE: {**MARK, "marker": "o", "markersize": 4.5, "color": GREEN, "label": "deliverable"},

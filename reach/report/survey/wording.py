@@ -36,7 +36,11 @@ READING = (
     "Demonstrated: in simulation a whole motion, from rest to rest through the strike, kept every limit at this speed "
     "along the face normal.",
     "Upper bound: no motion passes this speed in the postures compared, because a joint or the tool may not move "
-    "faster. Still: the paddle does not turn at the strike. Free: it may turn, so this bound is never the lower one.",
+    "faster, or a joint could not gain and lose its speed within its travel. Another posture may still do better. "
+    "Still: the paddle does not turn at the strike. Free: it may turn, so this bound is never the lower one.",
+    "Strike window: around contact speed, direction and tilt must hold as [accept] says; where a faster stroke would "
+    "turn away too soon, this is what stops it.",
+    "Region: each point stands for the part of the box nearest to it, so points at its edge stand for less.",
     "A strike is deliverable where the demonstrated speed reaches the required one, not deliverable where the upper "
     "bound stays below it, undecided in between.",
     "Basis: proved follows from the arm's lengths and limits alone; demonstrated is a motion that was found and "
@@ -148,7 +152,7 @@ def _strike(points: Points, row: int, bound: float) -> Row:
     stop = Count(str(points.limit[row]), str(points.joint[row]), str(points.phase[row]), 0, 0, 0)
     return (
         *(fixed(float(x), 3) for x in points.position[row]),
-        face_text(points.normal[row]),
+        _faces(points, row),
         fixed(float(points.required_m_s[row]), 3),
         fixed(float(points.demonstrated_m_s[row]), 3),
         fixed(bound, 3),
@@ -156,6 +160,12 @@ def _strike(points: Points, row: int, bound: float) -> Row:
         str(points.basis[row]) or NOTHING,
         stopper(stop) if stop.limit else NOTHING,
     )
+
+
+def _faces(points: Points, row: int) -> str:
+    """The face normal, and where it differs the direction of the strike."""
+    normal, direction = (face_text(vector[row]) for vector in (points.normal, points.direction))
+    return normal if normal == direction else f"{normal} along {direction}"
 
 
 def _strikes(f: dict[str, Any]) -> str:
