@@ -385,7 +385,7 @@ def test_the_example_is_right_by_its_files_alone(coarse):
 
 def test_straight_strokes_are_right_by_their_files_alone(tmp_path):
     # A long strike window asks for strokes that hold speed and attitude: some go straight.
-    files = surveyed(tmp_path, spacing_m=0.4, window_s=0.03, speeds_m_s=np.array([1.0]))
+    files = surveyed(tmp_path, spacing_m=0.4, window_s=0.08, speeds_m_s=np.array([1.0]))
     straight = np.flatnonzero(files.points["stroke"] == "straight")
     assert len(straight) and set(files.motions["rows"]) == set(straight)
     assert not faults(checked(files))
