@@ -474,7 +474,7 @@ def test_the_need_of_an_unknown_limit_is_enough(unstated: reach.SurveyResult) ->
         need = needs[joint]
         assert (need.limit, need.unit) == ("torque rate", "N·m/s") and need.sufficient is not None
         assert need.sufficient > 0 and need.text.startswith(
-            f"{need.sufficient:.4g} N·m/s is enough for 90 % of 5 strikes"
+            f"torque rate of {joint}: {need.sufficient:.4g} N·m/s is enough for 90 % of 5 strikes"
         )
         values[("torque rate", joint)] = need.sufficient
     bare = replace(without_margins(with_bounds(unstated.cell, values, "asked for")))
