@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from abc import ABC, abstractmethod
 from dataclasses import dataclass
 from typing import ClassVar
 
@@ -12,7 +13,7 @@ from reach.verdict import Verdict
 
 
 @dataclass(frozen=True, eq=False, kw_only=True)
-class Result:
+class Result(ABC):
     """What every command's answer has.
 
     Attributes
@@ -44,9 +45,9 @@ class Result:
     notes: tuple[str, ...]
 
     @property
+    @abstractmethod
     def not_checked(self) -> tuple[str, ...]:
         """Names of what was not checked at all."""
-        raise NotImplementedError
 
     @property
     def failed(self) -> bool:
