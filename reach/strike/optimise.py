@@ -46,13 +46,6 @@ class _Points(NamedTuple):
     j: Array
 
 
-class _Linear(NamedTuple):
-    """Relative values (e, r), at most 1 in size where legal, and their slopes by the jerks (e, r, N)."""
-
-    value: Array
-    slope: Array
-
-
 class SideProblem:
     """One side of one stroke: its load as smooth functions of the distance to the strike, and its limits.
 

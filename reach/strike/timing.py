@@ -38,13 +38,11 @@ class Timing:
     ----------
     speed : (m,) strike speed along the path, m/s; 0 where none is safe
     acceleration, jerk : (m, 2) of the run-up and of the follow-through
-    side_speed : (m, 2) what each side alone would allow
     """
 
     speed: Array
     acceleration: Array
     jerk: Array
-    side_speed: Array
 
 
 def fastest(load: Load, distance: Array, window_s: float, ceiling: Array) -> Timing:
@@ -75,7 +73,7 @@ def fastest(load: Load, distance: Array, window_s: float, ceiling: Array) -> Tim
     again = _fits(load, distance, low, window_s)
     acceleration = np.where(fits, acceleration, again[1] * slow**2)
     jerk = np.where(fits, jerk, again[2] * slow**3)
-    return Timing(speed, acceleration, jerk, low)
+    return Timing(speed, acceleration, jerk)
 
 
 def stretch(speed: Array, acceleration: Array, jerk: Array) -> Array:

@@ -19,7 +19,6 @@ from reach.survey.inverse import Found, reach_strikes, strike_errors
 
 FIRST_STEP = 0.4  # rad of the unit null vector
 ROUNDS = 5
-LAST_STEP = FIRST_STEP / 2 ** (ROUNDS - 1)
 RETURN_STEPS = 2  # of inverse kinematics, back onto the strike, within a round
 LAST_STEPS = 6  # and at the end
 LEADERS = 4  # postures of a strike that are moved

@@ -51,16 +51,19 @@ def sweep(
         When a worker process died.
     """
     chunks = _chunks(len(strikes))
-    looker = Looker(cell, seed)
-    _kept["survey"] = looker
     with worker_pool(min(workers, len(chunks)), _begin, cell, seed) as pool:
+        if pool is None:
+            _begin(cell, seed)
         run = Rounds(pool, progress)
         done = _both_rounds(run, strikes, chunks)
-    del _kept["survey"]
-    parts = [
-        looker.left(strikes.take(chunk), STOPPED) if part is None else part
-        for part, chunk in zip(done, chunks, strict=True)
-    ]
+    _kept.clear()
+    parts = [part for part in done if part is not None]
+    if len(parts) < len(done):
+        looker = Looker(cell, seed, full=False)
+        parts = [
+            looker.left(strikes.take(chunk), STOPPED) if part is None else part
+            for part, chunk in zip(done, chunks, strict=True)
+        ]
     return Sweep(joined(parts), run.stopped)
 
 
