@@ -186,13 +186,14 @@ class Ball:
 
 @dataclass(frozen=True)
 class Contact:
-    """The pair of ball and face."""
+    """The pair of ball and face; `arm_gives`: the arm's effective mass counts, else the paddle does not give."""
 
     restitution: float
     restitution_spread: float = 0.0
     restitution_at: tuple[tuple[float, float], ...] = ()
     friction: float = 0.0
     tangential_restitution: float = 0.0
+    arm_gives: bool = False
     source: str = "cell"
 
 
@@ -325,12 +326,110 @@ class Survey:
         return len(self.normals) * (x * y * z if self.listed is None else 1)
 
 
+QUARTERS_RAD = (0.0, float(np.pi / 2), float(np.pi), float(3 * np.pi / 2))
+
+
+@dataclass(frozen=True)
+class Rally:
+    """Ball flights to keep up: every apex with every offset and bearing.
+
+    Attributes
+    ----------
+    centre_m : the ball's centre at contact
+    apexes_m : above the centre
+    offsets_m, bearings_rad : where the ball comes down, from the centre; bearings from +x, counter-clockwise from above
+    recover_within_bounces : strikes after which the ball is to be at the centre again
+    latency_s : from the ball seen to the arm moving
+    required_share : of the points
+    centres_box_m, centres_spacing_m : where else the centre may stand, a grid; None: only the centre
+    contact_offset_spread_m, velocity_spread_m_s : standard deviations of where the ball meets the face, and of the
+        ball's velocity, each along both horizontal axes; cases : of a spread, a point
+    """
+
+    centre_m: Vec3
+    apexes_m: tuple[float, ...]
+    offsets_m: tuple[float, ...] = (0.0,)
+    bearings_rad: tuple[float, ...] = QUARTERS_RAD
+    recover_within_bounces: int = 1
+    latency_s: float = 0.0
+    required_share: float = 1.0
+    centres_box_m: tuple[Vec3, Vec3] | None = None
+    centres_spacing_m: float = 0.1
+    contact_offset_spread_m: float = 0.0
+    velocity_spread_m_s: float = 0.0
+    cases: int = 40
+
+
+@dataclass(frozen=True)
+class Starts:
+    """How trials begin: a ball that leaves the centre's height for its apex, off the centre, with lateral speed.
+
+    Every offset with every bearing and every speed outward along that bearing; then `random` more, anywhere within the
+    largest offset and the largest lateral speed.
+    """
+
+    offsets_m: tuple[float, ...] = (0.0,)
+    bearings_rad: tuple[float, ...] = QUARTERS_RAD
+    lateral_m_s: tuple[float, ...] = (0.0,)
+    random: int = 0
+
+
+@dataclass(frozen=True)
+class Sensor:
+    """How the ball is seen; rate 0: its true state at every control period. Noise: standard deviation of each axis."""
+
+    rate_hz: float = 0.0
+    latency_s: float = 0.0
+    position_noise_m: float = 0.0
+    velocity_noise_m_s: float = 0.0
+
+
+@dataclass(frozen=True)
+class Recovered:
+    """What counts as recovered: contacts this near to the centre and apexes this near to the wanted one, from the
+    `by_bounce`-th at the latest, and for `then_for` bounces on."""
+
+    within_m: float = 0.02
+    apex_error_m: float = 0.03
+    by_bounce: int = 10
+    then_for: int = 20
+
+
+LawName = Literal["mirror", "planning"]
+
+
+@dataclass(frozen=True)
+class Trial:
+    """A law of control to be tried on ball and arm.
+
+    Attributes
+    ----------
+    law : a law of this program's own, or the name of a class in `law_file`
+    law_file : the user's Python file, None for a law of this program's own
+    gains : (name, value) pairs, the law's own
+    centre_m : the ball's centre at contact; None: that of [rally], else above the strike point of the start posture
+    apex_m, bounces, starts, sensor, required_share, recovered : how it is tried and judged
+    """
+
+    law: str = "mirror"
+    law_file: str | None = None
+    gains: tuple[tuple[str, float], ...] = ()
+    centre_m: Vec3 | None = None
+    apex_m: float = 0.3
+    bounces: int = 50
+    starts: Starts = Starts()
+    sensor: Sensor = Sensor()
+    required_share: float = 1.0
+    recovered: Recovered = Recovered()
+
+
 @dataclass(frozen=True)
 class Cell:
     """A whole cell file, checked.
 
-    `follow` and `survey` are None where the file has no such table. `inputs` are the files read; `notes` are things
-    the readers found worth saying that are no faults (a limit ignored, a joint held at zero by default).
+    `follow`, `survey`, `rally` and `trial` are None where the file has no such table. `inputs` are the files read;
+    `notes` are things the readers found worth saying that are no faults (a limit ignored, a joint held at zero by
+    default).
     """
 
     path: str
@@ -346,5 +445,7 @@ class Cell:
     accept: Accept = Accept()
     follow: Follow | None = None
     survey: Survey | None = None
+    rally: Rally | None = None
+    trial: Trial | None = None
     inputs: tuple[Input, ...] = ()
     notes: tuple[str, ...] = ()

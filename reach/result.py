@@ -8,7 +8,9 @@ from typing import ClassVar
 
 from reach.cell import Cell
 from reach.evidence.points import SurveyEvidence
+from reach.evidence.rallies import RallyEvidence
 from reach.evidence.record import Evidence, Need, Reason, Remedy, SolverCount
+from reach.evidence.trials import TrialEvidence
 from reach.verdict import Verdict
 
 
@@ -102,3 +104,46 @@ class SurveyResult(Result):
     def not_checked(self) -> tuple[str, ...]:
         """Names of what was not checked at all."""
         return self.evidence.not_checked
+
+
+@dataclass(frozen=True, eq=False, kw_only=True)
+class RallyResult(Result):
+    """The answer on how large the usable juggling envelope is.
+
+    Attributes
+    ----------
+    evidence : RallyEvidence
+    """
+
+    command: ClassVar[str] = "rally"
+
+    evidence: RallyEvidence
+
+    @property
+    def not_checked(self) -> tuple[str, ...]:
+        """Names of what was not checked at all."""
+        return self.evidence.not_checked
+
+
+@dataclass(frozen=True, eq=False, kw_only=True)
+class TrialResult(Result):
+    """The answer on whether a law, on this arm, keeps the ball up.
+
+    Attributes
+    ----------
+    evidence : TrialEvidence
+    """
+
+    command: ClassVar[str] = "trial"
+
+    evidence: TrialEvidence
+
+    @property
+    def not_checked(self) -> tuple[str, ...]:
+        """Names of what was not checked at all."""
+        return self.evidence.not_checked
+
+    @property
+    def failed(self) -> bool:
+        """Whether a trial ended because no solver answered."""
+        return any(run.outcome == "solver failed" for run in self.evidence.runs)
