@@ -42,6 +42,11 @@ class Setting:
     def of(cell: Cell) -> Setting:
         """The setting of a cell with a survey."""
         assert cell.survey is not None, "the cell has no strikes"
+        return Setting.made(cell, cell.survey.rotation == "still", cell.survey.run_up_m)
+
+    @staticmethod
+    def made(cell: Cell, still: bool = True, run_up_m: float | None = None) -> Setting:
+        """The setting of a cell for strikes of any kind."""
         arm = Arm(cell.arm, cell.paddle)
         length = cell.solver.rotation_length_m or cell.paddle.radius_m or PLAIN_LENGTH_M
         return Setting(
@@ -50,10 +55,10 @@ class Setting:
             build_limits(cell),
             cell.accept,
             cell.period_s,
-            cell.survey.rotation == "still",
+            still,
             cell.paddle.shape == "disc",
             length,
-            cell.survey.run_up_m,
+            run_up_m,
         )
 
     @property

@@ -75,7 +75,7 @@ def promise(setting: Setting, above: Upper, q: Array, normal: Array, direction: 
     way = travel_along(setting.ends, q, safe).min(axis=1)
     if setting.run_up_m is not None:
         way = np.minimum(way, setting.run_up_m)
-    gain = (_alone(setting, q) / np.maximum(np.abs(safe), 1e-12)).min(axis=1)
+    gain = (alone(setting, q) / np.maximum(np.abs(safe), 1e-12)).min(axis=1)
     held = _held(setting, q, safe, normal, direction)
     return np.where(usable, np.minimum.reduce([above.own(setting.still), np.sqrt(2 * gain * way), held]), 0.0)
 
@@ -169,18 +169,18 @@ def _quickest(setting: Setting, q: Array, direction: Array, above: Upper) -> Arr
 
     The same linear program as the bound's, on accelerations: the kept-back limit or what torque gives the joint alone.
     """
-    alone = _alone(setting, q)
-    bounds = upper_bounds(above.rows, direction, -alone, alone)
-    return _tangents(above.rows, direction, -alone, alone, bounds)
+    each = alone(setting, q)
+    bounds = upper_bounds(above.rows, direction, -each, each)
+    return _tangents(above.rows, direction, -each, each, bounds)
 
 
-def _alone(setting: Setting, q: Array) -> Array:
+def alone(setting: Setting, q: Array) -> Array:
     """Acceleration (c, n) that each joint could have by itself: its kept-back limit, or what its torque leaves."""
     acceleration, torque = setting.limits["acceleration"], setting.limits["torque"]
     static = setting.arm.torque(q, np.zeros_like(q), np.zeros_like(q))
     spare = np.maximum(np.minimum(torque.kept_hi - static, static - torque.kept_lo), 0.0)
-    alone = np.minimum(acceleration.tighter, spare / setting.arm.inertia_diagonals(q))
-    return np.clip(np.where(np.isfinite(alone), alone, BEYOND), 1e-3, BEYOND)
+    each = np.minimum(acceleration.tighter, spare / setting.arm.inertia_diagonals(q))
+    return np.clip(np.where(np.isfinite(each), each, BEYOND), 1e-3, BEYOND)
 
 
 def _still(setting: Setting, q: Array, direction: Array, above: Upper) -> Array:

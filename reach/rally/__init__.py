@@ -1,0 +1,1 @@
+"""How large the usable juggling envelope is: strikes from ballistics, cycles between them, and what bounds them."""

@@ -1,0 +1,175 @@
+"""From one strike to the next: ways to move the arm between them, and the shortest time that each way takes.
+
+Around a strike joint velocities stay constant over the strike window. Between two windows the arm goes
+
+- through: one quintic from the end of the first window to the start of the next, as long as the flight; where the ball
+  is seen late, first along the stop until it is, and from there on;
+- by rest: a quintic to the ready posture, a wait, and a quintic from there into the next window.
+
+Quintics in joint space are a feasible family, no more: a way that is not found proves nothing.
+"""
+
+from __future__ import annotations
+
+from typing import NamedTuple
+
+import numpy as np
+from numpy.typing import NDArray
+
+from reach.cell import Array
+from reach.rally.fastest import shortest_s
+from reach.rally.gauge import Gauge
+from reach.rally.quintic import Legs, States, legs
+
+LEGAL = 0.998  # of the kept-back limits at the nodes: what the peaks between nodes may be off
+LONGEST_S = 3.0  # a leg that needs more is no cycle
+LEAST_S = 0.02
+SCAN = np.geomspace(LEAST_S, LONGEST_S, 22)  # durations tried, each 1.27 times the one before
+HALVINGS = 5  # between the shortest legal duration of the scan and the one before: to under 1 %
+STOP = 8  # every how many: durations tried at once, the short ones first
+
+
+class Ways(NamedTuple):
+    """Ways found for m legs.
+
+    Attributes
+    ----------
+    legal : (m,) whether one keeps every kept-back limit within its time
+    uses : (m, c) largest shares of the limits on the better way
+    rest : (m,) whether it is by rest; stop_s, start_s : (m,) s of its two parts, nan where they were not looked for
+    """
+
+    legal: NDArray[np.bool_]
+    uses: Array
+    rest: NDArray[np.bool_]
+    stop_s: Array
+    start_s: Array
+
+
+class Cycles:
+    """Finds ways between strikes.
+
+    Parameters
+    ----------
+    ready : (n,) posture to rest in
+    window_s : strike window
+    latency_s : from a contact on, until which the arm does not know where the ball goes
+    """
+
+    def __init__(self, gauge: Gauge, ready: Array, window_s: float, latency_s: float):
+        self.gauge, self.ready = gauge, ready
+        self.half, self.latency_s = window_s / 2, latency_s
+
+    def after(self, q: Array, v: Array) -> States:
+        """States (m, n) at the end of the windows of strikes (m, n)."""
+        return States(q + v * self.half, v, np.zeros_like(v))
+
+    def before(self, q: Array, v: Array) -> States:
+        """States (m, n) at the start of the windows."""
+        return States(q - v * self.half, v, np.zeros_like(v))
+
+    def ways(self, begin: States, end: States, flight_s: Array) -> Ways:
+        """Ways from windows to windows within flights (m,): through where that is legal, else by rest."""
+        m = len(flight_s)
+        stop, start = np.full(m, np.nan), np.full(m, np.nan)
+        if self.latency_s > self.half:
+            stop = self.stop_s(begin)
+        uses = self._through(begin, end, flight_s, stop)
+        legal = uses.max(axis=1) <= LEGAL
+        rest = np.zeros(m, dtype=bool)
+        left = np.flatnonzero(~legal & (self._least_rest_s(begin, end) <= flight_s))
+        if len(left):
+            if self.latency_s <= self.half:
+                stop[left] = self.stop_s(begin.take(left))
+            start[left] = self.start_s(end.take(left))
+            fits = self.rest_s(stop[left], start[left]) <= flight_s[left]
+            legal[left], rest[left] = fits, fits
+        return Ways(legal, uses, rest, stop, start)
+
+    def _least_rest_s(self, begin: States, end: States) -> Array:
+        """What no way (m,) by rest passes."""
+        setting, ready = self.gauge.setting, self._ready(len(begin.q))
+        parts = (shortest_s(setting, *pair).max(axis=1) for pair in ((begin, ready), (ready, end)))
+        return self.rest_s(*parts)
+
+    def rest_s(self, stop_s: Array, start_s: Array) -> Array:
+        """How long (m,) a way by rest takes from contact to contact."""
+        return np.asarray(np.maximum(self.half + stop_s, self.latency_s) + start_s + self.half)
+
+    def shortest(self, begin: States, end: States) -> tuple[Array, Array]:
+        """The shortest legal time (m,) found from contact to contact, inf where none is, and the uses (m, c) there."""
+        through = least_duration(self.gauge, begin, end) + 2 * self.half
+        rest = self.stop_s(begin) + self.start_s(end) + 2 * self.half
+        best = np.minimum(through, rest)
+        by_through = np.isfinite(through) & (through <= rest)
+        time = np.where(by_through, best - 2 * self.half, LONGEST_S)
+        return best, self.gauge.uses(legs(begin, end, time))
+
+    def stop_s(self, begin: States) -> Array:
+        """Shortest legal time (m,) from states to rest in the ready posture."""
+        return least_duration(self.gauge, begin, self._ready(len(begin.q)))
+
+    def start_s(self, end: States) -> Array:
+        """Shortest legal time (m,) from rest in the ready posture to states."""
+        return least_duration(self.gauge, self._ready(len(end.q)), end)
+
+    def through(self, begin: States, end: States, flight_s: Array, stop_s: Array) -> tuple[Array, States]:
+        """When (m,) after the first window's end the arm turns to the next strike, and its states (m, n) there."""
+        known = max(0.0, self.latency_s - self.half)
+        if known == 0.0:
+            return np.zeros(len(flight_s)), begin
+        length = np.where(np.isfinite(stop_s), stop_s, LONGEST_S)
+        stops = legs(begin, self._ready(len(flight_s)), length)
+        share = np.minimum(known / length, 1.0)[:, None]
+        at = States(*(stops.at(share, order)[:, 0] for order in range(3)))
+        return np.full(len(flight_s), known), at
+
+    def _through(self, begin: States, end: States, flight_s: Array, stop_s: Array) -> Array:
+        """Shares (m, c) of the limits on the ways through; infinite where there is no time for one."""
+        known, middle = self.through(begin, end, flight_s, stop_s)
+        left = flight_s - 2 * self.half - known
+        fits = left > LEAST_S
+        uses = np.full((len(flight_s), len(self.gauge.columns)), np.inf)
+        if fits.any():
+            uses[fits] = self.gauge.uses(legs(middle.take(fits), end.take(fits), left[fits]))
+        if self.latency_s > self.half:
+            first = self.gauge.uses(legs(begin, self._ready(len(flight_s)), np.fmin(stop_s, LONGEST_S)))
+            uses = np.maximum(uses, first)
+        return uses
+
+    def _ready(self, count: int) -> States:
+        return States.at_rest(np.repeat(self.ready[None], count, axis=0))
+
+
+def least_duration(gauge: Gauge, begin: States, end: States) -> Array:
+    """Shortest legal duration (m,) found of the quintics between states, inf where none is.
+
+    Legality need not be monotone in the duration: the shortest legal one of a scan, then halved toward the one before.
+    """
+    m = len(begin.q)
+    best, low = np.full(m, np.inf), np.zeros(m)
+    for first in range(0, len(SCAN), STOP):
+        left = np.flatnonzero(np.isinf(best))
+        if not len(left):
+            break
+        durations = SCAN[first : first + STOP]
+        legal = _legal(gauge, begin, end, np.repeat(left, len(durations)), np.tile(durations, len(left)))
+        legal = legal.reshape(len(left), len(durations))
+        found = legal.any(axis=1)
+        k = first + legal.argmax(axis=1)
+        best[left[found]] = SCAN[k[found]]
+        low[left[found]] = np.where(k[found] > 0, SCAN[k[found] - 1], 0.0)
+    going = np.flatnonzero(np.isfinite(best))
+    for _ in range(HALVINGS if len(going) else 0):
+        middle = (low[going] + best[going]) / 2
+        legal = _legal(gauge, begin, end, going, middle)
+        best[going[legal]] = middle[legal]
+        low[going[~legal]] = middle[~legal]
+    return best
+
+
+def _legal(
+    gauge: Gauge, begin: States, end: States, rows: NDArray[np.int64], duration_s: Array
+) -> NDArray[np.bool_]:
+    made: Legs = legs(begin.take(rows), end.take(rows), duration_s)
+    return np.asarray(gauge.uses(made).max(axis=1) <= LEGAL)
