@@ -16,12 +16,11 @@ class RallyPoints:
     """Points of an envelope, m of them, one row each; nan and "" where there is nothing.
 
     A point is a ball that falls from an apex onto a place off the centre, and is returned to the centre in the bounces
-    allowed. The points at the cell's own centre come first; those of the grid of centres after them.
+    allowed.
 
     Attributes
     ----------
     centre (m, 3), apex_m, offset_m, bearing_rad : (m,)
-    own : (m,) bool, at the cell's own centre
     paddle_speed_m_s, face_tilt_rad : (m,) of the returning strike, along its normal, from the vertical
     flight_s : (m,) from one contact to the next; cycle_s : (m,) the fastest legal way found from one strike to the
         next, the longest of those needed; margin_s : (m,) what is left of the flight, the latency taken off
@@ -43,7 +42,6 @@ class RallyPoints:
     apex_m: Array
     offset_m: Array
     bearing_rad: Array
-    own: NDArray[np.bool_]
     paddle_speed_m_s: Array
     face_tilt_rad: Array
     flight_s: Array

@@ -62,11 +62,11 @@ class Cycles:
 
     def after(self, q: Array, v: Array) -> States:
         """States (m, n) at the end of the windows of strikes (m, n)."""
-        return States(q + v * self.half, v, np.zeros_like(v))
+        return States.moving(q + v * self.half, v)
 
     def before(self, q: Array, v: Array) -> States:
         """States (m, n) at the start of the windows."""
-        return States(q - v * self.half, v, np.zeros_like(v))
+        return States.moving(q - v * self.half, v)
 
     def ways(self, begin: States, end: States, flight_s: Array) -> Ways:
         """Ways from windows to windows within flights (m,): through where that is legal, else by rest."""
@@ -84,6 +84,8 @@ class Cycles:
             start[left] = self.start_s(end.take(left))
             fits = self.rest_s(stop[left], start[left]) <= flight_s[left]
             legal[left], rest[left] = fits, fits
+            part = left[fits]
+            uses[part] = self._by_rest(begin.take(part), end.take(part), stop[part], start[part])
         return Ways(legal, uses, rest, stop, start)
 
     def _least_rest_s(self, begin: States, end: States) -> Array:
@@ -113,20 +115,20 @@ class Cycles:
         """Shortest legal time (m,) from rest in the ready posture to states."""
         return least_duration(self.gauge, self._ready(len(end.q)), end)
 
-    def through(self, begin: States, end: States, flight_s: Array, stop_s: Array) -> tuple[Array, States]:
+    def turn(self, begin: States, stop_s: Array) -> tuple[Array, States]:
         """When (m,) after the first window's end the arm turns to the next strike, and its states (m, n) there."""
+        m = len(begin.q)
         known = max(0.0, self.latency_s - self.half)
         if known == 0.0:
-            return np.zeros(len(flight_s)), begin
+            return np.zeros(m), begin
         length = np.where(np.isfinite(stop_s), stop_s, LONGEST_S)
-        stops = legs(begin, self._ready(len(flight_s)), length)
+        stops = legs(begin, self._ready(m), length)
         share = np.minimum(known / length, 1.0)[:, None]
-        at = States(*(stops.at(share, order)[:, 0] for order in range(3)))
-        return np.full(len(flight_s), known), at
+        return np.full(m, known), States(*(stops.at(share, order)[:, 0] for order in range(3)))
 
     def _through(self, begin: States, end: States, flight_s: Array, stop_s: Array) -> Array:
         """Shares (m, c) of the limits on the ways through; infinite where there is no time for one."""
-        known, middle = self.through(begin, end, flight_s, stop_s)
+        known, middle = self.turn(begin, stop_s)
         left = flight_s - 2 * self.half - known
         fits = left > LEAST_S
         uses = np.full((len(flight_s), len(self.gauge.columns)), np.inf)
@@ -136,6 +138,13 @@ class Cycles:
             first = self.gauge.uses(legs(begin, self._ready(len(flight_s)), np.fmin(stop_s, LONGEST_S)))
             uses = np.maximum(uses, first)
         return uses
+
+    def _by_rest(self, begin: States, end: States, stop_s: Array, start_s: Array) -> Array:
+        """Shares (m, c) of the limits on ways by rest."""
+        ready = self._ready(len(stop_s))
+        return np.maximum(
+            self.gauge.uses(legs(begin, ready, stop_s)), self.gauge.uses(legs(ready, end, start_s))
+        )
 
     def _ready(self, count: int) -> States:
         return States.at_rest(np.repeat(self.ready[None], count, axis=0))

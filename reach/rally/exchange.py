@@ -80,7 +80,13 @@ class Ballistics:
         self._along_x = cache(self._returned)
 
     def exchange(self, apex_m: float, offset_m: float, bearing_rad: float) -> Exchange:
-        """A ball that leaves the centre for an apex, comes straight down off the centre, and is returned to it."""
+        """A ball that leaves the centre for an apex, comes straight down off the centre, and is returned to it.
+
+        Raises
+        ------
+        NoFlight, NoContact
+            Where no flight or no strike does that.
+        """
         plain = self._along_x(apex_m, offset_m)
         if offset_m <= AT_CENTRE_M:
             return plain
@@ -115,7 +121,9 @@ class Ballistics:
         except (NoContact, NoFlight):
             return None
         before = planned.strikes[: planned.main + 1]
-        return Exchange((*before, *strikes), (*planned.flights_s[: planned.main], down_s, *flights), len(before))
+        return Exchange(
+            (*before, *strikes), (*planned.flights_s[: planned.main], down_s, *flights), len(before)
+        )
 
     def _returned(self, apex_m: float, offset_m: float) -> Exchange:
         """The undisturbed exchange with the offset along +x."""
@@ -144,9 +152,7 @@ class Ballistics:
         strike, flight_s, _ = self._sent(place, target, coming, apex_m)
         return strike, flight_s
 
-    def _sent(
-        self, place: Array, target: Array, coming: Array, apex_m: float
-    ) -> tuple[Strike, float, Array]:
+    def _sent(self, place: Array, target: Array, coming: Array, apex_m: float) -> tuple[Strike, float, Array]:
         sent = launch(self.air, place, target, apex_m)
         normal, speed = strike_for(coming, sent.velocity, self.contact, self.mass_ratio)
         return Strike(place, normal, speed, coming, sent.velocity), sent.flight_s, sent.landing_velocity

@@ -15,6 +15,7 @@ from reach.strike.setting import Setting
 
 NODES = 49
 SHARES = np.linspace(0.0, 1.0, NODES)
+NEAR_END = 0.05  # of its travel: nearer to an end, a joint uses its position limit; 0 before, 1 at the end
 BATCH = 256  # legs at once: a few MB
 KINDS = ("position", "velocity", "acceleration", "jerk", "torque", "torque rate")
 TOOL = "tool speed"
@@ -64,19 +65,21 @@ class Gauge:
         turning = v[:, 1:] * v[:, :-1] < 0
         least[:, 1:][turning] = 0.0
         least[:, :-1][turning] = 0.0
-        slope = arm.damping + arm.friction / self._friction_width * (1 - np.tanh(least / self._friction_width) ** 2)
+        slope = arm.damping + arm.friction / self._friction_width * (
+            1 - np.tanh(least / self._friction_width) ** 2
+        )
         return np.asarray(rate + slope * a)
 
     def _share(self, kind: str, values: Array) -> Array:
         lo, hi = self._kept[kind]
         with np.errstate(invalid="ignore", divide="ignore"):
             if kind == "position":
-                share = 1 + np.maximum(values - hi, lo - values)
-                within = np.abs(2 * values - hi - lo) / (hi - lo)
-                share = np.where((share <= 1) & np.isfinite(hi - lo), within, share)
+                over = np.maximum(values - hi, lo - values)
+                near = np.where(np.isfinite(hi - lo), NEAR_END * (hi - lo), 1.0)
+                share = 1 + np.where(over > 0, over, np.maximum(over / near, -1.0))
             else:
                 share = np.where(values >= 0, values / hi, values / lo)
-        return np.nan_to_num(share, nan=0.0, posinf=np.inf, neginf=0.0)
+        return np.asarray(np.nan_to_num(share, nan=0.0, posinf=np.inf, neginf=0.0))
 
     def _tool(self, q: Array, v: Array) -> Array:
         cap = self.setting.tool_cap_m_s

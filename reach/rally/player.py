@@ -70,6 +70,10 @@ class Player:
         """The ways between strikes at a latency."""
         return Cycles(self.gauge, self.stance, self._window, latency_s)
 
+    def point(self, ball: Array, normal: Array) -> Array:
+        """Strike points (…, 3) for balls (…, 3) from the centre and normals (…, 3)."""
+        return np.asarray(self.centre + ball - self._radius * normal)
+
     def play(self, exchanges: Sequence[Exchange], latency_s: float) -> Played:
         """Play exchanges."""
         strikes = [strike for one in exchanges for strike in one.strikes]
@@ -78,8 +82,7 @@ class Player:
         normal = np.array([strike.normal for strike in strikes]).reshape(-1, 3)
         ball = np.array([strike.ball for strike in strikes]).reshape(-1, 3)
         speed = np.array([strike.speed_m_s for strike in strikes])
-        point = self.centre + ball - self._radius * normal
-        q, met = postures(self.setting, self.stance, point, normal)
+        q, met = postures(self.setting, self.stance, self.point(ball, normal), normal)
         v = velocities(self.setting, q, normal, speed, self._gain)
         held = self._held(q, v, normal, speed)
         leg = np.concatenate([np.arange(a, b - 1) for a, b in zip(first[:-1], first[1:], strict=True)])

@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
-from typing import NamedTuple
+from typing import Any, NamedTuple
 
 import numpy as np
+from numpy.typing import NDArray
 
 from reach.cell import Array
 from reach.evidence.motion import Motion
@@ -37,7 +38,12 @@ class States(NamedTuple):
         """Postures (m, n) at rest."""
         return States(q, np.zeros_like(q), np.zeros_like(q))
 
-    def take(self, rows: Array | slice) -> States:
+    @staticmethod
+    def moving(q: Array, v: Array) -> States:
+        """States (m, n) whose velocity does not change."""
+        return States(q, v, np.zeros_like(v))
+
+    def take(self, rows: NDArray[Any] | slice) -> States:
         """Some of the states."""
         return States(self.q[rows], self.v[rows], self.a[rows])
 

@@ -54,16 +54,14 @@ def _distinct(q: Array) -> Array:
     return q[kept]
 
 
-def postures(
-    setting: Setting, stance: Array, point: Array, normal: Array
-) -> tuple[Array, NDArray[np.bool_]]:
+def postures(setting: Setting, stance: Array, point: Array, normal: Array) -> tuple[Array, NDArray[np.bool_]]:
     """Postures (m, n) near a stance (n,) for strikes (m, 3), (m, 3), and which are met."""
     start = np.repeat(stance[None], len(point), axis=0)
     return reach_strikes(setting, start, point, normal, STEPS)
 
 
 def velocities(setting: Setting, q: Array, normal: Array, speed_m_s: Array, gain: Array) -> Array:
-    """Joint velocities (m, n) of strikes along normals (m, 3) at speeds (m,) in postures (m, n), the paddle not turning.
+    """Joint velocities (m, n) of strikes along normals (m, 3) at speeds (m,) in postures (m, n), no turning.
 
     Those for which the joints need the least time, √Σ (v / gain)² with the accelerations (n,) that each has by itself;
     where that passes a joint's velocity limit, those of the upper bound.
@@ -92,4 +90,4 @@ def velocities(setting: Setting, q: Array, normal: Array, speed_m_s: Array, gain
 
 def gains(setting: Setting, stance: Array) -> Array:
     """Acceleration (n,) that each joint could have by itself in a stance (n,)."""
-    return alone(setting, stance[None])[0]
+    return np.asarray(alone(setting, stance[None])[0])

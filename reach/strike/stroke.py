@@ -63,15 +63,15 @@ def demonstrate(
         slowed = profile.slowed(factor) if factor < 1 else profile
         motion, row = motion_along(curve, slowed, setting.period_s)
         measured = measure(setting.arm, setting.chain, setting.limits, motion)
-        if not any(_broken(use) for use in measured.uses):
+        if not any(broken(use) for use in measured.uses):
             q, tangent, speed = motion.q[row], curve.slope(0.0), slowed.speed
             return Demonstration(speed, kind, q, tangent, curve, slowed, motion, row, measured)
         factor *= SLOWER
     return None
 
 
-def _broken(use: Use) -> bool:
-    """Whether a stroke passes a stated limit. Duty is a mean over a cycle, and one stroke is none."""
+def broken(use: Use) -> bool:
+    """Whether a motion passes a stated limit. Duty is a mean over a cycle, and one stroke is none."""
     return use.limit != DUTY and use.utilisation is not None and use.utilisation > 1 + ROUNDING
 
 
