@@ -16,7 +16,8 @@ from reach.cell import Cell, CommandLog, Follow, Vec3
 from reach.describe import describe_cell as describe_cell
 from reach.errors import Fault, FaultList, InputError
 from reach.formats import check_arrays, check_span
-from reach.result import FollowResult, Result, SurveyResult
+from reach.rally.answer import answer as rally_answer
+from reach.result import FollowResult, RallyResult, Result, SurveyResult
 from reach.survey.answer import answer as survey_answer
 
 Frame = Literal["world", "base", "paddle"]
@@ -122,9 +123,47 @@ def survey_strikes(
     InputError
         Where the cell has no [survey] table.
     """
-    if cell.survey is None:
-        raise InputError([Fault(cell.path, "survey", "the cell has no [survey] table")])
+    _has(cell, "survey", cell.survey)
     return survey_answer(cell, workers, advice, progress, seed)
+
+
+def size_rally(
+    cell: Cell,
+    *,
+    workers: int = 1,
+    seed: int = 0,
+    advice: bool = True,
+    progress: Callable[[str], None] | None = None,
+) -> RallyResult:
+    """Say how large the usable juggling envelope of a cell is: apexes, offsets and bearings, and what bounds them.
+
+    Parameters
+    ----------
+    cell : Cell
+        From `load_cell`, with [rally], [ball] and [contact].
+    workers, seed, progress
+        As for `survey_strikes`.
+    advice : bool
+        False leaves out the searches (remedies, headroom).
+
+    Returns
+    -------
+    RallyResult
+        After an interrupt with what was done until then, the rest undecided.
+
+    Raises
+    ------
+    InputError
+        Where the cell has no [rally] table.
+    """
+    _has(cell, "rally", cell.rally)
+    return rally_answer(cell, workers, advice, progress, seed)
+
+
+def _has(cell: Cell, table: str, found: object) -> None:
+    """Raise where a cell lacks a table."""
+    if found is None:
+        raise InputError([Fault(cell.path, table, f"the cell has no [{table}] table")])
 
 
 def _settings(cell: Cell, frame: object, point: object) -> Follow:

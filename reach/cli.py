@@ -9,13 +9,39 @@ import sys
 import traceback
 from collections.abc import Callable, Sequence
 from pathlib import Path
-from typing import TYPE_CHECKING, Literal
+from typing import NamedTuple
 
 from reach import __version__
 from reach.errors import ReachError
 
-if TYPE_CHECKING:
-    from reach.result import Result
+
+class Asked(NamedTuple):
+    """A command with a verdict: the library's verb, its question, what --no-advice leaves out, whether it runs code."""
+
+    verb: str
+    told: str
+    left_out: str = ""
+    code: bool = False
+
+
+ASKED = {
+    "follow": Asked(
+        "follow_commands",
+        "can this arm deliver these paddle commands? if not: what, when, which limit, what would help",
+        "headroom, needs and remedies",
+    ),
+    "survey": Asked(
+        "survey_strikes",
+        "where can it strike, and how fast? which regions and speeds can it not deliver?",
+        "headroom and remedies",
+    ),
+    "rally": Asked(
+        "size_rally",
+        "how large is the usable juggling envelope: apex heights, offsets, bearings? what bounds it?",
+        "headroom and remedies",
+    ),
+    "trial": Asked("try_law", "does this law, on this arm, keep this ball up? from which starts?", code=True),
+}
 
 EXITS = """exit codes:
   0  deliverable          1  not deliverable      2  bad input, nothing written
@@ -72,29 +98,19 @@ def _parser() -> argparse.ArgumentParser:
     describe = commands.add_parser("describe", help="what did you understand of this cell?")
     describe.add_argument("cell", metavar="CELL", help="the cell file (TOML)")
     describe.set_defaults(run=_describe)
-    for name, run, without, told, needed in (
-        (
-            "follow",
-            _follow,
-            "leave out headroom, needs and remedies",
-            "can this arm deliver these paddle commands? if not: what, when, which limit, what would help",
-            "with a [follow] table",
-        ),
-        (
-            "survey",
-            _survey,
-            "leave out headroom and remedies",
-            "where can it strike, and how fast? which regions and speeds can it not deliver?",
-            "with a [survey] table",
-        ),
-    ):
+    for name, ask in ASKED.items():
         command = commands.add_parser(
-            name, help=told, epilog=EXITS, formatter_class=argparse.RawDescriptionHelpFormatter
+            name, help=ask.told, epilog=EXITS, formatter_class=argparse.RawDescriptionHelpFormatter
         )
-        command.add_argument("cell", metavar="CELL", help=f"the cell file (TOML), {needed}")
-        command.add_argument("--no-advice", action="store_true", help=without)
+        command.add_argument("cell", metavar="CELL", help=f"the cell file (TOML), with a [{name}] table")
+        if ask.left_out:
+            command.add_argument("--no-advice", action="store_true", help=f"leave out {ask.left_out}")
+        if ask.code:
+            command.add_argument(
+                "--allow-code", action="store_true", help="run the Python file that trial.law names"
+            )
         _common(command, name)
-        command.set_defaults(run=run)
+        command.set_defaults(run=_answered, command=name)
     return parser
 
 
@@ -151,33 +167,24 @@ def _describe(options: argparse.Namespace) -> int:
     return 0
 
 
-def _follow(options: argparse.Namespace) -> int:
-    from reach import follow_commands
-
-    return _answered(options, "follow", follow_commands)
-
-
-def _survey(options: argparse.Namespace) -> int:
-    from reach import survey_strikes
-
-    return _answered(options, "survey", survey_strikes)
-
-
-def _answered(
-    options: argparse.Namespace, command: Literal["follow", "survey"], verb: Callable[..., Result]
-) -> int:
+def _answered(options: argparse.Namespace) -> int:
     """Load the cell, ask, write what came out, show it; returns the exit code."""
+    import reach
     from reach import load_cell, write_results
     from reach.report import WRITERS, check_targets
 
+    command, ask = options.command, ASKED[options.command]
     cell = load_cell(options.cell, need=command)
     check_targets(Path(options.out), options.junit, [options.cell, *(item.path for item in cell.inputs)])
-    result = verb(
+    choices = {"advice": not options.no_advice} if ask.left_out else {}
+    if ask.code:
+        choices["allow_code"] = options.allow_code
+    result = getattr(reach, ask.verb)(
         cell,
         workers=options.workers,
         seed=options.seed,
-        advice=not options.no_advice,
         progress=_progress(options.quiet),
+        **choices,
     )
     written = write_results(result, options.out, options.junit)
     if options.json:

@@ -5,10 +5,13 @@ from __future__ import annotations
 import math
 from collections.abc import Iterable
 from dataclasses import dataclass
+from typing import Protocol
 
 from reach.cell import Accept
-from reach.evidence.points import SurveyEvidence
+from reach.evidence.points import SurveyEvidence, Texts
+from reach.evidence.rallies import RallyEvidence
 from reach.evidence.record import Evidence, Use
+from reach.evidence.trials import TrialEvidence
 
 ROUNDING = 1e-6  # of a limit: a use above 1 by less is rounding
 
@@ -110,22 +113,51 @@ def unknown_required(unknown: Iterable[tuple[str, str | None]], accept: Accept) 
 
 
 def judge_survey(evidence: SurveyEvidence, required_share: float, accept: Accept) -> Verdict:
-    """Judge a survey by the share of its strikes that are deliverable.
+    """Judge a survey by the share of its strikes that are deliverable."""
+    return judge_share(evidence.points.verdict, "strikes", required_share, accept, evidence)
 
-    Not deliverable: so many strikes are not that the share can't be reached. Undecided: the strikes left open,
-    for an unknown limit too, could still reach it.
+
+class Whole(Protocol):
+    """What evidence of many items says of the whole: limit kinds, what nobody stated, what was left out."""
+
+    @property
+    def kinds(self) -> tuple[str, ...]: ...
+    @property
+    def unknown(self) -> tuple[tuple[str, str | None], ...]: ...
+    @property
+    def not_checked(self) -> tuple[str, ...]: ...
+    @property
+    def stopped(self) -> bool: ...
+
+
+def judge_share(
+    verdicts: Texts,
+    items: str,
+    required_share: float,
+    accept: Accept,
+    evidence: Whole,
+    done_word: str = DELIVERABLE,
+) -> Verdict:
+    """Judge items by the share of them that are deliverable.
+
+    Not deliverable: so many are not that the share can't be reached. Undecided: those left open, for an unknown limit
+    too, could still reach it.
+
+    Parameters
+    ----------
+    verdicts : (m,) of the items
+    items : what they are, in words; done_word : what a deliverable one is called
     """
-    verdicts = evidence.points.verdict
     total = len(verdicts)
     done, lost = (int((verdicts == word).sum()) for word in (DELIVERABLE, NOT_DELIVERABLE))
     needed = math.ceil(required_share * total - 1e-9)
-    if done >= needed:
+    if done >= needed and total:
         verdict = DELIVERABLE
-    elif total - lost < needed:
+    elif total - lost < needed or not total:
         verdict = NOT_DELIVERABLE
     else:
         verdict = UNDECIDED
-    grounds = [f"{done} of {total} strikes deliverable, {lost} not, {total - done - lost} undecided"]
+    grounds = [f"{done} of {total} {items} {done_word}, {lost} not, {total - done - lost} undecided"]
     grounds.append(f"required {100 * required_share:g} %")
     if verdict == UNDECIDED:
         grounds += unknown_required(evidence.unknown, accept)
@@ -133,6 +165,24 @@ def judge_survey(evidence: SurveyEvidence, required_share: float, accept: Accept
         grounds.append("stopped before all were looked at")
     sentence = _worded(verdict, grounds, evidence.kinds, evidence.unknown, evidence.not_checked)
     return Verdict(verdict, sentence, tuple(grounds))
+
+
+def judge_rally(evidence: RallyEvidence, required_share: float, accept: Accept) -> Verdict:
+    """Judge an envelope by the share of its points that are deliverable."""
+    return judge_share(evidence.points.verdict, "points", required_share, accept, evidence)
+
+
+def judge_trials(verdicts: Texts, required_share: float, accept: Accept, evidence: TrialEvidence) -> Verdict:
+    """Judge a law by the share of its starts that it recovers; `verdicts` (m,) has one for each start asked for.
+
+    Not deliverable too where no trial could be made.
+    """
+    if evidence.blocked:
+        sentence = _worded(
+            NOT_DELIVERABLE, [evidence.blocked], evidence.kinds, evidence.unknown, evidence.not_checked
+        )
+        return Verdict(NOT_DELIVERABLE, sentence, (evidence.blocked,))
+    return judge_share(verdicts, "starts", required_share, accept, evidence, "recovered")
 
 
 def _sentence(verdict: str, grounds: list[str], evidence: Evidence) -> str:

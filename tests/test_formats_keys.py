@@ -5,14 +5,16 @@ from __future__ import annotations
 import tomllib
 from collections.abc import Iterator
 from pathlib import Path
-from typing import Any
+from typing import Any, get_args
 
 import pytest
 
+from reach.cell import LawName
 from reach.formats import keys_text
 from reach.formats.commands_csv import COLUMNS
 from reach.formats.keys import WIDTH
 from reach.formats.kinds import ByName, ListOf, Table
+from reach.formats.presets import BALLS, REBOUND
 from reach.formats.schema import CELL, LIMIT_KEYS
 from reach.formats.strikes_csv import COLUMNS as STRIKES
 
@@ -90,6 +92,11 @@ def test_examples_are_found() -> None:
         ("follow.point", 'one of "strike", "tip"; or list of 3 numbers'),
         ("accept.require", 'default ["position", "velocity", "torque", "torque rate"]'),
         ("paddle.part", "tables [[paddle.part]], at most 1000"),
+        ("contact.arm_gives", "true or false; default false"),
+        ("rally.bearings_deg", "each number in degrees; default [0, 90, 180, 270]"),
+        ("rally.velocity_spread_m_s", "number in m/s at least 0 and at most 10; default 0"),
+        ("trial.sensor.rate_hz", "number in Hz at least 0 and at most 1e+06; default 0"),
+        ("trial.gains", "table by name, each number"),
     ],
 )
 def test_what_a_key_takes(key: str, words: str) -> None:
@@ -98,9 +105,34 @@ def test_what_a_key_takes(key: str, words: str) -> None:
     assert words in text[start : start + 300]
 
 
-def test_unused_sections_say_so() -> None:
+def section(name: str) -> str:
+    """What is said of a table before its keys."""
     text = " ".join(keys_text().split())
-    for section in ("rally", "trial"):
-        start = text.index(f"[{section}] ")
-        assert "checked, used by no command of this version" in text[start : start + 150]
-    assert "used by no command" not in text[text.index("[survey] ") : text.index("[rally] ")]
+    start = text.index(f"[{name}] may be left out")
+    kind = CELL.keys[name].kind
+    assert isinstance(kind, Table)
+    return text[start : text.index(f" {name}.{next(iter(kind.keys))} ", start)]
+
+
+def test_every_section_says_what_it_is_for() -> None:
+    assert "used by no command" not in keys_text()
+    assert "for the command rally" in section("rally") and "counter-clockwise" in section("rally")
+    trial = section("trial")
+    assert "for the command trial" in trial
+    assert all(f'"{law}"' in trial for law in (*get_args(LawName), "file.py:Name"))
+    assert "arm_gives" in section("contact")
+
+
+@pytest.mark.parametrize("name", BALLS)
+def test_every_ball_stands_in_it_with_its_source(name: str) -> None:
+    text = " ".join(keys_text().partition("\nBALLS")[2].partition("LIMITS FILE")[0].split())
+    ball = BALLS[name]
+    assert f"{name} {ball.mass_kg:g} kg, radius {ball.radius_m:g} m ({ball.source})" in text
+
+
+def test_every_drop_test_stands_in_it() -> None:
+    text = " ".join(keys_text().partition("\nBALLS")[2].partition("LIMITS FILE")[0].split())
+    assert "belongs to the pair" in text
+    for test in REBOUND:
+        low, high = test.restitution
+        assert f"restitution {low:.3f} to {high:.3f} on {test.onto} ({test.source})" in text

@@ -8,6 +8,7 @@ from typing import Any
 from reach.cell import Joint, Margins
 from reach.errors import FaultList
 from reach.formats import inertia
+from reach.formats.presets import BALLS
 
 _SHAPES: dict[str, tuple[tuple[str, ...], tuple[str, ...]]] = {
     "disc": (("radius_m",), ("thickness_m",)),
@@ -57,7 +58,8 @@ def check_ball(ball: Mapping[str, Any], given: Mapping[str, Any], faults: FaultL
         return
     for key in ("mass_kg", "radius_m"):
         if key not in given:
-            faults.add(f"ball.{key}", 'missing; give it, or preset = "table tennis" or "tennis"')
+            presets = ", ".join(f'"{name}"' for name in BALLS)
+            faults.add(f"ball.{key}", f"missing; give it, or a preset: one of {presets}")
 
 
 def check_contact(contact: Mapping[str, Any], given: Mapping[str, Any], faults: FaultList) -> None:

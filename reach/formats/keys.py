@@ -17,8 +17,18 @@ from reach.formats.command_log import (
 from reach.formats.kinds import ByName, Either, Flag, Integer, Key, Kind, ListOf, Number, OneOf, Table, Text
 from reach.formats.log_time import TIME_COLUMN
 from reach.formats.magnitude import LARGEST, LARGEST_DRIVE, LEAST_LIMIT
-from reach.formats.schema import CELL, FASTEST_PADDLE_M_S, LIMIT_KEYS, WORLD_M
+from reach.formats.presets import BALLS, REBOUND
+from reach.formats.schema import (
+    CELL,
+    FASTEST_PADDLE_M_S,
+    LIMIT_KEYS,
+    MOST_CENTRES,
+    MOST_FLIGHTS,
+    MOST_STARTS,
+    WORLD_M,
+)
 from reach.formats.strikes_csv import DIRECTION, NORMAL, POINT, SPEED
+from reach.formats.toml_trial import LAWS, SLOWEST_SENSOR_HZ
 
 WIDTH = 100
 _KEY_WIDTH = 34
@@ -49,8 +59,6 @@ _UNITS = {
 }
 """End of a key's name -> unit; a longer end stands before one that it ends with."""
 
-_UNUSED = "checked, used by no command of this version"
-
 _SECTIONS = {
     "arm": "URDF, limits, what is held, where the base stands, and the posture at the start. The start takes one "
     'value for every joint of the chain (start_rad or start_deg, and start_m), or start = "auto" with a log that has '
@@ -61,7 +69,8 @@ _SECTIONS = {
     "needs com_m and inertia_kg_m2 (about the centre of mass, along the face frame's axes).",
     "tool": "A cap that the maker sets on the speed of the strike point.",
     "ball": "The ball: a preset, or mass_kg and radius_m.",
-    "contact": "What happens between ball and face.",
+    "contact": "What happens between ball and face. The arm counts as unmoved by the ball, or, where arm_gives is "
+    "true, as giving with its effective mass.",
     "control": "The period at which joint commands are given.",
     "drive": "How late the drives answer.",
     "solver": "Solvers of the quadratic programs, and how turning counts beside moving.",
@@ -74,8 +83,20 @@ _SECTIONS = {
     "along the world's axes, or tilts from the world's +z toward bearings from +x, counter-clockwise seen from "
     "above; or the ball's velocities right before and after contact, with [contact], give face and speed. The "
     "strike goes along the normal unless direction says otherwise.",
-    "rally": f"Ball flights to keep up; {_UNUSED}.",
-    "trial": f"Simulated rallies under a law of control; {_UNUSED}.",
+    "rally": "Flights of the ball that the paddle is to keep up, for the command rally. Every apex goes with every "
+    "offset and bearing: the ball rises so far above the centre and comes down so far from it, toward bearings from "
+    "+x, counter-clockwise seen from above, and is to be back at the centre after recover_within_bounces strikes. "
+    "Needs [ball], [contact], a paddle of shape disc or plate, and gravity straight down; spreads are standard "
+    "deviations, tried in so many cases. centres_box_m gives further places for the centre, a grid of at most "
+    f"{MOST_CENTRES} from its low corner on; there are at most {MOST_FLIGHTS} flights.",
+    "trial": "A law of control, tried on ball and arm in simulation, for the command trial. The law is "
+    + " or ".join(f'"{law}"' for law in LAWS)
+    + ', or a class of your own, "file.py:Name", the path relative to the cell file; gains are the law\'s own. Needs '
+    "what [rally] needs. centre_m is the ball's centre at contact: left out, it is that of [rally], else above the "
+    "strike point of the start posture. Trials start from every offset, bearing and lateral speed, outward along "
+    f"the bearing, and from so many more at random, at most {MOST_STARTS} in all. A sensor of rate 0 sees the ball's "
+    f"true state at every control period; other rates start at {SLOWEST_SENSOR_HZ:g} Hz. A start has recovered when "
+    "contacts and apexes are within the errors from by_bounce on, for then_for bounces more.",
 }
 
 _LIMITS = {
@@ -101,7 +122,9 @@ def keys_text() -> str:
         for key, told in _rows(name, spec):
             lines += _row(key, told)
         lines.append("")
-    return "\n".join([*lines, *_limits_file(), "", *_command_log(), "", *_strikes_file()]) + "\n"
+    parts = [_balls(), _limits_file(), _command_log(), _strikes_file()]
+    text = "\n\n".join("\n".join(part) for part in parts)
+    return "\n".join([*lines, text]) + "\n"
 
 
 def _wrapped(text: str, first: str, rest: str) -> list[str]:
@@ -176,6 +199,23 @@ def _value(value: Any) -> str:
     if isinstance(value, tuple):
         return f"[{', '.join(map(_value, value))}]"
     return f'"{value}"' if isinstance(value, str) else f"{value:.7g}"
+
+
+def _balls() -> list[str]:
+    lines = ["BALLS (ball.preset), and restitution by published drop tests", ""]
+    lines += _wrapped(
+        "No preset sets contact.restitution, which belongs to the pair of ball and face. What drop tests ask of a "
+        "ball on a hard floor, the air's drag left out, is the root of rebound height over drop height.",
+        "  ",
+        "  ",
+    )
+    for name, ball in BALLS.items():
+        lines += _row(name, f"{ball.mass_kg:g} kg, radius {ball.radius_m:g} m ({ball.source})")
+        for test in REBOUND:
+            if test.ball == name:
+                low, high = test.restitution
+                lines += _row("", f"restitution {low:.3f} to {high:.3f} on {test.onto} ({test.source})")
+    return lines
 
 
 def _limits_file() -> list[str]:

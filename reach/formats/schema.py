@@ -14,9 +14,16 @@ SOLVERS = ("daqp", "piqp", "clarabel")
 
 MAX_ROWS = 1000  # paddle parts, rows of restitution, normals
 MOST_POINTS = 10_000_000  # strikes of a survey, whatever its max_points
+MOST_FLIGHTS = 100_000  # of a rally: apexes x offsets x bearings
+MOST_CENTRES = 20_000  # of a rally
+MOST_BOUNCES = 100_000  # of one trial
+MOST_STARTS = 10_000  # of the trials
+MOST_CASES = 10_000  # of a spread, a flight
 WORLD_M = 1000.0  # of a place in the world from its origin
 FASTEST_PADDLE_M_S = 100.0
 FASTEST_BALL_M_S = 200.0  # along one axis
+HIGHEST_APEX_M = 100.0
+FASTEST_SENSOR_HZ = 1e6
 IN_MM_S = "m/s; is this in mm/s?"
 
 LIMIT_NAMES: tuple[str, ...] = get_args(LimitName)
@@ -29,6 +36,11 @@ SHARE_KEPT_BACK = Number(lo=0, below=1)
 SHARE_REQUIRED = Number(above=0, hi=1)
 RESTITUTION = Number(above=0, hi=1)
 NEAR_M = Number(lo=-10, hi=10, hint="metres; is this in mm?")
+APEX_M = Number(above=0, hi=HIGHEST_APEX_M, hint="metres; is this in mm?")
+ERROR_M = Number(above=0, hi=10, hint="metres; is this in mm?")
+SPREAD_M = Number(lo=0, hi=1, hint="metres; is this in mm?")
+SPREAD_M_S = Number(lo=0, hi=10, hint=IN_MM_S)
+LATENCY_S = Number(lo=0, hi=10, hint="seconds; is this in ms?")
 MASS_KG = Number(above=0, hi=1000, hint="kg; is this in g?")
 TOOL_M_S = Number(above=0, hi=1000, hint=IN_MM_S, least=LEAST_LIMIT)
 DRIVE_VALUE = Number(lo=0, hi=LARGEST_DRIVE)
@@ -39,8 +51,11 @@ _NEAR_VECTOR = ListOf(NEAR_M, 3, what="numbers")
 _WORLD_VECTOR = ListOf(Number(lo=-WORLD_M, hi=WORLD_M, hint="metres; is this in mm?"), 3, what="numbers")
 _BALL_VELOCITY = ListOf(Number(lo=-FASTEST_BALL_M_S, hi=FASTEST_BALL_M_S, hint=IN_MM_S), 3, what="numbers")
 _GRAVITY = ListOf(Number(lo=-100, hi=100, hint="m/s²"), 3, what="numbers")
-_BEARINGS = ListOf(FINITE, least=1, what="bearings")
-_OFFSETS = ListOf(NOT_NEGATIVE, least=1, what="offsets")
+_BOX = ListOf(_WORLD_VECTOR, 2, what="corners")
+_BEARINGS = ListOf(FINITE, least=1, what="bearings", most=MAX_ROWS)
+_OFFSET_M = Number(lo=0, hi=WORLD_M, hint="metres; is this in mm?")
+_OFFSETS = ListOf(_OFFSET_M, least=1, what="offsets", most=MAX_ROWS)
+_LATERAL = Number(lo=-FASTEST_BALL_M_S, hi=FASTEST_BALL_M_S, hint=IN_MM_S)
 _INERTIA = ListOf(FINITE, 6, what="numbers xx, yy, zz, xy, xz, yz")
 _ZERO3 = (0.0, 0.0, 0.0)
 
@@ -117,6 +132,7 @@ CONTACT = Table(
         ),
         "friction": Key(NOT_NEGATIVE, 0.0),
         "tangential_restitution": Key(Number(lo=-1, hi=1), 0.0),
+        "arm_gives": Key(Flag(), False),
         "source": Key(Text(), "cell"),
     }
 )
@@ -190,12 +206,12 @@ FOLLOW = Table(
 
 SURVEY = Table(
     {
-        "box_m": Key(ListOf(_WORLD_VECTOR, 2, what="corners")),
+        "box_m": Key(_BOX),
         "strikes": Key(Text()),
         "spacing_m": Key(Number(above=0, hi=WORLD_M, hint="metres; is this in mm?"), 0.05),
         "normals": Key(ListOf(_VECTOR, least=1, what="normals", most=MAX_ROWS)),
         "face_tilts_deg": Key(ListOf(Number(lo=0, hi=180), least=1, what="tilts", most=MAX_ROWS)),
-        "bearings_deg": Key(ListOf(FINITE, least=1, what="bearings", most=MAX_ROWS)),
+        "bearings_deg": Key(_BEARINGS),
         "direction": Key(_VECTOR),
         "rotation": Key(OneOf(("still", "free")), "still"),
         "paddle_speed_m_s": Key(Number(above=0, hi=FASTEST_PADDLE_M_S, hint=IN_MM_S, least=LEAST_LIMIT)),
@@ -210,15 +226,21 @@ SURVEY = Table(
 
 RALLY = Table(
     {
-        "centre_m": Key(_VECTOR, required="give the ball's centre at contact"),
+        "centre_m": Key(_WORLD_VECTOR, required="give the ball's centre at contact"),
         "apexes_m": Key(
-            ListOf(POSITIVE, least=1, what="apexes"), required="give apex heights above the centre"
+            ListOf(APEX_M, least=1, what="apexes", most=MAX_ROWS),
+            required="give apex heights above the centre",
         ),
         "offsets_m": Key(_OFFSETS, (0.0,)),
         "bearings_deg": Key(_BEARINGS, (0.0, 90.0, 180.0, 270.0)),
-        "recover_within_bounces": Key(Integer(lo=1), 1),
-        "latency_s": Key(NOT_NEGATIVE, 0.0),
+        "recover_within_bounces": Key(Integer(lo=1, hi=20), 1),
+        "latency_s": Key(LATENCY_S, 0.0),
         "required_share": Key(SHARE_REQUIRED, 1.0),
+        "centres_box_m": Key(_BOX),
+        "centres_spacing_m": Key(Number(above=0, hi=WORLD_M, hint="metres; is this in mm?"), 0.1),
+        "contact_offset_spread_m": Key(SPREAD_M, 0.0),
+        "velocity_spread_m_s": Key(SPREAD_M_S, 0.0),
+        "cases": Key(Integer(lo=1, hi=MOST_CASES), 40),
     }
 )
 
@@ -226,32 +248,33 @@ _STARTS = Table(
     {
         "offsets_m": Key(_OFFSETS, (0.0,)),
         "bearings_deg": Key(_BEARINGS, (0.0, 90.0, 180.0, 270.0)),
-        "lateral_m_s": Key(ListOf(FINITE, least=1, what="speeds"), (0.0,)),
-        "random": Key(Integer(), 0),
+        "lateral_m_s": Key(ListOf(_LATERAL, least=1, what="speeds", most=MAX_ROWS), (0.0,)),
+        "random": Key(Integer(hi=MOST_STARTS), 0),
     }
 )
 _SENSOR = Table(
     {
-        "rate_hz": Key(NOT_NEGATIVE, 0.0),
-        "latency_s": Key(NOT_NEGATIVE, 0.0),
-        "position_noise_m": Key(NOT_NEGATIVE, 0.0),
-        "velocity_noise_m_s": Key(NOT_NEGATIVE, 0.0),
+        "rate_hz": Key(Number(lo=0, hi=FASTEST_SENSOR_HZ), 0.0),
+        "latency_s": Key(LATENCY_S, 0.0),
+        "position_noise_m": Key(SPREAD_M, 0.0),
+        "velocity_noise_m_s": Key(SPREAD_M_S, 0.0),
     }
 )
 _RECOVERED = Table(
     {
-        "within_m": Key(POSITIVE, 0.02),
-        "apex_error_m": Key(POSITIVE, 0.03),
-        "by_bounce": Key(Integer(lo=1), 10),
-        "then_for": Key(Integer(lo=1), 20),
+        "within_m": Key(ERROR_M, 0.02),
+        "apex_error_m": Key(ERROR_M, 0.03),
+        "by_bounce": Key(Integer(lo=1, hi=MOST_BOUNCES), 10),
+        "then_for": Key(Integer(lo=1, hi=MOST_BOUNCES), 20),
     }
 )
 TRIAL = Table(
     {
         "law": Key(Text(), "mirror"),
         "gains": Key(ByName(FINITE), {}),
-        "apex_m": Key(POSITIVE, 0.3),
-        "bounces": Key(Integer(lo=1), 50),
+        "centre_m": Key(_WORLD_VECTOR),
+        "apex_m": Key(APEX_M, 0.3),
+        "bounces": Key(Integer(lo=1, hi=MOST_BOUNCES), 50),
         "starts": Key(_STARTS, {}),
         "sensor": Key(_SENSOR, {}),
         "required_share": Key(SHARE_REQUIRED, 1.0),

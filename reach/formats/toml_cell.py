@@ -9,8 +9,24 @@ import unicodedata
 from collections.abc import Mapping
 from typing import Any, Literal
 
-from reach.cell import Accept, Ball, Cell, Contact, Drive, Follow, Margins, Paddle, Part, SolverSpec, Tool
+from reach.cell import (
+    Accept,
+    ArmSpec,
+    Ball,
+    Cell,
+    Contact,
+    Drive,
+    Follow,
+    Margins,
+    Paddle,
+    Part,
+    Rally,
+    SolverSpec,
+    Tool,
+    Trial,
+)
 from reach.errors import Fault, FaultList, InputError, nearest
+from reach.formats.bouncing import check_bouncing
 from reach.formats.capped import cut_short
 from reach.formats.cross_checks import check_accept, check_ball, check_contact, check_paddle, check_room
 from reach.formats.files import MAX_LOG_BYTES, MAX_TEXT_BYTES, Reading, beside
@@ -19,19 +35,25 @@ from reach.formats.presets import BALLS
 from reach.formats.readers import READERS
 from reach.formats.schema import ACCEPT, CELL, CONTROL, MARGINS, SOLVER
 from reach.formats.toml_arm import pose_of, read_arm
+from reach.formats.toml_rally import read_rally
 from reach.formats.toml_survey import read_survey
 from reach.formats.toml_text import parse_toml
+from reach.formats.toml_trial import read_trial
+
+Need = Literal["follow", "survey", "rally", "trial"]
 
 LONGEST_MESSAGE = 800  # characters; a fault is to fit a screen
 _NEEDED = {
     "follow": "name the command log and how to read it",
     "survey": "say where and how to strike",
+    "rally": "say where the ball is to be kept up, and how high",
+    "trial": "say which law is to keep the ball up, and from which starts",
 }
 _ESCAPED = ("Cc", "Cf", "Zl", "Zp")  # control, format (such as bidi overrides), line and paragraph ends
 
 
-def load_cell(path: str | os.PathLike[str], need: Literal["follow", "survey"] | None = None) -> Cell:
-    """Read a cell file with its URDF, limits file, command log and file of strikes.
+def load_cell(path: str | os.PathLike[str], need: Need | None = None) -> Cell:
+    """Read a cell file with its URDF, limits file, command log, file of strikes and law.
 
     Parameters
     ----------
@@ -110,6 +132,7 @@ def _cell(document: Mapping[str, Any], need: str | None, faults: FaultList, read
     if isinstance(document.get("survey"), dict):
         has_contact = "contact" in document
         survey = read_survey(read["survey"], given["survey"], contact, has_contact, faults, reading)
+    rally, trial = _bounced(document, need, read, ball, accept, arm, faults, reading)
     if "start" in given.get("arm", {}) and not _log_may_be_posed(follow, "follow" in document):
         faults.add("arm.start", '"auto" needs a command log with pose columns; give start_rad instead')
     if arm is not None:
@@ -131,9 +154,33 @@ def _cell(document: Mapping[str, Any], need: str | None, faults: FaultList, read
         accept=accept,
         follow=follow,
         survey=survey,
+        rally=rally,
+        trial=trial,
         inputs=tuple(reading.inputs),
         notes=tuple(map(_one_line, reading.notes)),
     )
+
+
+def _bounced(
+    document: Mapping[str, Any],
+    need: str | None,
+    read: Mapping[str, Any],
+    ball: Ball | None,
+    accept: Accept,
+    arm: ArmSpec | None,
+    faults: FaultList,
+    reading: Reading,
+) -> tuple[Rally | None, Trial | None]:
+    """Rally and trial, each None where there is none or a fault of it was noted."""
+    asking = [name for name in ("rally", "trial") if name in document or need == name]
+    if asking:
+        check_bouncing(asking, document, read, ball, accept, faults, reading.notes)
+    rally = trial = None
+    if isinstance(document.get("rally"), dict):
+        rally = read_rally(read["rally"], document["rally"], faults, reading.notes)
+    if isinstance(document.get("trial"), dict):
+        trial = read_trial(read["trial"], document, rally, arm, faults, reading)
+    return rally, trial
 
 
 def _accept(table: Mapping[str, Any]) -> Accept:

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -14,7 +13,8 @@ from reach.errors import FaultList, InputError
 from reach.formats.cross_checks import check_survey
 from reach.formats.files import MAX_LOG_BYTES, Reading, beside
 from reach.formats.fixed import read_only
-from reach.formats.magnitude import DUST, LARGEST, LEAST_LIMIT
+from reach.formats.grid import check_box, fitting_spacing, shown_count
+from reach.formats.magnitude import DUST, LEAST_LIMIT
 from reach.formats.strikes_csv import LEAST_ALONG, LEAST_LENGTH, Strikes, read_strikes
 
 SAME = 9  # decimals to which two unit normals are compared
@@ -51,7 +51,8 @@ def read_survey(
         made = _listed(survey, faults, reading)
     else:
         strikes = _strikes(survey, written, contact, faults, reading)
-        _check_box(survey, faults)
+        if survey["box_m"] is not None:
+            check_box("survey.box_m", survey["box_m"], faults)
         made = None if strikes is None or survey["box_m"] is None else _made(survey, strikes)
     if made is not None:
         _check_size(made, faults)
@@ -183,12 +184,6 @@ def _by_ball(survey: Mapping[str, Any], contact: Contact | None, faults: FaultLi
     return Strikes(None, read_only(normal[None]), read_only(normal[None]), read_only(np.array([speed])))
 
 
-def _check_box(survey: Mapping[str, Any], faults: FaultList) -> None:
-    for axis, low, high in zip("xyz", *(survey["box_m"] or ((), ())), strict=False):
-        if low > high:
-            faults.add("survey.box_m", f"{axis} goes from {low:g} down to {high:g}; swap them")
-
-
 def _check_size(survey: Survey, faults: FaultList) -> None:
     """No more strikes than max_points."""
     if survey.size <= survey.max_points:
@@ -197,34 +192,14 @@ def _check_size(survey: Survey, faults: FaultList) -> None:
         told = f"has {survey.size} strikes, more than max_points = {survey.max_points}; cut it or raise that"
         faults.add("survey.strikes", told)
         return
+    assert survey.box_m is not None
     most = survey.max_points
     faces = f" for each of {len(survey.normals)} faces" if len(survey.normals) > 1 else ""
-    told = f"makes {_count(survey.size)} strikes, {' x '.join(map(_count, survey.counts))} points{faces}"
+    told = f"makes {shown_count(survey.size)} strikes, {' x '.join(map(shown_count, survey.counts))} points{faces}"
     told += f", more than max_points = {most}"
-    fitting = _fitting_spacing(survey)
+    fitting = fitting_spacing(survey.box_m, survey.spacing_m, most // len(survey.normals))
     change = f"spacing_m = {fitting:g} would fit" if fitting else "the faces alone are too many; list fewer"
     faults.add("survey.spacing_m", f"{told}; {change}, or raise max_points")
-
-
-def _fitting_spacing(survey: Survey) -> float | None:
-    """About the least spacing in m, to three digits, that makes no more than max_points; None for no spacing."""
-    assert survey.box_m is not None
-    low = survey.spacing_m
-    high = max(low, max(b - a for a, b in zip(*survey.box_m, strict=True))) * 1.01
-    if len(survey.normals) > survey.max_points:
-        return None
-    while high > 1.001 * low:
-        middle = (low * high) ** 0.5
-        if replace(survey, spacing_m=middle).size > survey.max_points:
-            low = middle
-        else:
-            high = middle
-    step = 10.0 ** (np.floor(np.log10(high)) - 2)
-    return float(np.ceil(high / step) * step)
-
-
-def _count(number: int) -> str:
-    return f"{number:.3g}" if number >= LARGEST else str(number)
 
 
 def _vector(vector: Array) -> str:

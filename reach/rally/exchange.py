@@ -148,7 +148,7 @@ class Ballistics:
         return [*strikes, strike, steady], [*flights, flight_s]
 
     def strike(self, place: Array, target: Array, coming: Array, apex_m: float) -> tuple[Strike, float]:
-        """The strike that sends a ball coming in at a place (3,) to a target (3,) over an apex, and the flight's time."""
+        """The strike that sends a ball coming in at a place (3,) to a target (3,) over an apex, and the flight's s."""
         strike, flight_s, _ = self._sent(place, target, coming, apex_m)
         return strike, flight_s
 

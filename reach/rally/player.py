@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -85,7 +86,7 @@ class Player:
         q, met = postures(self.setting, self.stance, self.point(ball, normal), normal)
         v = velocities(self.setting, q, normal, speed, self._gain)
         held = self._held(q, v, normal, speed)
-        leg = np.concatenate([np.arange(a, b - 1) for a, b in zip(first[:-1], first[1:], strict=True)])
+        leg = np.concatenate([np.arange(a, b - 1) for a, b in pairwise(first.tolist())])
         owner = np.repeat(np.arange(len(exchanges)), [count - 1 for count in counts])
         flight = np.array([time for one in exchanges for time in one.flights_s])
         cycles = self.cycles(latency_s)

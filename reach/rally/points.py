@@ -131,7 +131,7 @@ def _from_stance(
         tilt = float(np.arctan2(np.hypot(*main.normal[:2]), main.normal[2]))
         rows.set(row, paddle_speed_m_s=main.speed_m_s, face_tilt_rad=tilt, flight_s=exchange.flights_s[-1])
         rows.set(row, q=player.stance, speed_bound_m_s=bound[played.first[j] + exchange.main])
-        limit, joint = _tightest(player, played, j)
+        limit, joint = tightest(player, played, j)
         rows.set(row, limit=limit, joint=joint)
         if played.delivered[j]:
             _shown(court, player, exchange, rows, row)
@@ -168,7 +168,7 @@ def _speed_bounds(court: Court, played: Played, exchanges: Sequence[Exchange]) -
     return upper(court.kit.setting, played.q, normal).own(True)
 
 
-def _tightest(player: Player, played: Played, exchange: int) -> tuple[str, str]:
+def tightest(player: Player, played: Played, exchange: int) -> tuple[str, str]:
     """The limit and joint of which an exchange's legs use most; a strike that can't be made comes first."""
     strikes = slice(played.first[exchange], played.first[exchange + 1])
     if not played.met[strikes].all():

@@ -8,7 +8,7 @@ from __future__ import annotations
 import io
 import re
 import warnings
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from contextlib import contextmanager
 from typing import NamedTuple
 
@@ -47,6 +47,17 @@ def looks() -> Iterator[None]:
         # The measuring font lacks some scripts; the reader's fonts, which draw the text, need not.
         warnings.filterwarnings("ignore", message=r"Glyph .* missing from")
         yield
+
+
+def name_all(figure: Figure, panels: Iterable[Axes], columns: int) -> None:
+    """Put one legend above the panels: what bears the same name in several of them is told once."""
+    named: dict[str, Artist] = {}
+    for axes in panels:
+        handles, labels = axes.get_legend_handles_labels()
+        for label, handle in zip(labels, handles, strict=True):
+            named.setdefault(label, handle)
+    if named:
+        figure.legend(list(named.values()), list(named), loc="outside upper left", ncols=columns)
 
 
 def svg_of(figure: Figure) -> bytes:

@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 
 from reach.evidence.record import Reason
 from reach.report import needs
 from reach.report.alike import alike, with_count
-from reach.report.columns import shorten, table, wrap
+from reach.report.columns import shorten, table, width, wrap
 from reach.report.wording import all_notes, plain, remedy_line, unknown_limits
 from reach.result import Result
 
@@ -90,6 +90,33 @@ def notes(result: Result) -> Section:
 def bullets(texts: Iterable[str]) -> list[str]:
     """Return texts as items of a list, empty ones left out."""
     return [line for text in texts if text for line in wrap(plain(text), "  - ")]
+
+
+def pairs(rows: Iterable[tuple[str, str]]) -> list[str]:
+    """Return names with their values, the values one below the other."""
+    found = [(name, text) for name, text in rows if text]
+    columns = max((width(name) for name, _ in found), default=0)
+    return [
+        line
+        for name, text in found
+        for line in wrap(plain(text), f"  {name}{' ' * (columns - width(name))}  ")
+    ]
+
+
+def listed(header: Sequence[str], rows: Sequence[Sequence[str]], most: int, left: int = 0) -> list[str]:
+    """Return a table of the first rows and how many are left out, or nothing without rows.
+
+    Parameters
+    ----------
+    header : the page's, whose marks of columns that hold numbers are taken off
+    left : how many leading columns are flush left
+    """
+    if not rows:
+        return []
+    shown = [[shorten(cell, 2 * NAME_COLUMNS) for cell in row] for row in rows[:most]]
+    over = len(rows) - len(shown)
+    more = [f"  … and {over} more in verdict.json"] if over > 0 else []
+    return table([name.removeprefix("#") for name in header], shown, left=left) + more
 
 
 def _first(reasons: list[Reason], count: int) -> list[str]:

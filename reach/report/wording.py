@@ -60,6 +60,39 @@ def span(reason: Reason) -> str:
     return f"{first} to {last}"
 
 
+def millimetres(value_m: float | None) -> str:
+    """Return a length in mm; a dash for nothing."""
+    return number(None if value_m is None else 1000 * value_m, 3)
+
+
+def milliseconds(value_s: float | None) -> str:
+    """Return a time in ms; a dash for nothing."""
+    return number(None if value_s is None else 1000 * value_s, 3)
+
+
+def degrees(value_rad: float | None) -> str:
+    """Return an angle in degrees; a dash for nothing."""
+    return number(None if value_rad is None else round(math.degrees(value_rad), 9), 3)
+
+
+def between(low: float, high: float, digits: int = 3) -> str:
+    """Return a range, or one value where both ends read alike."""
+    least, most = number(low, digits), number(high, digits)
+    return least if least == most else f"{least} to {most}"
+
+
+def limit_of(limit: str, joint: str | None) -> str:
+    """Return a limit with whose it is; a dash for nothing."""
+    if not limit:
+        return NOTHING
+    return f"{plain(limit)} of {plain(joint)}" if joint else plain(limit)
+
+
+def plural(count: int, noun: str) -> str:
+    """Return a count with its noun."""
+    return f"{count} {noun}" if count == 1 else f"{count} {noun}s"
+
+
 def force_unit(joint: Joint) -> str:
     """Return the unit of a joint's torque, or force where it slides."""
     return "N" if joint.sliding else "N·m"

@@ -23,6 +23,8 @@ Writer = Callable[[Result], str | bytes]
 COMMANDS = {
     "follow": "motion.csv",
     "survey": "survey.csv",
+    "rally": "rally.csv",
+    "trial": "trial.csv",
 }
 
 KINDS = (

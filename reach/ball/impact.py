@@ -1,7 +1,8 @@
-"""Contact of a hollow ball with the paddle's face: ball in to ball out, and the strike that a wanted ball out asks for.
+"""Impact of a hollow ball on the paddle's face: ball in to ball out, and the strike that a wanted ball out asks for.
 
-All vectors stand along world axes. The face normal n points at the ball; the paddle is heavy beside the ball and
-does not give. A ball's spin is told as its radius times its angular velocity, in m/s.
+All vectors stand along world axes. The face normal n points at the ball. A ball's spin is told as its radius times its
+angular velocity, in m/s. The paddle gives along its normal by the ratio of the ball's mass to its own effective mass
+there; 0 is a paddle that does not give. Across the normal it never gives.
 """
 
 from __future__ import annotations
@@ -40,10 +41,13 @@ def impact(
     paddle_velocity: ArrayLike,
     contact: Contact,
     spin_m_s: ArrayLike = (0.0, 0.0, 0.0),
+    mass_ratio: float = 0.0,
+    inertia_share: float = HOLLOW,
 ) -> tuple[Array, Array]:
     """The ball right after contact with a moving face.
 
-    Along the normal v' = -e v + (1 + e) u. Across it the face grips the ball, whose slip then turns by the
+    Along the normal v' = v + (1 + e)(u - v)/(1 + mass_ratio), Newton's law of restitution for two bodies; for a
+    paddle that does not give, -e v + (1 + e) u. Across it the face grips the ball, whose slip then turns by the
     tangential restitution, unless that takes more impulse than Coulomb friction gives; then the ball slips
     under all the friction there is.
 
@@ -51,9 +55,11 @@ def impact(
     ----------
     ball_in : (3,) m/s, velocity of the ball's centre
     normal : (3,) unit face normal
-    paddle_velocity : (3,) m/s, of the face at the contact
+    paddle_velocity : (3,) m/s, of the face at the contact, right before
     contact : Contact
     spin_m_s : (3,) m/s, radius times angular velocity
+    mass_ratio : ball's mass over the paddle's effective mass along the normal
+    inertia_share : ball's moment of inertia over mass times radius squared
 
     Returns
     -------
@@ -68,6 +74,8 @@ def impact(
     ----------
     R. L. Garwin, "Kinematics of an ultraelastic rough ball", Am. J. Phys. 37 (1969) 88.
     R. Cross, "Grip-slip behavior of a bouncing ball", Am. J. Phys. 70 (2002) 1093.
+    I. D. Walker, "Impact configurations and measures for kinematically redundant and multiple armed robot systems",
+    IEEE Trans. Robotics and Automation 10 (1994) 670: effective mass of an arm that is struck.
     """
     velocity, n, face, spin = (
         np.asarray(v, dtype=float) for v in (ball_in, normal, paddle_velocity, spin_m_s)
@@ -76,12 +84,13 @@ def impact(
     approach = -float(relative @ n)
     if not approach > 0:
         raise NoContact(f"the ball does not approach the face: {-approach:g} m/s along its normal")
-    push = (1 + restitution(contact, approach)) * approach
-    across = friction_impulse(relative + approach * n - np.cross(spin, n), push, contact)
-    return velocity + push * n + across, spin - np.cross(n, across) / HOLLOW
+    push = (1 + restitution(contact, approach)) * approach / (1 + mass_ratio)
+    slip = relative + approach * n - np.cross(spin, n)
+    across = friction_impulse(slip, push, contact, inertia_share)
+    return velocity + push * n + across, spin - np.cross(n, across) / inertia_share
 
 
-def friction_impulse(slip: Array, push_m_s: float, contact: Contact) -> Array:
+def friction_impulse(slip: Array, push_m_s: float, contact: Contact, inertia_share: float = HOLLOW) -> Array:
     """Impulse per ball mass across the normal, (3,) m/s.
 
     Parameters
@@ -89,30 +98,34 @@ def friction_impulse(slip: Array, push_m_s: float, contact: Contact) -> Array:
     slip : (3,) m/s, of the ball's surface over the face at the contact
     push_m_s : impulse per ball mass along the normal
     """
-    grip = grip_share(contact) * float(np.linalg.norm(slip))
+    share = grip_share(contact, inertia_share)
+    grip = share * float(np.linalg.norm(slip))
     most = contact.friction * push_m_s
     held = 1.0 if grip <= most else most / grip
-    return -held * grip_share(contact) * slip
+    return -held * share * slip
 
 
-def grip_share(contact: Contact) -> float:
+def grip_share(contact: Contact, inertia_share: float = HOLLOW) -> float:
     """Impulse per ball mass, as a share of the slip, that a face which grips gives across its normal.
 
     An impulse j across the normal changes the slip by (1 + 1/alpha) j; gripping leaves -e_t times it.
     """
-    return HOLLOW * (1 + contact.tangential_restitution) / (1 + HOLLOW)
+    return inertia_share * (1 + contact.tangential_restitution) / (1 + inertia_share)
 
 
-def strike_for(ball_in: ArrayLike, ball_out: ArrayLike, contact: Contact) -> tuple[Array, float]:
+def strike_for(
+    ball_in: ArrayLike, ball_out: ArrayLike, contact: Contact, mass_ratio: float = 0.0
+) -> tuple[Array, float]:
     """Face normal and paddle speed along it that make one velocity of the ball into another.
 
-    The ball has no spin and the paddle moves along its normal. Always inverts `impact`; the speed is negative
-    where the paddle has to give way. Where a table of restitution falls so steeply that several speeds do, it
-    is the greatest.
+    The ball has no spin, and the paddle right before contact moves along its normal. Always inverts `impact`; the
+    speed is negative where the paddle has to give way. Where a table of restitution falls so steeply that several
+    speeds do, it is the greatest.
 
     Parameters
     ----------
     ball_in, ball_out : (3,) m/s
+    mass_ratio : ball's mass over the paddle's effective mass along the normal
 
     Returns
     -------
@@ -128,7 +141,8 @@ def strike_for(ball_in: ArrayLike, ball_out: ArrayLike, contact: Contact) -> tup
     if np.linalg.norm(change) < LEAST_CHANGE_M_S:
         raise NoContact("the ball's velocity does not change, so nothing strikes it")
     normal = _face(before, change, contact)
-    return normal, float(before @ normal) + _approach(float(change @ normal), contact)
+    push = float(change @ normal) * (1 + mass_ratio)
+    return normal, float(before @ normal) + _approach(push, contact)
 
 
 def _face(ball_in: Array, change: Array, contact: Contact) -> Array:
@@ -153,7 +167,7 @@ def _face(ball_in: Array, change: Array, contact: Contact) -> Array:
 
 
 def _approach(push_m_s: float, contact: Contact) -> float:
-    """Greatest speed of approach a with (1 + e(a)) a = push, in m/s.
+    """Greatest speed of approach a with (1 + e(a)) a = push, in m/s; the push of a paddle that does not give.
 
     Between two rows of a table the left side is a quadratic that is concave or goes up; going down from above,
     the first row below the push ends the piece that holds the greatest root.

@@ -1,0 +1,56 @@
+"""evidence/ of an envelope: what an independent engine needs to check each demonstrated motion again."""
+
+from __future__ import annotations
+
+from dataclasses import fields
+
+import numpy as np
+
+from reach.evidence.rallies import Knots, RallyPoints
+from reach.report.rally.document import settings
+from reach.report.stored import archive, cell_file
+from reach.result import RallyResult
+
+APART = ("reason", "motions")  # fields of RallyPoints that are no arrays; reasons are in rally.csv
+
+
+def evidence_files(result: RallyResult) -> dict[str, bytes | None]:
+    """Return the content of points.npz, motions.npz and cell.json; None for a file that must not be there."""
+    evidence = result.evidence
+    own = {
+        "rally": settings(result.cell.rally),
+        "drag": evidence.drag,
+        "lift": evidence.lift,
+        "nominal_only": evidence.nominal_only,
+        "kinds": evidence.kinds,
+        "unknown": [{"limit": limit, "joint": joint} for limit, joint in evidence.unknown],
+        "not_checked": evidence.not_checked,
+        "stopped": evidence.stopped,
+    }
+    return {
+        "points.npz": _points(evidence.points),
+        "motions.npz": _motions(evidence.points.motions, result.cell.period_s),
+        "cell.json": cell_file(result, own),
+    }
+
+
+def _points(points: RallyPoints) -> bytes:
+    """Return every array of the points under its own name; texts are of fixed width. SI units, world axes."""
+    return archive(
+        **{item.name: getattr(points, item.name) for item in fields(RallyPoints) if item.name not in APART}
+    )
+
+
+def _motions(motions: dict[int, Knots], period_s: float) -> bytes | None:
+    """Return t_s (k,), q, v and a (k, n) of the knots of each motion by its row, as q_12 and so on.
+
+    `rows` names the motions, `strike_s_12` the instants of a motion's contacts; `period_s` is the control period.
+    None without a motion.
+    """
+    if not motions:
+        return None
+    arrays = {"rows": np.array(sorted(motions), dtype=np.int64), "period_s": np.array(period_s)}
+    for row, knots in sorted(motions.items()):
+        arrays |= {f"{name}_{row}": getattr(knots, name) for name in ("t_s", "q", "v", "a")}
+        arrays[f"strike_s_{row}"] = np.array(knots.strike_s, dtype=np.float64)
+    return archive(**arrays)

@@ -1,0 +1,223 @@
+"""How the numbers of trials are put into words, the same for terminal and page."""
+
+from __future__ import annotations
+
+import math
+from typing import Any
+
+from reach.cell import Recovered, Sensor, Trial
+from reach.evidence.record import Use
+from reach.evidence.trials import Run, TrialEvidence
+from reach.report.trial import numbers
+from reach.report.trial.document import figures
+from reach.report.trial.numbers import Ending, Loss
+from reach.report.wording import (
+    NOTHING,
+    degrees,
+    fixed,
+    limit_of,
+    millimetres,
+    milliseconds,
+    number,
+    owner,
+    percent,
+    plain,
+    plural,
+)
+from reach.result import TrialResult
+
+Row = tuple[str, ...]
+
+ENDINGS_HEADER = ("outcome", "#trials", "#recovered", "what it is")
+LOSSES_HEADER = ("limit", "joint", "#lost trials")
+USES_HEADER = ("limit", "joint", "#peak", "#limit", "unit", "#use %", "#at s")
+RUNS_HEADER = (
+    *("#start", "#off-centre mm", "#at °", "#lateral m/s", "#bounces", "#recovered at", "#oscillation mm"),
+    *("outcome", "held back by"),
+)
+MEANINGS = {
+    "held": "every bounce asked for was made",
+    "missed past the edge": "the ball came down beside the face",
+    "too fast to catch": "no motion found brings the face under the ball in time",
+    "died on the paddle": "the ball no longer leaves the face high enough to be struck again",
+    "ran away": "apex or offset grew beyond all measure",
+    "limit": "the arm came up against a limit that it can't keep",
+    "law failed": "the law gave no strike, or one that is no number",
+    "solver failed": "no solver answered a step",
+}
+READING = (
+    "A trial is one ball and the law in closed loop on the simulated arm, from one start. It counts as recovered by "
+    "the measure given above, not by being kept up alone.",
+    "Apex: of the flight that follows a contact, above the centre. Offset: of the contact from the centre, horizontal.",
+    "Residual oscillation: root mean square of the offsets over the last bounces that are asked for.",
+    "The interval is that of a share of so many independent trials at 95 % (Wilson 1927). Starts that were laid out by "
+    "hand are no random sample of all starts: it then says how few they are, and no more.",
+)
+
+
+def figure_rows(result: TrialResult) -> list[tuple[str, str]]:
+    """Return the numbers that compare two laws, each with its name; no text where there is nothing to say."""
+    f, evidence, trial = figures(result), result.evidence, result.cell.trial or Trial()
+    return [
+        ("law", law(evidence)),
+        ("recovered", recovered(result)),
+        ("counts as recovered", meaning(trial.recovered, evidence.apex_m)),
+        ("ball", _ball(evidence)),
+        ("sensor", sensor(trial.sensor)),
+        ("bounces made", _bounces(f, trial)),
+        ("settled", _settled(f)),
+        ("residual oscillation", _oscillation(f)),
+        ("most of a limit", _worst(evidence)),
+        ("limits broken", broken(evidence)),
+        ("steps", _steps(f)),
+    ]
+
+
+def law(evidence: TrialEvidence) -> str:
+    """Return the law's name and its gains."""
+    gains = ", ".join(f"{plain(name)} = {number(value, 4)}" for name, value in evidence.gains)
+    return f"{plain(evidence.law)}, {gains}" if gains else f"{plain(evidence.law)}, no gains"
+
+
+def recovered(result: TrialResult) -> str:
+    """Return how many starts were recovered, with the interval of their share."""
+    evidence = result.evidence
+    if not evidence.runs:
+        return f"none of {plural(evidence.asked, 'start')} tried" + (
+            f": {evidence.blocked}" if evidence.blocked else ""
+        )
+    count, tried = int(evidence.recovered.sum()), len(evidence.runs)
+    share = f"{percent(evidence.recovered_share)} %, 95 % interval {percent(evidence.low)} to {percent(evidence.high)}"
+    left = evidence.asked - tried
+    return f"{count} of {plural(tried, 'start')} ({share})" + (f"; {left} not tried" if left > 0 else "")
+
+
+def meaning(asked: Recovered, apex_m: float) -> str:
+    """Return what counts as recovered, with its figures."""
+    return (
+        f"contacts within {millimetres(asked.within_m)} mm of the centre and apexes within "
+        f"{millimetres(asked.apex_error_m)} mm of {millimetres(apex_m)} mm, from bounce {asked.by_bounce} at the "
+        f"latest, and for {plural(asked.then_for, 'bounce')} on"
+    )
+
+
+def sensor(asked: Sensor) -> str:
+    """Return how the ball is seen."""
+    rate = f"at {number(asked.rate_hz)} Hz" if asked.rate_hz else "at every control period"
+    exact = not asked.position_noise_m and not asked.velocity_noise_m_s
+    noise = (
+        "its true state"
+        if exact
+        else f"noise of {millimetres(asked.position_noise_m)} mm and {number(asked.velocity_noise_m_s, 3)} m/s "
+        "(standard deviation of each axis)"
+    )
+    late = f"{milliseconds(asked.latency_s)} ms late" if asked.latency_s else "at once"
+    return f"{rate}, {late}, {noise}"
+
+
+def start_text(place: int, run: Run) -> str:
+    """Return which start a trial is of, counted from 1."""
+    away, bearing, speed = _start(run)
+    return f"start {place}: {away} mm off at {bearing}°, lateral {speed} m/s"
+
+
+def ending_row(ending: Ending) -> Row:
+    """Return the cells under ENDINGS_HEADER."""
+    return (
+        ending.outcome,
+        str(ending.trials),
+        str(ending.recovered),
+        MEANINGS.get(ending.outcome, NOTHING),
+    )
+
+
+def loss_row(loss: Loss) -> Row:
+    """Return the cells under LOSSES_HEADER."""
+    return loss.limit or "none", plain(loss.joint) or NOTHING, str(loss.trials)
+
+
+def use_row(use: Use) -> Row:
+    """Return the cells under USES_HEADER."""
+    bound = use.lo if use.peak < 0 and use.lo is not None else use.hi
+    return (
+        use.limit,
+        owner(use.joint),
+        number(use.peak),
+        "unknown" if use.hi is None else number(bound),
+        use.unit,
+        percent(use.utilisation),
+        fixed(use.time_s, 3),
+    )
+
+
+def run_row(place: int, run: Run) -> Row:
+    """Return the cells under RUNS_HEADER."""
+    return (
+        str(place),
+        *_start(run),
+        str(run.bounces),
+        NOTHING if run.recovered_at is None else str(run.recovered_at),
+        millimetres(run.oscillation_m),
+        f"recovered: {run.text}" if run.recovered else run.text,
+        limit_of(run.limit, run.joint),
+    )
+
+
+def broken(evidence: TrialEvidence) -> str:
+    """Return the stated limits that a motion passes, nothing where none does."""
+    names = dict.fromkeys(plain(name) for run in evidence.runs for name in run.broken)
+    count = sum(bool(run.broken) for run in evidence.runs)
+    return f"{', '.join(names)}; in {plural(count, 'trial')}" if names else ""
+
+
+def _start(run: Run) -> tuple[str, str, str]:
+    away = math.hypot(*run.offset.tolist())
+    bearing = math.atan2(run.offset[1], run.offset[0]) % (2 * math.pi)
+    return (
+        millimetres(away),
+        degrees(bearing) if away else NOTHING,
+        number(math.hypot(*run.lateral.tolist()), 3),
+    )
+
+
+def _ball(evidence: TrialEvidence) -> str:
+    centre = ", ".join(f"{x + 0.0:.3f}" for x in evidence.centre)
+    return (
+        f"kept up {millimetres(evidence.apex_m)} mm above ({centre}) m, a flight of "
+        f"{milliseconds(evidence.flight_s)} ms"
+    )
+
+
+def _bounces(f: dict[str, Any], trial: Trial) -> str:
+    if f["bounces_least"] is None:
+        return ""
+    return f"median {number(f['bounces_median'])}, least {f['bounces_least']}, of {trial.bounces} asked for"
+
+
+def _settled(f: dict[str, Any]) -> str:
+    if f["recovered_at_most"] is None:
+        return ""
+    return f"from bounce {number(f['recovered_at_median'])} (median), {f['recovered_at_most']} at the latest"
+
+
+def _oscillation(f: dict[str, Any]) -> str:
+    if f["oscillation_most_m"] is None:
+        return ""
+    return (
+        f"{millimetres(f['oscillation_median_m'])} mm root mean square (median), "
+        f"{millimetres(f['oscillation_most_m'])} mm at most"
+    )
+
+
+def _worst(evidence: TrialEvidence) -> str:
+    place = numbers.worst_run(evidence.runs)
+    if place is None:
+        return ""
+    use = numbers.known(evidence.runs[place])[0]
+    return f"{percent(use.utilisation)} % of {use.limit} of {owner(use.joint)} (start {place + 1})"
+
+
+def _steps(f: dict[str, Any]) -> str:
+    if not f["elastic_steps"] and not f["failed_steps"]:
+        return ""
+    return f"{f['elastic_steps']} fell short of what was asked, {f['failed_steps']} answered by no solver"
