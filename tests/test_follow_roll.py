@@ -32,6 +32,7 @@ from reach.cell import Array, Cell, CommandLog, Follow, Pose
 from reach.evidence.motion import FINE, Motion
 from reach.follow import roll as roll_module
 from reach.follow.bench import run
+from reach.follow.commands import Replay
 from reach.follow.reference import Reference, build_reference
 from reach.follow.roll import roll
 from reach.follow.rolled import Roll
@@ -51,9 +52,8 @@ def rolled(cell: Cell, give_up: Callable[[int, Array, Array], bool] | None = Non
     """Roll a cell from its start posture, pose gain as in its [follow]."""
     assert cell.follow is not None
     arm, start = Arm(cell.arm, cell.paddle), np.array(cell.arm.start)
-    return roll(
-        cell, arm, build_limits(cell), reference_of(cell), start, cell.follow.pose_gain_per_s, give_up
-    )
+    commands = Replay(reference_of(cell), arm, cell.period_s, cell.follow.pose_gain_per_s, give_up)
+    return roll(cell, arm, build_limits(cell), commands, start)
 
 
 def reference_of(cell: Cell) -> Reference:
@@ -442,7 +442,7 @@ def drifting(gain: float) -> tuple[Array, Array]:
     follow = replace(held.follow, pose_gain_per_s=gain)
     wanted = arm.pose(START)
     reference = build_reference(held, follow, *wanted)
-    sent = roll(held, arm, build_limits(held), reference, off, gain).sent
+    sent = roll(held, arm, build_limits(held), Replay(reference, arm, held.period_s, gain), off).sent
     return sent.t_s, np.array([np.linalg.norm(arm.pose(q)[0] - wanted[0]) for q in sent.q])
 
 

@@ -14,6 +14,7 @@ from reach.arm import Arm, State
 from reach.cell import Cell, Joint, Margins
 from reach.evidence.measure import measure
 from reach.evidence.motion import FINE, Motion
+from reach.follow.commands import Replay
 from reach.follow.reference import build_reference
 from reach.follow.roll import roll
 from reach.follow.rolled import Roll, now_at
@@ -74,7 +75,7 @@ def setting(margins: str, variant: str) -> tuple[Cell, Arm, list[Moment]]:
         held = replace(cell, arm=replace(cell.arm, start=tuple(start)))
         tried = following(held, np.arange(300) * 0.001, twists)
         reference = build_reference(tried, tried.follow, *arm.pose(start))
-        rolled = roll(tried, arm, limits, reference, start, 0.0)
+        rolled = roll(tried, arm, limits, Replay(reference, arm, tried.period_s, 0.0), start)
         last = len(rolled.sent.q) - 2
         rows = set(np.r_[1, 2, np.linspace(3, last, 8).astype(int)].tolist())
         rows -= {what.step for what in rolled.gave_way}  # there the rows had no common point

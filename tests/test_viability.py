@@ -11,6 +11,7 @@ from builders import fer_cell, following, robot_cell
 from reach.arm import Arm
 from reach.cell import Cell, Margins
 from reach.evidence.measure import measure
+from reach.follow.commands import Replay
 from reach.follow.reference import build_reference
 from reach.follow.roll import roll
 from reach.kinematics import Chain
@@ -159,7 +160,7 @@ def worst_uses(cell: Cell, rolls: int, seed: int) -> dict[str, float]:
             continue  # no start: holding it alone takes the torque
         done += 1
         reference = build_reference(tried, tried.follow, *arm.pose(start))
-        rolled = roll(tried, arm, limits, reference, start, 0.0)
+        rolled = roll(tried, arm, limits, Replay(reference, arm, tried.period_s, 0.0), start)
         assert rolled.failed_steps == 0 and rolled.stopped
         fine = measure(arm, chain, limits, rolled.sent).fine
         position = limits["position"]

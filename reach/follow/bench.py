@@ -19,6 +19,7 @@ from reach.evidence.strikes import (
     throughout_faults,
     track,
 )
+from reach.follow.commands import Replay
 from reach.follow.contacts import Contacts, contacts
 from reach.follow.reference import Reference, build_reference
 from reach.follow.roll import roll
@@ -78,7 +79,8 @@ def run(cell: Cell, quick: bool = False, seed: int = 0) -> Run:
     found = contacts(follow, reference)
     accept = cell.accept
     watch = _Watch(cell, arm, reference, found, accept) if quick else None
-    rolled = roll(cell, arm, limits, reference, start, follow.pose_gain_per_s, watch)
+    commands = Replay(reference, arm, cell.period_s, follow.pose_gain_per_s, watch)
+    rolled = roll(cell, arm, limits, commands, start)
     if watch is not None and watch.missed:
         evidence = _no_motion(cell, limits, found, ())  # cut at its first miss
         return Run(cell, found, reference, rolled, None, evidence, judge(evidence, accept))

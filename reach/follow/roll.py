@@ -2,15 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
-
 import numpy as np
 
 from reach.arm import Arm
 from reach.cell import Array, Cell
+from reach.follow.commands import Commands
 from reach.follow.direction import same_direction
 from reach.follow.drive import DriveState
-from reach.follow.reference import Reference
 from reach.follow.rolled import GaveWay, Roll, motion_of, now_at
 from reach.follow.step import BLOCK, Step, Stepper, start_velocity
 from reach.limits.base import SIGNS, Brake, Limit, Now
@@ -30,32 +28,26 @@ SETTLING_LAGS = 20  # time constants in which a drive comes to rest
 GAVE_WAY = 1e-6  # smaller slack is rounding
 
 
-GiveUp = Callable[[int, Array, Array], bool]
-
-
 def roll(
     cell: Cell,
     arm: Arm,
     limits: dict[str, Limit],
-    reference: Reference,
+    commands: Commands,
     start: Array,
-    pose_gain_per_s: float,
-    give_up: GiveUp | None = None,
+    careful: bool = False,
 ) -> Roll:
-    """Follow a reference from a start posture (n,), under limits, until the arm stands.
+    """Follow commands from a start posture (n,), under limits, until the arm stands or they are over.
 
     Parameters
     ----------
-    pose_gain_per_s : 0 replays the log as sent; above it the pose error is fed back
-    give_up : called with the row and the joints' state (q, v) at its start; True ends the roll there (for
-        searches that only ask whether the verdict holds)
+    careful : check every step at once; for commands that can't go back
 
     Notes
     -----
     Integration is exact for constant acceleration in a period. Torque rate counts from the torque that holds
     the start state; the stop at the end is part of the motion.
     """
-    return _Roller(cell, arm, limits, reference, start, pose_gain_per_s, give_up).run()
+    return _Roller(cell, arm, limits, commands, start, careful).run()
 
 
 class _Roller:
@@ -66,23 +58,17 @@ class _Roller:
         cell: Cell,
         arm: Arm,
         limits: dict[str, Limit],
-        reference: Reference,
+        commands: Commands,
         start: Array,
-        gain: float,
-        give_up: GiveUp | None,
+        careful: bool,
     ):
-        assert cell.follow is not None
-        self.cell, self.arm, self.reference, self.gain, self.give_up = cell, arm, reference, gain, give_up
+        self.cell, self.arm, self.commands, self.careful = cell, arm, commands, careful
         self.dt, self.start = cell.period_s, start
-        self.keeps_direction = cell.follow.shortfall == "same-direction"
+        self.keeps_direction = cell.follow is not None and cell.follow.shortfall == "same-direction"
         self.stepper = Stepper(cell, limits)
         self.brakes = BrakeModel(limits, self.dt)
-        self.commanded = int(np.ceil((reference.end_s - reference.t_s[0]) / self.dt - 1e-6))
-        self.targets = list(reference.targets(self.dt, self.commanded))
+        self.commanded = commands.steps
         self.rest = np.zeros(6)
-        if gain > 0:
-            instants = reference.t_s[0] + self.dt * np.arange(self.commanded)
-            _, self.wanted_position, self.wanted_rotation = reference.at(instants)
         v = start_velocity(cell)
         self.drive = DriveState(cell.drive, start, v, self.dt) if cell.drive else None
         self.q: list[Array] = [start.copy()]
@@ -114,11 +100,7 @@ class _Roller:
         last = self.commanded + int((STOP_WITHIN_S + settling) / self.dt)
         stopped, k = False, 0
         while True:
-            ended = (
-                k >= last
-                or self.in_vain >= HOPELESS_STEPS
-                or (self.give_up is not None and self._gives_up(k))
-            )
+            ended = k >= last or self.in_vain >= HOPELESS_STEPS or self.commands.over(k, *self._real(k))
             stopped = not ended and k >= self.commanded and self._at_rest()
             if ended or stopped or k - self.checked == BLOCK:
                 if (bad := self._settle(k)) is not None:
@@ -130,10 +112,9 @@ class _Roller:
             k += 1
         return self._finish(stopped)
 
-    def _gives_up(self, k: int) -> bool:
-        assert self.give_up is not None
-        q, v = (self.drive.q, self.drive.v) if self.drive else (self.q[k], self.v[k])
-        return self.give_up(k, q, v)
+    def _real(self, k: int) -> tuple[Array, Array]:
+        """The joints' state at row k, behind the drive where there is one."""
+        return (self.drive.q, self.drive.v) if self.drive else (self.q[k], self.v[k])
 
     def _at_rest(self) -> bool:
         still = np.abs(self.v[-1]).max() <= REST_SPEED and np.abs(self.last_change).max() <= REST_SPEED
@@ -170,17 +151,10 @@ class _Roller:
         return np.asarray(np.clip(wanted, -POSTURE_SPEED, POSTURE_SPEED))
 
     def _target(self, k: int) -> Array:
-        """The twist (6,) to go for: the command's, with the pose error fed back, or zero while stopping."""
+        """The twist (6,) to go for: the command's, or zero while stopping."""
         if k >= self.commanded:
             return self.rest
-        target: Array = self.targets[k]
-        if self.gain > 0:
-            wanted = self.wanted_position[k], self.wanted_rotation[k]
-            error = self.arm.pose_error(*wanted, self.drive.q if self.drive else None)
-            error *= self.gain
-            error += target
-            return error
-        return target
+        return self.commands.target(k, *self._real(k), None if self.drive else self.state)
 
     def _solve(self, k: int, target: Array) -> tuple[Array, Brake]:
         """The change of velocity of step k, and the braking ability that it was planned with.
@@ -217,7 +191,7 @@ class _Roller:
         """
         stepper, slot, now = self.stepper, k - self.checked, self._now(k, brake)
         stepper.cost(now, target, self.posture_velocity, slot)
-        if self.keeps_direction or k == self.careful_at:
+        if self.keeps_direction or self.careful or k == self.careful_at:
             return None
         block = stepper.block
         if self.was_free:
@@ -266,6 +240,7 @@ class _Roller:
 
     def _back_to(self, k: int) -> int:
         """Undo steps k and later, so that step k is solved again with care."""
+        self.commands.back_to(k)
         for rows in (self.change, self.target, self.torque, self.brake_of):
             del rows[k:]
         del self.q[k + 1 :], self.v[k + 1 :]
@@ -286,7 +261,7 @@ class _Roller:
 
     def _finish(self, stopped: bool) -> Roll:
         dt, steps = self.dt, len(self.change)
-        begin = float(self.reference.t_s[0])
+        begin = self.commands.begin_s
         sent = motion_of(begin, dt, self.q, self.v, self.change, stopped)
         delivered = sent
         if self.drive:

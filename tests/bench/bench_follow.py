@@ -29,6 +29,7 @@ from reach.advice.demand import demanded_motion  # noqa: E402
 from reach.arm import Arm  # noqa: E402
 from reach.evidence.measure import measure  # noqa: E402
 from reach.follow.bench import run  # noqa: E402
+from reach.follow.commands import Replay  # noqa: E402
 from reach.follow.roll import roll  # noqa: E402
 from reach.kinematics import Chain  # noqa: E402
 from reach.limits.build import build_limits  # noqa: E402
@@ -74,7 +75,7 @@ def main() -> None:
     floor = floor_step(arm)
     parts: dict[str, Callable[[], object]] = {
         "floor": lambda: [floor() for _ in range(FLOOR_STEPS)],
-        "roll": lambda: roll(cell, arm, limits, reference, start, gain),
+        "roll": lambda: roll(cell, arm, limits, Replay(reference, arm, cell.period_s, gain), start),
         "measure": lambda: measure(arm, chain, limits, first.roll.delivered),
         "demand": lambda: demanded_motion(cell, arm, reference, start),
         "one run (roll, measure, strikes)": lambda: run(cell),
