@@ -17,8 +17,9 @@ from reach.describe import describe_cell as describe_cell
 from reach.errors import Fault, FaultList, InputError
 from reach.formats import check_arrays, check_span
 from reach.rally.answer import answer as rally_answer
-from reach.result import FollowResult, RallyResult, Result, SurveyResult
+from reach.result import FollowResult, RallyResult, Result, SurveyResult, TrialResult
 from reach.survey.answer import answer as survey_answer
+from reach.trial.answer import answer as trial_answer
 
 Frame = Literal["world", "base", "paddle"]
 Point = Literal["strike", "tip"] | Vec3
@@ -158,6 +159,41 @@ def size_rally(
     """
     _has(cell, "rally", cell.rally)
     return rally_answer(cell, workers, advice, progress, seed)
+
+
+def try_law(
+    cell: Cell,
+    *,
+    workers: int = 1,
+    seed: int = 0,
+    allow_code: bool = False,
+    progress: Callable[[str], None] | None = None,
+) -> TrialResult:
+    """Say whether a law of control, on a cell's arm, keeps the ball up, and from which starts.
+
+    Parameters
+    ----------
+    cell : Cell
+        From `load_cell`, with [trial], [ball] and [contact].
+    workers, progress
+        As for `survey_strikes`.
+    seed : int
+        Of random starts, the sensor's noise and the random starts of inverse kinematics.
+    allow_code : bool
+        Whether a Python file named by trial.law may run. It can do whatever you can.
+
+    Returns
+    -------
+    TrialResult
+        After an interrupt with what was tried until then, the other starts undecided.
+
+    Raises
+    ------
+    InputError
+        Where the cell has no [trial] table, or the law may not run, can't be loaded or has no such gain.
+    """
+    _has(cell, "trial", cell.trial)
+    return trial_answer(cell, workers, allow_code, progress, seed)
 
 
 def _has(cell: Cell, table: str, found: object) -> None:

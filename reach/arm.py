@@ -109,6 +109,11 @@ class Arm:
         placement = pin.updateFramePlacement(self._model, self._scratch, self._frame)
         return placement.translation.copy(), placement.rotation.copy()
 
+    def placement(self) -> tuple[Array, Array]:
+        """Strike point (3,) and paddle axes (3, 3) of the last call of `at`, as views that its next call changes."""
+        placement = self._data.oMf[self._frame]
+        return placement.translation, placement.rotation
+
     def pose_error(self, position: Array, rotation: Array, q: Array | None = None) -> Array:
         """Offset (3,) in m and rotation vector (3,) in rad, world axes, from the strike frame to a wanted pose.
 

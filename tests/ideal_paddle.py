@@ -215,3 +215,7 @@ def leaving(
 
 
 BEARINGS = (0.0, pi / 2, pi, 3 * pi / 2)
+STILL = Seen(
+    0.0, (*CENTRE[:2], 1.2), (0.0,) * 3, 0.0, (0.5, 0.1, 0.88), (0.0, 0.0, 1.0), (0.0,) * 3, (0.0,) * 3, 0
+)
+"""A ball at rest above the centre and the paddle at rest below it."""

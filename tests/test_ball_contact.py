@@ -130,6 +130,7 @@ def test_a_paddle_that_swings_up_and_just_meets_the_ball(lift: float, met: bool)
 STARTS = [
     (lambda t: -1e-3 - t, 0.0),  # falls from below: at once
     (lambda t: -t, 0.0),  # falls from zero: at once
+    (lambda t: 1e-13 - t, 0.0),  # the same within rounding
     (lambda t: t, None),  # leaves the face
     (lambda t: -1e-3 + t, None),  # comes out from below
     (lambda t: -1e-3 + t - t**2, (1 + math.sqrt(0.996)) / 2),  # and falls back

@@ -141,6 +141,17 @@ def test_down_to_is_the_way_down(air: Air) -> None:
     assert ball.down_to(height + 1e-6) is None
 
 
+@pytest.mark.parametrize(("air", "count"), [(VACUUM, 500), (AIR, 30)], ids=["vacuum", "air"])
+def test_down_to_the_apex_is_at_the_apex_in_spite_of_rounding(air: Air, count: int) -> None:
+    """The top is flat: 1e-12 m of rounding in the height are 0.5 us in the instant, sqrt(2e-12/g)."""
+    for velocity in np.random.default_rng(3).uniform((-1, -1, 0.1), (1, 1, 5), size=(count, 3)):
+        ball = flight(air, tuple(velocity))
+        when, height = ball.apex()
+        assert ball.down_to(height) == pytest.approx(when, abs=5e-7)
+        assert ball.down_to(height + 1e-13) == pytest.approx(when, abs=5e-7)
+        assert ball.down_to(height + 1e-11) is None
+
+
 @pytest.mark.parametrize("air", [VACUUM, AIR], ids=["vacuum", "air"])
 def test_down_to_from_a_ball_that_falls(air: Air) -> None:
     ball = flight(air, (1.0, 0.0, -1.0), start_s=1.0)

@@ -27,7 +27,7 @@ class Face:
 
     Attributes
     ----------
-    half_sizes_m : along x and y; of a disc twice its radius's value
+    half_sizes_m : along x and y; of a disc its radius both times
     """
 
     shape: Literal["disc", "plate"]

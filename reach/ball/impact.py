@@ -75,7 +75,8 @@ def impact(
     R. L. Garwin, "Kinematics of an ultraelastic rough ball", Am. J. Phys. 37 (1969) 88.
     R. Cross, "Grip-slip behavior of a bouncing ball", Am. J. Phys. 70 (2002) 1093.
     I. D. Walker, "Impact configurations and measures for kinematically redundant and multiple armed robot systems",
-    IEEE Trans. Robotics and Automation 10 (1994) 670: effective mass of an arm that is struck.
+    IEEE Trans. Robotics and Automation 10 (1994) 670 (title and page from memory): effective mass of an arm
+    that is struck.
     """
     velocity, n, face, spin = (
         np.asarray(v, dtype=float) for v in (ball_in, normal, paddle_velocity, spin_m_s)

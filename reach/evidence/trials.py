@@ -74,7 +74,7 @@ class Run:
     oscillation_m : root mean square of the offsets over the last bounces that `recovered` asks for; nan before
     uses : limits over the whole motion, without their series
     broken : names of stated limits that the motion passes ("torque of j2")
-    motion : what the joints did
+    motion : what the joints did; None where it is not kept, which the cell, the seed and the start make again
     elastic_steps, failed_steps : of the follower
     """
 
@@ -93,7 +93,7 @@ class Run:
     oscillation_m: float
     uses: tuple[Use, ...]
     broken: tuple[str, ...]
-    motion: Motion
+    motion: Motion | None
     elastic_steps: int
     failed_steps: int
 

@@ -84,7 +84,7 @@ def of_windows(result: RallyResult) -> Caption:
     text = (
         "Paddle acceleration at impact of the steady bounce. Inside the wide bar a bounce that is off dies out by "
         "itself, in its dark part fastest; right of zero only feedback keeps the ball. The thick line is what the "
-        "limits allow by braking, up to the motion demonstrated, with what the accepted speed error tolerates either way."
+        "limits allow by braking, up to the motion demonstrated, with what the accepted speed error tolerates."
     )
     stable = sum(numbers.stable_by_itself(bounce) and bounce.held for bounce in result.evidence.bounces)
     count = len(result.evidence.bounces)

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from reach.report import sections
 from reach.report.page import bullets, details, page, paragraph, section, table
-from reach.report.rally import wording
+from reach.report.rally import tables, wording
 from reach.report.rally.document import cautions
 from reach.report.rally.numbers import apex_rows, ranges
 from reach.report.rally.pictures import pictures
@@ -41,18 +41,18 @@ def write(result: RallyResult) -> str:
 
 
 def _ranges(result: RallyResult) -> str:
-    rows = [wording.range_row(found) for found in ranges(result.evidence.edges)]
+    rows = [tables.range_row(found) for found in ranges(result.evidence.edges)]
     text = "Apexes held at every bearing, by offset, with the bearing where each end is met first."
-    return paragraph(text) + table(wording.RANGES_HEADER, rows) if rows else ""
+    return paragraph(text) + table(tables.RANGES_HEADER, rows) if rows else ""
 
 
 def _apexes(result: RallyResult) -> str:
-    rows = [wording.apex_row(result.evidence.points, found) for found in apex_rows(result.evidence)]
+    rows = [tables.apex_row(result.evidence.points, found) for found in apex_rows(result.evidence)]
     text = (
         "Time and offset by apex: cycle and margin are of the point with the least margin, the offset is the least "
         "over the bearings."
     )
-    return paragraph(text) + table(wording.APEXES_HEADER, rows) if rows else ""
+    return paragraph(text) + table(tables.APEXES_HEADER, rows) if rows else ""
 
 
 def _bounces(result: RallyResult) -> str:
@@ -60,9 +60,9 @@ def _bounces(result: RallyResult) -> str:
     if not bounces:
         return ""
     parts = (
-        table(wording.BOUNCES_HEADER, [wording.bounce_row(bounce) for bounce in bounces]),
+        table(tables.BOUNCES_HEADER, [tables.bounce_row(bounce) for bounce in bounces]),
         paragraph(f"{wording.bounces_meaning(result)}."),
-        table(wording.MORE_BOUNCES_HEADER, [wording.more_bounce_row(bounce) for bounce in bounces]),
+        table(tables.MORE_BOUNCES_HEADER, [tables.more_bounce_row(bounce) for bounce in bounces]),
         paragraph(
             "least: the strongest braking at impact with which the cycle keeps every limit, no further than the "
             "window; tolerated: what the accepted speed error allows over the strike window; apex error: for the "
@@ -77,27 +77,27 @@ def _bounces(result: RallyResult) -> str:
 def _uncertainty(result: RallyResult) -> str:
     evidence = result.evidence
     text = paragraph(f"{wording.uncertainty(result)}.")
-    shares = wording.share_rows(evidence.points, ROWS)
-    borne = wording.tolerance_rows(evidence.points)
+    shares = tables.share_rows(evidence.points, ROWS)
+    borne = tables.tolerance_rows(evidence.points)
     if borne:
         borne_text = "Errors that a deliverable point bears, each alone: median and least over these points."
-        text += paragraph(borne_text) + table(wording.TOLERANCES_HEADER, borne)
+        text += paragraph(borne_text) + table(tables.TOLERANCES_HEADER, borne)
     more = "rally.csv has every point's." if len(shares) == ROWS else ""
     return text + details(
-        "share of each point", table(wording.SHARES_HEADER, shares) + paragraph(more)
+        "share of each point", table(tables.SHARES_HEADER, shares) + paragraph(more)
     ) * bool(shares)
 
 
 def _edges(result: RallyResult) -> str:
     evidence = result.evidence
-    apexes = _some(wording.EDGES_HEADER, [wording.edge_row(edge) for edge in evidence.edges])
-    offsets = _some(wording.OFFSETS_HEADER, [wording.offset_row(edge) for edge in evidence.offsets])
+    apexes = _some(tables.EDGES_HEADER, [tables.edge_row(edge) for edge in evidence.edges])
+    offsets = _some(tables.OFFSETS_HEADER, [tables.offset_row(edge) for edge in evidence.offsets])
     return details("lowest and highest apex at each offset and bearing", apexes) + details(
         "largest offset at each apex and bearing", offsets
     )
 
 
-def _some(header: tuple[str, ...], rows: list[wording.Row]) -> str:
+def _some(header: tuple[str, ...], rows: list[tables.Row]) -> str:
     left = len(rows) - ROWS
     return table(header, rows[:ROWS]) + paragraph(
         f"verdict.json has the other {left} too." if left > 0 else ""
@@ -108,12 +108,12 @@ def _centres(result: RallyResult) -> str:
     centres = result.evidence.centres
     if not centres:
         return ""
-    rows = _some(wording.CENTRES_HEADER, [wording.centre_row(centre) for centre in centres])
+    rows = _some(tables.CENTRES_HEADER, [tables.centre_row(centre) for centre in centres])
     return paragraph(f"{wording.standing(centres)}.") + details("each place", rows)
 
 
 def _impact(result: RallyResult) -> str:
-    rows = wording.hit_rows(result)
+    rows = tables.hit_rows(result)
     if not rows:
         return paragraph(
             "Not known: no posture strikes at the centre, or the cell gives no ball or no contact."
@@ -122,13 +122,13 @@ def _impact(result: RallyResult) -> str:
         "The hardest hit at the centre, as a range of two models: joints that are free to give take the velocity "
         "jump, joints that are locked take the impulse. A real joint is between."
     )
-    return table(wording.HITS_HEADER, rows) + paragraph(text)
+    return table(tables.HITS_HEADER, rows) + paragraph(text)
 
 
 def _points(result: RallyResult) -> str:
     points = result.evidence.points
-    rows = wording.point_rows(points, ROWS)
+    rows = tables.point_rows(points, ROWS)
     left = len(points.verdict) - len(rows)
     more = f"Those that matter most for the verdict; rally.csv has the other {left} too." if left > 0 else ""
     marked = [row[5] == NOT_DELIVERABLE for row in rows]
-    return table(wording.POINTS_HEADER, rows, marked) + paragraph(more)
+    return table(tables.POINTS_HEADER, rows, marked) + paragraph(more)

@@ -6,18 +6,17 @@ from reach.report import summary
 from reach.report.columns import wrap
 from reach.report.rally.document import cautions
 from reach.report.rally.numbers import apex_rows, ranges
-from reach.report.rally.wording import (
+from reach.report.rally.tables import (
     APEXES_HEADER,
     BOUNCES_HEADER,
     RANGES_HEADER,
     TOLERANCES_HEADER,
     apex_row,
     bounce_row,
-    bounces_meaning,
-    figure_rows,
     range_row,
     tolerance_rows,
 )
+from reach.report.rally.wording import bounces_meaning, figure_rows
 from reach.report.summary import bullets, listed, pairs
 from reach.result import RallyResult
 

@@ -5,65 +5,12 @@ from __future__ import annotations
 import math
 from typing import Any
 
-import numpy as np
-
-from reach.evidence.rallies import ApexEdge, Bounce, Centre, OffsetEdge, RallyPoints
+from reach.evidence.rallies import Centre, OffsetEdge, RallyPoints
 from reach.report.rally import numbers
 from reach.report.rally.document import figures
-from reach.report.rally.numbers import ApexRow, Range
-from reach.report.wording import (
-    NOTHING,
-    between,
-    degrees,
-    limit_of,
-    millimetres,
-    milliseconds,
-    number,
-    percent,
-    plain,
-)
+from reach.report.wording import between, degrees, limit_of, millimetres, milliseconds, number, percent
 from reach.result import RallyResult
-from reach.verdict import DELIVERABLE, NOT_DELIVERABLE
 
-Row = tuple[str, ...]
-
-RANGES_HEADER = (
-    *("#offset mm", "#lowest mm", "#at bearing °", "bounded by"),
-    *("#highest mm", "#at bearing °", "bounded by"),
-)
-APEXES_HEADER = (
-    *("#apex mm", "#points held", "#flight ms", "#cycle ms", "#margin ms"),
-    *("#recovers from mm", "#at bearing °", "bounded by"),
-)
-BOUNCES_HEADER = (
-    *("#apex mm", "#paddle m/s", "#acceleration m/s²", "#stable by itself m/s²", "#drift mm", "#left mm"),
-    "stability",
-)
-MORE_BOUNCES_HEADER = (
-    *("#apex mm", "#flight ms", "#restitution", "#ball meets face m/s", "#settles fastest m/s²"),
-    *("#least m/s²", "#tolerated m/s²", "#drift mm/°", "#apex error mm", "#face left mm"),
-)
-TOLERANCES_HEADER = ("what", "#median", "#least", "unit")
-EDGES_HEADER = ("#offset mm", "#bearing °", "#lowest mm", "bounded by", "#highest mm", "bounded by")
-OFFSETS_HEADER = ("#apex mm", "#bearing °", "#largest mm", "bounded by")
-CENTRES_HEADER = (
-    "#x m",
-    "#y m",
-    "#z m",
-    "#deliverable",
-    "#undecided",
-    "#of",
-    "apexes at the centre mm",
-    "bounded by",
-)
-HITS_HEADER = ("joint", "#velocity jump, free", "unit", "#impulse, locked", "unit")
-POINTS_HEADER = (
-    *("#apex mm", "#offset mm", "#bearing °", "#paddle m/s", "#margin ms", "verdict", "basis"),
-    *("bounded by", "reason"),
-)
-SHARES_HEADER = ("#apex mm", "#offset mm", "#bearing °", "#share %", "#interval %")
-BEARINGS = 4  # without any apex that are named
-UNITS = {"time": "ms", "angle": "°", "length": "mm", "number": ""}
 READING = (
     "A point is a ball that falls from an apex onto a place off the centre, in a direction, and is returned to the "
     "centre within the bounces allowed. It is deliverable where the arm strikes so and is ready for the next strike "
@@ -107,97 +54,6 @@ def place(points: RallyPoints, row: int) -> str:
     )
 
 
-def range_row(found: Range) -> Row:
-    """Return the cells under RANGES_HEADER."""
-    offset = millimetres(found.offset_m)
-    if found.low is None or found.high is None:
-        where, stop = _empty(found.empty)
-        return offset, "none", where, stop, "none", where, NOTHING
-    low, high = found.low, found.high
-    crossed = "; none held at all bearings" if found.crossed else ""
-    return (
-        offset,
-        millimetres(low.low_m),
-        degrees(low.bearing_rad),
-        _stop(low.low_limit, low.low_joint, low.low_open),
-        millimetres(high.high_m),
-        degrees(high.bearing_rad),
-        _stop(high.high_limit, high.high_joint, high.high_open) + crossed,
-    )
-
-
-def apex_row(points: RallyPoints, found: ApexRow) -> Row:
-    """Return the cells under APEXES_HEADER."""
-    row, edge = found.row, found.offset
-    return (
-        millimetres(found.apex_m),
-        f"{found.deliverable}/{found.points}",
-        milliseconds(found.flight_s),
-        NOTHING if row is None else milliseconds(float(points.cycle_s[row])),
-        NOTHING if row is None else milliseconds(float(points.margin_s[row])),
-        *((NOTHING, NOTHING, NOTHING) if edge is None else _offset(edge)),
-    )
-
-
-def stability(bounce: Bounce) -> str:
-    """Return whether the steady bounce needs feedback, in words."""
-    if not bounce.held:
-        return "cycle not held"
-    if numbers.stable_by_itself(bounce):
-        return "by itself"
-    if numbers.could_be_stable(bounce):
-        return "feedback; braking possible"
-    return "feedback alone"
-
-
-def bounce_row(bounce: Bounce) -> Row:
-    """Return the cells under BOUNCES_HEADER."""
-    return (
-        millimetres(bounce.apex_m),
-        number(bounce.speed_m_s, 3),
-        number(bounce.impact_m_s2, 3),
-        _window(bounce.window_m_s2),
-        millimetres(bounce.tilt_drift_m),
-        millimetres(bounce.offset_left_m),
-        stability(bounce),
-    )
-
-
-def more_bounce_row(bounce: Bounce) -> Row:
-    """Return the cells under MORE_BOUNCES_HEADER."""
-    return (
-        millimetres(bounce.apex_m),
-        milliseconds(bounce.flight_s),
-        number(bounce.restitution, 3),
-        number(bounce.approach_m_s, 3),
-        _window(bounce.fastest_m_s2),
-        number(bounce.least_m_s2, 3),
-        f"±{number(bounce.tolerated_m_s2, 3)}" if math.isfinite(bounce.tolerated_m_s2) else NOTHING,
-        millimetres(bounce.tilt_drift_m_per_deg),
-        millimetres(bounce.place_apex_error_m),
-        millimetres(bounce.face_left_m),
-    )
-
-
-def bounces_meaning(result: RallyResult) -> str:
-    """Return what the columns of the steady bounces say."""
-    tilt = degrees(result.cell.accept.strike_tilt_error_rad)
-    return (
-        f"drift: shift of the next contact, a bounce, for the accepted tilt of {tilt}° (about 8hθ); left: offset "
-        "still recovered at every bearing, less that drift and the accepted error of place"
-    )
-
-
-def tolerance_rows(points: RallyPoints) -> list[Row]:
-    """Return the cells under TOLERANCES_HEADER, none where no such error was looked at."""
-    rows = []
-    for field, name, kind in numbers.TOLERANCES:
-        values = numbers.borne(points, field)
-        if any(math.isfinite(value) for value in values):
-            rows.append((name, *(_in_unit(value, kind) for value in values), UNITS[kind]))
-    return rows
-
-
 def uncertainty(result: RallyResult) -> str:
     """Return which share of the cases within the spreads is still deliverable."""
     evidence, f = result.evidence, figures(result)
@@ -233,114 +89,18 @@ def standing(centres: tuple[Centre, ...]) -> str:
     )
 
 
-def edge_row(edge: ApexEdge) -> Row:
-    """Return the cells under EDGES_HEADER."""
+def bounces_meaning(result: RallyResult) -> str:
+    """Return what the columns of the steady bounces say."""
+    tilt = degrees(result.cell.accept.strike_tilt_error_rad)
     return (
-        millimetres(edge.offset_m),
-        degrees(edge.bearing_rad),
-        "none" if edge.low_m is None else millimetres(edge.low_m),
-        _stop(edge.low_limit, edge.low_joint, edge.low_open),
-        "none" if edge.high_m is None else millimetres(edge.high_m),
-        _stop(edge.high_limit, edge.high_joint, edge.high_open),
+        f"drift: shift of the next contact, a bounce, for the accepted tilt of {tilt}° (about 8hθ); left: offset "
+        "still recovered at every bearing, less that drift and the accepted error of place"
     )
 
 
-def offset_row(edge: OffsetEdge) -> Row:
-    """Return the cells under OFFSETS_HEADER."""
-    largest, bearing, stop = _offset(edge)
-    return millimetres(edge.apex_m), bearing, largest, stop
-
-
-def centre_row(centre: Centre) -> Row:
-    """Return the cells under CENTRES_HEADER."""
-    return (
-        *(f"{x + 0.0:.3f}" for x in centre.position),
-        *(str(count) for count in (centre.deliverable, centre.undecided, centre.points)),
-        ", ".join(millimetres(apex) for apex in centre.apexes_m) or "none",
-        limit_of(centre.limit, centre.joint),
-    )
-
-
-def hit_rows(result: RallyResult) -> list[Row]:
-    """Return the cells under HITS_HEADER for the hardest hit at the centre; none where it is not known."""
-    evidence = result.evidence
-    if not np.isfinite(evidence.velocity_jump).any() and not np.isfinite(evidence.joint_impulse).any():
-        return []
-    return [
-        (
-            plain(joint.name),
-            number(float(jump), 3),
-            "m/s" if joint.sliding else "rad/s",
-            number(float(impulse), 3),
-            "N·s" if joint.sliding else "N·m·s",
-        )
-        for joint, jump, impulse in zip(
-            result.cell.arm.joints, evidence.velocity_jump, evidence.joint_impulse, strict=True
-        )
-    ]
-
-
-def point_rows(points: RallyPoints, most: int) -> list[Row]:
-    """Return the cells under POINTS_HEADER for so many points, those not deliverable first."""
-    rank = np.select([points.verdict == NOT_DELIVERABLE, points.verdict == DELIVERABLE], [0, 2], 1)
-    chosen = np.argsort(rank, kind="stable")[:most]
-    return [
-        (
-            *_where(points, k),
-            number(float(points.paddle_speed_m_s[k]), 3),
-            milliseconds(float(points.margin_s[k])),
-            str(points.verdict[k]),
-            str(points.basis[k]) or NOTHING,
-            limit_of(str(points.limit[k]), str(points.joint[k])),
-            points.reason[k],
-        )
-        for k in np.sort(chosen).tolist()
-    ]
-
-
-def share_rows(points: RallyPoints, most: int) -> list[Row]:
-    """Return the cells under SHARES_HEADER for so many points, the least share first."""
-    rows = np.flatnonzero(np.isfinite(points.feasible_share))
-    chosen = rows[np.argsort(points.feasible_share[rows], kind="stable")][:most]
-    return [
-        (*_where(points, k), percent(float(points.feasible_share[k])), share_interval(points, k))
-        for k in chosen.tolist()
-    ]
-
-
-def _where(points: RallyPoints, row: int) -> Row:
-    return (
-        millimetres(float(points.apex_m[row])),
-        millimetres(float(points.offset_m[row])),
-        degrees(float(points.bearing_rad[row])),
-    )
-
-
-def _stop(limit: str, joint: str, unbounded: bool) -> str:
+def bounded_by(limit: str, joint: str, unbounded: bool) -> str:
+    """Return what bounds an edge, in words."""
     return "nothing, as far as looked" if unbounded else limit_of(limit, joint)
-
-
-def _offset(edge: OffsetEdge) -> tuple[str, str, str]:
-    """The largest offset, its bearing and what bounds it."""
-    largest = "none" if edge.largest_m is None else millimetres(edge.largest_m)
-    return largest, degrees(edge.bearing_rad), _stop(edge.limit, edge.joint, edge.open)
-
-
-def _empty(edges: tuple[ApexEdge, ...]) -> tuple[str, str]:
-    """At which bearings no apex is held, and what bounds the first of them."""
-    where = ", ".join(degrees(edge.bearing_rad) for edge in edges[:BEARINGS])
-    first = edges[0]
-    bound = (first.low_limit, first.low_joint) if first.low_limit else (first.high_limit, first.high_joint)
-    return where + (" …" if len(edges) > BEARINGS else ""), limit_of(*bound)
-
-
-def _in_unit(value: float, kind: str) -> str:
-    put = {"time": milliseconds, "angle": degrees, "length": millimetres}.get(kind)
-    return number(value, 3) if put is None else put(value)
-
-
-def _window(window: tuple[float, float]) -> str:
-    return " to ".join(number(x, 3) for x in window) if all(map(math.isfinite, window)) else NOTHING
 
 
 def _points(f: dict[str, Any]) -> str:
@@ -379,16 +139,14 @@ def _recovered(offsets: tuple[OffsetEdge, ...]) -> str:
     if best is None or worst is None:
         return ""
     if best.largest_m is None:
-        return (
-            f"none: not even the centre is held at every bearing ({_stop(best.limit, best.joint, best.open)})"
-        )
+        return f"none: not even the centre is held at every bearing ({bounded_by(best.limit, best.joint, best.open)})"
     told = f"{_offset_told(best)}, at every bearing"
     return told if best == worst else f"{told}; least {_offset_told(worst)}"
 
 
 def _offset_told(edge: OffsetEdge) -> str:
     largest = "none" if edge.largest_m is None else f"{millimetres(edge.largest_m)} mm"
-    stop = _stop(edge.limit, edge.joint, edge.open)
+    stop = bounded_by(edge.limit, edge.joint, edge.open)
     return f"{largest} at apex {millimetres(edge.apex_m)} mm (bearing {degrees(edge.bearing_rad)}°, bounded by {stop})"
 
 

@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 
 from reach.cell import Array, Trial
 from reach.evidence.trials import Run
 from reach.report.figures import WIDTH_IN, Axes, Figure, Picture, Rectangle, name_all, svg_of
-from reach.report.looks import BAND_STYLE, GREY, INK, ORANGE, RUN_STYLES
+from reach.report.looks import BAND_STYLE, INK, ORANGE, RUN_STYLES
 from reach.report.trial.captions import of_bounces
 from reach.result import TrialResult
 
@@ -15,6 +17,16 @@ LINES = 150  # trials drawn, those not recovered first
 BANDS = 6.0  # of the band's width, seen above it before a line is cut off
 APEXES = 2.0  # of the wanted apex, seen before a line is cut off
 ROOM = 1.08
+LOST_STYLE: dict[str, Any] = {
+    **{
+        "marker": "x",
+        "color": ORANGE,
+        "markersize": 7,
+        "markeredgewidth": 1.8,
+        "zorder": 4,
+        "clip_on": False,
+    },
+}
 
 
 def draw_bounces(result: TrialResult) -> Picture | None:
@@ -33,7 +45,7 @@ def draw_bounces(result: TrialResult) -> Picture | None:
     width = 1000 * asked.apex_error_m
     _band(apex, asked.by_bounce, last, wanted - width, 2 * width)
     _band(offset, asked.by_bounce, last, 0.0, 1000 * asked.within_m)
-    apex.axhline(wanted, color=GREY, linewidth=0.8, linestyle=(0, (1, 2)))
+    apex.axhline(wanted, color=INK, linewidth=0.9, linestyle=(0, (2, 2)))
     clipped = [
         _lines(apex, runs, [1000 * run.contacts.apex_m for run in runs], APEXES * wanted),
         _lines(
@@ -69,10 +81,9 @@ def _lines(axes: Axes, runs: list[Run], values: list[Array], top: float) -> bool
         told.add(run.recovered)
         axes.plot(bounce, line, **RUN_STYLES[run.recovered], label=label, zorder=2 + (not run.recovered))
         if not run.recovered:
-            end = min(float(line[-1]), top)
-            axes.plot(
-                bounce[-1], end, "x", color=ORANGE, markersize=7, markeredgewidth=1.8, zorder=4, clip_on=False
-            )
+            beyond = np.flatnonzero(line > top)
+            last = int(beyond[0]) if len(beyond) else len(line) - 1
+            axes.plot(bounce[last], min(float(line[last]), top), **LOST_STYLE)
         highest = max(highest, float(np.nanmax(line, initial=0.0)))
     axes.set_ylim(0, min(ROOM * highest, top) if highest else top)
     axes.spines["bottom"].set_color(INK)

@@ -34,11 +34,11 @@ def evidence_files(result: TrialResult) -> dict[str, bytes | None]:
 
 
 def _runs(runs: Sequence[Run]) -> bytes | None:
-    """Return each trial's motion and contacts by its index from 0; None without a trial.
+    """Return each trial's contacts by its index from 0, and the motions that were kept; None without a trial.
 
-    offset (r, 2), lateral (r, 2), outcome, recovered (r,); then, of trial 12, q_12, v_12, a_12 (m, n), start_s_12 and
-    period_s_12 of its motion, and the arrays of its k contacts by their own names: t_s_12 (k,), ball_12 (k, 3) and so
-    on. SI units, world axes.
+    offset (r, 2), lateral (r, 2), outcome, recovered, moved (r,), whether a trial's motion is here; of trial 12 the
+    arrays of its k contacts by their own names, t_s_12 (k,), ball_12 (k, 3) and so on; of a motion q_12, v_12 and
+    a_12 (m, n), start_s_12 and period_s_12. SI units, world axes.
     """
     if not runs:
         return None
@@ -47,10 +47,12 @@ def _runs(runs: Sequence[Run]) -> bytes | None:
         "lateral": np.array([run.lateral for run in runs], dtype=np.float64),
         "outcome": np.array([run.outcome for run in runs], dtype=np.str_),
         "recovered": np.array([run.recovered for run in runs], dtype=bool),
+        "moved": np.array([run.motion is not None for run in runs], dtype=bool),
     }
     for place, run in enumerate(runs):
-        arrays |= {f"{name}_{place}": getattr(run.motion, name) for name in ("q", "v", "a")}
-        arrays[f"start_s_{place}"] = np.array(run.motion.start_s)
-        arrays[f"period_s_{place}"] = np.array(run.motion.period_s)
         arrays |= {f"{item.name}_{place}": getattr(run.contacts, item.name) for item in fields(Contacts)}
+        if run.motion is not None:
+            arrays |= {f"{name}_{place}": getattr(run.motion, name) for name in ("q", "v", "a")}
+            arrays[f"start_s_{place}"] = np.array(run.motion.start_s)
+            arrays[f"period_s_{place}"] = np.array(run.motion.period_s)
     return archive(**arrays)

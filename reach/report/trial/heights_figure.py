@@ -7,7 +7,7 @@ import numpy as np
 from reach.cell import Array
 from reach.evidence.trials import Run
 from reach.report.figures import WIDTH_IN, Axes, Figure, Picture, name_all, svg_of
-from reach.report.looks import BALL_STYLE, CONTACT_STYLE, GREY, PADDLE_STYLE
+from reach.report.looks import BALL_STYLE, CONTACT_STYLE, INK, PADDLE_STYLE
 from reach.report.trial.captions import of_heights
 from reach.report.trial.numbers import first_lost, typical
 from reach.report.wording import plain
@@ -42,9 +42,7 @@ def _panel(axes: Axes, result: TrialResult, run: Run) -> None:
     step = max(1, len(trace.t_s) // SAMPLES)
     t = trace.t_s[::step]
     ball, paddle = (1000 * (line[::step, 2] - zero) for line in (trace.ball, trace.paddle))
-    axes.axhline(
-        1000 * evidence.apex_m, color=GREY, linewidth=0.8, linestyle=(0, (1, 2)), label="wanted apex"
-    )
+    axes.axhline(1000 * evidence.apex_m, color=INK, linewidth=0.9, linestyle=(0, (2, 2)), label="wanted apex")
     axes.plot(t, ball, **BALL_STYLE)
     axes.plot(t, paddle, **PADDLE_STYLE)
     axes.plot(run.contacts.t_s, 1000 * (run.contacts.ball[:, 2] - zero), **CONTACT_STYLE)

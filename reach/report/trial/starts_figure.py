@@ -16,6 +16,8 @@ ARROW = 0.22  # of the half width of the map, for the largest lateral speed
 EDGE = 1.18  # of the half width, the frame
 LEAST_HALF_MM = 20.0
 TICKS = 6
+LEAST_ROWS = 4  # of endings, so that a bar stays slim
+MANY, SMALL_PT = 60, 4.5  # starts from which on the marks are so small
 
 
 def draw_starts(result: TrialResult) -> Picture | None:
@@ -44,7 +46,8 @@ def _map(axes: Axes, runs: tuple[Run, ...], within: float) -> None:
     axes.plot(0, 0, "+", color=INK, markersize=9, markeredgewidth=1.4, zorder=2)
     for kind, places in _stacks(at, done).items():
         if len(places):
-            axes.plot(*places.T, **START_STYLES[kind])
+            size = {"markersize": SMALL_PT} if len(runs) > MANY else {}
+            axes.plot(*places.T, **{**START_STYLES[kind], **size})
     _arrows(axes, at, lateral, done, ARROW * half)
     frame = half * EDGE + (ARROW * half if lateral.any() else 0.0)
     axes.set(xlim=(-frame, frame), ylim=(-frame, frame), xlabel="x from the centre, mm", ylabel="y, mm")
@@ -105,7 +108,11 @@ def _endings(axes: Axes, found: list[Ending]) -> None:
         )
     most = max(end.trials for end in found)
     axes.set_yticks(rows, [end.outcome for end in found])
-    axes.set(xlim=(0, 1.45 * most), ylim=(len(found) - 0.4, -0.6), xlabel="trials (hatched: not recovered)")
+    axes.set(
+        xlim=(0, 1.45 * most),
+        ylim=(max(len(found), LEAST_ROWS) - 0.4, -0.6),
+        xlabel="trials (hatched: not recovered)",
+    )
     axes.set_xticks(np.unique(np.round(np.linspace(0, most, TICKS))))
     axes.grid(False, axis="y")
 

@@ -37,12 +37,12 @@ RUNS_HEADER = (
 )
 MEANINGS = {
     "held": "every bounce asked for was made",
-    "missed past the edge": "the ball came down beside the face",
-    "too fast to catch": "no motion found brings the face under the ball in time",
-    "died on the paddle": "the ball no longer leaves the face high enough to be struck again",
-    "ran away": "apex or offset grew beyond all measure",
-    "limit": "the arm came up against a limit that it can't keep",
-    "law failed": "the law gave no strike, or one that is no number",
+    "missed past the edge": "the ball went down outside the face's edge",
+    "too fast to catch": "the paddle had to cross faster than it can",
+    "died on the paddle": "the ball rose too little to be struck again",
+    "ran away": "the ball rose far above the wanted apex",
+    "limit": "a limit held the paddle back in the flight that was lost, or the motion passed one",
+    "law failed": "the law failed, or what it gave is no twist",
     "solver failed": "no solver answered a step",
 }
 READING = (

@@ -88,8 +88,8 @@ def ball_at(seen: Seen, ahead_s: float, gravity_m_s2: float, drag_per_m: float) 
     """Where the ball will be `ahead_s` after the instant of a sight: position in m, then velocity in m/s.
 
     The sensor's age is made up for: any controller that knows its sensor's delay does so (common practice, no source).
-    The acceleration at the sight is held, which over 20 ms errs by less than 0.2 mm for a table tennis ball at 2.4 m/s.
-    A contact in between is not known of.
+    The acceleration at the sight is held: over 20 ms that errs by 0.01 mm and 1 mm/s for a table tennis ball at 2.4
+    m/s. A contact in between is not known of.
     """
     x, y, z = seen.ball_m
     vx, vy, vz = seen.ball_m_s

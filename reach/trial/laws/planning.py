@@ -22,6 +22,8 @@ MOVED_M = (
 )
 MOVED_S = 0.002  # in time: less than half of HOLD_S
 MOVED_RAD = 0.00873  # in direction, half a degree: half of what a strike may be off
+SHORTEST_S = 0.05  # of a stroke, whatever the gain says
+LEAST_UP = 0.01  # square of the normal's part along z, on a path that overshoots
 STEEPEST = 0.5  # sine of the tilt, 30 degrees; beyond, a strike is not one that keeps a ball up
 FARTHEST_M = 1.0  # aside of the centre: beyond, no arm is sent after the ball
 
@@ -123,7 +125,8 @@ class Planning(Law):
     dip. So the direct way is the gentler one, and only its dip, which grows with T, is a reason against it.
 
     A ball that never comes down through the centre's height, or too far off, leaves the paddle at rest at the
-    centre. After a contact that the sensor has not shown yet, the ball is where the strike was to send it.
+    centre. After a contact that the sensor has not shown yet, the ball is where the strike was to send it. The ball
+    is taken to have no spin, and a sight is believed as it is: noise is not filtered.
 
     Gains
     -----
@@ -142,7 +145,8 @@ class Planning(Law):
         self.period, self.gravity = setup.period_s, setup.gravity_m_s2
         self.air = Air.of(setup.ball, (0.0, 0.0, -setup.gravity_m_s2))
         self.drag = self.air.drag_per_m
-        self.share, self.follow, self.stroke_s = (setup.gains[name] for name in Planning.gains)
+        self.share, self.follow = setup.gains["return_share"], setup.gains["follow_per_s"]
+        self.stroke_s = max(SHORTEST_S, setup.gains["stroke_s"])
         x, y, z = setup.centre_m
         self.rest = [x, y, z - setup.ball.radius_m, 0.0, 0.0]
         self.plan: Plan | None = None
@@ -157,7 +161,7 @@ class Planning(Law):
         ux, uy, uz = seen.paddle_m_s
         nx, ny, nz = seen.paddle_normal
         follow, period = self.follow, self.period
-        mz = sqrt(1.0 - mx * mx - my * my)
+        mz = sqrt(max(LEAST_UP, 1.0 - mx * mx - my * my))
         mz_s = -(mx * mx_s + my * my_s) / mz
         qx, qy, qz = (
             mx - period * mx_s,

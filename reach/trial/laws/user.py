@@ -20,6 +20,7 @@ from reach.trial.laws.base import Seen, Setup, Twist
 
 MODULE = "_reach_user_law"  # what a user's file is called among the modules; the last one loaded has the name
 PARTS = 6
+SHOWN = 200  # characters of an answer
 RAISED = (Exception, SystemExit)  # whatever a user's code ends with, short of a key pressed
 
 
@@ -129,12 +130,14 @@ def _wrong(cls: type, answer: Any) -> LawFault:
     """What is wrong with an answer; its line is that of the method."""
     file, line = _home(cls)
     try:
-        numbers = np.asarray(answer, dtype=float)
-        shape = "" if numbers.shape == (PARTS,) else f" of shape {numbers.shape}"
+        plain = type(answer) in (tuple, list, np.ndarray, type(None))
+        shown = repr(answer)[:SHOWN] if plain else _an(answer)
+        shape = np.shape(answer)
     except RAISED:
-        shape = ""
-    shown = repr(answer) if type(answer) in (tuple, list, np.ndarray, type(None)) else _an(answer)
-    text = f"twist must be six finite numbers, got {shown[:200]}{shape}"
+        shown, shape = _an(answer), (PARTS,)
+    if shape not in ((), (PARTS,)):
+        shown += f" of shape {shape}"
+    text = f"twist must be six finite numbers, got {shown}"
     return LawFault(f"{text} ({basename(file)} line {line})" if line else text, line)
 
 

@@ -1,0 +1,247 @@
+"""One trial: the loop rolled on the arm, measured, and what became of it."""
+
+from __future__ import annotations
+
+from collections import Counter
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from reach.advice.blame import Blames
+from reach.arm import Arm
+from reach.ball import Air, Flight, launch
+from reach.cell import Array, Cell, Recovered, Vec3
+from reach.evidence.measure import measure
+from reach.evidence.trials import Contacts, Run, Trace
+from reach.follow.roll import roll
+from reach.follow.rolled import Roll
+from reach.kinematics import Chain
+from reach.limits.base import Limit
+from reach.limits.build import build_limits
+from reach.strike.setting import Setting
+from reach.strike.sides import upper
+from reach.strike.stroke import broken
+from reach.trial.laws import LawFault, Setup, gains_of, law_class, made
+from reach.trial.loop import AWAY_TIMES, GoneBack, Loop, Loss
+from reach.trial.starts import Eye, Start
+
+SHORT_M_S = 0.05  # a step that misses the law's twist by more was held back
+SHORT_STEPS = 3  # of them in the last flight: a limit had its part in the loss
+LOOKED_AT = 60  # of those steps, the last ones, whose multipliers are looked at
+DIRECTIONS = 8  # in which the paddle's fastest way across is looked for
+
+
+@dataclass(frozen=True, eq=False)
+class Ground:
+    """What all trials of a cell share, once a process.
+
+    Attributes
+    ----------
+    cell : with the ready posture as its start
+    centre (3,) : of the ball at contact
+    flight_s : of the wanted apex
+    crossing_m_s : fastest that the strike point can go sideways in the ready posture
+    """
+
+    cell: Cell
+    arm: Arm
+    chain: Chain
+    limits: dict[str, Limit]
+    centre: Array
+    flight_s: float
+    crossing_m_s: float
+    law: type
+    gains: dict[str, float]
+    seed: int
+
+    @staticmethod
+    def of(cell: Cell, centre: Vec3, ready: Array, seed: int) -> Ground:
+        """The ground of a cell whose trials begin in a ready posture (n,)."""
+        trial = cell.trial
+        assert trial is not None and cell.ball is not None
+        still = replace(
+            cell, arm=replace(cell.arm, start=tuple(ready.tolist()), start_velocity=()), follow=None
+        )
+        law = law_class(trial, cell.path)
+        arm = Arm(cell.arm, cell.paddle)
+        rise = launch(Air.of(cell.ball, cell.arm.gravity_m_s2), (0, 0, 0), (0, 0, 0), trial.apex_m)
+        return Ground(
+            cell=still,
+            arm=arm,
+            chain=Chain.of(arm),
+            limits=build_limits(cell),
+            centre=np.array(centre),
+            flight_s=rise.flight_s,
+            crossing_m_s=_crossing(still, ready),
+            law=law,
+            gains=gains_of(law, trial, cell.path),
+            seed=seed,
+        )
+
+
+def _crossing(cell: Cell, ready: Array) -> float:
+    """Fastest speed sideways by the upper bound, the largest over directions."""
+    angles = 2 * np.pi * np.arange(DIRECTIONS) / DIRECTIONS
+    ways = np.column_stack([np.cos(angles), np.sin(angles), np.zeros(DIRECTIONS)])
+    return float(
+        upper(Setting.made(cell, still=False), np.repeat(ready[None], DIRECTIONS, axis=0), ways).free.max()
+    )
+
+
+def play(ground: Ground, start: Start, number: int, keep_motion: bool) -> Run:
+    """One trial.
+
+    Parameters
+    ----------
+    number : of the start; with the seed it fixes the sensor's noise
+    keep_motion : whether the joints' motion goes into the answer
+    """
+    trial = ground.cell.trial
+    assert trial is not None
+    try:
+        loop, rolled = _rolled(ground, start, number, careful=False)
+    except GoneBack:
+        loop, rolled = _rolled(ground, start, number, careful=True)
+    except LawFault as fault:
+        return _unplayed(ground, start, f"the law can't be made: {fault.text}")
+    measured = measure(ground.arm, ground.chain, ground.limits, rolled.delivered)
+    passed = tuple(
+        f"{use.limit} of {use.joint}" if use.joint else use.limit for use in measured.uses if broken(use)
+    )
+    contacts = loop.found()
+    loss = _ending(ground, loop, rolled)
+    limit, joint = (
+        _held_back(ground, rolled, loop.last_contact_s)
+        if loss.outcome not in ("held", "law failed")
+        else ("", "")
+    )
+    if limit and loss.outcome in ("missed past the edge", "too fast to catch"):
+        of = f" of {joint}" if joint else ""
+        loss = Loss("limit", f"{loss.text}; the {limit}{of} held the paddle back in that flight")
+    if passed and loss.outcome == "held":
+        loss = Loss("limit", f"{loss.text}, but the motion passes the {', '.join(passed)}")
+    at = recovered_at(contacts, trial.recovered, trial.apex_m)
+    return Run(
+        offset=start.offset,
+        lateral=start.lateral,
+        outcome=loss.outcome,
+        text=loss.text,
+        recovered=at is not None and not passed,
+        recovered_at=at,
+        bounces=len(contacts.t_s),
+        limit=limit,
+        joint=joint,
+        ended_s=len(rolled.shortfall) * ground.cell.period_s,
+        contacts=contacts,
+        trace=loop.trace(),
+        oscillation_m=_oscillation(contacts, trial.recovered.then_for),
+        uses=tuple(replace(use, series=np.zeros(0)) for use in measured.uses),
+        broken=passed,
+        motion=rolled.delivered if keep_motion else None,
+        elastic_steps=rolled.elastic_steps,
+        failed_steps=rolled.failed_steps,
+    )
+
+
+def recovered_at(contacts: Contacts, asked: Recovered, apex_m: float) -> int | None:
+    """The bounce, counted from one, from which a trial counts as recovered; None where it does not."""
+    good = (contacts.offset_m <= asked.within_m) & (np.abs(contacts.apex_m - apex_m) <= asked.apex_error_m)
+    for first in range(min(asked.by_bounce, len(good))):
+        last = first + asked.then_for
+        if last <= len(good) and good[first:last].all():
+            return first + 1
+    return None
+
+
+def _rolled(ground: Ground, start: Start, number: int, careful: bool) -> tuple[Loop, Roll]:
+    cell, trial = ground.cell, ground.cell.trial
+    assert trial is not None and cell.ball is not None and cell.contact is not None
+    centre = ground.centre
+    air = Air.of(cell.ball, cell.arm.gravity_m_s2)
+    rise = launch(air, (0, 0, 0), (0, 0, 0), trial.apex_m).velocity
+    ball = Flight(
+        0.0,
+        centre + np.array([*start.offset, 0.0]),
+        rise + np.array([*start.lateral, 0.0]),
+        np.zeros(3),
+        air,
+    )
+    x, y, z = centre.tolist()
+    setup = Setup(
+        period_s=cell.period_s,
+        gravity_m_s2=air.down_m_s2,
+        centre_m=(x, y, z),
+        apex_m=trial.apex_m,
+        ball=cell.ball,
+        contact=cell.contact,
+        gains=dict(ground.gains),
+    )
+    law = made(ground.law, setup)
+    eye = Eye(trial.sensor, cell.period_s, np.random.default_rng([ground.seed, 2, number]))
+    longest = (trial.bounces + 2) * ground.flight_s * np.sqrt(AWAY_TIMES)
+    loop = Loop(cell, ground.arm, law, eye, ball, centre, trial.apex_m, trial.bounces, longest)
+    start_q = np.array(cell.arm.start)
+    return loop, roll(cell, ground.arm, ground.limits, loop, start_q, careful)
+
+
+def _ending(ground: Ground, loop: Loop, rolled: Roll) -> Loss:
+    """How a trial ended, a ball out of reach told from one that was merely missed."""
+    if rolled.failed_steps:
+        return Loss("solver failed", f"no solver answered in {rolled.failed_steps} steps")
+    loss = loop.loss
+    if loss is None:
+        return Loss("limit", "the arm could no longer keep its limits, or the trial took too long")
+    if loss.outcome == "missed past the edge" and loss.needed_m_s > ground.crossing_m_s:
+        speeds = f"{loss.needed_m_s:.2f} m/s, it can do {ground.crossing_m_s:.2f}"
+        return Loss("too fast to catch", f"{loss.text}; to be there the paddle had to cross at {speeds}")
+    return loss
+
+
+def _held_back(ground: Ground, rolled: Roll, since_s: float) -> tuple[str, str]:
+    """The limit and joint that held most of the last flight's steps back; "" where none did."""
+    first = int(since_s / ground.cell.period_s)
+    short = first + np.flatnonzero(rolled.shortfall[first:] > SHORT_M_S)
+    if len(short) < SHORT_STEPS:
+        return "", ""
+    blames = Blames(ground.cell, ground.arm, rolled)
+    gains: Counter[tuple[str, int]] = Counter()
+    for step in short[-LOOKED_AT:].tolist():
+        for blame in blames.of(step):
+            gains[blame.limit, blame.joint] += blame.gain * rolled.shortfall[step]
+    if not gains:
+        return "", ""
+    (limit, joint), _ = gains.most_common(1)[0]
+    return limit, "" if limit == "tool speed" else ground.arm.names[joint]
+
+
+def _oscillation(contacts: Contacts, last: int) -> float:
+    if len(contacts.t_s) < last:
+        return float("nan")
+    return float(np.sqrt(np.mean(contacts.offset_m[-last:] ** 2)))
+
+
+def _unplayed(ground: Ground, start: Start, text: str) -> Run:
+    """A trial whose law could not even be made."""
+    none = np.zeros(0)
+    three, two = np.zeros((0, 3)), np.zeros((0, 2))
+    contacts = Contacts(none, three, two, three, three, three, none, none, none, none, none)
+    return Run(
+        offset=start.offset,
+        lateral=start.lateral,
+        outcome="law failed",
+        text=text,
+        recovered=False,
+        recovered_at=None,
+        bounces=0,
+        limit="",
+        joint="",
+        ended_s=0.0,
+        contacts=contacts,
+        trace=Trace(none, three, three),
+        oscillation_m=float("nan"),
+        uses=(),
+        broken=(),
+        motion=None,
+        elastic_steps=0,
+        failed_steps=0,
+    )

@@ -1,0 +1,183 @@
+"""Rallies for tests: the project's arms with small envelopes, and a gantry whose strikes can be told by hand."""
+
+from __future__ import annotations
+
+import tempfile
+from collections.abc import Sequence
+from dataclasses import replace
+from functools import cache
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+from builders import NO_MARGINS, robot_cell
+
+from reach.cell import Array, Cell, Contact, Rally
+from reach.evidence.rallies import RallyPoints
+from reach.formats import load_cell
+from reach.rally.court import Court, Kit, Point, points_of
+from reach.rally.envelope import best_stance
+from reach.rally.points import judged
+
+# Face along the flange's axis, level in the working posture: invented.
+LEVEL_TOML = """
+[paddle]
+mount = { xyz_m = [0.0, 0.0, 0.12] }
+shape = "disc"
+radius_m = 0.085
+thickness_m = 0.012
+mass_kg = 0.25
+"""
+BALL_TOML = """
+[ball]
+mass_kg = 0.0027
+radius_m = 0.02
+drag_coefficient = 0.0
+[contact]
+restitution = 0.7
+"""
+CENTRE = {"bench7": (0.6, 0.0, 0.52), "bench6": (0.5, 0.0, 0.45), "gantry": (0.0, 0.0, 0.5)}
+
+# A gantry with a wrist whose axes meet in the strike point: the slides alone move it. Invented.
+SLIDES = ("x", "y", "z")
+TURNS = ("roll", "pitch")
+GANTRY_URDF = """<robot name="gantry">
+  <link name="base"/>
+{bodies}
+  <link name="flange"/>
+  <joint name="mount" type="fixed"><parent link="l_pitch"/><child link="flange"/></joint>
+</robot>
+"""
+INERTIA = '<inertial><mass value="{mass}"/><inertia ixx="{i}" iyy="{i}" izz="{i}" ixy="0" ixz="0" iyz="0"/></inertial>'
+AXES = {"x": "1 0 0", "y": "0 1 0", "z": "0 0 1", "roll": "1 0 0", "pitch": "0 1 0"}
+GANTRY = {
+    "velocity": 4.0,
+    "acceleration": 40.0,
+    "jerk": 1e5,
+    "torque": 1e5,
+    "torque_rate": 1e8,
+}  # of every joint, m or rad; the last three far from binding
+UNITS = {
+    "position": ("position_rad", "position_m"),
+    "velocity": ("velocity_rad_s", "velocity_m_s"),
+    "acceleration": ("acceleration_rad_s2", "acceleration_m_s2"),
+    "jerk": ("jerk_rad_s3", "jerk_m_s3"),
+    "torque": ("torque_nm", "torque_n"),
+    "torque_rate": ("torque_rate_nm_s", "torque_rate_n_s"),
+}
+
+
+def gantry_urdf() -> str:
+    """The gantry as a URDF."""
+    bodies, before = [], "base"
+    for name, axis in AXES.items():
+        slides = name in SLIDES
+        inertia = INERTIA.format(mass=1.0 if slides else 0.1, i=1e-3)
+        bodies += [
+            f'  <link name="l_{name}">{inertia}</link>',
+            f'  <joint name="{name}" type="{"prismatic" if slides else "revolute"}">',
+            f'    <parent link="{before}"/><child link="l_{name}"/><axis xyz="{axis}"/>',
+            '    <limit lower="-1.5" upper="1.5" effort="1e6" velocity="1e3"/>',
+            "  </joint>",
+        ]
+        before = f"l_{name}"
+    return GANTRY_URDF.format(bodies="\n".join(bodies))
+
+
+def gantry_limits(own: dict[str, dict[str, float | None]] | None = None) -> str:
+    """A limits file of the gantry; `own` changes or (None) leaves out a joint's limits by name."""
+    lines = []
+    for name in (*SLIDES, *TURNS):
+        lines += [f"[joints.{name}]", 'source = "invented"']
+        for kind, value in (GANTRY | (own or {}).get(name, {})).items():
+            if value is not None:
+                lines.append(f"{UNITS[kind][name in SLIDES]} = {value!r}")
+    return "\n".join(lines) + "\n"
+
+
+def gantry_cell(own: dict[str, dict[str, float | None]] | None = None, rest: str = "") -> Cell:
+    """The gantry's cell, no margins, the paddle at the wrist's centre; `rest` are further tables."""
+    with tempfile.TemporaryDirectory() as folder:
+        path = write_gantry(Path(folder), own, rest)
+        return replace(load_cell(path), margins=NO_MARGINS)
+
+
+def write_gantry(folder: Path, own: dict[str, dict[str, float | None]] | None = None, rest: str = "") -> Path:
+    """Write the gantry's cell with its files and return its path."""
+    folder.mkdir(parents=True, exist_ok=True)
+    text = [
+        '[arm]\nurdf = "gantry.urdf"\nlimits = "gantry.limits.toml"\ntip = "flange"',
+        "start_m = { x = 0.0, y = 0.0, z = 0.48 }\nstart_rad = { roll = 0.0, pitch = 0.0 }",
+        "[paddle]\nmount = { xyz_m = [0, 0, 0] }\nradius_m = 0.085\nmass_kg = 0.1",
+        BALL_TOML,
+        rest,
+    ]
+    (folder / "gantry.urdf").write_text(gantry_urdf(), encoding="utf-8")
+    (folder / "gantry.limits.toml").write_text(gantry_limits(own), encoding="utf-8")
+    (folder / "cell.toml").write_text("\n".join(text), encoding="utf-8")
+    return folder / "cell.toml"
+
+
+@cache
+def bench(name: str) -> Cell:
+    """A project's arm with a level paddle, a ball and a face."""
+    return robot_cell(name, paddle=LEVEL_TOML, rest=BALL_TOML)
+
+
+def rallied(
+    cell: Cell, centre: tuple[float, float, float], apexes: Sequence[float] = (0.2,), **rally: Any
+) -> Cell:
+    """The cell with a rally."""
+    return replace(cell, rally=Rally(centre, tuple(apexes), **rally))
+
+
+def on_gantry(apexes: Sequence[float] = (0.2,), own: Any = None, **rally: Any) -> Cell:
+    """The gantry with a rally around its middle."""
+    return rallied(gantry_cell(own), CENTRE["gantry"], apexes, **rally)
+
+
+def on_bench(name: str, apexes: Sequence[float] = (0.2,), **rally: Any) -> Cell:
+    """A project's arm with a rally around its centre."""
+    return rallied(bench(name), CENTRE[name], apexes, **rally)
+
+
+def with_contact(cell: Cell, **contact: Any) -> Cell:
+    """The cell with another face."""
+    return replace(cell, contact=replace(cell.contact or Contact(0.7), **contact))
+
+
+def court_of(cell: Cell) -> Court:
+    """The court at the cell's own centre."""
+    assert cell.rally is not None
+    return Kit(cell, 0).court(cell.rally.centre_m)
+
+
+def again(court: Court, **changes: Any) -> Court:
+    """The same court with other fields of its rally; arm, stances and library are kept."""
+    kit = object.__new__(Kit)
+    kit.__dict__.update(court.kit.__dict__)
+    kit.rally = replace(court.kit.rally, **changes)
+    kit.cell = replace(court.kit.cell, rally=kit.rally)
+    other = object.__new__(Court)
+    other.__dict__.update({k: v for k, v in court.__dict__.items() if k != "ballistics"})
+    other.kit = kit
+    return other
+
+
+def points_at(court: Court, points: Sequence[Point] | None = None) -> RallyPoints:
+    """The court's points judged from its best stance."""
+    points = points_of(court.kit.rally) if points is None else points
+    main = best_stance(court, points) if len(court.stances) else 0
+    return judged(court, points, main)
+
+
+def row(points: RallyPoints, k: int) -> dict[str, Any]:
+    """One row of points by name."""
+    names = [name for name in vars(points) if name != "motions"]
+    return {name: getattr(points, name)[k] for name in names}
+
+
+def turned_z(angle_rad: float, vector: Array) -> Array:
+    """A vector (3,) turned about the vertical."""
+    c, s = np.cos(angle_rad), np.sin(angle_rad)
+    return np.array([c * vector[0] - s * vector[1], s * vector[0] + c * vector[1], vector[2]])
