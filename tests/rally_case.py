@@ -36,10 +36,10 @@ drag_coefficient = 0.0
 [contact]
 restitution = 0.7
 """
-CENTRE = {"bench7": (0.6, 0.0, 0.52), "bench6": (0.5, 0.0, 0.45), "gantry": (0.0, 0.0, 0.5)}
+CENTRE = {"bench7": (0.6, 0.0, 0.52), "bench6": (0.5, 0.0, 0.85), "gantry": (0.0, 0.0, 0.5)}
 
 # A gantry with a wrist whose axes meet in the strike point: the slides alone move it. Invented.
-SLIDES = ("x", "y", "z")
+Own = dict[str, dict[str, Any]] | None
 TURNS = ("roll", "pitch")
 GANTRY_URDF = """<robot name="gantry">
   <link name="base"/>
@@ -67,11 +67,16 @@ UNITS = {
 }
 
 
-def gantry_urdf() -> str:
+def axes(lift: bool) -> dict[str, str]:
+    """Joints and their axes; `lift` puts a second vertical slide before the others."""
+    return {"lift": AXES["z"], **AXES} if lift else AXES
+
+
+def gantry_urdf(lift: bool = False) -> str:
     """The gantry as a URDF."""
     bodies, before = [], "base"
-    for name, axis in AXES.items():
-        slides = name in SLIDES
+    for name, axis in axes(lift).items():
+        slides = name not in TURNS
         inertia = INERTIA.format(mass=1.0 if slides else 0.1, i=1e-3)
         bodies += [
             f'  <link name="l_{name}">{inertia}</link>',
@@ -84,36 +89,38 @@ def gantry_urdf() -> str:
     return GANTRY_URDF.format(bodies="\n".join(bodies))
 
 
-def gantry_limits(own: dict[str, dict[str, float | None]] | None = None) -> str:
+def gantry_limits(own: Own = None, lift: bool = False) -> str:
     """A limits file of the gantry; `own` changes or (None) leaves out a joint's limits by name."""
     lines = []
-    for name in (*SLIDES, *TURNS):
+    for name in axes(lift):
         lines += [f"[joints.{name}]", 'source = "invented"']
         for kind, value in (GANTRY | (own or {}).get(name, {})).items():
             if value is not None:
-                lines.append(f"{UNITS[kind][name in SLIDES]} = {value!r}")
+                lines.append(f"{UNITS[kind][name not in TURNS]} = {value!r}")
     return "\n".join(lines) + "\n"
 
 
-def gantry_cell(own: dict[str, dict[str, float | None]] | None = None, rest: str = "") -> Cell:
+def gantry_cell(own: Own = None, rest: str = "", lift: bool = False, window_s: float | None = None) -> Cell:
     """The gantry's cell, no margins, the paddle at the wrist's centre; `rest` are further tables."""
     with tempfile.TemporaryDirectory() as folder:
-        path = write_gantry(Path(folder), own, rest)
-        return replace(load_cell(path), margins=NO_MARGINS)
+        cell = replace(load_cell(write_gantry(Path(folder), own, rest, lift)), margins=NO_MARGINS)
+    window = cell.accept.strike_window_s if window_s is None else window_s
+    return replace(cell, accept=replace(cell.accept, strike_window_s=window))
 
 
-def write_gantry(folder: Path, own: dict[str, dict[str, float | None]] | None = None, rest: str = "") -> Path:
+def write_gantry(folder: Path, own: Own = None, rest: str = "", lift: bool = False) -> Path:
     """Write the gantry's cell with its files and return its path."""
     folder.mkdir(parents=True, exist_ok=True)
+    slides = "x = 0.0, y = 0.0, z = 0.24, lift = 0.24" if lift else "x = 0.0, y = 0.0, z = 0.48"
     text = [
         '[arm]\nurdf = "gantry.urdf"\nlimits = "gantry.limits.toml"\ntip = "flange"',
-        "start_m = { x = 0.0, y = 0.0, z = 0.48 }\nstart_rad = { roll = 0.0, pitch = 0.0 }",
+        f"start_m = {{ {slides} }}\nstart_rad = {{ roll = 0.0, pitch = 0.0 }}",
         "[paddle]\nmount = { xyz_m = [0, 0, 0] }\nradius_m = 0.085\nmass_kg = 0.1",
         BALL_TOML,
         rest,
     ]
-    (folder / "gantry.urdf").write_text(gantry_urdf(), encoding="utf-8")
-    (folder / "gantry.limits.toml").write_text(gantry_limits(own), encoding="utf-8")
+    (folder / "gantry.urdf").write_text(gantry_urdf(lift), encoding="utf-8")
+    (folder / "gantry.limits.toml").write_text(gantry_limits(own, lift), encoding="utf-8")
     (folder / "cell.toml").write_text("\n".join(text), encoding="utf-8")
     return folder / "cell.toml"
 
@@ -131,7 +138,7 @@ def rallied(
     return replace(cell, rally=Rally(centre, tuple(apexes), **rally))
 
 
-def on_gantry(apexes: Sequence[float] = (0.2,), own: Any = None, **rally: Any) -> Cell:
+def on_gantry(apexes: Sequence[float] = (0.2,), own: Own = None, **rally: Any) -> Cell:
     """The gantry with a rally around its middle."""
     return rallied(gantry_cell(own), CENTRE["gantry"], apexes, **rally)
 

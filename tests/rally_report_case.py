@@ -374,7 +374,15 @@ def many_points() -> RallyResult:
     return replace(made, evidence=replace(made.evidence, centres=made_centres(dense)))
 
 
+def stopped_rally() -> RallyResult:
+    """Stopped after the points: no edge, no bounce, no cycle to show."""
+    made = whole_rally()
+    empty = {"edges": (), "offsets": (), "centres": (), "bounces": (), "shown": None, "stopped": True}
+    return replace(made, evidence=replace(made.evidence, **empty))
+
+
 RALLIES = {
+    "stopped": stopped_rally,
     "whole": whole_rally,
     "nothing held": nothing_held,
     "no point": no_point,

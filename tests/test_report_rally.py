@@ -9,6 +9,7 @@ import json
 import re
 import xml.etree.ElementTree as ET
 from dataclasses import fields, replace
+from functools import cache
 from pathlib import Path
 
 import numpy as np
@@ -19,9 +20,7 @@ from rally_report_case import (
     RALLIES,
     WHOLE,
     made_bounces,
-    nothing_held,
     rally_result,
-    whole_rally,
 )
 from test_report import NAMES, Page, listing, refuse, terminal_width
 
@@ -47,7 +46,19 @@ FIGURES = (
 
 @pytest.fixture(scope="module")
 def result() -> RallyResult:
-    return whole_rally()
+    return made("whole")
+
+
+@cache
+def made(case: str) -> RallyResult:
+    """An invented result."""
+    return RALLIES[case]()
+
+
+@cache
+def html_of(result: RallyResult) -> str:
+    """Its page."""
+    return str(WRITERS["html"](result))
 
 
 def as_text(content: str | bytes) -> str:
@@ -61,7 +72,7 @@ def joined(content: str | bytes) -> str:
 
 def drawings(result: RallyResult) -> list[bytes]:
     """The figures of the page."""
-    return [base64.b64decode(s.split(",", 1)[1]) for s in Page(str(WRITERS["html"](result))).sources]
+    return [base64.b64decode(s.split(",", 1)[1]) for s in Page(html_of(result)).sources]
 
 
 def words_of(drawing: bytes) -> str:
@@ -75,9 +86,9 @@ def rows_of(result: RallyResult) -> list[dict[str, str]]:
 @pytest.mark.parametrize("case", RALLIES)
 @pytest.mark.parametrize("kind", WRITERS)
 def test_writers_work_alike_twice_and_write_no_control_character(kind: str, case: str) -> None:
-    made = RALLIES[case]()
-    once = WRITERS[kind](made)
-    assert once == WRITERS[kind](made)
+    one = made(case)
+    once = WRITERS[kind](one)
+    assert once == WRITERS[kind](one)
     assert not re.search(r"[\x00-\x09\x0b-\x1f\x7f-\x9f]", as_text(once))
 
 
@@ -109,12 +120,12 @@ def test_csv_has_the_columns_of_the_interface_and_reads_back(result: RallyResult
 
 
 def test_csv_is_empty_where_there_is_nothing() -> None:
-    text = str(WRITERS["csv"](nothing_held()))
+    text = str(WRITERS["csv"](made("nothing held")))
     assert "nan" not in text
     row = next(csv.DictReader(io.StringIO(text)))
     assert (row["verdict"], row["basis"], row["limit"]) == (NOT_DELIVERABLE, "proved", "reach")
     assert row["cycle_s"] == row["joint"] == row[f"q_{NAMES[0]}"] == row["feasible_share"] == ""
-    assert len(str(WRITERS["csv"](RALLIES["no point"]())).splitlines()) == 1
+    assert len(str(WRITERS["csv"](made("no point"))).splitlines()) == 1
 
 
 def test_json_is_strict_and_has_the_figures(result: RallyResult) -> None:
@@ -150,7 +161,7 @@ def test_json_is_strict_and_has_the_figures(result: RallyResult) -> None:
 
 @pytest.mark.parametrize("case", RALLIES)
 def test_every_json_is_strict(case: str) -> None:
-    json.loads(str(WRITERS["json"](RALLIES[case]())), parse_constant=refuse)
+    json.loads(str(WRITERS["json"](made(case))), parse_constant=refuse)
 
 
 def test_range_is_what_every_bearing_holds() -> None:
@@ -195,7 +206,7 @@ def test_stability_is_by_itself_only_inside_the_window() -> None:
 
 @pytest.mark.parametrize("case", RALLIES)
 def test_text_is_narrow(case: str) -> None:
-    text = str(WRITERS["text"](RALLIES[case]()))
+    text = str(WRITERS["text"](made(case)))
     assert max(terminal_width(row) for row in text.splitlines()) <= 100
 
 
@@ -238,20 +249,20 @@ def test_drift_is_eight_times_apex_and_tilt(result: RallyResult) -> None:
 
 
 def test_a_share_is_nominal_where_no_spread_is_stated() -> None:
-    assert "nominal only: no spread stated" in joined(WRITERS["text"](RALLIES["one point"]()))
-    assert "95 % interval" in joined(WRITERS["text"](whole_rally()))
-    assert "not known: no point is deliverable" in joined(WRITERS["text"](nothing_held()))
+    assert "nominal only: no spread stated" in joined(WRITERS["text"](made("one point")))
+    assert "95 % interval" in joined(WRITERS["text"](made("whole")))
+    assert "not known: no point is deliverable" in joined(WRITERS["text"](made("nothing held")))
 
 
 def test_an_edge_that_was_not_met_is_not_given_a_limit() -> None:
     open_edge = OffsetEdge(0.3, 0.0, 0.2, "", "", True)
-    made = RALLIES["one point"]()
-    text = joined(WRITERS["text"](replace(made, evidence=replace(made.evidence, offsets=(open_edge,)))))
-    assert "bounded by nothing, as far as looked" in text
+    one = made("one point")
+    text = joined(WRITERS["text"](replace(one, evidence=replace(one.evidence, offsets=(open_edge,)))))
+    assert "≥ 200 mm at apex 300 mm (bearing 0°, bounded by nothing, as far as looked)" in text
 
 
 def test_html_escapes_every_name_and_fetches_nothing(result: RallyResult) -> None:
-    text = str(WRITERS["html"](result))
+    text = html_of(result)
     page = Page(text)
     assert not {"script", "b", "i", "link", "iframe", "object"} & set(page.tags)
     assert all(source.startswith("data:image/svg+xml;base64,") for source in page.sources)
@@ -280,10 +291,11 @@ def test_html_escapes_every_name_and_fetches_nothing(result: RallyResult) -> Non
         ("one bearing", FIGURES[-1:]),
         ("nothing held", ("Time and speed", "One cycle", FIGURES[-1])),
         ("no point", FIGURES),
+        ("stopped", ("Recoverable offset", *FIGURES[3:])),
     ],
 )
 def test_every_figure_that_has_something_to_show_is_there(case: str, missing: tuple[str, ...]) -> None:
-    page = Page(str(WRITERS["html"](RALLIES[case]())))
+    page = Page(html_of(made(case)))
     assert page.tags.count("img") == len(FIGURES) - len(missing)
     shown = [word for word in page.words if word in FIGURES]
     assert set(shown) >= set(FIGURES) - set(missing)
@@ -291,7 +303,7 @@ def test_every_figure_that_has_something_to_show_is_there(case: str, missing: tu
 
 @pytest.mark.parametrize("case", RALLIES)
 def test_figures_are_drawings_that_fetch_and_run_nothing(case: str) -> None:
-    for drawing in drawings(RALLIES[case]()):
+    for drawing in drawings(made(case)):
         tree = ET.fromstring(drawing)
         assert not [element for element in tree.iter() if element.tag.rsplit("}", 1)[-1] in ("script", "a")]
         sources = [v for e in tree.iter() for k, v in e.attrib.items() if k.rsplit("}", 1)[-1] == "href"]
@@ -312,14 +324,25 @@ def test_figures_name_what_bounds_the_edges(result: RallyResult) -> None:
 def test_many_bearings_are_spread_and_the_caption_says_so() -> None:
     assert some([1.0, 2.0, 3.0, 4.0, 5.0], 3) == [1.0, 3.0, 5.0]
     assert some([1.0, 2.0], 3) == [1.0, 2.0]
-    text = str(WRITERS["html"](RALLIES["many points"]()))
+    text = html_of(made("many points"))
     assert "8 of 12 bearings" in text
     assert len(text) < 2_500_000
 
 
+def test_an_edge_far_off_that_was_not_met_leaves_room_to_the_points() -> None:
+    one = made("one point")
+    (edge,) = one.evidence.edges
+    assert edge.high_m is not None and not edge.high_open
+    far = replace(one, evidence=replace(one.evidence, edges=(replace(edge, high_m=40.0, high_open=True),)))
+    ticks = [
+        float(word) for word in re.findall(r"\b\d+\b", words_of(drawings(far)[0]).partition("apex, mm")[0])
+    ]
+    assert max(ticks) < 1000
+
+
 def test_a_bearing_of_its_own_is_not_asked_of_the_centre() -> None:
-    made = whole_rally()
-    points = made.evidence.points
+    one = made("whole")
+    points = one.evidence.points
     keep = (points.offset_m > 0) | (points.bearing_rad == 0)
     cut = {
         item.name: getattr(points, item.name)[keep]
@@ -328,8 +351,8 @@ def test_a_bearing_of_its_own_is_not_asked_of_the_centre() -> None:
     }
     reason = tuple(text for text, kept in zip(points.reason, keep, strict=True) if kept)
     few = replace(points, **cut, reason=reason, motions={})
-    edges = tuple(edge for edge in made.evidence.edges if edge.offset_m > 0 or edge.bearing_rad == 0)
-    envelope = words_of(drawings(replace(made, evidence=replace(made.evidence, points=few, edges=edges)))[0])
+    edges = tuple(edge for edge in one.evidence.edges if edge.offset_m > 0 or edge.bearing_rad == 0)
+    envelope = words_of(drawings(replace(one, evidence=replace(one.evidence, points=few, edges=edges)))[0])
     assert envelope.count(f"velocity of {NAMES[1]}") == 4
 
 
@@ -384,6 +407,6 @@ COMPLETE = {"verdict.json", "rally.csv", "report.html", "evidence/points.npz", "
 def test_folder_holds_everything_and_no_motion_of_another_run(result: RallyResult, tmp_path: Path) -> None:
     write_folder(result, tmp_path, tmp_path / "junit.xml")
     assert listing(tmp_path) == COMPLETE | {"evidence/motions.npz", "junit.xml"}
-    written = write_folder(nothing_held(), tmp_path)
+    written = write_folder(made("nothing held"), tmp_path)
     assert listing(tmp_path) == COMPLETE | {"junit.xml"}
     assert written[-1] == tmp_path / "verdict.json"

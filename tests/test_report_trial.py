@@ -9,12 +9,13 @@ import json
 import re
 import xml.etree.ElementTree as ET
 from dataclasses import fields, replace
+from functools import cache
 from pathlib import Path
 from typing import get_args
 
 import numpy as np
 import pytest
-from rally_report_case import CENTRE, TRIALS, blocked_trial, made_run, trial_result, whole_trial
+from rally_report_case import CENTRE, TRIALS, made_run, trial_result
 from test_report import NAMES, Page, listing, refuse, terminal_width
 
 from reach.cell import Recovered, Sensor
@@ -25,7 +26,7 @@ from reach.report.document import document
 from reach.report.trial.csv import BOUNCE_COLUMNS, START_COLUMNS
 from reach.report.trial.evidence import evidence_files
 from reach.report.trial.numbers import first_lost, peak_speed, typical, worst_run
-from reach.report.trial.wording import MEANINGS, meaning, sensor
+from reach.report.trial.wording import MEANINGS, meaning, sensor, start_text
 from reach.report.wording import plain
 from reach.result import TrialResult
 from reach.verdict import DELIVERABLE
@@ -41,7 +42,19 @@ FIGURES = (
 
 @pytest.fixture(scope="module")
 def result() -> TrialResult:
-    return whole_trial()
+    return made("whole")
+
+
+@cache
+def made(case: str) -> TrialResult:
+    """An invented result."""
+    return TRIALS[case]()
+
+
+@cache
+def html_of(result: TrialResult) -> str:
+    """Its page."""
+    return str(WRITERS["html"](result))
 
 
 def as_text(content: str | bytes) -> str:
@@ -55,7 +68,7 @@ def joined(content: str | bytes) -> str:
 
 def drawings(result: TrialResult) -> list[bytes]:
     """The figures of the page."""
-    return [base64.b64decode(s.split(",", 1)[1]) for s in Page(str(WRITERS["html"](result))).sources]
+    return [base64.b64decode(s.split(",", 1)[1]) for s in Page(html_of(result)).sources]
 
 
 def words_of(drawing: bytes) -> str:
@@ -69,9 +82,9 @@ def rows_of(result: TrialResult) -> list[dict[str, str]]:
 @pytest.mark.parametrize("case", TRIALS)
 @pytest.mark.parametrize("kind", WRITERS)
 def test_writers_work_alike_twice_and_write_no_control_character(kind: str, case: str) -> None:
-    made = TRIALS[case]()
-    once = WRITERS[kind](made)
-    assert once == WRITERS[kind](made)
+    one = made(case)
+    once = WRITERS[kind](one)
+    assert once == WRITERS[kind](one)
     assert not re.search(r"[\x00-\x09\x0b-\x1f\x7f-\x9f]", as_text(once))
 
 
@@ -106,10 +119,10 @@ def test_csv_has_a_row_a_bounce_that_reads_back(result: TrialResult) -> None:
 
 
 def test_csv_of_a_start_without_a_bounce_has_one_row() -> None:
-    (row,) = rows_of(TRIALS["lost at once"]())
+    (row,) = rows_of(made("lost at once"))
     assert (row["start"], row["outcome"], row["recovered"]) == ("1", "limit", "0")
     assert {row[name] for name in BOUNCE_COLUMNS} == {""}
-    assert rows_of(blocked_trial()) == []
+    assert rows_of(made("blocked")) == []
 
 
 def test_json_is_strict_and_has_every_outcome(result: TrialResult) -> None:
@@ -138,7 +151,7 @@ def test_json_is_strict_and_has_every_outcome(result: TrialResult) -> None:
 
 @pytest.mark.parametrize("case", TRIALS)
 def test_every_json_is_strict(case: str) -> None:
-    read = json.loads(str(WRITERS["json"](TRIALS[case]())), parse_constant=refuse)
+    read = json.loads(str(WRITERS["json"](made(case))), parse_constant=refuse)
     assert set(read) >= {"outcome", "recovered_share", "recovered_low_share", "recovered_high_share"}
 
 
@@ -174,14 +187,14 @@ def test_peak_speed_is_of_the_paddle_itself(result: TrialResult) -> None:
     # The trace bobs by 30 mm at 9 rad/s; the contacts of the trial that runs away are faster.
     fastest = max(float(run.contacts.paddle_m_s.max()) for run in runs)
     assert peak_speed(runs) == pytest.approx(max(0.27, fastest), rel=0.01)
-    assert peak_speed((replace(runs[0], contacts=TRIALS["lost at once"]().evidence.runs[0].contacts),)) == (
+    assert peak_speed((replace(runs[0], contacts=made("lost at once").evidence.runs[0].contacts),)) == (
         pytest.approx(0.27, rel=0.01)
     )
 
 
 @pytest.mark.parametrize("case", TRIALS)
 def test_text_is_narrow(case: str) -> None:
-    text = str(WRITERS["text"](TRIALS[case]()))
+    text = str(WRITERS["text"](made(case)))
     assert max(terminal_width(row) for row in text.splitlines()) <= 100
 
 
@@ -198,7 +211,7 @@ def test_text_says_everything(result: TrialResult) -> None:
         "4 mm root mean square (median)",
         f"117.0 % of torque of {NAMES[2]} (start 6)",
         "the ball went down outside the face's edge",
-        "start 8: 80 mm off at 270°, lateral 0.1 m/s: ran away after 12 bounces, <odd> & \\x1b text",
+        "start 8: 80 mm off at 270°, lateral 0.1 m/s toward 270°: ran away after 12 bounces, <odd> & \\x1b text",
         "What held the arm back where lost",
         f"jerk: {NAMES[0]}",
         "a softer law: more starts (not verified)",
@@ -208,15 +221,22 @@ def test_text_says_everything(result: TrialResult) -> None:
         assert expected in text, expected
 
 
+def test_start_is_told_from_the_centre_and_by_its_lateral_velocity() -> None:
+    still = made_run((0.0, 0.0), (0.0, 0.0), "held", True, 3, 0.7)
+    assert start_text(1, still) == "start 1: at the centre, lateral 0 m/s"
+    moving = replace(still, offset=np.array([-0.06, 0.08]), lateral=np.array([0.0, -0.2]))
+    assert start_text(2, moving) == "start 2: 100 mm off at 127°, lateral 0.2 m/s toward 270°"
+
+
 def test_text_without_a_run_says_why_and_what_was_left() -> None:
-    assert "none of 4 starts tried: no posture holds the paddle" in joined(WRITERS["text"](blocked_trial()))
+    assert "none of 4 starts tried: no posture holds the paddle" in joined(WRITERS["text"](made("blocked")))
     assert "1 of 2 starts (50.0 %, 95 % interval 30.0 to 70.0); 4 not tried" in joined(
-        WRITERS["text"](TRIALS["stopped"]())
+        WRITERS["text"](made("stopped"))
     )
 
 
 def test_html_escapes_every_name_and_fetches_nothing(result: TrialResult) -> None:
-    text = str(WRITERS["html"](result))
+    text = html_of(result)
     page = Page(text)
     assert not {"script", "b", "i", "k", "odd", "link", "iframe", "object"} & set(page.tags)
     assert all(source.startswith("data:image/svg+xml;base64,") for source in page.sources)
@@ -236,14 +256,14 @@ def test_html_escapes_every_name_and_fetches_nothing(result: TrialResult) -> Non
     [("whole", ()), ("many", ()), ("stopped", ()), ("lost at once", FIGURES[1:]), ("blocked", FIGURES)],
 )
 def test_every_figure_that_has_something_to_show_is_there(case: str, missing: tuple[str, ...]) -> None:
-    page = Page(str(WRITERS["html"](TRIALS[case]())))
+    page = Page(html_of(made(case)))
     assert page.tags.count("img") == len(FIGURES) - len(missing)
     assert {word for word in page.words if word in FIGURES} == set(FIGURES) - set(missing)
 
 
 @pytest.mark.parametrize("case", TRIALS)
 def test_figures_are_drawings_that_fetch_and_run_nothing(case: str) -> None:
-    for drawing in drawings(TRIALS[case]()):
+    for drawing in drawings(made(case)):
         tree = ET.fromstring(drawing)
         assert not [element for element in tree.iter() if element.tag.rsplit("}", 1)[-1] in ("script", "a")]
         sources = [v for e in tree.iter() for k, v in e.attrib.items() if k.rsplit("}", 1)[-1] == "href"]
@@ -259,7 +279,7 @@ def test_figures_tell_the_lost_from_the_recovered(result: TrialResult) -> None:
 
 
 def test_many_trials_make_a_small_page() -> None:
-    text = str(WRITERS["html"](TRIALS["many"]()))
+    text = html_of(made("many"))
     assert len(text) < 2_500_000
     assert "150 of 200 trials" in text
     assert "verdict.json has the other 140 too" in text
@@ -278,9 +298,9 @@ def test_junit_has_a_case_a_start(result: TrialResult) -> None:
 
 
 def test_junit_skips_what_was_not_tried_and_fails_nothing_where_deliverable() -> None:
-    stopped = ET.fromstring(WRITERS["junit"](TRIALS["stopped"]())).find("testsuite")
-    blocked = ET.fromstring(WRITERS["junit"](blocked_trial())).find("testsuite")
-    many = ET.fromstring(WRITERS["junit"](TRIALS["many"]())).find("testsuite")
+    stopped = ET.fromstring(WRITERS["junit"](made("stopped"))).find("testsuite")
+    blocked = ET.fromstring(WRITERS["junit"](made("blocked"))).find("testsuite")
+    many = ET.fromstring(WRITERS["junit"](made("many"))).find("testsuite")
     assert stopped is not None and blocked is not None and many is not None
     assert (stopped.get("tests"), stopped.get("skipped")) == ("7", "4")
     assert (blocked.get("tests"), blocked.get("skipped")) == ("5", "4")
@@ -324,7 +344,7 @@ def test_folder_holds_everything_and_no_runs_of_another_run(result: TrialResult,
     complete = {"verdict.json", "trial.csv", "report.html", "evidence/cell.json"}
     write_folder(result, tmp_path, tmp_path / "junit.xml")
     assert listing(tmp_path) == complete | {"evidence/runs.npz", "junit.xml"}
-    written = write_folder(blocked_trial(), tmp_path)
+    written = write_folder(made("blocked"), tmp_path)
     assert listing(tmp_path) == complete | {"junit.xml"}
     assert written[-1] == tmp_path / "verdict.json"
 
@@ -333,8 +353,8 @@ def test_a_trial_that_ends_with_nan_is_still_drawn() -> None:
     run = made_run((0.08, 0.0), (0.0, 0.0), "ran away", False, 6, 1.3)
     odd = replace(
         run,
-        contacts=replace(run.contacts, apex_m=np.where(np.arange(6) > 3, np.nan, run.contacts.apex_m)),
+        contacts=replace(run.contacts, apex_m=np.where(np.arange(6) > 3, np.nan, run.contacts.apex_m - 0.3)),
         trace=replace(run.trace, ball=np.where(run.trace.t_s[:, None] > 2, np.nan, run.trace.ball)),
     )
-    page = Page(str(WRITERS["html"](trial_result((odd,), 1, DELIVERABLE))))
+    page = Page(html_of(trial_result((odd,), 1, DELIVERABLE)))
     assert page.tags.count("img") == len(FIGURES)

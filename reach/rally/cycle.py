@@ -68,18 +68,22 @@ class Cycles:
         """States (m, n) at the start of the windows."""
         return States.moving(q - v * self.half, v)
 
-    def ways(self, begin: States, end: States, flight_s: Array) -> Ways:
-        """Ways from windows to windows within flights (m,): through where that is legal, else by rest."""
+    def ways(self, begin: States, end: States, flight_s: Array, stop_s: Array | None = None) -> Ways:
+        """Ways from windows to windows within flights (m,): through where that is legal, else by rest.
+
+        `stop_s` (m,) is that of `begin` where it is known already.
+        """
         m = len(flight_s)
-        stop, start = np.full(m, np.nan), np.full(m, np.nan)
-        if self.latency_s > self.half:
+        stop = np.full(m, np.nan) if stop_s is None else stop_s.copy()
+        start = np.full(m, np.nan)
+        if self.latency_s > self.half and stop_s is None:
             stop = self.stop_s(begin)
         uses = self._through(begin, end, flight_s, stop)
         legal = uses.max(axis=1) <= LEGAL
         rest = np.zeros(m, dtype=bool)
         left = np.flatnonzero(~legal & (self._least_rest_s(begin, end) <= flight_s))
         if len(left):
-            if self.latency_s <= self.half:
+            if self.latency_s <= self.half and stop_s is None:
                 stop[left] = self.stop_s(begin.take(left))
             start[left] = self.start_s(end.take(left))
             fits = self.rest_s(stop[left], start[left]) <= flight_s[left]

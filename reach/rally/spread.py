@@ -19,10 +19,26 @@ from reach.rally.exchange import Disturbance, Exchange, about_vertical
 
 QUANTILE = 1.959964  # of the normal distribution, two-sided 95 %
 HALVINGS = 7
-LARGEST = {"tilt": 0.3, "contact offset": 0.5, "restitution": 0.5}  # rad, m, 1: looked for up to there
-WAYS = tuple(
-    (np.cos(angle), np.sin(angle)) for angle in np.arange(4) * np.pi / 2
-)  # outward along the bearing, then around
+AROUND = ((1.0, 0.0), (0.0, 1.0), (-1.0, 0.0), (0.0, -1.0))  # outward along the bearing, then around
+
+
+class Kind(NamedTuple):
+    """A kind of error: the most that is looked for, what makes one of a size and a way, and the ways it may go.
+
+    Ways turn with a point's bearing where the error has a direction.
+    """
+
+    most: float
+    make: Callable[[float, float, float], Disturbance]
+    ways: tuple[tuple[float, float], ...] = AROUND
+    turns: bool = True
+
+
+KINDS = (
+    Kind(0.3, lambda size, x, y: Disturbance(tilt_rad=(size * x, size * y))),  # rad
+    Kind(0.5, lambda size, x, y: Disturbance(place_m=(size * x, size * y))),  # m
+    Kind(0.5, lambda size, x, _: Disturbance(restitution=size * x), AROUND[::2], turns=False),
+)
 
 
 class Errors(NamedTuple):
@@ -57,7 +73,7 @@ def feasible(court: Court, point: Point, stance: int, rng: np.random.Generator) 
         )
         for e, x, y, vx, vy in draws.tolist()
     ]
-    good = passes(court, point, stance, wrong)
+    good = passes(court, [(point, one) for one in wrong], stance)
     return float(good.mean()), *interval(int(good.sum()), len(good))
 
 
@@ -71,10 +87,10 @@ def interval(successes: int, count: int) -> tuple[float, float]:
     return max(0.0, float(middle - half)), min(1.0, float(middle + half))
 
 
-def passes(court: Court, point: Point, stance: int, wrong: Sequence[Disturbance]) -> NDArray[np.bool_]:
-    """Which disturbances (k,) a point passes: ball on the face, and returned from where it comes down."""
+def passes(court: Court, wrong: Sequence[tuple[Point, Disturbance]], stance: int) -> NDArray[np.bool_]:
+    """Which disturbed points (k,) pass: ball on the face, and returned from where it comes down."""
     made: list[Exchange | None] = []
-    for one in wrong:
+    for point, one in wrong:
         try:
             made.append(court.ballistics[stance].disturbed(*point, one) if on_face(court, one) else None)
         except (NoFlight, NoContact):
@@ -98,52 +114,62 @@ def largest_errors(court: Court, points: Sequence[Point], stances: NDArray[np.in
 
     An error of restitution may go either way, a tilt or an offset any of four ways.
     """
-    kinds: dict[str, Callable[[float, tuple[float, float]], list[Disturbance]]] = {
-        "tilt": lambda size, way: [Disturbance(tilt_rad=(size * way[0], size * way[1]))],
-        "contact offset": lambda size, way: [Disturbance(place_m=(size * way[0], size * way[1]))],
-        "restitution": lambda size, way: [Disturbance(restitution=size * (1 if sum(way) > 0 else -1))],
-    }
-    columns = [np.array([_delay(court, p, int(s)) for p, s in zip(points, stances, strict=True)])]
-    for name, make in kinds.items():
-        most = [
-            _largest(court, point, int(stance), make, LARGEST[name])
-            for point, stance in zip(points, stances, strict=True)
+    delays = [_delay(court, point, int(stance)) for point, stance in zip(points, stances, strict=True)]
+    return Errors(np.array(delays), *(_largest(court, points, stances, kind) for kind in KINDS))
+
+
+def _largest(court: Court, points: Sequence[Point], stances: NDArray[np.int64], kind: Kind) -> Array:
+    """The largest error (m,) of one kind, of all points at once."""
+    low, high = np.zeros(len(points)), np.full(len(points), kind.most)
+    held = _hold(court, points, stances, kind, high)
+    low[held] = kind.most
+    for _ in range(HALVINGS):
+        middle = (low + high) / 2
+        held = _hold(court, points, stances, kind, middle)
+        low, high = np.where(held, middle, low), np.where(held, high, middle)
+    return low
+
+
+def _hold(
+    court: Court, points: Sequence[Point], stances: NDArray[np.int64], kind: Kind, size: Array
+) -> NDArray[np.bool_]:
+    """Which points (m,) pass an error of their size (m,) every way it may go."""
+    good = np.zeros(len(points), dtype=bool)
+    for stance in np.unique(stances).tolist():
+        rows = np.flatnonzero(stances == stance)
+        wrong = [
+            (
+                points[int(k)],
+                kind.make(float(size[k]), *(_turned(points[int(k)], way) if kind.turns else way)),
+            )
+            for k in rows
+            for way in kind.ways
         ]
-        columns.append(np.array(most))
-    return Errors(*columns)
+        good[rows] = passes(court, wrong, stance).reshape(len(rows), len(kind.ways)).all(axis=1)
+    return good
 
 
-def _largest(
-    court: Court,
-    point: Point,
-    stance: int,
-    make: Callable[[float, tuple[float, float]], list[Disturbance]],
-    most: float,
-) -> float:
-    turn = about_vertical(point.bearing_rad)[:2, :2]
-    ways = [tuple((turn @ np.array(way)).tolist()) for way in WAYS]
-
-    def holds(size: float) -> bool:
-        return bool(passes(court, point, stance, [one for way in ways for one in make(size, way)]).all())
-
-    return _bisected(holds, most)
+def _turned(point: Point, way: tuple[float, float]) -> tuple[float, float]:
+    x, y = (about_vertical(point.bearing_rad)[:2, :2] @ np.array(way)).tolist()
+    return x, y
 
 
 def _delay(court: Court, point: Point, stance: int) -> float:
-    made = court.exchanges([point], stance)
-    stated = court.kit.rally.latency_s
-    (exchange,) = made
+    """The largest further delay in s with which a point still passes."""
+    (exchange,) = court.exchanges([point], stance)
     if exchange is None:
         return 0.0
-    most = min(exchange.flights_s) - stated
-    return _bisected(lambda more: bool(court.delivered(made, stance, stated + more)[0].all()), most)
+    player, stated = court.players[stance], court.kit.rally.latency_s
+    played = player.play([exchange], stated)
+    known = player.cycles(stated)
+    begin, end = player.ends(known, played.q, played.v, played.leg)
+    stop_s = known.stop_s(begin)
 
+    def holds(more: float) -> bool:
+        ways = player.cycles(stated + more).ways(begin, end, played.flight_s, stop_s)
+        return bool(ways.legal.all())
 
-def _bisected(holds: Callable[[float], bool], most: float) -> float:
-    """The largest value up to `most` that holds, 0 always being taken to."""
-    if holds(most):
-        return most
-    low, high = 0.0, most
+    low, high = 0.0, float(min(exchange.flights_s)) - stated
     for _ in range(HALVINGS):
         middle = (low + high) / 2
         low, high = (middle, high) if holds(middle) else (low, middle)

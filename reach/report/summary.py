@@ -113,7 +113,7 @@ def listed(header: Sequence[str], rows: Sequence[Sequence[str]], most: int, left
     """
     if not rows:
         return []
-    shown = [[shorten(cell, 2 * NAME_COLUMNS) for cell in row] for row in rows[:most]]
+    shown = [[*(shorten(cell, 2 * NAME_COLUMNS) for cell in row[:-1]), row[-1]] for row in rows[:most]]
     over = len(rows) - len(shown)
     more = [f"  … and {over} more in verdict.json"] if over > 0 else []
     return table([name.removeprefix("#") for name in header], shown, left=left) + more

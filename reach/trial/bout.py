@@ -99,19 +99,19 @@ def play(ground: Ground, start: Start, number: int, keep_motion: bool) -> Run:
     trial = ground.cell.trial
     assert trial is not None
     try:
-        loop, rolled = _rolled(ground, start, number, careful=False)
+        loop, done = rolled(ground, start, number, careful=False)
     except GoneBack:
-        loop, rolled = _rolled(ground, start, number, careful=True)
+        loop, done = rolled(ground, start, number, careful=True)
     except LawFault as fault:
         return _unplayed(ground, start, f"the law can't be made: {fault.text}")
-    measured = measure(ground.arm, ground.chain, ground.limits, rolled.delivered)
+    measured = measure(ground.arm, ground.chain, ground.limits, done.delivered)
     passed = tuple(
         f"{use.limit} of {use.joint}" if use.joint else use.limit for use in measured.uses if broken(use)
     )
     contacts = loop.found()
-    loss = _ending(ground, loop, rolled)
+    loss = _ending(ground, loop, done)
     limit, joint = (
-        _held_back(ground, rolled, loop.last_contact_s)
+        _held_back(ground, done, loop.last_contact_s)
         if loss.outcome not in ("held", "law failed")
         else ("", "")
     )
@@ -131,15 +131,15 @@ def play(ground: Ground, start: Start, number: int, keep_motion: bool) -> Run:
         bounces=len(contacts.t_s),
         limit=limit,
         joint=joint,
-        ended_s=len(rolled.shortfall) * ground.cell.period_s,
+        ended_s=len(done.shortfall) * ground.cell.period_s,
         contacts=contacts,
         trace=loop.trace(),
         oscillation_m=_oscillation(contacts, trial.recovered.then_for),
         uses=tuple(replace(use, series=np.zeros(0)) for use in measured.uses),
         broken=passed,
-        motion=rolled.delivered if keep_motion else None,
-        elastic_steps=rolled.elastic_steps,
-        failed_steps=rolled.failed_steps,
+        motion=done.delivered if keep_motion else None,
+        elastic_steps=done.elastic_steps,
+        failed_steps=done.failed_steps,
     )
 
 
@@ -153,7 +153,16 @@ def recovered_at(contacts: Contacts, asked: Recovered, apex_m: float) -> int | N
     return None
 
 
-def _rolled(ground: Ground, start: Start, number: int, careful: bool) -> tuple[Loop, Roll]:
+def rolled(ground: Ground, start: Start, number: int, careful: bool) -> tuple[Loop, Roll]:
+    """The loop of one trial and what the arm did in it.
+
+    Raises
+    ------
+    GoneBack
+        A step was found bad after the ball had gone on; with `careful` it can't be.
+    LawFault
+        The law can't be made.
+    """
     cell, trial = ground.cell, ground.cell.trial
     assert trial is not None and cell.ball is not None and cell.contact is not None
     centre = ground.centre
@@ -184,10 +193,10 @@ def _rolled(ground: Ground, start: Start, number: int, careful: bool) -> tuple[L
     return loop, roll(cell, ground.arm, ground.limits, loop, start_q, careful)
 
 
-def _ending(ground: Ground, loop: Loop, rolled: Roll) -> Loss:
+def _ending(ground: Ground, loop: Loop, done: Roll) -> Loss:
     """How a trial ended, a ball out of reach told from one that was merely missed."""
-    if rolled.failed_steps:
-        return Loss("solver failed", f"no solver answered in {rolled.failed_steps} steps")
+    if done.failed_steps:
+        return Loss("solver failed", f"no solver answered in {done.failed_steps} steps")
     loss = loop.loss
     if loss is None:
         return Loss("limit", "the arm could no longer keep its limits, or the trial took too long")
@@ -197,17 +206,17 @@ def _ending(ground: Ground, loop: Loop, rolled: Roll) -> Loss:
     return loss
 
 
-def _held_back(ground: Ground, rolled: Roll, since_s: float) -> tuple[str, str]:
+def _held_back(ground: Ground, done: Roll, since_s: float) -> tuple[str, str]:
     """The limit and joint that held most of the last flight's steps back; "" where none did."""
     first = int(since_s / ground.cell.period_s)
-    short = first + np.flatnonzero(rolled.shortfall[first:] > SHORT_M_S)
+    short = first + np.flatnonzero(done.shortfall[first:] > SHORT_M_S)
     if len(short) < SHORT_STEPS:
         return "", ""
-    blames = Blames(ground.cell, ground.arm, rolled)
+    blames = Blames(ground.cell, ground.arm, done)
     gains: Counter[tuple[str, int]] = Counter()
     for step in short[-LOOKED_AT:].tolist():
         for blame in blames.of(step):
-            gains[blame.limit, blame.joint] += blame.gain * rolled.shortfall[step]
+            gains[blame.limit, blame.joint] += blame.gain * done.shortfall[step]
     if not gains:
         return "", ""
     (limit, joint), _ = gains.most_common(1)[0]

@@ -14,7 +14,6 @@ from reach.result import RallyResult
 POSTURES = 6
 SHADES = (0.25, 0.9)  # of the first and last posture, in the map of greys
 HALF_FACE_M = 0.08  # drawn where the paddle gives no size
-EDGE = 0.08  # of the view, left free around it
 UPRIGHT_M = 1e-6  # a strike point nearer to the base's axis than this has no plane with it
 
 
@@ -56,7 +55,6 @@ def _side(axes: Axes, shown: Shown, half_face_m: float) -> None:
 
     rows = np.unique(np.round(np.linspace(0, len(shown.t_s) - 1, POSTURES)).astype(int))
     shades = np.linspace(*SHADES, len(rows))
-    seen = [flat(shown.ball)]
     for place, (row, shade) in enumerate(zip(rows.tolist(), shades.tolist(), strict=True)):
         colour = colormaps[ARM_SHADES](shade)
         links = flat(shown.outline[row])
@@ -67,15 +65,9 @@ def _side(axes: Axes, shown: Shown, half_face_m: float) -> None:
         level = np.array([shown.normal[row, 2], -shown.normal[row] @ along])  # along the face, in the view
         face = links[-1] + half_face_m * np.outer([-1, 1], level)
         axes.plot(*face.T, color=colour, linewidth=3.2, solid_capstyle="butt", zorder=3 + place)
-        seen += [links, face]
     axes.plot(*flat(shown.ball).T, **BALL_STYLE, zorder=12)
     contacts = _at(shown, np.array(shown.contact_s), shown.ball)
     axes.plot(*flat(contacts).T, **{**CONTACT_STYLE, "zorder": 13})
-    places = np.concatenate(seen)
-    places = places[np.isfinite(places).all(axis=1)]
-    low, high = places.min(axis=0), places.max(axis=0)
-    edge = EDGE * float(np.max([*(high - low), 0.05]))
-    axes.set(xlim=(low[0] - edge, high[0] + edge), ylim=(low[1] - edge, high[1] + edge))
     axes.set(xlabel="from the base toward the strike point, m", ylabel="z, m")
     axes.set_aspect("equal", adjustable="datalim")
 

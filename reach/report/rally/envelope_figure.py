@@ -5,10 +5,10 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 
-from reach.cell import Array
 from reach.evidence.rallies import ApexEdge, OffsetEdge, RallyEvidence
 from reach.report.columns import shorten, wrap
 from reach.report.figures import WIDTH_IN, Axes, Figure, Picture, name_all, svg_of
@@ -26,6 +26,7 @@ from reach.result import RallyResult
 PANELS = 8  # bearings at most
 ACROSS = 4  # panels in a row
 NAME_COLUMNS = 34  # of a line above a panel, with so many across
+TITLE_PAD_PT = 9  # above a panel, for triangles at its rim
 ROOM = 0.06  # of the axes' height, free above and below
 EDGE = 0.06  # of the axes' width, free left and right
 
@@ -39,7 +40,7 @@ def some(values: Sequence[float], count: int) -> list[float]:
 
 @dataclass(frozen=True)
 class Frame:
-    """Limits of the axes, mm: the same in every panel."""
+    """Limits of the axes, mm: the same in every panel; what was looked at beyond is drawn at the rim."""
 
     right: float
     low: float
@@ -59,7 +60,7 @@ def draw_envelope(result: RallyResult) -> Picture:
     for axes, bearing in zip(panels, shown, strict=False):
         edges, sides = _mine(evidence.edges, bearing), _sides(evidence.offsets, bearing)
         _panel(axes, evidence, bearing, frame)
-        axes.set_title(_title(bearing, edges, sides, columns), fontsize=8.5)
+        axes.set_title(_title(bearing, edges, sides, columns), fontsize=8.5, pad=TITLE_PAD_PT)
         axes.set(xlim=(-EDGE * frame.right, frame.right * (1 + EDGE)), ylim=(frame.low, frame.high))
     for axes in panels[len(shown) :]:
         axes.set_visible(False)
@@ -79,8 +80,9 @@ def _turns(bearings: list[float]) -> bool:
 
 def _frame(evidence: RallyEvidence) -> Frame:
     points = evidence.points
-    across = [*points.offset_m, *(e.largest_m or 0.0 for e in evidence.offsets)]
-    up = [*points.apex_m, *(x for e in evidence.edges for x in (e.low_m, e.high_m) if x is not None)]
+    across = [*points.offset_m, *(e.largest_m or 0.0 for e in evidence.offsets if not e.open)]
+    ends = [end for e in evidence.edges for end in ((e.low_m, e.low_open), (e.high_m, e.high_open))]
+    up = [*points.apex_m, *(value for value, unbounded in ends if value is not None and not unbounded)]
     low, high = 1000 * float(np.min(up)), 1000 * float(np.max(up))
     span = max(high - low, 0.2 * high, 1.0)
     right = 1000 * float(np.max(across))
@@ -97,8 +99,8 @@ def _panel(axes: Axes, evidence: RallyEvidence, bearing: float, frame: Frame) ->
         if mine.any():
             axes.plot(1000 * points.offset_m[mine], 1000 * points.apex_m[mine], **style, clip_on=False)
     edges, sides = _mine(evidence.edges, bearing), _sides(evidence.offsets, bearing)
-    _apex_line(axes, edges, low=True)
-    _apex_line(axes, edges, low=False)
+    _apex_line(axes, edges, frame, low=True)
+    _apex_line(axes, edges, frame, low=False)
     _offset_line(axes, sides, frame)
 
 
@@ -120,35 +122,27 @@ def _near(one: float, other: float) -> bool:
     return abs(one - other) < 1e-8
 
 
-def _apex_line(axes: Axes, edges: list[ApexEdge], low: bool) -> None:
+def _apex_line(axes: Axes, edges: list[ApexEdge], frame: Frame, low: bool) -> None:
     """Draw the lowest or highest apex over the offsets."""
-    style = LOW_EDGE_STYLE if low else HIGH_EDGE_STYLE
+    ends = [(e.low_m, e.low_open) if low else (e.high_m, e.high_open) for e in edges]
     found = [
-        (1000 * edge.offset_m, 1000 * value, unbounded)
-        for edge in edges
-        for value, unbounded in [(edge.low_m, edge.low_open) if low else (edge.high_m, edge.high_open)]
+        (1000 * edge.offset_m, float(np.clip(1000 * value, frame.low, frame.high)), unbounded)
+        for edge, (value, unbounded) in zip(edges, ends, strict=True)
         if value is not None
     ]
-    if found:
-        axes.plot(
-            [x for x, *_ in found], [y for _, y, _ in found], **style, zorder=4, marker="_", markersize=9
-        )
-        _open(axes, [(x, y) for x, y, unbounded in found if unbounded])
+    _line(axes, found, {**(LOW_EDGE_STYLE if low else HIGH_EDGE_STYLE), "marker": "_"})
 
 
 def _title(bearing: float, edges: list[ApexEdge], sides: list[OffsetEdge], columns: int) -> str:
     """The bearing, and below it what bounds each edge."""
     room = NAME_COLUMNS * ACROSS // columns
-    bounds = {
-        "highest": [
-            limit_of(e.high_limit, e.high_joint) for e in edges if not e.high_open and e.high_m is not None
-        ],
-        "lowest": [
-            limit_of(e.low_limit, e.low_joint) for e in edges if not e.low_open and e.low_m is not None
-        ],
-        "offset": [limit_of(e.limit, e.joint) for e in sides if not e.open],
-    }
-    lines = [f"{word}: {', '.join(dict.fromkeys(names)) or NOTHING}" for word, names in bounds.items()]
+    highest = [(e.high_limit, e.high_joint, e.high_open) for e in edges if e.high_m is not None]
+    lowest = [(e.low_limit, e.low_joint, e.low_open) for e in edges if e.low_m is not None]
+    offset = [(e.limit, e.joint, e.open) for e in sides]
+    lines = [
+        f"{word}: {_bounds(found) or NOTHING}"
+        for word, found in (("highest", highest), ("lowest", lowest), ("offset", offset))
+    ]
     told = [f"bearing {degrees(bearing)}°"]
     for line in lines:
         first, *more = wrap(line, rest="  ", columns=room)
@@ -160,25 +154,26 @@ def _title(bearing: float, edges: list[ApexEdge], sides: list[OffsetEdge], colum
     return "\n".join(told)
 
 
+def _bounds(found: list[tuple[str, str, bool]]) -> str:
+    """What bounds an edge along its way, each once; that it was looked no further where nothing does."""
+    names = [limit_of(limit, joint) for limit, joint, unbounded in found if not unbounded]
+    return ", ".join(dict.fromkeys(names)) or ("not met" if found else "")
+
+
 def _offset_line(axes: Axes, edges: list[OffsetEdge], frame: Frame) -> None:
     """Draw the largest offset over the apexes."""
-    found = [(1000 * e.largest_m, 1000 * e.apex_m, e.open) for e in edges if e.largest_m is not None]
-    if found and (len(found) > 1 or frame.right > 0):
-        axes.plot(
-            [x for x, *_ in found],
-            [y for _, y, _ in found],
-            **SIDE_EDGE_STYLE,
-            zorder=4,
-            marker="|",
-            markersize=9,
-        )
-        _open(axes, [(x, y) for x, y, unbounded in found if unbounded])
+    found = [
+        (min(1000 * edge.largest_m, frame.right * (1 + EDGE)), 1000 * edge.apex_m, edge.open)
+        for edge in edges
+        if edge.largest_m is not None
+    ]
+    _line(axes, found, {**SIDE_EDGE_STYLE, "marker": "|"})
 
 
-def _open(axes: Axes, places: list[tuple[float, float]]) -> None:
-    if places:
-        axes.plot(*_columns(places), **OPEN_STYLE)
-
-
-def _columns(places: list[tuple[float, float]]) -> Array:
-    return np.array(places).T
+def _line(axes: Axes, found: list[tuple[float, float, bool]], style: dict[str, Any]) -> None:
+    """Draw an edge through places, with a triangle where it was looked no further."""
+    if found:
+        axes.plot([x for x, *_ in found], [y for _, y, _ in found], **style, zorder=4, markersize=9)
+    beyond = [(x, y) for x, y, unbounded in found if unbounded]
+    if beyond:
+        axes.plot(*np.array(beyond).T, **OPEN_STYLE, clip_on=False)

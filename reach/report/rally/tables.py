@@ -65,10 +65,10 @@ def range_row(found: Range) -> Row:
     crossed = "; none held at all bearings" if found.crossed else ""
     return (
         offset,
-        millimetres(low.low_m),
+        _edge(low.low_m, low.low_open, "≤"),
         degrees(low.bearing_rad),
         bounded_by(low.low_limit, low.low_joint, low.low_open),
-        millimetres(high.high_m),
+        _edge(high.high_m, high.high_open, "≥"),
         degrees(high.bearing_rad),
         bounded_by(high.high_limit, high.high_joint, high.high_open) + crossed,
     )
@@ -120,7 +120,7 @@ def more_bounce_row(bounce: Bounce) -> Row:
         number(bounce.approach_m_s, 3),
         _window(bounce.fastest_m_s2),
         number(bounce.least_m_s2, 3),
-        "any" if math.isinf(bounce.tolerated_m_s2) else f"±{number(bounce.tolerated_m_s2, 3)}",
+        _tolerated(bounce.tolerated_m_s2),
         millimetres(bounce.tilt_drift_m_per_deg),
         millimetres(bounce.place_apex_error_m),
         millimetres(bounce.face_left_m),
@@ -142,9 +142,9 @@ def edge_row(edge: ApexEdge) -> Row:
     return (
         millimetres(edge.offset_m),
         degrees(edge.bearing_rad),
-        "none" if edge.low_m is None else millimetres(edge.low_m),
+        _edge(edge.low_m, edge.low_open, "≤"),
         bounded_by(edge.low_limit, edge.low_joint, edge.low_open),
-        "none" if edge.high_m is None else millimetres(edge.high_m),
+        _edge(edge.high_m, edge.high_open, "≥"),
         bounded_by(edge.high_limit, edge.high_joint, edge.high_open),
     )
 
@@ -220,10 +220,20 @@ def _where(points: RallyPoints, row: int) -> Row:
     )
 
 
+def _edge(value_m: float | None, unbounded: bool, sign: str) -> str:
+    """An edge in mm, with a sign where it was looked no further."""
+    if value_m is None:
+        return "none"
+    return f"{sign} {millimetres(value_m)}" if unbounded else millimetres(value_m)
+
+
 def _offset(edge: OffsetEdge) -> tuple[str, str, str]:
     """The largest offset, its bearing and what bounds it."""
-    largest = "none" if edge.largest_m is None else millimetres(edge.largest_m)
-    return largest, degrees(edge.bearing_rad), bounded_by(edge.limit, edge.joint, edge.open)
+    return (
+        _edge(edge.largest_m, edge.open, "≥"),
+        degrees(edge.bearing_rad),
+        bounded_by(edge.limit, edge.joint, edge.open),
+    )
 
 
 def _empty(edges: tuple[ApexEdge, ...]) -> tuple[str, str]:
@@ -237,6 +247,11 @@ def _empty(edges: tuple[ApexEdge, ...]) -> tuple[str, str]:
 def _in_unit(value: float, kind: str) -> str:
     put = {"time": milliseconds, "angle": degrees, "length": millimetres}.get(kind)
     return number(value, 3) if put is None else put(value)
+
+
+def _tolerated(size: float) -> str:
+    """An acceleration either way; any where the strike window is an instant."""
+    return "any" if math.isinf(size) else f"±{number(size, 3)}" if math.isfinite(size) else NOTHING
 
 
 def _window(window: tuple[float, float]) -> str:

@@ -145,7 +145,8 @@ def _recovered(offsets: tuple[OffsetEdge, ...]) -> str:
 
 
 def _offset_told(edge: OffsetEdge) -> str:
-    largest = "none" if edge.largest_m is None else f"{millimetres(edge.largest_m)} mm"
+    sign = "≥ " if edge.open else ""
+    largest = "none" if edge.largest_m is None else f"{sign}{millimetres(edge.largest_m)} mm"
     stop = bounded_by(edge.limit, edge.joint, edge.open)
     return f"{largest} at apex {millimetres(edge.apex_m)} mm (bearing {degrees(edge.bearing_rad)}°, bounded by {stop})"
 

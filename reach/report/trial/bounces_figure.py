@@ -81,9 +81,8 @@ def _lines(axes: Axes, runs: list[Run], values: list[Array], top: float) -> bool
         told.add(run.recovered)
         axes.plot(bounce, line, **RUN_STYLES[run.recovered], label=label, zorder=2 + (not run.recovered))
         if not run.recovered:
-            beyond = np.flatnonzero(line > top)
-            last = int(beyond[0]) if len(beyond) else len(line) - 1
-            axes.plot(bounce[last], min(float(line[last]), top), **LOST_STYLE)
+            end = float(np.clip(line[-1], 0.0, top))
+            axes.plot(bounce[-1], end, **LOST_STYLE)
         highest = max(highest, float(np.nanmax(line, initial=0.0)))
     axes.set_ylim(0, min(ROOM * highest, top) if highest else top)
     axes.spines["bottom"].set_color(INK)

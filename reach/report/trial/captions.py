@@ -31,7 +31,7 @@ def of_bounces(result: TrialResult, drawn: int, clipped: bool) -> Caption:
     if drawn < len(result.evidence.runs):
         text += f" {drawn} of {len(result.evidence.runs)} trials, those not recovered first."
     if clipped:
-        text += " A cross at the top: it goes on above."
+        text += " A cross at the top: it ends above."
     return Caption("Apex and offset over the bounces", text, f"Recovered: {recovered(result)}.")
 
 

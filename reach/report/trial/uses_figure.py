@@ -49,7 +49,7 @@ def _bars(axes: Axes, uses: list[Use]) -> None:
             )
         axes.annotate(
             f"! {number(value, 3)} %" if broken else f"{number(value, 3)} %",
-            (min(value, TOP), row),
+            (min(max(value, 100.0), TOP), row),
             xytext=(5, 0),
             textcoords="offset points",
             va="center",

@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
-import math
 from typing import Any
 
-from reach.cell import Recovered, Sensor, Trial
+import numpy as np
+
+from reach.cell import Array, Recovered, Sensor, Trial
 from reach.evidence.record import Use
 from reach.evidence.trials import Run, TrialEvidence
 from reach.report.trial import numbers
@@ -32,7 +33,16 @@ ENDINGS_HEADER = ("outcome", "#trials", "#recovered", "what it is")
 LOSSES_HEADER = ("limit", "joint", "#lost trials")
 USES_HEADER = ("limit", "joint", "#peak", "#limit", "unit", "#use %", "#at s")
 RUNS_HEADER = (
-    *("#start", "#off-centre mm", "#at °", "#lateral m/s", "#bounces", "#recovered at", "#oscillation mm"),
+    *(
+        "#start",
+        "#off-centre mm",
+        "#at °",
+        "#lateral m/s",
+        "#toward °",
+        "#bounces",
+        "#recovered at",
+        "#oscillation mm",
+    ),
     *("outcome", "held back by"),
 )
 MEANINGS = {
@@ -117,8 +127,9 @@ def sensor(asked: Sensor) -> str:
 
 def start_text(place: int, run: Run) -> str:
     """Return which start a trial is of, counted from 1."""
-    away, bearing, speed = _start(run)
-    return f"start {place}: {away} mm off at {bearing}°, lateral {speed} m/s"
+    away, bearing, speed, toward = _start(run)
+    at = "at the centre" if bearing == NOTHING else f"{away} mm off at {bearing}°"
+    return f"start {place}: {at}, lateral {speed} m/s" + ("" if toward == NOTHING else f" toward {toward}°")
 
 
 def ending_row(ending: Ending) -> Row:
@@ -170,14 +181,17 @@ def broken(evidence: TrialEvidence) -> str:
     return f"{', '.join(names)}; in {plural(count, 'trial')}" if names else ""
 
 
-def _start(run: Run) -> tuple[str, str, str]:
-    away = math.hypot(*run.offset.tolist())
-    bearing = math.atan2(run.offset[1], run.offset[0]) % (2 * math.pi)
-    return (
-        millimetres(away),
-        degrees(bearing) if away else NOTHING,
-        number(math.hypot(*run.lateral.tolist()), 3),
-    )
+def _start(run: Run) -> tuple[str, str, str, str]:
+    """How far off, at which bearing, how fast sideways, and toward which bearing."""
+    away, at = _polar(run.offset)
+    speed, toward = _polar(run.lateral)
+    return millimetres(away), at, number(speed, 3), toward
+
+
+def _polar(vector: Array) -> tuple[float, str]:
+    """Size of a vector (2,) and its bearing in degrees, a dash for none."""
+    size = float(np.hypot(*vector))
+    return size, degrees(float(np.arctan2(vector[1], vector[0]) % (2 * np.pi))) if size else NOTHING
 
 
 def _ball(evidence: TrialEvidence) -> str:
