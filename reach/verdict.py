@@ -121,13 +121,20 @@ class Whole(Protocol):
     """What evidence of many items says of the whole: limit kinds, what nobody stated, what was left out."""
 
     @property
-    def kinds(self) -> tuple[str, ...]: ...
+    def kinds(self) -> tuple[str, ...]:
+        """Names of the limit kinds."""
+
     @property
-    def unknown(self) -> tuple[tuple[str, str | None], ...]: ...
+    def unknown(self) -> tuple[tuple[str, str | None], ...]:
+        """(limit, joint) pairs that nobody stated."""
+
     @property
-    def not_checked(self) -> tuple[str, ...]: ...
+    def not_checked(self) -> tuple[str, ...]:
+        """Names of what was not checked at all."""
+
     @property
-    def stopped(self) -> bool: ...
+    def stopped(self) -> bool:
+        """Whether the run was stopped before all items were looked at."""
 
 
 def judge_share(

@@ -28,8 +28,13 @@ from reach.trial.laws.mirror import DEEPEST_M, FARTHEST_M, STEEPEST
 from reach.trial.laws.planning import AGAIN_S, FROZEN_S, HOLD_S, MOVED_M, Planning, path
 
 
+def trial_of(law: str, apex_m: float, **gains: float) -> Trial:
+    """A trial on a paddle that does what it is told, which may be told to follow twice as fast as an arm."""
+    return Trial(law=law, apex_m=apex_m, gains=tuple({"follow_per_s": 20.0, **gains}.items()))
+
+
 def mirror(apex_m: float, **gains: float) -> Trial:
-    return Trial(law="mirror", apex_m=apex_m, gains=tuple(gains.items()))
+    return trial_of("mirror", apex_m, **gains)
 
 
 def speed(apex_m: float) -> float:
@@ -52,7 +57,7 @@ def test_every_law_strikes_as_the_apex_asks(
     law: str, apex: float, v: float, period: float, strikes: tuple[float, ...]
 ) -> None:
     for e, strike in zip((0.7, 0.8, 0.8756), strikes, strict=True):
-        *_, before, last = rally(Trial(law=law, apex_m=apex), Contact(e), *leaving(apex), 6)
+        *_, before, last = rally(trial_of(law, apex), Contact(e), *leaving(apex), 6)
         assert -last.ball_in[2] == pytest.approx(v, abs=3e-4)
         assert last.paddle_m_s[2] == pytest.approx(strike, abs=3e-4)
         assert last.t_s - before.t_s == pytest.approx(period, abs=1e-4)
@@ -211,7 +216,7 @@ def test_the_mirror_law_reaches_its_apex_in_air() -> None:
 
 @pytest.mark.parametrize("law", LAWS)
 def test_a_late_sensor_is_made_up_for(law: str) -> None:
-    trial = Trial(law=law, apex_m=0.3)
+    trial = trial_of(law, 0.3)
     prompt, late = (rally(trial, Contact(0.8), *leaving(0.3, 0.05, 1.0), 10, late=n) for n in (0, 20))
     for one, other in zip(prompt, late, strict=True):
         assert other.off_m == pytest.approx(one.off_m, abs=5e-4)

@@ -10,7 +10,6 @@ from pathlib import Path
 from typing import Any
 
 import pytest
-from cli_case import write_case
 from rally_case import Own, write_gantry
 from survey_case import die
 from test_cli import Done, call, document, files_in, spawn
@@ -23,6 +22,7 @@ COLUMNS = [
     *("face_tilt_deg", "flight_s", "cycle_s", "margin_s", "verdict", "basis", "limit", "joint"),
 ]  # as the interface has them
 RALLY = "[rally]\ncentre_m = [0, 0, 0.5]\n"
+ONE = RALLY + "apexes_m = [0.2]\n"
 TWO = RALLY + "apexes_m = [0.2, 0.4]\n"
 
 
@@ -32,9 +32,9 @@ def few_bearings(monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(envelope_module, "TURNS", 1)
 
 
-def written(folder: Path, rally: str = TWO, own: Own = None) -> Path:
-    """The gantry's cell with a rally on disk, few bearings and no margins to speak of."""
-    return write_gantry(folder, own, rally if "bearings" in rally or "[rally]" not in rally else rally + "bearings_deg = [0]\n")
+def written(folder: Path, rally: str = ONE, own: Own = None, rest: str = "") -> Path:
+    """The gantry's cell with a rally of one bearing on disk; `rest` are further tables."""
+    return write_gantry(folder, own, rally + "bearings_deg = [0]\n" + rest)
 
 
 def rows_of(folder: Path) -> list[dict[str, str]]:
@@ -150,7 +150,7 @@ def test_the_same_bytes_for_any_number_of_workers_and_the_same_seed(
 
 def test_a_paddle_that_loses_nothing_and_no_window_is_still_json(tmp_path: Path) -> None:
     """What would be infinite there must not end up in a file."""
-    cell = written(tmp_path, TWO + "[accept]\nstrike_window_s = 0.0\n")
+    cell = written(tmp_path, rest="[accept]\nstrike_window_s = 0.0\n")
     text = cell.read_text(encoding="utf-8").replace("restitution = 0.7", "restitution = 1.0")
     cell.write_text(text, encoding="utf-8")
     done = call("rally", cell, "--out", tmp_path / "o", *QUICK)
@@ -186,7 +186,7 @@ def test_a_bad_rally_is_a_line_and_nothing_is_written(rally: str, words: list[st
 
 
 def test_a_cell_without_a_rally(tmp_path: Path) -> None:
-    cell = write_case(tmp_path)
+    cell = write_gantry(tmp_path)
     before = files_in(tmp_path)
     done = call("rally", cell, "--out", tmp_path / "o")
     assert (done.code, done.out) == (2, "")

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import replace
 
 import numpy as np
@@ -18,8 +17,7 @@ from reach.rally.centres import grid, weighed
 from reach.rally.court import Court, Kit, Point, points_of
 from reach.rally.edges import APEXES_M, OFFSETS_M, apex_edges, offset_edges
 from reach.rally.envelope import envelope
-from reach.rally.exchange import Disturbance
-from reach.rally.spread import LARGEST, Errors, feasible, interval, largest_errors, passes
+from reach.rally.spread import KINDS, Errors, Kind, feasible, interval, largest_errors, passes
 from reach.verdict import DELIVERABLE
 
 G = 9.80665  # m/s²
@@ -153,9 +151,6 @@ def test_of_no_cases_nothing_is_known() -> None:
     assert interval(0, 0) == (0.0, 1.0)
 
 
-POINT = Point(0.1, 0.04, 0.0)
-
-
 def test_the_same_seed_the_same_share(seven: Court) -> None:
     court = again(seven, velocity_spread_m_s=0.3, contact_offset_spread_m=0.01, cases=12)
     point = Point(0.1, 0.0, 0.0)
@@ -182,31 +177,20 @@ def errors(seven: Court) -> Errors:
     return largest_errors(seven, [Point(0.3, 0.04, 0.0)], np.array([0]))
 
 
-@pytest.mark.parametrize(
-    ("name", "make"),
-    [
-        ("tilt", lambda size, x, y: Disturbance(tilt_rad=(size * x, size * y))),
-        ("contact offset", lambda size, x, y: Disturbance(place_m=(size * x, size * y))),
-        ("restitution", lambda size, x, y: Disturbance(restitution=size * (1 if x + y > 0 else -1))),
-    ],
-)
+@pytest.mark.parametrize(("name", "kind"), list(zip(Errors._fields[1:], KINDS, strict=True)))
 def test_up_to_the_largest_error_a_point_passes_and_just_above_it_does_not(
-    name: str, make: Callable[[float, float, float], Disturbance], seven: Court, errors: Errors
+    name: str, kind: Kind, seven: Court, errors: Errors
 ) -> None:
-    size = float(
-        {"tilt": errors.tilt_rad, "contact offset": errors.contact_offset_m, "restitution": errors.restitution}[
-            name
-        ][0]
-    )
-    assert 0 < size < LARGEST[name]
-    ways = [(1, 0), (0, 1), (-1, 0), (0, -1)]
+    size = float(getattr(errors, name)[0])
+    assert 0 < size < kind.most
+    point = Point(0.3, 0.04, 0.0)
+    ways = [(1, 0), (-1, 0)] if name == "restitution" else [(1, 0), (0, 1), (-1, 0), (0, -1)]
 
     def all_pass(by: float) -> bool:
-        return bool(passes(seven, Point(0.3, 0.04, 0.0), 0, [make(by, *way) for way in ways]).all())
+        return bool(passes(seven, [(point, kind.make(by, *way)) for way in ways], 0).all())
 
-    step = LARGEST[name] / 2**7
     assert all_pass(size) and all_pass(size / 2)
-    assert not all_pass(size + step)
+    assert not all_pass(size + kind.most / 2**7)
 
 
 def test_the_largest_contact_offset_stays_on_the_face(errors: Errors, seven: Court) -> None:
@@ -239,7 +223,7 @@ def test_an_error_is_the_same_for_every_bearing_on_a_gantry_alike_all_around() -
 
 def test_the_answer_names_known_limits_and_stays_below_its_edges(monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(envelope_module, "TURNS", 2)
-    cell = on_gantry((0.05, 0.2), offsets_m=(0.0, 0.05), bearings_rad=(0.0,), latency_s=0.01)
+    cell = on_gantry((0.1,), offsets_m=(0.0, 0.05), bearings_rad=(0.0,), latency_s=0.01)
     result = answer(cell, with_advice=False)
     evidence = result.evidence
     points = evidence.points
@@ -249,21 +233,9 @@ def test_the_answer_names_known_limits_and_stays_below_its_edges(monkeypatch: py
         assert edge.low_m is not None and edge.high_m is not None
         mine = (points.offset_m == edge.offset_m) & (points.verdict == DELIVERABLE)
         assert (points.apex_m[mine] >= edge.low_m * (1 - BESIDE)).all()
-    assert len(evidence.offsets) == 2 * 2  # apexes, bearings around
-    assert [bounce.apex_m for bounce in evidence.bounces] == [0.05, 0.2]
+    assert [edge.bearing_rad for edge in evidence.offsets] == [0.0, np.pi]
+    assert [bounce.apex_m for bounce in evidence.bounces] == [0.1]
     assert evidence.shown is not None and evidence.shown.offset_m == 0.05
-
-
-def test_workers_and_repeats_change_nothing(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(envelope_module, "TURNS", 1)
-    monkeypatch.setattr(envelope_module, "CHUNK", 1)
-    cell = with_contact(
-        on_gantry((0.05, 0.2), offsets_m=(0.0, 0.05), bearings_rad=(0.0,), velocity_spread_m_s=0.4, cases=6)
-    )
-    one, two = envelope(cell, 1, 3), envelope(cell, 2, 3)
-    for name in ("verdict", "cycle_s", "feasible_share", "largest_tilt_rad", "q"):
-        np.testing.assert_array_equal(getattr(one.points, name), getattr(two.points, name))
-    assert one.edges == two.edges and one.offsets == two.offsets and one.bounces == two.bounces
 
 
 # What is not right yet

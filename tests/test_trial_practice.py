@@ -195,7 +195,9 @@ def test_a_paddle_that_stays_on_the_axis_misses_the_ball_that_it_sent_aside() ->
     assert "goes down outside the paddle's edge" in run.text
 
 
-@pytest.mark.xfail(strict=True, reason="steps short right after the hit are blamed for a miss half a flight later")
+@pytest.mark.xfail(
+    strict=True, reason="steps short right after the hit are blamed for a miss half a flight later"
+)
 def test_an_arm_that_could_have_caught_it_is_not_blamed_for_a_law_that_stays_on_the_axis() -> None:
     assert bout(tried(gantry()), StrongAtCentre, share=0.6).outcome == "missed past the edge"
 

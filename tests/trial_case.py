@@ -210,7 +210,7 @@ class Still:
 def watched(law: type, seen: list[Seen]) -> type:
     """The law, that notes all it sees."""
 
-    class Watched(law):  # type: ignore[misc]
+    class Watched(law):
         def twist(self, sight: Seen) -> Twist:
             seen.append(sight)
             answer: Twist = super().twist(sight)

@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 from collections import Counter
+from dataclasses import dataclass
 
 import numpy as np
 
-from reach.cell import Cell, Vec3
+from reach.cell import Array, Cell, Vec3
 from reach.errors import Fault, InputError
 from reach.evidence.points import Texts
 from reach.evidence.record import Reason
@@ -15,7 +16,6 @@ from reach.limits import LIMITS
 from reach.limits.build import build_limits, not_checked, unknown_limits
 from reach.rally.spread import interval
 from reach.result import TrialResult
-from reach.strike.stroke import DUTY
 from reach.survey.rounds import Progress, Rounds
 from reach.trial.bout import Ground, play
 from reach.trial.laws import gains_of, law_class
@@ -55,39 +55,11 @@ def answer(
     gains = gains_of(law_class(trial, cell.path), trial, cell.path)
     centre, starts = centre_of(cell), starts_of(trial.starts, seed)
     posture = ready(cell, centre, seed)
-    runs: list[Run] = []
-    stopped, flight = False, float("nan")
-    if posture is not None:
-        given = (cell, centre, tuple(posture.tolist()), seed)
-        with worker_pool(min(workers, len(starts)), _begin, *given) as pool:
-            _begin(*given)
-            flight = _kept["trial"].flight_s
-            run = Rounds(pool, progress)
-            tasks = [(start, k, k < MOTIONS_KEPT) for k, start in enumerate(starts)]
-            runs = [one for one in run.over("trial, starts", _play, tasks) if one is not None]
-            stopped = run.stopped
-        _kept.clear()
-    good = sum(one.recovered for one in runs)
-    low, high = interval(good, len(runs))
-    limits = build_limits(cell)
-    evidence = TrialEvidence(
-        runs=tuple(runs),
-        asked=len(starts),
-        centre=centre,
-        apex_m=trial.apex_m,
-        flight_s=flight,
-        ready=posture,
-        law=trial.law,
-        gains=tuple(sorted(gains.items())),
-        recovered_share=good / len(runs) if runs else 0.0,
-        low=low,
-        high=high,
-        kinds=tuple(name for name in LIMITS if name != DUTY),
-        unknown=tuple(pair for pair in unknown_limits(limits) if pair[0] != DUTY),
-        not_checked=(DUTY, *(name for name in not_checked(cell, limits) if name != DUTY)),
-        stopped=stopped,
-        blocked="" if posture is not None else NO_POSTURE,
-    )
+    if posture is None:
+        tried = Tried((), float("nan"), False)
+    else:
+        tried = _tried(cell, centre, posture, starts, workers, seed, progress)
+    evidence = gathered(cell, centre, posture, len(starts), gains, tried)
     verdict = judge_trials(verdicts(cell, evidence), trial.required_share, cell.accept, evidence)
     return TrialResult(
         cell=cell,
@@ -100,6 +72,64 @@ def answer(
         headroom_text="not looked for",
         notes=_notes(cell),
         evidence=evidence,
+    )
+
+
+@dataclass(frozen=True, eq=False)
+class Tried:
+    """Runs of the starts that were tried, the wanted flight's time in s, whether the rest was left out."""
+
+    runs: tuple[Run, ...]
+    flight_s: float
+    stopped: bool
+
+
+def _tried(
+    cell: Cell,
+    centre: Vec3,
+    posture: Array,
+    starts: list[Start],
+    workers: int,
+    seed: int,
+    progress: Progress | None,
+) -> Tried:
+    """Every start from the ready posture (n,); an interrupt leaves what is done."""
+    given = (cell, centre, tuple(posture.tolist()), seed)
+    with worker_pool(min(workers, len(starts)), _begin, *given) as pool:
+        _begin(*given)
+        flight_s = _kept["trial"].flight_s
+        run = Rounds(pool, progress)
+        tasks = [(start, k, k < MOTIONS_KEPT) for k, start in enumerate(starts)]
+        runs = [one for one in run.over("trial, starts", _play, tasks) if one is not None]
+    _kept.clear()
+    return Tried(tuple(runs), flight_s, run.stopped)
+
+
+def gathered(
+    cell: Cell, centre: Vec3, posture: Array | None, asked: int, gains: dict[str, float], tried: Tried
+) -> TrialEvidence:
+    """The evidence of trials."""
+    trial, limits = cell.trial, build_limits(cell)
+    assert trial is not None
+    good, count = sum(one.recovered for one in tried.runs), len(tried.runs)
+    low, high = interval(good, count)
+    return TrialEvidence(
+        runs=tried.runs,
+        asked=asked,
+        centre=centre,
+        apex_m=trial.apex_m,
+        flight_s=tried.flight_s,
+        ready=posture,
+        law=trial.law,
+        gains=tuple(sorted(gains.items())),
+        recovered_share=good / count if count else 0.0,
+        low=low,
+        high=high,
+        kinds=tuple(LIMITS),
+        unknown=unknown_limits(limits),
+        not_checked=not_checked(cell, limits),
+        stopped=tried.stopped,
+        blocked="" if posture is not None else NO_POSTURE,
     )
 
 

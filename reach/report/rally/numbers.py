@@ -144,9 +144,11 @@ def borne(points: RallyPoints, field: str) -> tuple[float, float]:
 
 
 def stable_by_itself(bounce: Bounce) -> bool:
-    """Whether the paddle's acceleration at impact lies in the window in which the bounce needs no feedback."""
-    low, high = bounce.window_m_s2
-    return low < bounce.impact_m_s2 < high
+    """Whether the paddle's acceleration at impact lies in the window in which the bounce needs no feedback.
+
+    Near zero, up to half way to the band in which an error shrinks fastest, it hardly shrinks: that counts as none.
+    """
+    return bounce.window_m_s2[0] < bounce.impact_m_s2 < bounce.fastest_m_s2[1] / 2
 
 
 def could_be_stable(bounce: Bounce) -> bool:
