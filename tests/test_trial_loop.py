@@ -1,4 +1,4 @@
-"""The closed loop: every contact of a trial found again by the chain and by hand, edges, spin, air, sensor, the way back."""
+"""The closed loop: every contact of a trial found again by hand; edges, spin, air, sensor, the way back."""
 
 from __future__ import annotations
 
@@ -341,17 +341,19 @@ def late(law: type, latency_s: float) -> Run:
 
 
 def test_latency_makes_it_worse_for_a_law_that_takes_sights_for_new() -> None:
-    now, soon, later = (late(Trusting, s) for s in (0.0, 0.01, 0.02))
-    assert now.recovered and not later.recovered
-    off = [np.abs(run.contacts.apex_m - 0.2).max() for run in (now, soon, later)]
-    assert off[0] < 1e-3 and off[1] > 5 * off[0] and off[2] > 1.5 * off[1]
+    """An old sight of a falling ball is too high, so the paddle is low, meets it late, and it rises less."""
+    runs = [late(Trusting, s) for s in (0.0, 0.02, 0.04)]
+    low = [float((0.2 - run.contacts.apex_m[-5:]).mean()) for run in runs]
+    assert abs(low[0]) < 1e-4 and low[1] > 0.01 and low[2] > 2 * low[1]
+    assert [run.recovered for run in runs] == [True, True, False]
+    assert runs[0].oscillation_m < runs[1].oscillation_m < runs[2].oscillation_m
 
 
 def test_latency_hardly_matters_to_a_law_that_works_out_where_the_ball_is() -> None:
     """All but the first moments of a flight, when the last sight is from before the contact."""
-    now, later = (late(Leaning, s).contacts for s in (0.0, 0.02))
-    np.testing.assert_allclose(later.ball, now.ball, atol=2e-3)
-    np.testing.assert_allclose(later.apex_m, now.apex_m, atol=2e-3)
+    now, later = (late(Leaning, s).contacts for s in (0.0, 0.04))
+    np.testing.assert_allclose(later.ball, now.ball, atol=2e-4)
+    np.testing.assert_allclose(later.apex_m, now.apex_m, atol=2e-4)
 
 
 # A step found bad afterwards

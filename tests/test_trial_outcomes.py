@@ -1,4 +1,4 @@
-"""What becomes of a trial: laws that fail, limits that lose the ball, what counts as recovered, and the verdict on all."""
+"""What becomes of a trial: laws that fail, limits that lose the ball, what counts as recovered, the verdict."""
 
 from __future__ import annotations
 
@@ -218,7 +218,7 @@ def test_a_level_face_that_comes_late_still_meets_the_ball() -> None:
 
 
 @pytest.mark.xfail(
-    strict=True, reason="past the leaning face's plane, 7 cm above the paddle, the ball counts as missed"
+    strict=True, reason="past the leaning face's plane, 7 cm above the paddle, it counts as missed"
 )
 def test_a_leaning_face_that_comes_as_late_meets_it_too() -> None:
     assert swept(0.35).bounces == 1

@@ -87,7 +87,7 @@ class Sine(Hand):
 @pytest.mark.parametrize("e", [0.5, 0.7, 0.8756])
 def test_copying_the_balls_speed_one_to_one_runs_away(e: float) -> None:
     """u = |v|, so the ball leaves at (1 + 2e) v."""
-    run = bout(tried(gantry(), {"restitution": e}), Copy, share=1.0)
+    run = bout(tried(gantry(0.004), {"restitution": e}), Copy, share=1.0)
     c = run.contacts
     np.testing.assert_allclose(c.paddle_m_s, -c.ball_in[:, 2], rtol=1e-4)
     np.testing.assert_allclose(c.ball_out[:, 2], -(1 + 2 * e) * c.ball_in[:, 2], rtol=1e-4)
@@ -97,7 +97,7 @@ def test_copying_the_balls_speed_one_to_one_runs_away(e: float) -> None:
 
 def test_too_small_a_gain_lets_the_ball_die() -> None:
     """A share k gives a speed of e + (1 + e) k times the last, below 1 for k below (1 - e)/(1 + e)."""
-    run = bout(tried(gantry()), Copy, share=0.1)
+    run = bout(tried(gantry(0.004)), Copy, share=0.1)
     kept = E_OF_GANTRY + (1 + E_OF_GANTRY) * 0.1
     rises = [0.2 * kept ** (2 * k) for k in range(1, run.bounces + 1)]
     np.testing.assert_allclose(run.contacts.apex_m, rises, atol=5e-4)
@@ -106,7 +106,7 @@ def test_too_small_a_gain_lets_the_ball_die() -> None:
 
 
 def test_the_share_between_holds_the_ball_without_any_feedback_of_energy() -> None:
-    run = bout(tried(gantry(), bounces=10), Copy, share=(1 - E_OF_GANTRY) / (1 + E_OF_GANTRY))
+    run = bout(tried(gantry(0.004), bounces=10), Copy, share=(1 - E_OF_GANTRY) / (1 + E_OF_GANTRY))
     assert run.outcome == "held"
     np.testing.assert_allclose(run.contacts.apex_m, 0.2, atol=1e-3)
 
@@ -121,7 +121,7 @@ def across(run: Run) -> Array:
 
 def test_a_tilt_that_ignores_the_lateral_speed_overshoots_as_far_as_the_ball_was_off() -> None:
     """Offsets go as x'' = (2 - p) x' - x, which has no damping: the ball swings with the amplitude it began with."""
-    run = bout(tried(gantry(), bounces=16), Leaning, (0.03, 0.0), position=0.5, speed=0.0)
+    run = bout(tried(gantry(0.004), bounces=16), Leaning, (0.03, 0.0), position=0.5, speed=0.0)
     x = across(run)
     peaks = [abs(b) for a, b, c in zip(x, x[1:], x[2:], strict=False) if abs(b) > max(abs(a), abs(c))]
     assert len(peaks) >= 3 and min(peaks) > 0.03
@@ -137,7 +137,7 @@ def test_a_tilt_that_ignores_the_lateral_speed_overshoots_as_far_as_the_ball_was
 def test_less_tilt_while_the_ball_comes_back_mends_it() -> None:
     start = (0.03, 0.0)
     same, less = (
-        across(bout(tried(gantry(), bounces=16), Leaning, start, position=0.5, speed=0.0, back=back))
+        across(bout(tried(gantry(0.004), bounces=16), Leaning, start, position=0.5, speed=0.0, back=back))
         for back in (1.0, 0.1)
     )
     assert np.abs(same[-8:]).max() > 0.03
@@ -145,20 +145,20 @@ def test_less_tilt_while_the_ball_comes_back_mends_it() -> None:
 
 
 def test_leaning_against_the_lateral_speed_stops_the_ball_at_the_axis() -> None:
-    run = bout(tried(gantry(), bounces=16), Leaning, (0.03, 0.0), position=0.5, speed=0.8)
+    run = bout(tried(gantry(0.004), bounces=16), Leaning, (0.03, 0.0), position=0.5, speed=0.8)
     x = across(run)
     assert x.min() > -0.1 * 0.03 and np.abs(x[-6:]).max() < 2e-4
 
 
 def test_no_tilt_near_the_axis_leaves_a_small_lasting_oscillation() -> None:
-    cell = tried(gantry(), bounces=40)
+    cell = tried(gantry(0.004), bounces=32)
     given = {"position": 0.5, "speed": 0.4}
     free, banded = (bout(cell, DeadBand, (0.05, 0.0), band=band, **given) for band in (0.0, 0.01))
     assert free.outcome == banded.outcome == "held"
     assert 0.4 * 0.01 < banded.oscillation_m < 1.5 * 0.01
     assert free.oscillation_m < 0.1 * banded.oscillation_m
     later = np.abs(across(banded))
-    assert later[-10:].max() > 0.5 * later[10:20].max()  # it does not go away
+    assert later[-10:].max() > 0.5 * later[12:22].max()  # it does not go away
     size = np.sqrt(np.mean(banded.contacts.offset_m[-20:] ** 2))  # then_for = 20
     assert math.isclose(banded.oscillation_m, size, rel_tol=1e-12)
 
@@ -185,12 +185,12 @@ def test_a_strong_tilt_with_a_fast_hit_sends_the_ball_aside_faster_than_up_to_be
 
 
 def test_the_same_ball_is_caught_by_an_arm_without_that_limit() -> None:
-    run = bout(tried(gantry()), Strong, share=0.6)
+    run = bout(tried(gantry(0.004)), Strong, share=0.6)
     assert run.bounces >= 2 and run.limit == ""
 
 
 def test_a_paddle_that_stays_on_the_axis_misses_the_ball_that_it_sent_aside() -> None:
-    run = bout(tried(gantry()), StrongAtCentre, share=0.6)
+    run = bout(tried(gantry(0.004)), StrongAtCentre, share=0.6)
     assert run.bounces == 1 and not run.recovered
     assert "goes down outside the paddle's edge" in run.text
 
@@ -199,7 +199,7 @@ def test_a_paddle_that_stays_on_the_axis_misses_the_ball_that_it_sent_aside() ->
     strict=True, reason="steps short right after the hit are blamed for a miss half a flight later"
 )
 def test_an_arm_that_could_have_caught_it_is_not_blamed_for_a_law_that_stays_on_the_axis() -> None:
-    assert bout(tried(gantry()), StrongAtCentre, share=0.6).outcome == "missed past the edge"
+    assert bout(tried(gantry(0.004)), StrongAtCentre, share=0.6).outcome == "missed past the edge"
 
 
 # The passive window: −2g(1+e²)/(1+e)² < a < 0. S. Schaal, C. G. Atkeson, D. Sternad, "One-handed juggling: a dynamical

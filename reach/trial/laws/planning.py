@@ -27,6 +27,8 @@ LEAST_UP = 0.01  # square of the normal's part along z, on a path that overshoot
 STEEPEST = 0.5  # sine of the tilt, 30 degrees; beyond, a strike is not one that keeps a ball up
 FARTHEST_M = 1.0  # aside of the centre: beyond, no arm is sent after the ball
 
+SAME_S = 1e-7  # sights taken no farther apart are one
+
 AXES = range(5)  # x, y, z of the strike point, then x and y of the normal
 Numbers = list[float]
 
@@ -126,7 +128,8 @@ class Planning(Law):
 
     A ball that never comes down through the centre's height, or too far off, leaves the paddle at rest at the
     centre. After a contact that the sensor has not shown yet, the ball is where the strike was to send it. The ball
-    is taken to have no spin, and a sight is believed as it is: noise is not filtered.
+    is taken to have no spin. What is believed of its flight is the mean of all sights since the last contact, each
+    brought to the same instant: a flight is fixed by its start, so noise falls with the root of their number.
 
     Gains
     -----
@@ -152,6 +155,8 @@ class Planning(Law):
         self.plan: Plan | None = None
         self.ball: Twist | None = None  # where the ball is to be by what was known when the plan was made
         self.contacts, self.struck_s = 0, -1.0
+        self.mean: Twist | None = None  # of the sights since the last contact, as of now
+        self.sights, self.taken_s = 0, -1.0  # how many, and when the last one was taken
 
     def twist(self, seen: Seen) -> Twist:
         """Velocity of the reference at the period's end, and a gain on what is left to it then."""
@@ -184,15 +189,40 @@ class Planning(Law):
         if struck:
             self.contacts, self.struck_s = seen.contacts, t
             self.ball = (*plan.place, *plan.ball_out) if plan and plan.kind == "strike" else None
+            self.mean, self.sights = None, 0
         elif self.ball is not None:
             self.ball = self._onward(self.ball)
-        ball = self.ball
-        if t - seen.ball_age_s >= self.struck_s:
-            ball = ball_at(seen, 0.0, self.gravity, self.drag)
+        ball = self._believed(seen) or self.ball
         if plan is None or struck or t >= plan.due_s or self._moved(plan, ball, t):
             plan = self.plan = self._planned(seen, ball)
             self.ball = ball
         return plan
+
+    def _believed(self, seen: Seen) -> Twist | None:
+        """The ball now, by all sights since the last contact; None before the first one."""
+        if self.mean is not None:
+            self.mean = self._onward(self.mean)
+        taken_s = seen.t_s - seen.ball_age_s
+        if taken_s < self.struck_s or taken_s - self.taken_s < SAME_S:
+            return self.mean
+        self.taken_s = taken_s
+        self.sights += 1
+        sight = ball_at(seen, 0.0, self.gravity, self.drag)
+        if self.mean is None:
+            self.mean = sight
+        else:
+            x, y, z, vx, vy, vz = self.mean
+            a, b, c, d, e, f = sight
+            w = 1.0 / self.sights
+            self.mean = (
+                x + w * (a - x),
+                y + w * (b - y),
+                z + w * (c - z),
+                vx + w * (d - vx),
+                vy + w * (e - vy),
+                vz + w * (f - vz),
+            )
+        return self.mean
 
     def _onward(self, ball: Twist) -> Twist:
         """The ball one period on; midpoint rule."""
