@@ -167,6 +167,7 @@ def try_law(
     workers: int = 1,
     seed: int = 0,
     allow_code: bool = False,
+    advice: bool = True,
     progress: Callable[[str], None] | None = None,
 ) -> TrialResult:
     """Say whether a law of control, on a cell's arm, keeps the ball up, and from which starts.
@@ -181,6 +182,8 @@ def try_law(
         Of random starts, the sensor's noise and the random starts of inverse kinematics.
     allow_code : bool
         Whether a Python file named by trial.law may run. It can do whatever you can.
+    advice : bool
+        False leaves out what would help where starts are lost.
 
     Returns
     -------
@@ -193,7 +196,7 @@ def try_law(
         Where the cell has no [trial] table, or the law may not run, can't be loaded or has no such gain.
     """
     _has(cell, "trial", cell.trial)
-    return trial_answer(cell, workers, allow_code, progress, seed)
+    return trial_answer(cell, workers, allow_code, advice, progress, seed)
 
 
 def _has(cell: Cell, table: str, found: object) -> None:

@@ -20,7 +20,7 @@ class Asked(NamedTuple):
 
     verb: str
     told: str
-    left_out: str = ""
+    left_out: str
     code: bool = False
 
 
@@ -40,7 +40,9 @@ ASKED = {
         "how large is the usable juggling envelope: apex heights, offsets, bearings? what bounds it?",
         "headroom and remedies",
     ),
-    "trial": Asked("try_law", "does this law, on this arm, keep this ball up? from which starts?", code=True),
+    "trial": Asked(
+        "try_law", "does this law, on this arm, keep this ball up? from which starts?", "remedies", code=True
+    ),
 }
 
 EXITS = """exit codes:
@@ -103,8 +105,7 @@ def _parser() -> argparse.ArgumentParser:
             name, help=ask.told, epilog=EXITS, formatter_class=argparse.RawDescriptionHelpFormatter
         )
         command.add_argument("cell", metavar="CELL", help=f"the cell file (TOML), with a [{name}] table")
-        if ask.left_out:
-            command.add_argument("--no-advice", action="store_true", help=f"leave out {ask.left_out}")
+        command.add_argument("--no-advice", action="store_true", help=f"leave out {ask.left_out}")
         if ask.code:
             command.add_argument(
                 "--allow-code", action="store_true", help="run the Python file that trial.law names"
@@ -176,13 +177,12 @@ def _answered(options: argparse.Namespace) -> int:
     command, ask = options.command, ASKED[options.command]
     cell = load_cell(options.cell, need=command)
     check_targets(Path(options.out), options.junit, [options.cell, *(item.path for item in cell.inputs)])
-    choices = {"advice": not options.no_advice} if ask.left_out else {}
-    if ask.code:
-        choices["allow_code"] = options.allow_code
+    choices = {"allow_code": options.allow_code} if ask.code else {}
     result = getattr(reach, ask.verb)(
         cell,
         workers=options.workers,
         seed=options.seed,
+        advice=not options.no_advice,
         progress=_progress(options.quiet),
         **choices,
     )

@@ -11,9 +11,11 @@ from typing import Any
 
 import numpy as np
 from builders import NO_MARGINS, robot_cell
+from scipy.interpolate import BPoly
+from scipy.optimize import linprog
 
 from reach.cell import Array, Cell, Contact, Rally
-from reach.evidence.rallies import RallyPoints
+from reach.evidence.rallies import Knots, RallyPoints
 from reach.formats import load_cell
 from reach.rally.court import Court, Kit, Point, points_of
 from reach.rally.envelope import best_stance
@@ -37,6 +39,14 @@ drag_coefficient = 0.0
 restitution = 0.7
 """
 CENTRE = {"bench7": (0.6, 0.0, 0.52), "bench6": (0.5, 0.0, 0.85), "gantry": (0.0, 0.0, 0.5)}
+
+G = 9.80665  # m/s²
+E = 0.7  # of the face below
+LIMIT_NAMES = {
+    *("position", "velocity", "acceleration", "jerk", "torque", "torque rate", "tool speed"),
+    *("reach", "singularity", "cycle time"),
+}
+STEPS = 80  # of the linear programme
 
 # A gantry with a wrist whose axes meet in the strike point: the slides alone move it. Invented.
 Own = dict[str, dict[str, Any]] | None
@@ -188,3 +198,75 @@ def turned_z(angle_rad: float, vector: Array) -> Array:
     """A vector (3,) turned about the vertical."""
     c, s = np.cos(angle_rad), np.sin(angle_rad)
     return np.array([c * vector[0] - s * vector[1], s * vector[0] + c * vector[1], vector[2]])
+
+
+def ballistic(apex: float, offset: float, bearing: float) -> tuple[list[Array], list[Array], list[float]]:
+    """Ball places from the centre, normals and speeds of out, return, stop and steady strike, by hand; one bounce."""
+    fall, time = np.sqrt(2 * G * apex), 2 * np.sqrt(2 * apex / G)
+    up, away = np.array([0.0, 0.0, 1.0]), turned_z(bearing, np.array([1.0, 0.0, 0.0]))
+    home = -offset / time * away
+    ways = [(-fall * up, fall * up), (-fall * up, home + fall * up), (home - fall * up, fall * up)]
+    ways.append(ways[0])
+    if offset == 0:
+        ways = ways[:1] * 2
+    places = [k * away * offset for k in ((0, 1, 0, 0) if offset else (0, 0))]
+    normals, speeds = [], []
+    for before, after in ways:
+        normal = (after - before) / np.linalg.norm(after - before)
+        normals.append(normal)
+        speeds.append(float((after @ normal + E * (before @ normal)) / (1 + E)))
+    return places, normals, speeds
+
+
+def path_of(knots: Knots) -> BPoly:
+    """The quintics by another library."""
+    return BPoly.from_derivatives(knots.t_s, np.stack([knots.q, knots.v, knots.a], axis=1))
+
+
+def ways_by_programme(v0: float, v1: float, time_s: float, v: Array, a: Array) -> tuple[float, float] | None:
+    """Least and largest way of a joint in a time, its acceleration constant in each of STEPS; None: no way at all."""
+    step = time_s / STEPS
+    gained = np.tril(np.ones((STEPS, STEPS))) * step  # speed after each step, by the accelerations
+    before = np.vstack([np.zeros(STEPS), gained[:-1]])
+    way = ((before + gained) / 2 * step).sum(axis=0)
+    rows = np.vstack([gained, -gained])
+    room = np.concatenate([np.full(STEPS, v[1] - v0), np.full(STEPS, v0 - v[0])])
+    ends = []
+    for side in (1.0, -1.0):
+        done = linprog(
+            side * way,
+            A_ub=rows,
+            b_ub=room + 1e-12,
+            A_eq=gained[-1:],
+            b_eq=[v1 - v0],
+            bounds=[tuple(a)] * STEPS,
+            method="highs",
+        )
+        if done.status != 0:
+            return None
+        ends.append(v0 * time_s + side * done.fun)
+    return ends[0], ends[1]
+
+
+def too_late(court: Court, point: Point) -> bool:
+    """Whether some joint can't make some leg in any of the stances, by the linear programme."""
+    setting, hair = court.kit.setting, 1e-4  # m or rad: what the steps may leave a way off
+    velocity, acceleration = setting.limits["velocity"], setting.limits["acceleration"]
+    for k, player in enumerate(court.players):
+        (exchange,) = court.exchanges([point], k)
+        assert exchange is not None
+        played = player.play([exchange], 0.0)
+        late = False
+        for leg, flight in zip(played.leg.tolist(), played.flight_s.tolist(), strict=True):
+            if not played.met[leg : leg + 2].all():
+                continue
+            for i in range(setting.arm.n):
+                v0, v1 = played.v[leg, i], played.v[leg + 1, i]
+                v = np.array([velocity.kept_lo[i], velocity.kept_hi[i]])
+                a = np.array([acceleration.kept_lo[i], acceleration.kept_hi[i]])
+                found = ways_by_programme(v0, v1, flight, v, a)
+                way = played.q[leg + 1, i] - played.q[leg, i]
+                late |= found is None or not found[0] - hair <= way <= found[1] + hair
+        if not late:
+            return False
+    return True

@@ -12,7 +12,7 @@ from typing import Any
 import pytest
 from rally_case import Own, write_gantry
 from survey_case import die
-from test_cli import Done, call, document, files_in, spawn
+from test_cli import Done, call, document, files_in
 
 import reach.rally.envelope as envelope_module
 
@@ -87,7 +87,9 @@ def test_a_row_a_point(delivered: tuple[Path, Done]) -> None:
     assert places == [(0.2, 0.0), (0.2, 0.05), (0.4, 0.0), (0.4, 0.05)]
     for row in rows:
         assert (row["verdict"], row["basis"]) == ("deliverable", "demonstrated")
-        assert float(row["flight_s"]) - float(row["cycle_s"]) == pytest.approx(float(row["margin_s"]), abs=1e-9)
+        assert float(row["flight_s"]) - float(row["cycle_s"]) == pytest.approx(
+            float(row["margin_s"]), abs=1e-9
+        )
 
 
 def test_progress_goes_to_standard_error_with_the_time_left(delivered: tuple[Path, Done]) -> None:
@@ -104,11 +106,11 @@ def test_junit_parses(delivered: tuple[Path, Done]) -> None:
 
 def test_not_deliverable_and_json_alone_on_standard_output(tmp_path: Path) -> None:
     cell = written(tmp_path, own={"z": {"velocity": 0.2}})
-    done = spawn("rally", cell, "--json", *QUICK, cwd=tmp_path)
+    done = call("rally", cell, "--json", "--out", tmp_path / "o", *QUICK)
     assert done.code == 1, done.err
     told = json.loads(done.out, parse_constant=lambda word: pytest.fail(f"{word} is no JSON"))
     assert (told["schema"], told["verdict"]) == ("strikecheck/rally/1", "not deliverable")
-    assert told == document(tmp_path / "out" / "rally")
+    assert told == document(tmp_path / "o")
     assert (told["reasons"][0]["limit"], told["reasons"][0]["joint"]) == ("velocity", "z")
     assert "Traceback" not in done.err
 
@@ -137,15 +139,17 @@ def test_the_same_bytes_for_any_number_of_workers_and_the_same_seed(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
     monkeypatch.setattr(envelope_module, "CHUNK", 1)
-    cell = written(tmp_path, TWO + "velocity_spread_m_s = 0.3\ncases = 6\nlatency_s = 0.01\n")
+    cell = written(
+        tmp_path, ONE + "offsets_m = [0, 0.03]\nvelocity_spread_m_s = 0.3\ncases = 4\nlatency_s = 0.01\n"
+    )
     found = []
-    for name, workers in (("a", "1"), ("b", "2"), ("c", "1")):
+    for name, workers in (("a", "1"), ("b", "2")):
         done = call(
             *("rally", cell, "--out", tmp_path / name, "--seed", "3", "--workers", workers, "--no-advice")
         )
         assert done.code == 0, done.err
         found.append([(tmp_path / name / file).read_bytes() for file in ("verdict.json", "rally.csv")])
-    assert found[0] == found[1] == found[2]
+    assert found[0] == found[1]
 
 
 def test_a_paddle_that_loses_nothing_and_no_window_is_still_json(tmp_path: Path) -> None:
@@ -208,9 +212,7 @@ def test_a_lost_worker_writes_nothing(tmp_path: Path, monkeypatch: pytest.Monkey
 
 
 @pytest.mark.parametrize("part", ["_score", "_judge", "_apexes", "_offsets", "_off"])
-def test_an_interrupt_writes_what_is_done(
-    part: str, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
-) -> None:
+def test_an_interrupt_writes_what_is_done(part: str, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     real = getattr(envelope_module, part)
     calls: list[int] = []
 

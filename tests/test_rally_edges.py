@@ -1,4 +1,4 @@
-"""Edges of an envelope are true edges, centres count what they hold, and shares and largest errors are what they say."""
+"""Edges are true edges, centres count what they hold, shares and largest errors are what they say."""
 
 from __future__ import annotations
 
@@ -6,9 +6,19 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from rally_case import again, court_of, gantry_cell, on_bench, on_gantry, points_at, rallied, with_contact
+from rally_case import (
+    LIMIT_NAMES,
+    G,
+    again,
+    court_of,
+    gantry_cell,
+    on_bench,
+    on_gantry,
+    points_at,
+    rallied,
+    with_contact,
+)
 from scipy.stats import binomtest
-from test_rally_points import LIMIT_NAMES
 
 import reach.rally.envelope as envelope_module
 from reach.evidence.rallies import ApexEdge, OffsetEdge
@@ -20,7 +30,6 @@ from reach.rally.envelope import envelope
 from reach.rally.spread import KINDS, Errors, Kind, feasible, interval, largest_errors, passes
 from reach.verdict import DELIVERABLE
 
-G = 9.80665  # m/s²
 BESIDE = 0.004  # of an edge: outside of it, further than the bisection leaves
 LINES = [(0.0, 0.0), (0.04, 0.0), (0.04, np.pi / 2)]
 ROUNDS = [(0.1, 0.0), (0.1, np.pi / 2), (0.3, 0.0)]
@@ -121,7 +130,9 @@ def test_the_grid_of_centres_goes_x_slowest_to_the_far_corner() -> None:
     assert cell.rally is not None
     places = grid(cell.rally)
     assert len(places) == 4 * 3 * 1
-    np.testing.assert_allclose(places[:4], [(0, -0.1, 0.4), (0, 0, 0.4), (0, 0.1, 0.4), (0.1, -0.1, 0.4)], atol=1e-12)
+    np.testing.assert_allclose(
+        places[:4], [(0, -0.1, 0.4), (0, 0, 0.4), (0, 0.1, 0.4), (0.1, -0.1, 0.4)], atol=1e-12
+    )
     np.testing.assert_allclose(places[-1], (0.3, 0.1, 0.4), atol=1e-12)
 
 
@@ -227,7 +238,11 @@ def test_the_answer_names_known_limits_and_stays_below_its_edges(monkeypatch: py
     result = answer(cell, with_advice=False)
     evidence = result.evidence
     points = evidence.points
-    names = {*points.limit, *(edge.low_limit for edge in evidence.edges), *(e.limit for e in evidence.offsets)}
+    names = {
+        *points.limit,
+        *(edge.low_limit for edge in evidence.edges),
+        *(e.limit for e in evidence.offsets),
+    }
     assert names - {""} <= LIMIT_NAMES
     for edge in evidence.edges:
         assert edge.low_m is not None and edge.high_m is not None
@@ -241,7 +256,9 @@ def test_the_answer_names_known_limits_and_stays_below_its_edges(monkeypatch: py
 # What is not right yet
 
 
-@pytest.mark.xfail(strict=True, reason="a point that was not looked at counts as one that the cycle time bounds")
+@pytest.mark.xfail(
+    strict=True, reason="a point that was not looked at counts as one that the cycle time bounds"
+)
 def test_a_stopped_run_blames_no_limit(monkeypatch: pytest.MonkeyPatch) -> None:
     real = envelope_module._judge
     calls: list[int] = []

@@ -192,7 +192,7 @@ def test_a_paddle_that_gives_is_struck_harder() -> None:
 
 
 def test_a_face_that_grips_by_the_shells_formula() -> None:
-    """A hollow ball without spin keeps 0.6 of its slip where the face grips (Cross 2002, shell), with enough friction."""
+    """A hollow ball without spin keeps 0.6 of its slip where the face grips (Cross 2002)."""
     made = ballistics(friction=5.0)
     exchange = made.exchange(0.2, 0.05, 0.0)
     for strike in exchange.strikes:
@@ -206,7 +206,9 @@ def test_the_same_height_by_a_paddle_at_rest_if_nothing_is_lost() -> None:
     exchange = ballistics(restitution=1.0).exchange(0.2, 0.05, 0.0)
     follow(exchange, e=1.0)
     assert exchange.strikes[0].speed_m_s == pytest.approx(0.0, abs=1e-12)
-    assert exchange.strikes[1].speed_m_s > 0 > exchange.strikes[2].speed_m_s  # gives way where it stops the ball
+    assert (
+        exchange.strikes[1].speed_m_s > 0 > exchange.strikes[2].speed_m_s
+    )  # gives way where it stops the ball
 
 
 # Disturbances
@@ -247,8 +249,7 @@ def test_an_error_of_restitution_changes_the_apex_as_it_says() -> None:
     # To first order the paddle's speed would have to change by du/u = −2 de/(1 − e²).
     de = 1e-5
     speeds = [
-        ballistics(restitution=E + side * de).exchange(0.3, 0.0, 0.0).strikes[0].speed_m_s
-        for side in (-1, 1)
+        ballistics(restitution=E + side * de).exchange(0.3, 0.0, 0.0).strikes[0].speed_m_s for side in (-1, 1)
     ]
     assert (speeds[1] - speeds[0]) / (2 * de) / u == pytest.approx(-2 / (1 - E**2), rel=1e-6)
 
@@ -334,9 +335,7 @@ def test_the_least_acceleration_is_the_windows_end_or_a_true_edge(bounce: Bounce
 
 def test_a_hit_changes_momentum_by_what_the_ball_takes(seven: Court, bounce: Bounce) -> None:
     mass, jump, held = impulse(seven, 0, (bounce,))
-    _, _, jacobian = (
-        np.asarray(x) for x in seven.kit.setting.arm.jacobian(seven.stances[0])
-    )
+    _, _, jacobian = (np.asarray(x) for x in seven.kit.setting.arm.jacobian(seven.stances[0]))
     inverse = np.linalg.inv(seven.kit.setting.arm.inertia(seven.stances[0]))
     along = jacobian[2]
     assert mass == pytest.approx(1 / (along @ inverse @ along), rel=1e-9)

@@ -1,4 +1,4 @@
-"""Points of an envelope: what is demonstrated is flown and measured again, what is refused is refused by another bound."""
+"""Points of an envelope: the demonstrated are flown and measured again, the refused are refused by another bound."""
 
 from __future__ import annotations
 
@@ -12,36 +12,33 @@ from rally_case import (
     BALL_TOML,
     CENTRE,
     LEVEL_TOML,
+    LIMIT_NAMES,
+    E,
+    G,
     again,
+    ballistic,
     bench,
     court_of,
     gantry_cell,
     on_bench,
     on_gantry,
+    path_of,
     points_at,
     rallied,
     row,
-    turned_z,
+    too_late,
     with_contact,
 )
-from scipy.interpolate import BPoly
-from test_rally_cycle import ways_by_programme
 
 import reach
-from reach.cell import Array, Tool
-from reach.evidence.rallies import Knots, RallyPoints
+import reach.rally.envelope as envelope_module
+from reach.cell import Array, Margins, Tool
+from reach.evidence.rallies import RallyPoints
 from reach.rally.court import Court, Point, points_of
 from reach.strike.sides import upper
 from reach.verdict import DELIVERABLE, NOT_DELIVERABLE, UNDECIDED
 
-G = 9.80665  # m/s²
-E = 0.7
-LIMIT_NAMES = {
-    *("position", "velocity", "acceleration", "jerk", "torque", "torque rate", "tool speed"),
-    *("reach", "singularity", "cycle time"),
-}
-BY_TIME, BY_SPEED = "cycle time", {"velocity", "acceleration", "position", "tool speed"}
-HAIR = 1e-4  # m or rad: what the programme's steps may leave a way off
+BY_TIME = "cycle time"
 
 
 @pytest.fixture(scope="module")
@@ -62,27 +59,10 @@ def gantry() -> Court:
     return court_of(on_gantry((0.01, 0.05, 0.2), offsets_m=(0.0, 0.03), bearings_rad=(0.4,)))
 
 
-def ballistic(apex: float, offset: float, bearing: float) -> tuple[list[Array], list[Array], list[float]]:
-    """Ball places from the centre, normals and speeds of out, return, stop and steady strike, by hand; one bounce."""
-    fall, time = np.sqrt(2 * G * apex), 2 * np.sqrt(2 * apex / G)
-    up, away = np.array([0.0, 0.0, 1.0]), turned_z(bearing, np.array([1.0, 0.0, 0.0]))
-    home = -offset / time * away
-    ways = [(-fall * up, fall * up), (-fall * up, home + fall * up), (home - fall * up, fall * up)]
-    ways.append(ways[0])
-    if offset == 0:
-        ways = ways[:1] * 2
-    places = [k * away * offset for k in ((0, 1, 0, 0) if offset else (0, 0))]
-    normals, speeds = [], []
-    for before, after in ways:
-        normal = (after - before) / np.linalg.norm(after - before)
-        normals.append(normal)
-        speeds.append(float((after @ normal + E * (before @ normal)) / (1 + E)))
-    return places, normals, speeds
-
-
-def path_of(knots: Knots) -> BPoly:
-    """The quintics by another library."""
-    return BPoly.from_derivatives(knots.t_s, np.stack([knots.q, knots.v, knots.a], axis=1))
+@pytest.fixture(autouse=True)
+def few_bearings(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Largest offsets at the cell's own bearings alone: not looked at here."""
+    monkeypatch.setattr(envelope_module, "TURNS", 1)
 
 
 # Demonstrated
@@ -149,30 +129,6 @@ def test_a_deliverable_point_is_in_time_and_below_its_bound(points: RallyPoints)
 
 
 # Refused
-
-
-def too_late(court: Court, point: Point, time_off_s: float = 0.0) -> bool:
-    """Whether some joint can't make some leg in any of the stances, by the linear programme."""
-    setting = court.kit.setting
-    velocity, acceleration = setting.limits["velocity"], setting.limits["acceleration"]
-    for k, player in enumerate(court.players):
-        (exchange,) = court.exchanges([point], k)
-        assert exchange is not None
-        played = player.play([exchange], 0.0)
-        late = False
-        for leg, flight in zip(played.leg.tolist(), played.flight_s.tolist(), strict=True):
-            if not played.met[leg : leg + 2].all():
-                continue
-            for i in range(setting.arm.n):
-                v0, v1 = played.v[leg, i], played.v[leg + 1, i]
-                v = np.array([velocity.kept_lo[i], velocity.kept_hi[i]])
-                a = np.array([acceleration.kept_lo[i], acceleration.kept_hi[i]])
-                found = ways_by_programme(v0, v1, flight - time_off_s, v, a)
-                way = played.q[leg + 1, i] - played.q[leg, i]
-                late |= found is None or not found[0] - HAIR <= way <= found[1] + HAIR
-        if not late:
-            return False
-    return True
 
 
 def test_a_point_refused_by_time_is_refused_by_the_programme(seven: Court, points: RallyPoints) -> None:
@@ -319,12 +275,36 @@ def test_two_joints_in_a_plane_hold_no_level_face_away_from_their_one_posture() 
 # What is not right yet
 
 
-@pytest.mark.xfail(strict=True, reason="the arm turns as soon as it may, though stopping longer may be what is legal")
+@pytest.mark.xfail(
+    strict=True, reason="the bound takes the latency off whole, though the arm may turn back meanwhile"
+)
+def test_what_a_late_eye_delivers_an_early_one_is_not_refused() -> None:
+    """Who sees the ball after 66 ms can wait 2 ms more."""
+    court = court_of(on_gantry((0.03,), offsets_m=(0.01,), bearings_rad=(0.0,)))
+    early, late = (str(points_at(again(court, latency_s=latency)).verdict[0]) for latency in (0.066, 0.068))
+    assert late == DELIVERABLE
+    assert early != NOT_DELIVERABLE
+
+
+@pytest.mark.xfail(strict=True, reason="one moment of turning is tried, the earliest")
 def test_what_a_late_eye_delivers_an_early_one_does_too() -> None:
     court = court_of(on_gantry((0.03,)))
     made = court.exchanges([Point(0.03, 0.01, 0.0)], 0)
     early, late = (court.delivered(made, 0, latency)[0][0] for latency in (0.066, 0.070))
-    assert late and early
+    assert late
+    assert early
+
+
+@pytest.mark.xfail(
+    strict=True, reason="the refusal with margins is taken over where the one without is not looked at"
+)
+def test_without_margins_says_what_a_run_without_them_says() -> None:
+    """0.343 m/s kept of 0.35, 0.3495 asked: with no margin no bound refuses it."""
+    cell = on_gantry((0.2,), own={"z": {"velocity": 0.35}})
+    with_share = reach.size_rally(replace(cell, margins=Margins()), advice=False)
+    without = reach.size_rally(cell, advice=False)
+    assert with_share.verdict.verdict == NOT_DELIVERABLE
+    assert with_share.without_margins == without.verdict.verdict
 
 
 def _two_slides() -> Court:
@@ -333,7 +313,9 @@ def _two_slides() -> Court:
     return court_of(rallied(gantry_cell(own, lift=True, window_s=0.0), CENTRE["gantry"]))
 
 
-@pytest.mark.xfail(strict=True, reason="only the velocities chosen are compared, not all that make the strike")
+@pytest.mark.xfail(
+    strict=True, reason="only the velocities chosen are compared, not all that make the strike"
+)
 def test_two_slides_that_share_a_strike_are_not_refused_for_how_it_was_shared() -> None:
     """Shared as their accelerations are, each slide is back after 4 u / (a + b), less than the flight."""
     court = _two_slides()
@@ -351,7 +333,9 @@ def test_a_slide_slower_than_asked_by_less_than_is_accepted_is_not_refused() -> 
     assert given["verdict"] != NOT_DELIVERABLE
 
 
-@pytest.mark.xfail(strict=True, reason="a paddle that turns within the accepted tilt passes the bound of a still one")
+@pytest.mark.xfail(
+    strict=True, reason="a paddle that turns within the accepted tilt passes the bound of a still one"
+)
 def test_no_demonstrated_strike_passes_its_own_bound() -> None:
     """Two links with the face level in one posture alone: 0.35 m/s demonstrated, the bound says 0."""
     cell = robot_cell(

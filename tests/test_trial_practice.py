@@ -199,7 +199,7 @@ def test_a_paddle_that_stays_on_the_axis_misses_the_ball_that_it_sent_aside() ->
     strict=True, reason="steps short right after the hit are blamed for a miss half a flight later"
 )
 def test_an_arm_that_could_have_caught_it_is_not_blamed_for_a_law_that_stays_on_the_axis() -> None:
-    assert bout(tried(gantry(0.004)), StrongAtCentre, share=0.6).outcome == "missed past the edge"
+    assert bout(tried(gantry()), StrongAtCentre, share=0.6).outcome == "missed past the edge"
 
 
 # The passive window: −2g(1+e²)/(1+e)² < a < 0. S. Schaal, C. G. Atkeson, D. Sternad, "One-handed juggling: a dynamical

@@ -10,17 +10,19 @@ import numpy as np
 from reach.cell import Array, Cell, Vec3
 from reach.errors import Fault, InputError
 from reach.evidence.points import Texts
-from reach.evidence.record import Reason
+from reach.evidence.record import Reason, Remedy
 from reach.evidence.trials import Run, TrialEvidence
 from reach.limits import LIMITS
 from reach.limits.build import build_limits, not_checked, unknown_limits
 from reach.rally.spread import interval
 from reach.result import TrialResult
 from reach.survey.rounds import Progress, Rounds
+from reach.trial.advice import recovers, remedies
 from reach.trial.bout import Ground, play
 from reach.trial.laws import gains_of, law_class
 from reach.trial.ready import centre_of, ready
 from reach.trial.starts import Start, starts_of
+from reach.variants import without_margins
 from reach.verdict import DELIVERABLE, NOT_DELIVERABLE, UNDECIDED, Verdict, judge_trials, unknown_required
 from reach.workers import worker_pool
 
@@ -34,13 +36,19 @@ _kept: dict[str, Ground] = {}  # the Ground of this process
 
 
 def answer(
-    cell: Cell, workers: int = 1, allow_code: bool = False, progress: Progress | None = None, seed: int = 0
+    cell: Cell,
+    workers: int = 1,
+    allow_code: bool = False,
+    with_advice: bool = True,
+    progress: Progress | None = None,
+    seed: int = 0,
 ) -> TrialResult:
     """Try a cell's law from every start.
 
     Parameters
     ----------
     allow_code : whether the user's Python file may run
+    with_advice : also try what would help, where starts are lost
     seed : of random starts, noise and postures
 
     Raises
@@ -61,16 +69,22 @@ def answer(
         tried = _tried(cell, centre, posture, starts, workers, seed, progress)
     evidence = gathered(cell, centre, posture, len(starts), gains, tried)
     verdict = judge_trials(verdicts(cell, evidence), trial.required_share, cell.accept, evidence)
+    helps = Advice(verdict.verdict, (), ())
+    if verdict.verdict != DELIVERABLE and tried.runs and not tried.stopped:
+        try:
+            helps = _advice(cell, evidence, starts, workers, seed, with_advice, progress)
+        except KeyboardInterrupt:  # what was found of the starts stays
+            helps = Advice(UNDECIDED, (), ())
     return TrialResult(
         cell=cell,
         verdict=verdict,
-        without_margins=verdict.verdict,
+        without_margins=helps.without_margins,
         reasons=reasons(evidence, verdict),
         needs=(),
-        remedies=(),
+        remedies=helps.remedies,
         headroom_share=None,
-        headroom_text="not looked for",
-        notes=_notes(cell),
+        headroom_text="a trial has none: ask rally",
+        notes=_notes(cell, helps),
         evidence=evidence,
     )
 
@@ -82,6 +96,46 @@ class Tried:
     runs: tuple[Run, ...]
     flight_s: float
     stopped: bool
+
+
+@dataclass(frozen=True)
+class Advice:
+    """How the law stands with the margins at zero, what would help, and what was tried in vain (in words)."""
+
+    without_margins: str
+    remedies: tuple[Remedy, ...]
+    in_vain: tuple[str, ...]
+
+
+def _advice(
+    cell: Cell,
+    evidence: TrialEvidence,
+    starts: list[Start],
+    workers: int,
+    seed: int,
+    with_remedies: bool,
+    progress: Progress | None,
+) -> Advice:
+    """Lost starts tried again, with the margins at zero and with changes.
+
+    A start that is recovered stays so without margins: its motion keeps them.
+    """
+    assert cell.trial is not None and evidence.ready is not None
+    lost = [k for k, one in enumerate(evidence.runs) if not one.recovered]
+    words = verdicts(cell, evidence)
+    with worker_pool(workers) as pool:
+        run = Rounds(pool, progress)
+        place = evidence.centre, tuple(evidence.ready.tolist()), seed
+        bare = without_margins(cell)
+        if bare.margins != cell.margins:
+            tasks = [(bare, *place, starts[k], k) for k in lost]
+            for k, good in zip(lost, run.over("trial, without margins", recovers, tasks), strict=True):
+                words[k] = DELIVERABLE if good else words[k]
+        found, in_vain = remedies(cell, evidence, starts, run, seed) if with_remedies else ((), ())
+    if run.stopped:
+        raise KeyboardInterrupt
+    verdict = judge_trials(words, cell.trial.required_share, cell.accept, evidence)
+    return Advice(verdict.verdict, found, in_vain)
 
 
 def _tried(
@@ -177,7 +231,7 @@ def reasons(evidence: TrialEvidence, verdict: Verdict) -> tuple[Reason, ...]:
     return tuple(found)
 
 
-def _notes(cell: Cell) -> tuple[str, ...]:
+def _notes(cell: Cell, helps: Advice) -> tuple[str, ...]:
     trial, contact = cell.trial, cell.contact
     assert trial is not None and contact is not None and cell.ball is not None
     found = [
@@ -192,6 +246,8 @@ def _notes(cell: Cell) -> tuple[str, ...]:
         found.append("the paddle does not give at a hit, and the joints do not jump")
     if trial.law_file is not None:
         found.append("the law is a Python file of yours: what it did beside answering is not known")
+    if helps.in_vain:
+        found.append(f"tried without gain: {'; '.join(helps.in_vain)}")
     return tuple(found)
 
 
