@@ -243,8 +243,7 @@ def test_an_apex_of_a_centimetre(gantry: Court) -> None:
 
 def test_one_bearing_and_the_centre_alone() -> None:
     points = points_at(court_of(on_gantry((0.2, 0.3), offsets_m=(0.0,), bearings_rad=(2.0,))))
-    assert len(points.verdict) == 2 and points.offset_m.tolist() == [0.0, 0.0]
-    assert points.bearing_rad.tolist() == [2.0, 2.0] and (points.face_tilt_rad == 0).all()
+    assert points.offset_m.tolist() == [0.0, 0.0] and points.bearing_rad.tolist() == [2.0, 2.0]
 
 
 def test_two_bounces_return_with_half_the_tilt() -> None:
@@ -307,19 +306,12 @@ def test_without_margins_says_what_a_run_without_them_says() -> None:
     assert with_share.without_margins == without.verdict.verdict
 
 
-def _two_slides() -> Court:
-    """A gantry with a second vertical slide, a quarter as quick."""
-    own = {"z": {"acceleration": 3.06}, "lift": {"acceleration": 0.765}}
-    return court_of(rallied(gantry_cell(own, lift=True, window_s=0.0), CENTRE["gantry"]))
-
-
-@pytest.mark.xfail(
-    strict=True, reason="only the velocities chosen are compared, not all that make the strike"
-)
+@pytest.mark.xfail(strict=True, reason="only the velocities chosen are compared")
 def test_two_slides_that_share_a_strike_are_not_refused_for_how_it_was_shared() -> None:
     """Shared as their accelerations are, each slide is back after 4 u / (a + b), less than the flight."""
-    court = _two_slides()
-    given = row(points_at(court), 0)
+    own = {"z": {"acceleration": 3.06}, "lift": {"acceleration": 0.765}}
+    cell = rallied(gantry_cell(own, lift=True, window_s=0.0), CENTRE["gantry"])
+    given = row(points_at(court_of(cell)), 0)
     assert 4 * given["paddle_speed_m_s"] / (3.06 + 0.765) < 0.91 * given["flight_s"]
     assert given["verdict"] != NOT_DELIVERABLE
 

@@ -133,28 +133,16 @@ def test_a_centre_out_of_reach(tmp_path: Path) -> None:
     done = call("trial", path, "--out", tmp_path / "o", *ONE)
     assert done.code == 1
     told = document(tmp_path / "o")
-    assert told["verdict"] == "not deliverable" and told["reasons"][0]["limit"] == "reach"
+    assert told["verdict"] == "not deliverable" and [one["limit"] for one in told["reasons"]] == ["reach"]
     header, *rows = (tmp_path / "o" / "trial.csv").read_text(encoding="utf-8").splitlines()
     assert header.startswith("start,") and rows == []
-
-
-def test_half_of_the_starts_may_be_enough(tmp_path: Path) -> None:
-    """A start 0.6 m off along y, on a slide that does 0.4 m/s, is lost; one on the axis is not."""
-    starts = "starts = { offsets_m = [0.0, 0.6], bearings_deg = [90] }\nrequired_share = "
-    for share, code in (("0.5", 0), ("0.6", 1)):
-        path = cell(tmp_path, own={"y": {"velocity": 0.4}})
-        text = path.read_text(encoding="utf-8")
-        path.write_text(text[: text.index("starts =")] + starts + share + "\n", encoding="utf-8")
-        done = call("trial", path, "--out", tmp_path / "o", *ONE)
-        assert done.code == code, done.err
-        assert document(tmp_path / "o")["recovered_share"] == 0.5
 
 
 def test_a_seed_makes_the_same_bytes_on_one_worker_and_on_two(tmp_path: Path) -> None:
     """Of a law of the user's, with noise and random starts."""
     sensor = "sensor = { position_noise_m = 0.002, velocity_noise_m_s = 0.02 }\n"
     path = cell(tmp_path, f'law = "law.py:Mine"\n{sensor}', OWN)
-    text = path.read_text(encoding="utf-8").replace("[0, 120]", "[0], random = 2")
+    text = path.read_text(encoding="utf-8").replace("[0, 120]", "[0], random = 1")
     path.write_text(text, encoding="utf-8")
 
     def run(*options: str) -> tuple[bytes, ...]:
@@ -260,7 +248,7 @@ def test_an_interrupt_writes_what_is_done(tmp_path: Path, monkeypatch: pytest.Mo
     assert done.code == 3
     told = document(tmp_path / "o")
     assert told["stopped"] is True and "stopped" in told["sentence"]
-    assert told["recovered_share"] == 1.0
+    assert told["verdict"] == "undecided" and told["recovered_share"] == 1.0
     assert (tmp_path / "o" / "report.html").exists()
 
 

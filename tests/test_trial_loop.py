@@ -19,23 +19,21 @@ from trial_case import (
     bout,
     gantry,
     gaps,
-    ground_of,
     paddle_at,
     slow_gantry,
     struck_by_hand,
     tried,
     watched,
+    wild,
 )
 
-from reach.cell import Array, Cell, Drive, Recovered, Sensor
+from reach.cell import Array, Cell, Drive, Sensor
 from reach.evidence.trials import Run
 from reach.qp.problem import QpBlock
-from reach.trial.bout import play
-from reach.trial.laws import Seen, Setup, Twist
+from reach.trial.laws import Seen, Setup
 from reach.trial.laws.mirror import Mirror
 from reach.trial.laws.planning import Planning
 from reach.trial.ready import centre_of
-from reach.trial.starts import Start
 
 FINE = 8  # samples a period between contacts
 
@@ -64,8 +62,7 @@ def bench7(**given: Any) -> Cell:
 
 
 CASES: dict[str, tuple[Cell, type, tuple[float, float], dict[str, float]]] = {
-    "gantry": (tried(gantry(), bounces=8), Leaning, (0.04, -0.02), {}),
-    "gantry, mirror": (tried(gantry(), bounces=8), Mirror, (0.03, 0.03), dict(Mirror.gains)),
+    "gantry": (tried(gantry(), bounces=6), Leaning, (0.04, -0.02), {}),
     "heavy air": (
         tried(gantry(), ball={"drag_coefficient": 0.45}, bounces=8),
         Mirror,
@@ -145,7 +142,7 @@ def test_the_trace_is_of_the_same_ball_and_paddle(case: tuple[Cell, Run]) -> Non
 def test_the_result_hardly_depends_on_where_in_a_period_the_ball_comes_down() -> None:
     """Apexes a little apart shift the contact through a whole period of 2 ms; less than 0.3 mm of it is seen."""
     apexes = 0.2 + np.arange(5) * 0.0004  # flights 0.4 ms apart
-    runs = [bout(tried(gantry(), apex_m=float(h), bounces=6), Leaning, (0.03, 0.0)) for h in apexes]
+    runs = [bout(tried(gantry(), apex_m=float(h), bounces=4), Leaning, (0.03, 0.0)) for h in apexes]
     phases = np.array([run.contacts.t_s[0] for run in runs]) % 0.002 / 0.002
     assert np.ptp(phases) > 0.5
     off = np.array([run.contacts.apex_m - h for run, h in zip(runs, apexes, strict=True)])
@@ -154,10 +151,28 @@ def test_the_result_hardly_depends_on_where_in_a_period_the_ball_comes_down() ->
     assert np.ptp(aside, axis=0).max() < 3e-4
 
 
+@pytest.mark.campaign
 def test_a_finer_control_period_makes_the_same_trial() -> None:
-    coarse, fine = (bout(tried(gantry(p), bounces=5), Leaning, (0.03, 0.0)) for p in (0.002, 0.0005))
+    coarse, fine = (bout(tried(gantry(p), bounces=4), Leaning, (0.03, 0.0)) for p in (0.002, 0.0005))
     np.testing.assert_allclose(coarse.contacts.offset_m, fine.contacts.offset_m, atol=5e-4)
     np.testing.assert_allclose(coarse.contacts.apex_m, fine.contacts.apex_m, atol=5e-4)
+
+
+@pytest.mark.parametrize(
+    "seed", [3, *(pytest.param(seed, marks=pytest.mark.campaign) for seed in range(100, 200))]
+)
+def test_a_law_gone_wild_makes_no_contact_that_is_none_and_misses_none(seed: int) -> None:
+    """Sums of sinusoids on top of a sound law: up to the loss no ball is below the face within its edge."""
+    cell, run = wild(seed)
+    flights, c = ball_flights(cell, run), run.contacts
+    for k, (begin, end) in enumerate(pairwise([0.0, *c.t_s, run.ended_s - 2 * cell.period_s])):
+        t = np.arange(begin, end, cell.period_s / FINE)[1:]
+        gap, (point, _, _) = gaps(cell, run, flights[k], t), paddle_at(cell, run, t)
+        beside = np.linalg.norm(flights[k](t) - point, axis=1) > 0.085 + RADIUS
+        assert ((gap > -1e-8) | beside).all()
+    assert all(abs(gaps(cell, run, flights[k], c.t_s[k : k + 1])[0]) < 1e-6 for k in range(run.bounces))
+    np.testing.assert_allclose(c.ball_out, struck_by_hand(cell, run), atol=1e-6)
+    assert (np.linalg.norm(c.face, axis=1) <= 0.085 + 1e-9).all()
 
 
 # Edges
@@ -211,10 +226,6 @@ def test_a_face_with_friction_that_is_tilted_spins_the_ball_and_the_spin_is_kept
     np.testing.assert_allclose(c.spin_out[1] - c.spin_out[0], -1.5 * np.cross(normals[1], across), atol=1e-7)
 
 
-def test_without_friction_a_tilted_face_gives_no_spin() -> None:
-    assert not bout(tried(gantry(), bounces=2), Tilted, tilt=0.1).contacts.spin_out.any()
-
-
 @pytest.mark.parametrize("lift", [0.0, 0.3])
 def test_spin_bends_the_next_flight_only_where_there_is_lift(lift: float) -> None:
     cell = tried(gantry(), {"friction": 5.0}, {"lift_coefficient": lift}, bounces=2)
@@ -225,25 +236,6 @@ def test_spin_bends_the_next_flight_only_where_there_is_lift(lift: float) -> Non
     off = np.linalg.norm(c.ball[1] - parabola)
     np.testing.assert_allclose(ball_flights(cell, run)[1](c.t_s[1:2])[0], c.ball[1], atol=1e-8)
     assert off > 0.005 if lift else off < 1e-9
-
-
-def blind(law: type) -> type:
-    """A law that is not told of the air."""
-
-    class Blind(law):
-        def __init__(self, setup: Setup):
-            super().__init__(replace(setup, ball=replace(setup.ball, drag_coefficient=0.0)))
-
-    return Blind
-
-
-@pytest.mark.parametrize("law", [Mirror, Planning])
-def test_drag_takes_height_unless_the_law_makes_up_for_it(law: type) -> None:
-    cell = tried(gantry(), ball={"drag_coefficient": 0.45}, bounces=8)
-    gains = dict(vars(law)["gains"])
-    knows, not_knows = (bout(cell, one, **gains).contacts.apex_m[-3:] - 0.2 for one in (law, blind(law)))
-    assert np.abs(knows).max() < 2e-3
-    assert not_knows.max() < -5e-3
 
 
 # The arm gives
@@ -325,37 +317,6 @@ def test_the_same_seed_and_number_make_the_same_trial_and_others_another() -> No
     assert np.abs(first.ball_out - seed.ball_out).max() > 1e-4
 
 
-class Trusting(Leaning):
-    """Takes every sight for new."""
-
-    def twist(self, seen: Seen) -> Twist:
-        return super().twist(seen._replace(ball_age_s=0.0))
-
-
-def late(law: type, latency_s: float) -> Run:
-    """A trial with that latency."""
-    cell = tried(
-        gantry(), sensor=Sensor(0.0, latency_s), bounces=8, recovered=Recovered(then_for=5, by_bounce=3)
-    )
-    return bout(cell, law, (0.03, 0.0))
-
-
-def test_latency_makes_it_worse_for_a_law_that_takes_sights_for_new() -> None:
-    """An old sight of a falling ball is too high, so the paddle is low, meets it late, and it rises less."""
-    runs = [late(Trusting, s) for s in (0.0, 0.02, 0.04)]
-    low = [float((0.2 - run.contacts.apex_m[-5:]).mean()) for run in runs]
-    assert abs(low[0]) < 1e-4 and low[1] > 0.01 and low[2] > 2 * low[1]
-    assert [run.recovered for run in runs] == [True, True, False]
-    assert runs[0].oscillation_m < runs[1].oscillation_m < runs[2].oscillation_m
-
-
-def test_latency_hardly_matters_to_a_law_that_works_out_where_the_ball_is() -> None:
-    """All but the first moments of a flight, when the last sight is from before the contact."""
-    now, later = (late(Leaning, s).contacts for s in (0.0, 0.04))
-    np.testing.assert_allclose(later.ball, now.ball, atol=2e-4)
-    np.testing.assert_allclose(later.apex_m, now.apex_m, atol=2e-4)
-
-
 # A step found bad afterwards
 
 
@@ -381,29 +342,3 @@ def test_a_step_found_bad_makes_the_trial_again_with_care(monkeypatch: pytest.Mo
     assert again.outcome == plain.outcome and again.failed_steps == 0
     np.testing.assert_allclose(again.contacts.t_s, plain.contacts.t_s, atol=1e-6)
     np.testing.assert_allclose(again.contacts.ball, plain.contacts.ball, atol=1e-5)
-
-
-def test_trials_on_one_ground_share_nothing() -> None:
-    ground = ground_of(tried(gantry(), sensor=Sensor(0.0, 0.0, 0.001, 0.0), bounces=3), Leaning)
-    start = Start(np.array([0.02, 0.0]), np.zeros(2))
-    first = play(ground, start, 3, False)
-    play(ground, Start(np.array([0.0, 0.05]), np.zeros(2)), 4, False)
-    again = play(ground, start, 3, True)
-    np.testing.assert_array_equal(first.contacts.ball_out, again.contacts.ball_out)
-    assert first.motion is None and again.motion is not None
-
-
-@pytest.mark.xfail(strict=True, reason="the face's plane overtakes the ball outside the edge five times over")
-def test_a_paddle_that_rises_past_a_rising_ball_beside_it_has_not_met_it() -> None:
-    """The ball starts 0.3 m aside at 2 m/s upward; the paddle rises faster for a moment, then waits below."""
-
-    class Jump:
-        def __init__(self, setup: Setup):
-            self.low = setup.centre_m[2] - setup.ball.radius_m
-
-        def twist(self, seen: Seen) -> Twist:
-            up = 3.0 if seen.t_s < 0.03 else 20.0 * (self.low - 0.05 - seen.paddle_m[2])
-            return 0.0, 0.0, up, 0.0, 0.0, 0.0
-
-    run = bout(tried(gantry()), Jump, (0.3, 0.0))
-    assert run.outcome == "missed past the edge"

@@ -10,14 +10,14 @@ from typing import Any
 
 import numpy as np
 import pytest
-from trial_case import CENTRE, G, Hand, Still, bout, contacts_of, gantry, slow_gantry, tried
+from trial_case import CENTRE, G, Hand, Still, bout, contacts_of, gantry, ground_of, slow_gantry, tried
 
-import reach.trial.answer as answer_module
-from reach.cell import Array, Cell, Drive, Recovered, Starts
+from reach.cell import Array, Cell, Drive, Recovered, Sensor, Starts
 from reach.qp.problem import QpBlock
 from reach.trial.answer import answer
-from reach.trial.bout import recovered_at
-from reach.trial.laws import Seen, Setup, Twist
+from reach.trial.bout import play, recovered_at
+from reach.trial.laws import LawFault, Seen, Setup, Twist
+from reach.trial.starts import Start
 from reach.verdict import DELIVERABLE, NOT_DELIVERABLE, UNDECIDED
 
 
@@ -98,7 +98,7 @@ def test_the_line_is_told_too_where_the_law_has_its_twist_from_another_file() ->
 
 
 @pytest.mark.xfail(
-    strict=True, raises=Exception, reason="the second making is not guarded as the first one is"
+    strict=True, raises=LawFault, reason="the second making is not guarded as the first one is"
 )
 def test_a_law_that_cant_be_made_a_second_time_fails_its_trial(monkeypatch: pytest.MonkeyPatch) -> None:
     """The second time comes where a step was found bad afterwards."""
@@ -224,6 +224,22 @@ def test_a_leaning_face_that_comes_as_late_meets_it_too() -> None:
     assert swept(0.35).bounces == 1
 
 
+@pytest.mark.xfail(strict=True, reason="the face's plane overtakes the ball outside the edge five times over")
+def test_a_paddle_that_rises_past_a_rising_ball_beside_it_has_not_met_it() -> None:
+    """The ball starts 0.3 m aside at 2 m/s upward; the paddle rises faster for a moment, then waits below."""
+
+    class Jump:
+        def __init__(self, setup: Setup):
+            self.low = setup.centre_m[2] - setup.ball.radius_m
+
+        def twist(self, seen: Seen) -> Twist:
+            up = 3.0 if seen.t_s < 0.03 else 20.0 * (self.low - 0.05 - seen.paddle_m[2])
+            return 0.0, 0.0, up, 0.0, 0.0, 0.0
+
+    run = bout(tried(gantry()), Jump, (0.3, 0.0))
+    assert run.outcome == "missed past the edge"
+
+
 # Recovered
 
 
@@ -268,6 +284,16 @@ def test_a_trial_counts_by_its_own_contacts() -> None:
     assert not bout(tried(gantry(), recovered=strict, bounces=10), Leaning, (0.03, 0.0)).recovered
 
 
+def test_trials_on_one_ground_share_nothing() -> None:
+    ground = ground_of(tried(gantry(), sensor=Sensor(0.0, 0.0, 0.001, 0.0), bounces=3), Leaning)
+    start = Start(np.array([0.02, 0.0]), np.zeros(2))
+    first = play(ground, start, 3, False)
+    play(ground, Start(np.array([0.0, 0.05]), np.zeros(2)), 4, False)
+    again = play(ground, start, 3, True)
+    np.testing.assert_array_equal(first.contacts.ball_out, again.contacts.ball_out)
+    assert first.motion is None and again.motion is not None
+
+
 # The verdict on all starts
 
 
@@ -277,15 +303,13 @@ ASKED = Recovered(by_bounce=4, then_for=3)
 
 def on_two(cell: Cell, **trial: Any) -> Cell:
     """A start that the mirror recovers, and one whose x slide is too slow for it."""
-    return tried(cell, **{"bounces": 7, "starts": TWO, "recovered": ASKED} | trial)
+    return tried(cell, **{"bounces": 7, "apex_m": 0.1, "starts": TWO, "recovered": ASKED} | trial)
 
 
 SLOW = slow_gantry(x={"velocity": 0.4})
 
 
-@pytest.mark.parametrize(
-    ("share", "verdict"), [(0.5, DELIVERABLE), (0.51, NOT_DELIVERABLE), (1.0, NOT_DELIVERABLE)]
-)
+@pytest.mark.parametrize(("share", "verdict"), [(0.5, DELIVERABLE), (0.51, NOT_DELIVERABLE)])
 def test_the_share_asked_for_decides(share: float, verdict: str) -> None:
     result = answer(on_two(SLOW, required_share=share))
     evidence = result.evidence
@@ -299,7 +323,7 @@ def test_the_share_asked_for_decides(share: float, verdict: str) -> None:
 
 def test_the_interval_of_the_share_is_wilsons() -> None:
     """E. B. Wilson, J. American Statistical Association 22 (1927) 209: roots of (p - s)² = z² p (1 - p)/n."""
-    evidence = answer(on_two(SLOW, required_share=0.5)).evidence
+    evidence = answer(on_two(SLOW, bounces=6, apex_m=0.05)).evidence
     z, n, s = 1.959963984540054, 2, 0.5
     roots = np.sort(np.roots([1 + z * z / n, -(2 * s + z * z / n), s * s]))
     assert (evidence.low, evidence.high) == pytest.approx(tuple(roots), abs=1e-7)
@@ -310,34 +334,6 @@ def test_a_required_limit_that_nobody_stated_leaves_recovered_starts_undecided()
     both = answer(on_two(unknown, required_share=0.5))
     assert both.verdict.verdict == UNDECIDED and "torque rate unknown for x" in both.verdict.sentence
     assert both.evidence.recovered_share == 0.5
-    assert answer(on_two(unknown)).verdict.verdict == NOT_DELIVERABLE  # one is lost, whatever that limit is
-
-
-def test_a_centre_out_of_reach_is_not_deliverable_and_no_trial_is_made() -> None:
-    result = answer(on_two(SLOW, centre_m=(4.0, 0.0, 0.5)))
-    assert result.verdict.verdict == NOT_DELIVERABLE and result.verdict.exit_code == 1
-    evidence = result.evidence
-    assert evidence.runs == () and evidence.ready is None and evidence.blocked
-    assert evidence.asked == 2 and evidence.recovered_share == 0.0
-    assert [reason.limit for reason in result.reasons] == ["reach"]
-
-
-def test_a_run_that_is_stopped_judges_what_was_tried(monkeypatch: pytest.MonkeyPatch) -> None:
-    real, calls = answer_module._play, []
-
-    def play(*given: Any) -> Any:
-        calls.append(1)
-        if len(calls) > 1:
-            raise KeyboardInterrupt
-        return real(*given)
-
-    monkeypatch.setattr(answer_module, "_play", play)
-    four = Starts(offsets_m=(0.02,))
-    result = answer(on_two(gantry(), starts=four))
-    evidence = result.evidence
-    assert evidence.stopped and (len(evidence.runs), evidence.asked) == (1, 4)
-    assert result.verdict.verdict == UNDECIDED and "stopped" in result.verdict.sentence
-    assert evidence.recovered_share == 1.0
 
 
 def test_the_trials_begin_at_the_centre_whatever_the_start_posture_is() -> None:

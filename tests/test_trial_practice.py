@@ -6,15 +6,19 @@ Where no source is named it is common practice, no source.
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 from itertools import pairwise
 
 import numpy as np
 import pytest
-from trial_case import CENTRE, G, Hand, bout, gantry, slow_gantry, tried
+from trial_case import CENTRE, G, Hand, Still, bout, gantry, slow_gantry, tried
 
-from reach.cell import Array
+from reach.cell import Array, Recovered, Sensor
+from reach.errors import ReachError
 from reach.evidence.trials import Run
 from reach.trial.laws import Seen, Setup, Twist
+from reach.trial.laws.mirror import Mirror
+from reach.trial.laws.planning import Planning
 
 E_OF_GANTRY = 0.7
 
@@ -163,6 +167,76 @@ def test_no_tilt_near_the_axis_leaves_a_small_lasting_oscillation() -> None:
     assert math.isclose(banded.oscillation_m, size, rel_tol=1e-12)
 
 
+# Sights and air
+
+
+class Settling(Leaning):
+    """Takes half of the offset and most of the lateral speed away."""
+
+    def lean(self, place: Array, velocity: Array) -> Array:
+        return np.asarray(-0.5 * place / (8 * self.setup.apex_m) - 0.8 * velocity / (2 * self.speed))
+
+
+class Trusting(Settling):
+    """Takes every sight for new."""
+
+    def twist(self, seen: Seen) -> Twist:
+        return super().twist(seen._replace(ball_age_s=0.0))
+
+
+def late(law: type, latency_s: float) -> Run:
+    """A trial with that latency."""
+    cell = tried(
+        gantry(), sensor=Sensor(0.0, latency_s), bounces=8, recovered=Recovered(then_for=5, by_bounce=3)
+    )
+    return bout(cell, law, (0.03, 0.0))
+
+
+def test_latency_makes_it_worse_for_a_law_that_takes_sights_for_new() -> None:
+    """An old sight of a falling ball is too high, so the paddle is low, meets it late, and it rises less."""
+    runs = [late(Trusting, s) for s in (0.0, 0.02, 0.04)]
+    low = [float((0.2 - run.contacts.apex_m[-5:]).mean()) for run in runs]
+    assert abs(low[0]) < 1e-4 and low[1] > 0.01 and low[2] > 2 * low[1]
+    assert [run.recovered for run in runs] == [True, True, False]
+    assert runs[0].oscillation_m < runs[1].oscillation_m < runs[2].oscillation_m
+
+
+def test_latency_hardly_matters_to_a_law_that_works_out_where_the_ball_is() -> None:
+    """All but the first moments of a flight, when the last sight is from before the contact."""
+    now, later = (late(Settling, s).contacts for s in (0.0, 0.04))
+    np.testing.assert_allclose(later.ball, now.ball, atol=2e-4)
+    np.testing.assert_allclose(later.apex_m, now.apex_m, atol=2e-4)
+
+
+def blind(law: type) -> type:
+    """A law that is not told of the air."""
+
+    class Blind(law):
+        def __init__(self, setup: Setup):
+            super().__init__(replace(setup, ball=replace(setup.ball, drag_coefficient=0.0)))
+
+    return Blind
+
+
+@pytest.mark.parametrize("law", [Mirror, Planning])
+def test_drag_takes_height_unless_the_law_makes_up_for_it(law: type) -> None:
+    cell = tried(gantry(), ball={"drag_coefficient": 0.45}, bounces=8)
+    gains = dict(vars(law)["gains"])
+    knows, not_knows = (bout(cell, one, **gains).contacts.apex_m[-3:] - 0.2 for one in (law, blind(law)))
+    assert np.abs(knows).max() < 2e-3
+    assert not_knows.max() < -5e-3
+
+
+@pytest.mark.xfail(
+    strict=True, raises=ReachError, reason="the launch through air is 1e-9 m short of its own bound"
+)
+@pytest.mark.parametrize("apex_m", [0.264, 0.472])
+def test_a_ball_with_drag_begins_at_any_apex(apex_m: float) -> None:
+    assert (
+        bout(tried(gantry(), ball={"drag_coefficient": 0.45}, apex_m=apex_m, bounces=1), Still).bounces == 1
+    )
+
+
 # Too far
 
 
@@ -225,7 +299,7 @@ def paddled(e: float, a: float, bounces: int, late_s: float, period_s: float = 0
     return bout(tried(gantry(period_s), {"restitution": e}, bounces=bounces), Sine, a=a, late=late_s)
 
 
-@pytest.mark.parametrize(("e", "a"), [(0.5, -3.0), (0.8, -3.0)])
+@pytest.mark.parametrize(("e", "a"), [(0.5, -3.0), pytest.param(0.8, -3.0, marks=pytest.mark.campaign)])
 def test_a_blind_sinusoid_inside_the_window_keeps_the_ball_for_30_bounces(e: float, a: float) -> None:
     """An error of 5 ms in time goes away as |lambda| = e to the power of the bounces."""
     assert np.abs(factors(e, a)).max() == pytest.approx(e)
@@ -250,6 +324,7 @@ def test_a_gaining_sinusoid_loses_the_rhythm_to_the_twin_that_slows_down() -> No
     assert off[-1] == pytest.approx(twin - 0.2, abs=5e-4) and twin - 0.2 > 0.016
 
 
+@pytest.mark.campaign
 def test_a_gaining_sinusoid_met_too_early_lets_the_ball_fall() -> None:
     """The other way from the same fixed point there is no twin: the ball loses height at every bounce."""
     run = paddled(0.5, 2.0, 9, 0.001)

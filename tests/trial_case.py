@@ -219,6 +219,28 @@ def watched(law: type, seen: list[Seen]) -> type:
     return Watched
 
 
+def wild(seed: int) -> tuple[Cell, Run]:
+    """A cell and a trial of a law that shakes the paddle at random on all six axes, from a random start."""
+    rng = np.random.default_rng(seed)
+    size = rng.normal(size=(6, 3)) * np.array([6.0, 6.0, 1.0, 5.0, 5.0, 5.0])[:, None] * rng.uniform(0.0, 1.0)
+    rate, phase = rng.uniform(2.0, 60.0, (6, 3)), rng.uniform(0.0, 6.0, (6, 3))
+
+    class Wild(Hand):
+        def lean(self, place: Array, velocity: Array) -> Array:
+            back = -0.5 * place / (8 * self.setup.apex_m) - 0.8 * velocity / (2 * self.speed)
+            return np.asarray(np.clip(back, -0.5, 0.5))
+
+        def twist(self, seen: Seen) -> Twist:
+            shaken = np.array(super().twist(seen)) + (size * np.sin(rate * seen.t_s + phase)).sum(axis=1)
+            vx, vy, vz, wx, wy, wz = shaken.tolist()
+            return vx, vy, vz, wx, wy, wz
+
+    period_s, apex_m = float(rng.choice([0.001, 0.002, 0.004, 0.01])), float(rng.uniform(0.05, 0.3))
+    cell = tried(gantry(period_s), apex_m=apex_m, bounces=8)
+    (x, y), (vx, vy) = rng.uniform(-0.15, 0.15, 2).tolist(), rng.uniform(-0.8, 0.8, 2).tolist()
+    return cell, bout(cell, Wild, (x, y), (vx, vy))
+
+
 def contacts_of(offset_m: Any, apex_m: Any) -> Contacts:
     """Contacts of which only offsets (k,) and apexes (k,) are given."""
     k = len(offset_m)
