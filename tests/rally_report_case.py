@@ -77,7 +77,7 @@ def made_points(rally: Rally) -> RallyPoints:
         reason=tuple('held, "all" of it' if x else "stopped,\nby a limit" for x in done.tolist()),
         q=np.where(done[:, None], 0.3, np.nan) * np.ones((m, n)),
         postures=np.where(done, 8, 0),
-        margin_free=verdict != NOT_DELIVERABLE,
+        bare=np.where(verdict == UNDECIDED, DELIVERABLE, verdict),
         feasible_share=share,
         feasible_low=np.clip(share - 0.1, 0, 1),
         feasible_high=np.clip(share + 0.05, 0, 1),
@@ -303,7 +303,7 @@ def nothing_held() -> RallyResult:
         limit=np.full(m, "reach"),
         joint=np.full(m, ""),
         q=np.full((m, len(NAMES)), np.nan),
-        margin_free=np.zeros(m, dtype=bool),
+        bare=np.full(m, NOT_DELIVERABLE),
         motions={},
     )
     evidence = replace(

@@ -266,8 +266,8 @@ def test_until_the_ball_is_seen_the_arm_does_what_it_does_for_any_ball(seven: Co
     cycles = Cycles(seven.kit.gauge, seven.stances[0], 0.01, 0.05)
     _, _, begin, _ = moves(seven, 6, 8)
     stop = cycles.stop_s(begin)
-    known, middle = cycles.turn(begin, stop)
-    np.testing.assert_allclose(known, 0.05 - 0.005)
+    known = np.full(len(stop), 0.05 - 0.005)
+    middle = cycles.turn(begin, stop, known)
     ready = States.at_rest(np.repeat(seven.stances[:1], len(begin.q), axis=0))
     alone = legs(begin, ready, stop)
     share = known / stop

@@ -1,7 +1,7 @@
-"""A point that the envelope calls deliverable is held by the planning law in a trial: the two know nothing of each other.
+"""A point that the envelope calls deliverable is held by the planning law in a trial.
 
-The envelope plans quintics in joint space; the law plans in the paddle's space from what it sees, and the follower makes
-joints of it, one control step after the other.
+The two know nothing of each other: the envelope plans quintics in joint space; the law plans in the paddle's space from
+what it sees, and the follower makes joints of it, one control step after the other.
 """
 
 from __future__ import annotations
@@ -59,7 +59,9 @@ def disagreements(count: int, seed: int) -> tuple[int, list[str]]:
     found = judged(court, asked, score(court, asked).best)
     rows = np.flatnonzero(found.verdict == DELIVERABLE)[:count]
     runs = [(row, trial_of(cell, asked[int(row)], found.q[row])) for row in rows]
-    return len(rows), [f"{asked[int(row)]}: {run.outcome}, {run.text}" for row, run in runs if not run.recovered]
+    return len(rows), [
+        f"{asked[int(row)]}: {run.outcome}, {run.text}" for row, run in runs if not run.recovered
+    ]
 
 
 def test_deliverable_points_are_held_by_the_planning_law() -> None:

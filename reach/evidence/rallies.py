@@ -23,14 +23,15 @@ class RallyPoints:
     centre (m, 3), apex_m, offset_m, bearing_rad : (m,)
     paddle_speed_m_s, face_tilt_rad : (m,) of the returning strike, along its normal, from the vertical
     flight_s : (m,) from one contact to the next; cycle_s : (m,) the fastest legal way found from one strike to the
-        next, the longest of those needed; margin_s : (m,) what is left of the flight, the latency taken off
-    time_bound_s : (m,) what no motion between the strikes passes in the postures compared
-    speed_bound_m_s : (m,) the same for the paddle's speed along the normal
+        next, the longest of those needed; margin_s : (m,) what is left of the flight, the latency taken off; 0 at
+        least where a motion was found that waits for the sight
+    time_bound_s : (m,) from which on no joint by itself stands in the way, in the posture and at the joint velocities
+        played; speed_bound_m_s : (m,) what the paddle's speed along the normal can't pass in that posture
     verdict, basis, limit, joint : (m,) in the words of the interface; what bounds the point
     reason : a sentence each
     q : (m, n) posture of a strike at the centre
     postures : (m,) how many were compared
-    margin_free : (m,) bool, deliverable with the margins at zero
+    bare : (m,) verdicts with the margins at zero, by the nodes
     feasible_share, feasible_low, feasible_high : (m,) of the cases within the spreads that are still deliverable, with
         its interval (95 %); nan where there are no spreads
     largest_delay_s, largest_tilt_rad, largest_contact_offset_m, largest_restitution_error : (m,) each alone, with
@@ -56,7 +57,7 @@ class RallyPoints:
     reason: tuple[str, ...]
     q: Array
     postures: NDArray[np.int64]
-    margin_free: NDArray[np.bool_]
+    bare: Texts
     feasible_share: Array
     feasible_low: Array
     feasible_high: Array
@@ -65,6 +66,11 @@ class RallyPoints:
     largest_contact_offset_m: Array
     largest_restitution_error: Array
     motions: dict[int, Knots]
+
+    @property
+    def margin_free(self) -> NDArray[np.bool_]:
+        """Which points (m,) are deliverable with the margins at zero."""
+        return np.asarray(self.bare == "deliverable", dtype=bool)
 
 
 @dataclass(frozen=True, eq=False)

@@ -61,7 +61,9 @@ def _remedies(
     if done == total:
         return (), ()
     changes = _changes(cell, evidence)
-    counts = run.over("rally, remedies", _count, [(changed, 1.0, seed) for _, changed in changes])
+    tasks = [(cell, 1.0, seed), *((changed, 1.0, seed) for _, changed in changes)]
+    before, *counts = run.over("rally, remedies", _count, tasks)
+    done = max(done, before or 0)  # both by the nodes
     found, in_vain = [], []
     for (words, _), count in sorted(
         zip(changes, counts, strict=True), key=lambda pair: -(pair[1] if pair[1] is not None else -1)

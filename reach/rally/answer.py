@@ -8,6 +8,7 @@ from dataclasses import replace
 import numpy as np
 
 from reach.cell import Array, Cell
+from reach.evidence.points import Texts
 from reach.evidence.rallies import RallyEvidence, RallyPoints
 from reach.evidence.record import Reason
 from reach.limits import LIMITS
@@ -49,10 +50,8 @@ def answer(
             helps = advice(cell, evidence, workers, seed, progress)
         except KeyboardInterrupt:  # what was found of the points stays
             helps = Advice((), (), None, "not looked for: the run was stopped")
-    bare = np.where(done.points.margin_free, DELIVERABLE, done.points.verdict)
-    without = judge_rally(
-        replace(evidence, points=replace(evidence.points, verdict=bare)), rally.required_share, cell.accept
-    )
+    bare = replace(evidence, points=replace(evidence.points, verdict=done.points.bare))
+    without = judge_rally(bare, rally.required_share, cell.accept)
     return RallyResult(
         cell=cell,
         verdict=verdict,
@@ -94,7 +93,7 @@ def gathered(cell: Cell, done: Envelope) -> RallyEvidence:
 
 def reasons(points: RallyPoints, latency_s: float, verdict: Verdict) -> tuple[Reason, ...]:
     """What keeps points from being deliverable, those that decide and the most frequent first."""
-    lacking = points.verdict != DELIVERABLE
+    lacking = (points.verdict != DELIVERABLE) & (points.limit != "")
     pairs = Counter(
         (str(limit), str(joint))
         for limit, joint in zip(points.limit[lacking], points.joint[lacking], strict=True)
@@ -111,7 +110,7 @@ def reasons(points: RallyPoints, latency_s: float, verdict: Verdict) -> tuple[Re
         found.append(
             Reason(
                 decides=verdict.verdict != DELIVERABLE and decisive > 0,
-                limit=limit or CYCLE,
+                limit=limit,
                 joint=joint or None,
                 phase=None,
                 time_s=None,
@@ -119,11 +118,16 @@ def reasons(points: RallyPoints, latency_s: float, verdict: Verdict) -> tuple[Re
                 value=_median(value[rows]),
                 bound=_median((points.flight_s - latency_s)[rows]),
                 unit="s",
-                basis="proved" if (points.basis[rows] == "proved").all() else "searched",
-                text=f"{limit or CYCLE}{of}: {count} point{'s' if count > 1 else ''} ({', '.join(parts)})",
+                basis=_basis(points.basis[rows]),
+                text=f"{limit}{of}: {count} point{'s' if count > 1 else ''} ({', '.join(parts)})",
             )
         )
     return tuple(sorted(found, key=lambda reason: not reason.decides))
+
+
+def _basis(words: Texts) -> str:
+    """The basis of all, or the weaker one."""
+    return str(words[0]) if (words == words[0]).all() and words[0] else "searched"
 
 
 def _median(values: Array) -> float | None:

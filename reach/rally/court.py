@@ -49,7 +49,7 @@ class Kit:
     Attributes
     ----------
     setting, gauge : with the cell's margins; bare : Gauge with none, the same where the cell has none
-    unknown : limits that a deliverable point needs and nobody stated
+    unknown : limits that a deliverable point needs and nobody stated, or that are not looked at here (duty)
     """
 
     def __init__(self, cell: Cell, seed: int):
@@ -63,7 +63,7 @@ class Kit:
         self.library = Library(self.setting, seed)
         self.near = None if cell.arm.start is None else np.array(cell.arm.start)
         self.reach = reach_bound(self.setting.arm)
-        lacking = {limit for limit, _ in unknown_limits(self.setting.limits) if limit != DUTY}
+        lacking = {limit for limit, _ in unknown_limits(self.setting.limits)} | {DUTY}
         self.unknown = [limit for limit in cell.accept.require if limit in lacking]
         self._courts: dict[Vec3, Court] = {}
 
@@ -116,6 +116,16 @@ class Court:
             except (NoFlight, NoContact):
                 found.append(None)
         return found
+
+    def anyhow(self, points: Sequence[Point], main: int) -> NDArray[np.bool_]:
+        """Which points (m,) a stance delivers, the main one or else any other, by the nodes."""
+        good = np.zeros(len(points), dtype=bool)
+        for stance in (main, *(k for k in range(len(self.stances)) if k != main)):
+            left = np.flatnonzero(~good)
+            if len(left):
+                made = self.exchanges([points[int(k)] for k in left], stance)
+                good[left] = self.delivered(made, stance, self.kit.rally.latency_s)[0]
+        return good
 
     def delivered(
         self, exchanges: Sequence[Exchange | None], stance: int, latency_s: float

@@ -3,7 +3,7 @@
 Around a strike joint velocities stay constant over the strike window. Between two windows the arm goes
 
 - through: one quintic from the end of the first window to the start of the next, as long as the flight; where the ball
-  is seen late, first along the stop until it is, and from there on;
+  is seen late, first along the stop until it is, or some time longer, and from there on;
 - by rest: a quintic to the ready posture, a wait, and a quintic from there into the next window.
 
 Quintics in joint space are a feasible family, no more: a way that is not found proves nothing.
@@ -26,6 +26,16 @@ LONGEST_S = 3.0  # a leg that needs more is no cycle
 LEAST_S = 0.02
 SCAN = np.geomspace(LEAST_S, LONGEST_S, 22)  # durations tried, each 1.27 times the one before
 HALVINGS = 5  # between the shortest legal duration of the scan and the one before: to under 1 %
+TURNS_S = (
+    0.01,
+    0.02,
+    0.035,
+    0.05,
+    0.07,
+    0.1,
+    0.14,
+    0.2,
+)  # later turns that are tried where the earliest is illegal
 STOP = 8  # every how many: durations tried at once, the short ones first
 
 
@@ -37,6 +47,7 @@ class Ways(NamedTuple):
     legal : (m,) whether one keeps every kept-back limit within its time
     uses : (m, c) largest shares of the limits on the better way
     rest : (m,) whether it is by rest; stop_s, start_s : (m,) s of its two parts, nan where they were not looked for
+    turn_s : (m,) when after the first window's end a way through turns to the next strike
     """
 
     legal: NDArray[np.bool_]
@@ -44,6 +55,7 @@ class Ways(NamedTuple):
     rest: NDArray[np.bool_]
     stop_s: Array
     start_s: Array
+    turn_s: Array
 
 
 class Cycles:
@@ -78,7 +90,7 @@ class Cycles:
         start = np.full(m, np.nan)
         if self.latency_s > self.half and stop_s is None:
             stop = self.stop_s(begin)
-        uses = self._through(begin, end, flight_s, stop)
+        uses, turn = self._through(begin, end, flight_s, stop)
         legal = uses.max(axis=1) <= LEGAL
         rest = np.zeros(m, dtype=bool)
         left = np.flatnonzero(~legal & (self._least_rest_s(begin, end) <= flight_s))
@@ -90,7 +102,7 @@ class Cycles:
             legal[left], rest[left] = fits, fits
             part = left[fits]
             uses[part] = self._by_rest(begin.take(part), end.take(part), stop[part], start[part])
-        return Ways(legal, uses, rest, stop, start)
+        return Ways(legal, uses, rest, stop, start, turn)
 
     def _least_rest_s(self, begin: States, end: States) -> Array:
         """What no way (m,) by rest passes."""
@@ -119,29 +131,34 @@ class Cycles:
         """Shortest legal time (m,) from rest in the ready posture to states."""
         return least_duration(self.gauge, self._ready(len(end.q)), end)
 
-    def turn(self, begin: States, stop_s: Array) -> tuple[Array, States]:
-        """When (m,) after the first window's end the arm turns to the next strike, and its states (m, n) there."""
-        m = len(begin.q)
-        known = max(0.0, self.latency_s - self.half)
-        if known == 0.0:
-            return np.zeros(m), begin
+    def turn(self, begin: States, stop_s: Array, turn_s: Array) -> States:
+        """States (m, n) at times (m,) after the first window's end, on the way to a stop that takes stop_s (m,)."""
         length = np.where(np.isfinite(stop_s), stop_s, LONGEST_S)
-        stops = legs(begin, self._ready(m), length)
-        share = np.minimum(known / length, 1.0)[:, None]
-        return np.full(m, known), States(*(stops.at(share, order)[:, 0] for order in range(3)))
+        stops = legs(begin, self._ready(len(begin.q)), length)
+        share = np.minimum(turn_s / length, 1.0)[:, None]
+        states = States(*(stops.at(share, order)[:, 0] for order in range(3)))
+        at_once = (turn_s == 0.0)[:, None]
+        return States(*(np.where(at_once, a, b) for a, b in zip(begin, states, strict=True)))
 
-    def _through(self, begin: States, end: States, flight_s: Array, stop_s: Array) -> Array:
-        """Shares (m, c) of the limits on the ways through; infinite where there is no time for one."""
-        known, middle = self.turn(begin, stop_s)
-        left = flight_s - 2 * self.half - known
-        fits = left > LEAST_S
-        uses = np.full((len(flight_s), len(self.gauge.columns)), np.inf)
-        if fits.any():
-            uses[fits] = self.gauge.uses(legs(middle.take(fits), end.take(fits), left[fits]))
-        if self.latency_s > self.half:
-            first = self.gauge.uses(legs(begin, self._ready(len(flight_s)), np.fmin(stop_s, LONGEST_S)))
-            uses = np.maximum(uses, first)
-        return uses
+    def _through(self, begin: States, end: States, flight_s: Array, stop_s: Array) -> tuple[Array, Array]:
+        """Shares (m, c) of the limits on the best ways through, infinite where there is no time for one, and when (m,)
+        after the first window's end they turn to the next strike."""
+        m, known = len(flight_s), max(0.0, self.latency_s - self.half)
+        best, turn_s = np.full((m, len(self.gauge.columns)), np.inf), np.full(m, known)
+        first = np.zeros_like(best)
+        if known > 0:
+            first = self.gauge.uses(legs(begin, self._ready(m), np.fmin(stop_s, LONGEST_S)))
+        for turn in (known, *(t for t in TURNS_S if t > known > 0)):
+            rows = np.flatnonzero(best.max(axis=1) > LEGAL)
+            left = flight_s[rows] - 2 * self.half - turn
+            rows, left = rows[left > LEAST_S], left[left > LEAST_S]
+            if not len(rows):
+                break
+            middle = self.turn(begin.take(rows), stop_s[rows], np.full(len(rows), turn))
+            uses = np.maximum(self.gauge.uses(legs(middle, end.take(rows), left)), first[rows])
+            better = uses.max(axis=1) < best[rows].max(axis=1)
+            best[rows[better]], turn_s[rows[better]] = uses[better], turn
+        return best, turn_s
 
     def _by_rest(self, begin: States, end: States, stop_s: Array, start_s: Array) -> Array:
         """Shares (m, c) of the limits on ways by rest."""

@@ -64,7 +64,8 @@ def _knots(cycles: Cycles, played: Played, start_s: float, stop_s: float) -> Kno
     """Knots of an exchange that is delivered."""
     before, after = cycles.before(played.q, played.v), cycles.after(played.q, played.v)
     rest, half, ways = States.at_rest(cycles.ready[None]), cycles.half, played.ways
-    known, middle = cycles.turn(after.take(slice(None, -1)), ways.stop_s)
+    known = ways.turn_s
+    middle = cycles.turn(after.take(slice(None, -1)), ways.stop_s, known)
     times, states = [0.0], [rest]
     strike = start_s + half
     strikes = [strike]

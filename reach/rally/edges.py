@@ -1,7 +1,8 @@
 """Edges of an envelope, by scan and bisection: lowest and highest apex, largest offset, and what bounds each.
 
-All from one stance, by the nodes. An envelope need not be in one piece: the edges are those of the piece that holds
-most of the apexes scanned, and of offsets those of the piece at the centre.
+From the main stance or any other, by the nodes; what bounds an edge is told of the main one. An envelope need not be in
+one piece: the edges are those of the piece that holds most of the apexes scanned, and of offsets those of the piece at
+the centre.
 """
 
 from __future__ import annotations
@@ -103,8 +104,7 @@ class _Trial:
 
     def good(self, rows: Sequence[int], values: Sequence[float]) -> NDArray[np.bool_]:
         points = [self._point(row, value) for row, value in zip(rows, values, strict=True)]
-        made = self._court.exchanges(points, self._stance)
-        return self._court.delivered(made, self._stance, self._court.kit.rally.latency_s)[0]
+        return self._court.anyhow(points, self._stance)
 
     def grid(self, count: int, scan: Array) -> NDArray[np.bool_]:
         """Whether each line (count) delivers at each value of a scan."""

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, fields, replace
 from typing import TypeVar
 
@@ -107,7 +107,9 @@ def _looked(kit: Kit, run: Rounds, seed: int, whole: bool) -> Envelope:
     edges = _flat(run.over("rally, apexes", _apexes, [(main, lines[c]) for c in _chunks(len(lines))]))
     rounds = [(apex, bearing) for apex in rally.apexes_m for bearing in _bearings(rally.bearings_rad)]
     offsets = _flat(run.over("rally, offsets", _offsets, [(main, rounds[c]) for c in _chunks(len(rounds))]))
-    steady = () if run.stopped else bounces(court, main, rally.apexes_m, offsets)
+    steady: tuple[Bounce, ...] = _unless_stopped(
+        run, lambda: bounces(court, main, rally.apexes_m, offsets), ()
+    )
     places: list[Centre] = []
     if whole and not run.stopped:
         table = _with_errors(court, run, table, points, seed)
@@ -121,11 +123,22 @@ def _looked(kit: Kit, run: Rounds, seed: int, whole: bool) -> Envelope:
         tuple(offsets),
         tuple(places),
         steady,
-        shown(court, table),
-        impulse(court, main, steady) if steady else lost,
+        _unless_stopped(run, lambda: shown(court, table), None),
+        _unless_stopped(run, lambda: impulse(court, main, steady) if steady else lost, lost),
         not has_spread(court),
         run.stopped,
     )
+
+
+def _unless_stopped(run: Rounds, work: Callable[[], T], instead: T) -> T:
+    """What some work gives, or an empty answer once the run is stopped; an interrupt in it stops the run."""
+    if run.stopped:
+        return instead
+    try:
+        return work()
+    except KeyboardInterrupt:
+        run.stopped = True
+        return instead
 
 
 def _with_errors(

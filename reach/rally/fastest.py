@@ -37,15 +37,15 @@ def settled_s(setting: Setting, begin: States, end: States) -> Array:
 
 def possible(setting: Setting, begin: States, end: States, time_s: Array) -> NDArray[np.bool_]:
     """Whether each joint (m, n) by itself can get there in exactly a time (m,)."""
-    top, bottom, gain, brake = _limits(setting)
+    top, bottom, gain, brake = limits_of(setting)
     way, time = end.q - begin.q, np.asarray(time_s)[:, None]
-    most = _farthest(begin.v, end.v, time, gain, brake, top)
-    least = -_farthest(-begin.v, -end.v, time, brake, gain, -bottom)
+    most = farthest(begin.v, end.v, time, gain, brake, top)
+    least = -farthest(-begin.v, -end.v, time, brake, gain, -bottom)
     slack = ROUNDING * np.maximum(1.0, np.abs(way))
     return np.asarray((way <= most + slack) & (way >= least - slack))
 
 
-def _limits(setting: Setting) -> tuple[Array, Array, Array, Array]:
+def limits_of(setting: Setting) -> tuple[Array, Array, Array, Array]:
     """Largest and smallest velocity, largest acceleration and deceleration (n,)."""
     velocity, acceleration = setting.limits["velocity"], setting.limits["acceleration"]
     return (
@@ -58,7 +58,7 @@ def _limits(setting: Setting) -> tuple[Array, Array, Array, Array]:
 
 def _extreme_times(setting: Setting, begin: States, end: States) -> tuple[Array, Array]:
     """Times (m, n) of going up first and of going down first, inf where that does not lead there."""
-    top, bottom, gain, brake = _limits(setting)
+    top, bottom, gain, brake = limits_of(setting)
     way = end.q - begin.q
     up = _one_way(way, begin.v, end.v, gain, brake, top)
     return up, _one_way(-way, -begin.v, -end.v, brake, gain, -bottom)
@@ -82,10 +82,26 @@ def _one_way(way: Array, v0: Array, v1: Array, gain: Array, brake: Array, top: A
     return np.where(fits, np.maximum(time, 0.0), np.inf)
 
 
-def _farthest(v0: Array, v1: Array, time: Array, gain: Array, brake: Array, top: Array) -> Array:
-    """The longest way in a time, -inf where the speed can't be changed in it."""
-    top = np.maximum(top, np.maximum(v0, v1))
-    peak = np.minimum((time + v0 / gain + v1 / brake) / (1 / gain + 1 / brake), top)
+def farthest(v0: Array, v1: Array, time: Array | float, gain: Array, brake: Array, top: Array) -> Array:
+    """The longest way in a time from one speed to another, -inf where the speed can't be changed in it.
+
+    Gaining speed, cruising at the top and braking; concave in both speeds.
+    """
+    peak = _peak(v0, v1, time, gain, brake, top)
     cruise_s = time - (peak - v0) / gain - (peak - v1) / brake
     way = (peak**2 - v0**2) / (2 * gain) + (peak**2 - v1**2) / (2 * brake) + peak * np.maximum(cruise_s, 0.0)
     return np.where(peak >= np.maximum(v0, v1) - ROUNDING, way, -np.inf)
+
+
+def farthest_slopes(
+    v0: Array, v1: Array, time: Array | float, gain: Array, brake: Array, top: Array
+) -> tuple[Array, Array]:
+    """Derivatives of the longest way by both speeds."""
+    peak = _peak(v0, v1, time, gain, brake, top)
+    return (peak - v0) / gain, (peak - v1) / brake
+
+
+def _peak(v0: Array, v1: Array, time: Array | float, gain: Array, brake: Array, top: Array) -> Array:
+    """The speed at which a joint turns from gaining to braking, or cruises."""
+    top = np.maximum(top, np.maximum(v0, v1))
+    return np.minimum((time + v0 / gain + v1 / brake) / (1 / gain + 1 / brake), top)

@@ -59,13 +59,23 @@ class Player:
     ----------
     centre : (3,) of the ball at contact, m
     stance : (n,) posture of a level face at the centre, also the ready posture
+
+    Attributes
+    ----------
+    gain : (n,) acceleration that each joint could have by itself there
     """
 
     def __init__(self, cell: Cell, setting: Setting, gauge: Gauge, centre: Array, stance: Array):
         assert cell.ball is not None
+        self._cell = cell
         self.setting, self.gauge, self.centre, self.stance = setting, gauge, centre, stance
         self._radius, self._window = cell.ball.radius_m, cell.accept.strike_window_s
-        self._gain = gains(setting, stance)
+        self.gain = gains(setting, stance)
+
+    def elsewhere(self, setting: Setting, stance: Array) -> Player:
+        """The same by other limits, from another stance (n,)."""
+        gauge = self.gauge if setting is self.setting else Gauge(setting)
+        return Player(self._cell, setting, gauge, self.centre, stance)
 
     def cycles(self, latency_s: float) -> Cycles:
         """The ways between strikes at a latency."""
@@ -83,8 +93,8 @@ class Player:
         normal = np.array([strike.normal for strike in strikes]).reshape(-1, 3)
         ball = np.array([strike.ball for strike in strikes]).reshape(-1, 3)
         speed = np.array([strike.speed_m_s for strike in strikes])
-        q, met = postures(self.setting, self.stance, self.point(ball, normal), normal)
-        v = velocities(self.setting, q, normal, speed, self._gain)
+        q, met = postures(self.setting, self.stance, self.point(ball, normal), normal, self.gain)
+        v = velocities(self.setting, q, normal, speed, self.gain)
         held = self._held(q, v, normal, speed)
         leg = np.concatenate([np.arange(a, b - 1) for a, b in pairwise(first.tolist())])
         owner = np.repeat(np.arange(len(exchanges)), [count - 1 for count in counts])

@@ -14,20 +14,16 @@ from reach.evidence.rallies import Knots, RallyPoints
 from reach.rally.court import Court, Point
 from reach.rally.demonstrate import demonstrate
 from reach.rally.exchange import Exchange
-from reach.rally.fastest import possible, settled_s, shortest_s
+from reach.rally.fastest import settled_s
 from reach.rally.player import CYCLE, REACH, WINDOW, Played, Player
 from reach.rally.quintic import States
+from reach.rally.refused import DEMONSTRATED, SEARCHED, refused, unreached
 from reach.strike.sides import upper
-from reach.survey.inverse import DEEP_STARTS, from_library
-from reach.survey.selfmotion import improved
-from reach.survey.stops import stop_at_bound
 from reach.verdict import DELIVERABLE, NOT_DELIVERABLE, UNDECIDED
 
-PROVED, DEMONSTRATED, SEARCHED = "proved", "demonstrated", "searched"
 NO_FLIGHT = "the ball has no flight from there over that apex"
-TEXTS = ("verdict", "basis", "limit", "joint")
+TEXTS = ("verdict", "basis", "limit", "joint", "bare")
 APART = ("reason", "motions")  # fields of RallyPoints that are no columns of numbers
-WIDE = 12  # postures whose freedom is searched before a speed is refused
 
 
 @dataclass(frozen=True, eq=False)
@@ -75,8 +71,8 @@ class Rows:
             item.name: np.full(m, np.nan) for item in fields(RallyPoints) if item.name not in (*at, *APART)
         }
         at |= {"centre": np.repeat(court.centre[None], m, axis=0), "q": np.full((m, n), np.nan)}
-        at |= {"postures": np.full(m, len(court.stances)), "margin_free": np.zeros(m, dtype=bool)}
-        at["verdict"][:] = UNDECIDED
+        at |= {"postures": np.full(m, len(court.stances))}
+        at["verdict"][:] = at["bare"][:] = UNDECIDED
         self.at = at
         self.reason = [""] * m
         self.motions: dict[int, Knots] = {}
@@ -99,7 +95,7 @@ def judged(court: Court, points: Sequence[Point], main: int) -> RallyPoints:
     rows = Rows(court, points)
     if not len(court.stances):
         for k in range(len(points)):
-            _unreached(court, rows, k, court.point)
+            rows.set(k, verdict=NOT_DELIVERABLE, **unreached(court, court.point)._asdict())
         return rows.points()
     scored = score(court, points)
     stance = np.where(scored.delivered.any(axis=0), scored.delivered.argmax(axis=0), main)
@@ -107,6 +103,7 @@ def judged(court: Court, points: Sequence[Point], main: int) -> RallyPoints:
     for k in np.unique(stance).tolist():
         at = np.flatnonzero(stance == k)
         _from_stance(court, [points[int(i)] for i in at], rows, at, k)
+    _tried_again(court, points, rows, scored, stance)
     _without_margins(court, points, rows, stance)
     return rows.points()
 
@@ -125,7 +122,8 @@ def _from_stance(
         return
     played = player.play(exchanges, latency)
     _timed(player, played, latency, rows, at[flying])
-    bound = _speed_bounds(court, played, exchanges)
+    normal = np.array([strike.normal for one in exchanges for strike in one.strikes])
+    bound = upper(court.kit.setting, played.q, normal).free
     for j, (k, exchange) in enumerate(zip(flying, exchanges, strict=True)):
         row, main = int(at[k]), exchange.strikes[exchange.main]
         tilt = float(np.arctan2(np.hypot(*main.normal[:2]), main.normal[2]))
@@ -135,37 +133,51 @@ def _from_stance(
         rows.set(row, limit=limit, joint=joint)
         if played.delivered[j]:
             _shown(court, player, exchange, rows, row)
+            continue
+        refusal = refused(court, court.kit.setting, points[k])
+        if refusal is None:
+            _left_open(rows, row)
         else:
-            _refused(court, points[k], exchange, played, j, bound, rows, row)
+            rows.set(row, verdict=NOT_DELIVERABLE, **refusal._asdict())
+
+
+def _tried_again(
+    court: Court, points: Sequence[Point], rows: Rows, scored: Scored, stance: NDArray[np.int64]
+) -> None:
+    """Points whose motion fails when it is measured as a whole, from the other stances that the nodes let pass."""
+    failed = (rows.at["verdict"] == UNDECIDED) & scored.delivered[stance, np.arange(len(points))]
+    for row in np.flatnonzero(failed & (rows.at["basis"] != DEMONSTRATED)).tolist():
+        for k in np.flatnonzero(scored.delivered[:, row]).tolist():
+            if k != stance[row] and rows.at["verdict"][row] == UNDECIDED:
+                _from_stance(court, [points[row]], rows, np.array([row]), k)
 
 
 def _timed(player: Player, played: Played, latency_s: float, rows: Rows, at: NDArray[np.int64]) -> None:
-    """The shortest cycles found, what is left of the flights, and the bounds on the other side."""
+    """The shortest cycles found, what is left of the flights, and the bounds on the other side.
+
+    A legal way is a cycle of the flight's length; one that waits for the sight leaves at least nothing.
+    """
     cycles = player.cycles(latency_s)
     found, _ = cycles.shortest(*player.ends(cycles, played.q, played.v, played.leg))
-    left = played.flight_s - latency_s
-    found = np.where(played.ways.legal, np.minimum(found, left), found)
-    least = settled_s(player.setting, *_impacts(played)).max(axis=1)
+    legal, flight = played.ways.legal, played.flight_s
+    found = np.where(legal, np.minimum(found, flight), found)
+    left = flight - latency_s - found
+    left = np.where(legal, np.maximum(left, 0.0), left)
+    least = settled_s(player.setting, *impacts(played)).max(axis=1)
     unmet = ~(played.met[played.leg] & played.met[played.leg + 1])
     found[unmet], least[unmet] = np.nan, np.nan
     for j, row in enumerate(at.tolist()):
         mine = played.owner == j
         time = float(found[mine].max())
         if np.isfinite(time):
-            rows.set(row, cycle_s=time, margin_s=float((left - found)[mine].min()))
+            rows.set(row, cycle_s=time, margin_s=float(left[mine].min()))
         rows.set(row, time_bound_s=float(least[mine].max()))
 
 
-def _impacts(played: Played) -> tuple[States, States]:
+def impacts(played: Played) -> tuple[States, States]:
     """States (l, n) at the impacts where legs begin and end."""
     q, v, leg = played.q, played.v, played.leg
     return States.moving(q[leg], v[leg]), States.moving(q[leg + 1], v[leg + 1])
-
-
-def _speed_bounds(court: Court, played: Played, exchanges: Sequence[Exchange]) -> Array:
-    """Upper bounds (s,) on the paddle's speed at strikes in the postures played."""
-    normal = np.array([strike.normal for one in exchanges for strike in one.strikes])
-    return upper(court.kit.setting, played.q, normal).own(True)
 
 
 def tightest(player: Player, played: Played, exchange: int) -> tuple[str, str]:
@@ -191,112 +203,31 @@ def _shown(court: Court, player: Player, exchange: Exchange, rows: Rows, row: in
     else:
         rows.motions[row] = shown.knots
         if court.kit.unknown:
-            rows.set(row, basis=DEMONSTRATED, reason=f"{', '.join(court.kit.unknown)} unknown")
+            text = f"demonstrated by what is known; {', '.join(court.kit.unknown)} must be known too"
+            rows.set(row, basis=DEMONSTRATED, limit=court.kit.unknown[0], joint="", reason=text)
         else:
             rows.set(row, verdict=DELIVERABLE, basis=DEMONSTRATED)
 
 
-def _refused(
-    court: Court,
-    point: Point,
-    exchange: Exchange,
-    played: Played,
-    j: int,
-    bound: Array,
-    rows: Rows,
-    row: int,
-) -> None:
-    """Say of a point that is not delivered what refuses it, or what it fell short of."""
-    strikes = range(int(played.first[j]), int(played.first[j + 1]))
-    for strike, s in zip(exchange.strikes, strikes, strict=True):
-        place = court.players[0].point(strike.ball, strike.normal)
-        if not played.met[s] and not _reached(court, place, strike.normal):
-            _unreached(court, rows, row, place)
-            return
-        if played.met[s] and strike.speed_m_s > bound[s]:
-            best = _best_bound(court, place, strike.normal, strike.speed_m_s)
-            if best is not None:
-                limit, joint, speed, count = best
-                text = f"{strike.speed_m_s:.3g} m/s asked, at most {speed:.3g} m/s in {count} postures"
-                rows.set(row, verdict=NOT_DELIVERABLE, basis=SEARCHED, limit=limit, joint=joint, reason=text)
-                rows.set(row, speed_bound_m_s=speed, postures=count)
-                return
-    joint, time_s, budget_s = _too_late(court, point)
-    if joint:
-        text = f"{joint} alone needs {1000 * time_s:.0f} ms from strike to strike, {1000 * budget_s:.0f} ms there are"
-        rows.set(row, verdict=NOT_DELIVERABLE, basis=SEARCHED, limit=CYCLE, joint=joint, reason=text)
-        return
-    limit, of = rows.at["limit"][row], rows.at["joint"][row]
-    of = f" of {of}" if of else ""
-    rows.set(row, basis=SEARCHED, reason=f"no legal way found in time; the {limit}{of} is passed most")
-
-
-def _too_late(court: Court, point: Point) -> tuple[str, float, float]:
-    """The joint that no stance gets from strike to strike in time, the time that it needs and that there is, in s.
-
-    "" where a stance may: within the flight less the latency, and in exactly the flight.
-    """
-    found = ("", np.inf, 0.0)
-    latency, setting = court.kit.rally.latency_s, court.kit.setting
-    for k, player in enumerate(court.players):
-        (exchange,) = court.exchanges([point], k)
-        if exchange is None:
-            continue
-        played = player.play([exchange], latency)
-        begin, end = _impacts(played)
-        least, flight = shortest_s(setting, begin, end), played.flight_s
-        late = (least > (flight - latency)[:, None]) | ~possible(setting, begin, end, flight)
-        late &= (played.met[played.leg] & played.met[played.leg + 1])[:, None]
-        if not late.any():
-            return "", 0.0, 0.0
-        need = np.where(late, settled_s(setting, begin, end), -np.inf)
-        leg, joint = np.unravel_index(int(need.argmax()), need.shape)
-        if need[leg, joint] < found[1]:
-            found = (setting.arm.names[joint], float(need[leg, joint]), float(flight[leg] - latency))
-    return found
-
-
-def _best_bound(
-    court: Court, place: Array, normal: Array, speed_m_s: float
-) -> tuple[str, str, float, int] | None:
-    """Limit, joint, upper bound in m/s and count of the postures found for a strike; None where one may do."""
-    kit = court.kit
-    found, _ = from_library(kit.setting, kit.library, place[None], normal[None], deep=True)
-    moved = improved(kit.setting, found, place[None], normal[None], normal[None], count=WIDE)
-    q = np.concatenate([moved.found.q, found.q])
-    if not len(q):
-        return None
-    above = upper(kit.setting, q, np.repeat(normal[None], len(q), axis=0))
-    i = int(above.own(True).argmax())
-    if above.own(True)[i] >= speed_m_s:
-        return None
-    stop = stop_at_bound(kit.setting, above, i, q[i])
-    return stop.limit, stop.joint, float(above.own(True)[i]), int(moved.tried[0])
-
-
-def _reached(court: Court, place: Array, normal: Array) -> bool:
-    kit = court.kit
-    if np.linalg.norm(place - kit.reach[0]) > kit.reach[1]:
-        return False
-    found, _ = from_library(kit.setting, kit.library, place[None], normal[None], deep=True)
-    return bool(len(found.q))
-
-
-def _unreached(court: Court, rows: Rows, row: int, place: Array) -> None:
-    """A point whose strike at a place (3,) no posture reaches."""
-    gap = float(np.linalg.norm(place - court.kit.reach[0])) - court.kit.reach[1]
-    if gap > 0:
-        basis, text = PROVED, f"{gap:.3f} m farther from the first joint than the links reach"
+def _left_open(rows: Rows, row: int) -> None:
+    """A point that nothing refuses: what its best way fell short of."""
+    limit, joint = rows.at["limit"][row], rows.at["joint"][row]
+    if limit == REACH:
+        text = "a strike of it is not reached from the stances compared, but by other postures"
+    elif limit == CYCLE:
+        text = "no legal way found: there is hardly any time between the strikes"
     else:
-        basis, text = SEARCHED, f"no posture found from {DEEP_STARTS} starts"
-    rows.set(row, verdict=NOT_DELIVERABLE, basis=basis, limit=REACH, joint="", reason=text)
+        of = f" of {joint}" if joint else ""
+        text = f"no legal way found in time; the {limit}{of} is passed most"
+    rows.set(row, basis=SEARCHED, reason=text)
 
 
 def _without_margins(court: Court, points: Sequence[Point], rows: Rows, stance: NDArray[np.int64]) -> None:
-    """Which points are deliverable with the margins at zero: those with them stay so."""
-    free = rows.at["verdict"] == DELIVERABLE
-    kit = court.kit
-    left = np.flatnonzero(~free) if kit.bare is not kit.gauge and not kit.unknown else np.zeros(0, dtype=int)
+    """The verdicts with the margins at zero: points deliverable with them stay so, by the nodes; refusals are looked
+    for anew."""
+    bare, kit = rows.at["bare"], court.kit
+    bare[:] = rows.at["verdict"]
+    left = np.flatnonzero(bare != DELIVERABLE) if kit.bare is not kit.gauge else np.zeros(0, dtype=int)
     for k in np.unique(stance[left]).tolist():
         at = left[stance[left] == k]
         made = court.exchanges([points[int(i)] for i in at], k)
@@ -304,5 +235,11 @@ def _without_margins(court: Court, points: Sequence[Point], rows: Rows, stance: 
         if flying:
             player = Player(kit.cell, kit.bare.setting, kit.bare, court.centre, court.stances[k])
             played = player.play([one for one in made if one is not None], kit.rally.latency_s)
-            free[at[flying]] = played.delivered
-    rows.at["margin_free"][:] = free
+            bare[at[flying]] = np.where(
+                played.delivered & (not kit.unknown),
+                DELIVERABLE,
+                np.where(played.delivered, UNDECIDED, bare[at[flying]]),
+            )
+    for k in np.flatnonzero(bare == NOT_DELIVERABLE).tolist():
+        if refused(court, kit.bare.setting, points[k]) is None:
+            bare[k] = UNDECIDED

@@ -10,10 +10,11 @@ from reach.strike.bound import maximisers, strike_rows, upper_bounds
 from reach.strike.setting import Setting
 from reach.strike.sides import alone, promise, upper
 from reach.survey.family import Folds
-from reach.survey.inverse import Library, from_library, reach_strikes
+from reach.survey.inverse import Library, from_library, reach_strikes, strike_errors
 from reach.survey.selfmotion import improved
 
 BY_PROMISE = 4  # stances by what to expect of them, and one more of each other family
+WEIGHTED_STEPS = 4  # toward a strike, each joint by what it can do, before the plain ones
 STEPS = 20  # of inverse kinematics from a stance to a strike near it
 RIDGE = 1e-9  # of the rows' mean square, so that a singular posture gives a finite answer
 SAME = 0.05  # rad or m: closer in every joint, two stances are one
@@ -54,10 +55,30 @@ def _distinct(q: Array) -> Array:
     return q[kept]
 
 
-def postures(setting: Setting, stance: Array, point: Array, normal: Array) -> tuple[Array, NDArray[np.bool_]]:
-    """Postures (m, n) near a stance (n,) for strikes (m, 3), (m, 3), and which are met."""
-    start = np.repeat(stance[None], len(point), axis=0)
-    return reach_strikes(setting, start, point, normal, STEPS)
+def postures(
+    setting: Setting, stance: Array, point: Array, normal: Array, gain: Array
+) -> tuple[Array, NDArray[np.bool_]]:
+    """Postures (m, n) near a stance (n,) for strikes (m, 3), (m, 3), and which are met.
+
+    Joints go there in proportion to what they can do: Newton steps least in √Σ (Δq / gain)² with accelerations (n,).
+    """
+    lo, hi = setting.ends
+    q = np.repeat(stance[None], len(point), axis=0)
+    for _ in range(WEIGHTED_STEPS):
+        rows, error = strike_errors(setting.chain, q, point, normal, setting.length_m)
+        q = np.clip(q + _least_gained(rows, error, gain), lo, hi)
+    return reach_strikes(setting, q, point, normal, STEPS)
+
+
+def _least_gained(rows: Array, target: Array, gain: Array) -> Array:
+    """Joint values (m, n) that the rows (m, r, n) make into targets (m, r), least in √Σ (value / gain)²."""
+    scaled = rows * gain
+    gram = scaled @ scaled.transpose(0, 2, 1)
+    ridge = RIDGE * np.trace(gram, axis1=1, axis2=2)
+    gram[:, range(gram.shape[1]), range(gram.shape[1])] += ridge[:, None]
+    return np.asarray(
+        gain * np.einsum("mrn,mr->mn", scaled, np.linalg.solve(gram, target[:, :, None])[:, :, 0])
+    )
 
 
 def velocities(setting: Setting, q: Array, normal: Array, speed_m_s: Array, gain: Array) -> Array:
@@ -68,13 +89,9 @@ def velocities(setting: Setting, q: Array, normal: Array, speed_m_s: Array, gain
     """
     _, rotation, jacobian = setting.chain.jacobians(q)
     rows = strike_rows(jacobian, rotation, setting.spin_free, setting.length_m)
-    scaled = rows * gain
-    gram = scaled @ scaled.transpose(0, 2, 1)
-    ridge = RIDGE * np.trace(gram, axis1=1, axis2=2)
-    gram[:, range(gram.shape[1]), range(gram.shape[1])] += ridge[:, None]
-    target = np.zeros((len(q), rows.shape[1], 1))
-    target[:, :3, 0] = normal * speed_m_s[:, None]
-    v = gain * np.einsum("mrn,mr->mn", scaled, np.linalg.solve(gram, target)[:, :, 0])
+    target = np.zeros((len(q), rows.shape[1]))
+    target[:, :3] = normal * speed_m_s[:, None]
+    v = _least_gained(rows, target, gain)
     velocity = setting.limits["velocity"]
     over = np.flatnonzero(((v > velocity.kept_hi) | (v < velocity.kept_lo)).any(axis=1))
     if len(over):
