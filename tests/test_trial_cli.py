@@ -206,9 +206,6 @@ def test_a_law_of_the_users_runs_when_that_is_allowed(gains: str, code: int, tmp
             assert [row["bounce"] for row in csv.DictReader(stream)] == ["1"] * 2
 
 
-@pytest.mark.xfail(
-    strict=True, reason="recovered looks at three good bounces and not at what came after them"
-)
 def test_a_law_that_fails_after_three_good_bounces_does_not_keep_the_ball_up(tmp_path: Path) -> None:
     path = cell(tmp_path, 'law = "law.py:Mine"\ngains = { after = 3 }\n', OWN)
     assert call("trial", path, "--out", tmp_path / "o", "--allow-code", *ONE).code == 1

@@ -14,7 +14,6 @@ import pytest
 from trial_case import CENTRE, G, Hand, Still, bout, gantry, slow_gantry, tried
 
 from reach.cell import Array, Recovered, Sensor
-from reach.errors import ReachError
 from reach.evidence.trials import Run
 from reach.trial.laws import Seen, Setup, Twist
 from reach.trial.laws.mirror import Mirror
@@ -227,9 +226,6 @@ def test_drag_takes_height_unless_the_law_makes_up_for_it(law: type) -> None:
     assert not_knows.max() < -5e-3
 
 
-@pytest.mark.xfail(
-    strict=True, raises=ReachError, reason="the launch through air is 1e-9 m short of its own bound"
-)
 @pytest.mark.parametrize("apex_m", [0.264, 0.472])
 def test_a_ball_with_drag_begins_at_any_apex(apex_m: float) -> None:
     assert (
@@ -269,9 +265,6 @@ def test_a_paddle_that_stays_on_the_axis_misses_the_ball_that_it_sent_aside() ->
     assert "goes down outside the paddle's edge" in run.text
 
 
-@pytest.mark.xfail(
-    strict=True, reason="steps short right after the hit are blamed for a miss half a flight later"
-)
 def test_an_arm_that_could_have_caught_it_is_not_blamed_for_a_law_that_stays_on_the_axis() -> None:
     assert bout(tried(gantry()), StrongAtCentre, share=0.6).outcome == "missed past the edge"
 

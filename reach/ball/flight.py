@@ -9,6 +9,7 @@ from functools import cache, cached_property
 import numpy as np
 from numpy.typing import ArrayLike
 
+from reach.ball.hodograph import arc
 from reach.ball.path import LONGEST_S, ROUNDING_M, NoFlight, Path, State
 from reach.cell import Array, Ball, Vec3
 
@@ -192,9 +193,10 @@ def launch(
 ) -> Launch:
     """The velocity with which a ball rises from one place to an apex and comes down at another.
 
-    With drag or lift the flight is followed from its apex both ways, forward to the landing height and back to the
+    With drag alone and gravity straight down the flight lies in a plane and is had from its hodograph, `arc`.
+    Otherwise it is followed from its apex both ways, forward to the landing height and back to the
     height of the start. That leaves two unknowns, the horizontal velocity at the apex, for the way that the
-    ball makes along x and y; they are solved for by Powell's hybrid method from the answer without air.
+    ball makes along x and y; they are solved for by Powell's hybrid method from the answer without lift.
 
     Parameters
     ----------
@@ -223,9 +225,20 @@ def launch(
         velocity = np.array((vx, vy, down * up))
         landing = np.array((vx + gx * flight_s, vy + gy * flight_s, -down * fall_s))
         return Launch(velocity, flight_s, landing)
+    guess = np.array((vx + gx * up, vy + gy * up))
+    if air.drag_per_m > 0 and gx == gy == 0:
+        way = math.hypot(x1 - x0, y1 - y0)
+        cos, sin = ((x1 - x0) / way, (y1 - y0) / way) if way > 0 else (1.0, 0.0)
+        found = arc(air.drag_per_m, down, rise, drop, way)
+        if found is not None:
+            (out, up_m_s), (last, down_m_s) = found.start_m_s, found.landing_m_s
+            if not any(air.lifting(spin_m_s)):
+                velocity = np.array((out * cos, out * sin, up_m_s))
+                return Launch(velocity, found.flight_s, np.array((last * cos, last * sin, down_m_s)))
+            guess = found.apex_m_s * np.array((cos, sin))
     ends = np.array((x0, y0, z0)), np.array((x1, y1, z1))
     spin = np.asarray(spin_m_s, dtype=float)
-    return _launch(air, ends, apex_z, spin, np.array((vx + gx * up, vy + gy * up)), flight_s)
+    return _launch(air, ends, apex_z, spin, guess, flight_s)
 
 
 def _launch(

@@ -155,7 +155,7 @@ class Sensor:
 @dataclass(frozen=True)
 class Recovered:
     """What counts as recovered: contacts this near to the centre and apexes this near to the wanted one, from the
-    `by_bounce`-th at the latest, and for `then_for` bounces on."""
+    `by_bounce`-th at the latest, and for `then_for` bounces on; and the ball kept up for all bounces asked."""
 
     within_m: float = 0.02
     apex_error_m: float = 0.03

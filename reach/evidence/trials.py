@@ -66,9 +66,10 @@ class Run:
     ----------
     offset : (2,) m and lateral : (2,) m/s of the ball at the start, from the centre, world x and y
     outcome : how it ended; text : the same in a sentence, with figures
-    recovered : whether it counts as recovered; recovered_at : the bounce from which it did, None
+    recovered : whether it counts as recovered, which a ball lost later does not; recovered_at : the bounce from which
+        contacts and apexes were good for as long as asked, None where they never were
     bounces : contacts made
-    limit, joint : what held the arm back in the last flight of a lost trial, "" where nothing did
+    limit, joint : what held the arm back at the end of a trial that is not recovered, "" where nothing did
     ended_s : when
     contacts, trace : what happened
     oscillation_m : root mean square of the offsets over the last bounces that `recovered` asks for; nan before

@@ -27,9 +27,9 @@ from reach.trial.starts import Eye, Start
 from reach.verdict import ROUNDING
 
 SHORT_M_S = 0.05  # a step that misses the law's twist by more was held back
-SHORT_STEPS = 3  # of them in the last flight: a limit had its part in the loss
+SHORT_STEPS = 3  # of them in the last LAST_S: a limit had its part in the loss
 LOOKED_AT = 60  # of those steps, the last ones, whose multipliers are looked at
-DIRECTIONS = 8  # in which the paddle's fastest way across is looked for
+LAST_S = 0.1  # before a trial's end: a limit that holds the paddle back then has its part in how it ends
 
 
 @dataclass(frozen=True, eq=False)
@@ -41,7 +41,6 @@ class Ground:
     cell : with the ready posture as its start
     centre (3,) : of the ball at contact
     flight_s : of the wanted apex
-    crossing_m_s : fastest that the strike point can go sideways in the ready posture
     """
 
     cell: Cell
@@ -50,7 +49,6 @@ class Ground:
     limits: dict[str, Limit]
     centre: Array
     flight_s: float
-    crossing_m_s: float
     law: type
     gains: dict[str, float]
     seed: int
@@ -73,20 +71,15 @@ class Ground:
             limits=build_limits(cell),
             centre=np.array(centre),
             flight_s=rise.flight_s,
-            crossing_m_s=_crossing(still, ready),
             law=law,
             gains=gains_of(law, trial, cell.path),
             seed=seed,
         )
 
-
-def _crossing(cell: Cell, ready: Array) -> float:
-    """Fastest speed sideways by the upper bound, the largest over directions."""
-    angles = 2 * np.pi * np.arange(DIRECTIONS) / DIRECTIONS
-    ways = np.column_stack([np.cos(angles), np.sin(angles), np.zeros(DIRECTIONS)])
-    return float(
-        upper(Setting.made(cell, still=False), np.repeat(ready[None], DIRECTIONS, axis=0), ways).free.max()
-    )
+    def crossing_m_s(self, way: Array) -> float:
+        """Fastest that the strike point can go along a direction (2,) aside in the ready posture, by its bound."""
+        ready, along = np.array(self.cell.arm.start), np.append(way / np.linalg.norm(way), 0.0)
+        return float(upper(Setting.made(self.cell, still=False), ready[None], along[None]).free[0])
 
 
 def play(ground: Ground, start: Start, number: int, keep_motion: bool) -> Run:
@@ -100,9 +93,10 @@ def play(ground: Ground, start: Start, number: int, keep_motion: bool) -> Run:
     trial = ground.cell.trial
     assert trial is not None
     try:
-        loop, done = rolled(ground, start, number, careful=False)
-    except GoneBack:
-        loop, done = rolled(ground, start, number, careful=True)
+        try:
+            loop, done = rolled(ground, start, number, careful=False)
+        except GoneBack:
+            loop, done = rolled(ground, start, number, careful=True)
     except LawFault as fault:
         return _unplayed(ground, start, f"the law can't be made: {fault.text}")
     measured = measure(ground.arm, ground.chain, ground.limits, done.delivered)
@@ -111,23 +105,20 @@ def play(ground: Ground, start: Start, number: int, keep_motion: bool) -> Run:
     )
     contacts = loop.found()
     loss = _ending(ground, loop, done)
-    limit, joint = (
-        _held_back(ground, done, loop.last_contact_s)
-        if loss.outcome not in ("held", "law failed")
-        else ("", "")
-    )
-    if limit and loss.outcome in ("missed past the edge", "too fast to catch"):
+    at = recovered_at(contacts, trial.recovered, trial.apex_m)
+    kept = loss.outcome == "held" and at is not None
+    limit, joint = ("", "") if kept or loss.outcome == "law failed" else _held_back(ground, done, contacts)
+    if limit and loss.outcome == "missed past the edge":
         of = f" of {joint}" if joint else ""
-        loss = Loss("limit", f"{loss.text}; the {limit}{of} held the paddle back in that flight")
+        loss = Loss("limit", f"{loss.text}; the {limit}{of} held the paddle back before it")
     if passed and loss.outcome == "held":
         loss = Loss("limit", f"{loss.text}, but the motion passes the {', '.join(passed)}")
-    at = recovered_at(contacts, trial.recovered, trial.apex_m)
     return Run(
         offset=start.offset,
         lateral=start.lateral,
         outcome=loss.outcome,
         text=loss.text,
-        recovered=at is not None and not passed,
+        recovered=kept and not passed,
         recovered_at=at,
         bounces=len(contacts.t_s),
         limit=limit,
@@ -206,15 +197,23 @@ def _ending(ground: Ground, loop: Loop, done: Roll) -> Loss:
     loss = loop.loss
     if loss is None:
         return Loss("limit", "the arm could no longer keep its limits, or the trial took too long")
-    if loss.outcome == "missed past the edge" and loss.needed_m_s > ground.crossing_m_s:
-        speeds = f"{loss.needed_m_s:.2f} m/s, it can do {ground.crossing_m_s:.2f}"
-        return Loss("too fast to catch", f"{loss.text}; to be there the paddle had to cross at {speeds}")
+    needed = float(np.linalg.norm(loss.needed))
+    if loss.outcome == "missed past the edge" and needed > 0:
+        able = ground.crossing_m_s(loss.needed)
+        if needed > able:
+            speeds = f"{needed:.2f} m/s, it can do {able:.2f}"
+            return Loss("too fast to catch", f"{loss.text}; to be there the paddle had to cross at {speeds}")
     return loss
 
 
-def _held_back(ground: Ground, done: Roll, since_s: float) -> tuple[str, str]:
-    """The limit and joint that held most of the last flight's steps back; "" where none did."""
-    first = int(since_s / ground.cell.period_s)
+def _held_back(ground: Ground, done: Roll, contacts: Contacts) -> tuple[str, str]:
+    """The limit and joint that held the paddle back most at the end of the last flight; "" where none did.
+
+    Steps right after a hit don't count, but where flights have got as short: a law that steps its twist there is short
+    with any arm.
+    """
+    period_s, steps = ground.cell.period_s, len(done.shortfall)
+    first = max(0, steps - int(LAST_S / period_s))
     short = first + np.flatnonzero(done.shortfall[first:] > SHORT_M_S)
     if len(short) < SHORT_STEPS:
         return "", ""

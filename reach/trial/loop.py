@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
@@ -21,7 +21,6 @@ PATH_STEPS = 256  # control periods of a flight that are worked out at once
 CONTACTS_A_PERIOD = 5  # more, and the ball lies on the paddle
 DEAD_SHARE = 0.03  # of the wanted apex: a ball that rises no higher after a contact has died
 AWAY_TIMES = 3.0  # the wanted apex: a ball that rises higher has run away
-FALLEN_M = 0.5  # below the strike point: nothing meets the ball any more
 TRACE_EVERY = 4  # control periods
 SAMPLES = 4  # a period, in the search for a contact
 
@@ -32,11 +31,14 @@ class GoneBack(Exception):
 
 @dataclass(frozen=True, eq=False)
 class Loss:
-    """How a trial ended: outcome and sentence; needed_m_s : what the paddle's way to a missed ball would have asked."""
+    """How a trial ended: outcome and sentence.
+
+    needed : (2,) m/s, the velocity aside with which the paddle would have come to a missed ball, zero for no miss
+    """
 
     outcome: Outcome
     text: str
-    needed_m_s: float = 0.0
+    needed: Array = field(default_factory=lambda: np.zeros(2))
 
 
 class Loop(Commands):
@@ -78,6 +80,7 @@ class Loop(Commands):
         self.contacts: list[tuple[float, ...]] = []
         self._trace: list[tuple[float, ...]] = []
         self.last_contact_s = 0.0
+        self._past_m = 0.0  # how far past the edge the ball met the face's plane last
         self._fly(ball, 0)
 
     def target(self, k: int, q: Array, v: Array, state: State | None) -> Array:
@@ -95,8 +98,9 @@ class Loop(Commands):
         if x * normal[0] + y * normal[1] + z * normal[2] - self._radius < LOOK_M:
             self._look(k, q, v)
             ball = self._ball_at(k)
-        if z < -FALLEN_M and self.loss is None:
-            self._missed(point, np.array(ball[:3]), None)
+            lowest = paddle[2] - self._face.half_width_m * (1 - normal[2] ** 2) ** 0.5
+            if self.loss is None and ball[5] < 0 and ball[2] < lowest:
+                self._missed(np.array(ball[:3]))
         if k % TRACE_EVERY == 0:
             self._trace.append((k * self._dt, *ball[:3], *paddle))
         self._before = (q.copy(), v.copy())
@@ -181,25 +185,26 @@ class Loop(Commands):
             n = rotation[:, 2]
             return float((x - point[0]) * n[0] + (y - point[1]) * n[1] + (z - point[2]) * n[2] - self._radius)
 
+        made = len(self.contacts)
+        begin = max(begin, self.last_contact_s)
         for _ in range(CONTACTS_A_PERIOD):
-            begin = max(begin, self.last_contact_s)
             at = first_contact(gap, begin, end, self._dt / SAMPLES)
             if at is None or self.loss is not None:
                 return
             self._meet(at, joints(at), v0 + bend * (at - (k - 1) * self._dt), k)
             begin = at
-        self._die(k * self._dt)
+        if len(self.contacts) == made + CONTACTS_A_PERIOD:
+            self._die(k * self._dt)
 
     def _meet(self, t_s: float, q: Array, v: Array, k: int) -> None:
-        """Ball and face's plane meet at an instant, joints at (q, v)."""
+        """Ball and face's plane meet at an instant, joints at (q, v); past the edge that is no contact."""
         point, rotation, jacobian = self._arm.jacobian(q)
         state = self._flight.one(t_s)
         ball, velocity = np.array(state[:3]), np.array(state[3:])
         normal, twist = rotation[:, 2], jacobian @ v
         on_face = (ball - self._radius * normal - point) @ rotation[:, :2]
-        if self._face.past(*on_face.tolist()) > 0:
-            if velocity[2] < 0:
-                self._missed(point, ball, self._face.past(*on_face.tolist()))
+        self._past_m = self._face.past(*on_face.tolist())
+        if self._past_m > 0:
             return
         ratio = 0.0
         if self._ball_mass:
@@ -232,16 +237,16 @@ class Loop(Commands):
         text = f"the ball rises less than {1000 * DEAD_SHARE * self._apex_m:.0f} mm at {t_s:.2f} s"
         self.loss = Loss("died on the paddle", text)
 
-    def _missed(self, point: Array, ball: Array, past_m: float | None) -> None:
-        """The ball passes the face outside its edge, or has fallen below the paddle."""
-        time_s = max(self._flight_s(), self._dt)
+    def _missed(self, ball: Array) -> None:
+        """The ball falls below the face without having met it."""
         assert self._left_from is not None
-        far = float(np.linalg.norm((ball - self._left_from)[:2])) - self._face.half_width_m
-        by = "" if past_m is None else f", {1000 * past_m:.0f} mm past it"
+        flight, down = self._flight, self._flight.down_to(float(self._centre[2]))
+        place, time_s = ball, self._dt
+        if down is not None and down > flight.start_s:  # where it came down through the centre's height
+            place, time_s = np.array(flight.one(down)[:3]), down - flight.start_s
+        way = (place - self._left_from)[:2]
+        far = float(np.linalg.norm(way))
+        speed = max(far - self._face.half_width_m, 0.0) / time_s
+        by = f", {1000 * self._past_m:.0f} mm past it" if self._past_m > 0 else ""
         text = f"the ball after bounce {len(self.contacts)} goes down outside the paddle's edge{by}"
-        self.loss = Loss("missed past the edge", text, max(far, 0.0) / time_s)
-
-    def _flight_s(self) -> float:
-        """How long the flight lasts down to the centre's height, or what it has lasted."""
-        down = self._flight.down_to(float(self._centre[2]))
-        return (down if down is not None else self._flight.start_s) - self._flight.start_s
+        self.loss = Loss("missed past the edge", text, way / far * speed if far > 0 else np.zeros(2))
