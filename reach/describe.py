@@ -31,6 +31,9 @@ def describe_cell(cell: Cell) -> str:
         _paddle_lines(cell),
         _log_lines(cell, arm, start),
         _survey_lines(cell),
+        _ball_lines(cell),
+        _rally_lines(cell),
+        _trial_lines(cell),
         _accept_lines(cell),
         _gap_lines(cell, limits),
         [f"Note       {note}" for note in once(cell.notes, arm.names)],
@@ -172,6 +175,68 @@ def _survey_lines(cell: Cell) -> list[str]:
         f"Survey     {where}",
         f"           {' to '.join(dict.fromkeys(speeds))} m/s along the normal for {100 * survey.required_share:g} % "
         f"of the strikes; paddle {survey.rotation} at the strike; run-up: {run_up}",
+    ]
+
+
+def _ball_lines(cell: Cell) -> list[str]:
+    ball, contact = cell.ball, cell.contact
+    lines = []
+    if ball is not None:
+        air = [
+            f"{name} {value:g}"
+            for name, value in (("drag", ball.drag_coefficient), ("lift", ball.lift_coefficient))
+            if value
+        ]
+        lines.append(
+            f"Ball       {1000 * ball.mass_kg:.4g} g, radius {1000 * ball.radius_m:.4g} mm "
+            f"({ball.source}); {', '.join(air) if air else 'flies without drag and lift'}"
+        )
+    if contact is not None:
+        e = f"{contact.restitution:g}"
+        if contact.restitution_at:
+            e = f"by a table of {len(contact.restitution_at)} speeds"
+        spread = f" ± {contact.restitution_spread:g}" if contact.restitution_spread else ""
+        gives = "the arm's effective mass counts" if contact.arm_gives else "the paddle does not give"
+        lines.append(
+            f"Contact    restitution {e}{spread}, friction {contact.friction:g}, tangential restitution "
+            f"{contact.tangential_restitution:g} ({contact.source}); {gives}"
+        )
+    return lines
+
+
+def _rally_lines(cell: Cell) -> list[str]:
+    rally = cell.rally
+    if rally is None:
+        return []
+    apexes, offsets = (", ".join(f"{1000 * x:.4g}" for x in row) for row in (rally.apexes_m, rally.offsets_m))
+    bearings = ", ".join(f"{x:.4g}" for x in np.degrees(rally.bearings_rad))
+    grid = "" if rally.centres_box_m is None else f"; a grid of centres every {rally.centres_spacing_m:g} m"
+    return [
+        f"Rally      ball's centre at contact {_vector(rally.centre_m)} m; apexes {apexes} mm above it, offsets "
+        f"{offsets} mm toward {bearings}°",
+        f"           back at the centre within {rally.recover_within_bounces} "
+        f"bounce{'s' if rally.recover_within_bounces > 1 else ''}, seen after {1000 * rally.latency_s:g} ms; "
+        f"{100 * rally.required_share:g} % of the points required{grid}",
+    ]
+
+
+def _trial_lines(cell: Cell) -> list[str]:
+    trial = cell.trial
+    if trial is None:
+        return []
+    sensor, asked = trial.sensor, trial.recovered
+    law = (
+        trial.law
+        if trial.law_file is None
+        else f"{trial.law} of {trial.law_file}, run only with --allow-code"
+    )
+    seen = f"{sensor.rate_hz:g} Hz" if sensor.rate_hz else "every control period"
+    return [
+        f"Trial      law {law}; apex {1000 * trial.apex_m:.4g} mm, {trial.bounces} bounces; ball seen at {seen}, "
+        f"{1000 * sensor.latency_s:g} ms late",
+        f"           recovered: within {1000 * asked.within_m:.4g} mm and {1000 * asked.apex_error_m:.4g} mm of apex "
+        f"from bounce {asked.by_bounce} on for {asked.then_for}, and kept up; {100 * trial.required_share:g} % of the "
+        "starts required",
     ]
 
 

@@ -2,16 +2,19 @@
 
 from __future__ import annotations
 
+import sys
+from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
-from typing import get_args
+from typing import Any, get_args
 
+import numpy as np
 import pytest
 from ideal_paddle import BEARINGS, STILL, leaving, rally, setup_for
 
 from reach.cell import Contact, LawName, Trial
 from reach.errors import InputError
-from reach.trial.laws import LAWS, Law, LawFault, asked, gains_of, law_class, made
+from reach.trial.laws import LAWS, Law, LawFault, Seen, aside, asked, gains_of, law_class, made
 
 OWN_LAW = Path(__file__).parents[1] / "examples" / "wear_bench" / "own_law.py"
 
@@ -143,6 +146,10 @@ BAD += [
     "np.zeros(6, complex)",
     "np.array(['0'] * 6)",
     "object()",
+    "dict.fromkeys(range(6), 0.0)",
+    "{1.0, 2.0, 3.0, 4.0, 5.0, 6.0}",
+    "iter((0.0,) * 6)",
+    "bytes(6)",
 ]
 
 
@@ -181,4 +188,114 @@ def test_what_a_law_raises_is_told_with_its_line(tmp_path: Path) -> None:
         HEAD.replace("self.setup = setup", "self.x = setup.nothing") + body + "        pass\n",
     )
     with pytest.raises(LawFault, match=r"AttributeError: .*nothing.* \(mine\.py line 6\)"):
+        made(law_class(trial), setup_for(trial, Contact(0.8)))
+
+
+@pytest.mark.parametrize("part", [1000.0, -1000.0, 1000])
+@pytest.mark.parametrize("place", [0, 5])
+def test_a_twist_within_1000_is_an_answer(part: float, place: int) -> None:
+    twist = [0.0] * 6
+    twist[place] = part
+    assert asked(Answering(twist), STILL) == tuple(twist)
+
+
+@pytest.mark.parametrize("part", [1000.0001, -1e4, 1e100, -1e200, 10**9])
+@pytest.mark.parametrize("place", range(6))
+@pytest.mark.parametrize("kind", [tuple, list, np.array])
+def test_a_twist_beyond_all_measure_is_a_fault(part: float, place: int, kind: Callable[..., Any]) -> None:
+    twist: list[float] = [0.0] * 6
+    twist[place] = part
+    with pytest.raises(LawFault) as caught:
+        asked(Answering(kind(twist)), STILL)
+    told = "twist must be six finite numbers within ±1000 m/s and rad/s, got "
+    assert caught.value.text.startswith(told) and caught.value.line > 0
+
+
+class Answering:
+    """A law with one answer."""
+
+    def __init__(self, answer: Any):
+        self.answer = answer
+
+    def twist(self, seen: Seen) -> Any:
+        return self.answer
+
+
+# A file runs once, and what it prints goes aside
+
+
+COUNTS = """print("loaded")
+with open(__file__ + ".count", "a") as stream:
+    stream.write("x")
+class Mine:
+    def __init__(self, setup):
+        print("made")
+    def twist(self, seen):
+        return (0.0,) * 6
+class Other(Mine):
+    pass
+"""
+
+
+def test_a_file_runs_once_a_process_and_again_when_it_has_changed(tmp_path: Path) -> None:
+    trial = own(tmp_path / "mine.py", COUNTS)
+    first, again, other = (law_class(replace(trial, law=name)) for name in ("Mine", "Mine", "Other"))
+    count = tmp_path / "mine.py.count"
+    assert first is again and issubclass(other, first) and count.read_text() == "x"
+    for file in (tmp_path / "mine.py", tmp_path / "copy.py"):
+        changed = law_class(own(file, COUNTS.replace("0.0", "1.0")))
+        assert asked(made(changed, setup_for(trial, Contact(0.8))), STILL) == (1.0,) * 6
+    assert count.read_text() == "xx"
+    assert law_class(own(tmp_path / "mine.py", COUNTS)) is first
+    assert sys.modules[first.__module__].__dict__["Mine"] is first and count.read_text() == "xx"
+
+
+def test_a_file_that_failed_is_tried_again(tmp_path: Path) -> None:
+    text = "import os\nif not os.path.exists(__file__ + '.there'):\n    raise OSError('not yet')\n"
+    trial = own(tmp_path / "mine.py", text + COUNTS)
+    with pytest.raises(InputError, match="not yet"):
+        law_class(trial)
+    (tmp_path / "mine.py.there").touch()
+    assert law_class(trial).__name__ == "Mine"
+
+
+def test_what_a_law_prints_as_it_is_loaded_and_made_goes_to_standard_error(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    trial = own(tmp_path / "mine.py", COUNTS)
+    made(law_class(trial), setup_for(trial, Contact(0.8)))
+    told = capsys.readouterr()
+    assert (told.out, told.err) == ("", "loaded\nmade\n")
+    with aside():
+        print("asked")
+    assert capsys.readouterr() == ("", "asked\n")
+
+
+# The line of a law that has its methods from elsewhere
+
+
+INHERITS = "from reach.trial.laws.mirror import Mirror\n\n\nclass Mine(Mirror):\n"
+BAD_INIT = (
+    "    def __init__(self, setup):\n        super().__init__(setup)\n        self.gain = setup.nothing\n"
+)
+
+
+def test_a_failing_init_tells_its_line_where_twist_is_inherited(tmp_path: Path) -> None:
+    trial = own(tmp_path / "mine.py", INHERITS + BAD_INIT)
+    with pytest.raises(LawFault, match=r"AttributeError: .*nothing.* \(mine\.py line 7\)") as caught:
+        made(law_class(trial), setup_for(trial, Contact(0.8)))
+    assert caught.value.line == 7
+
+
+def test_a_method_that_an_inherited_twist_calls_tells_its_line(tmp_path: Path) -> None:
+    """The innermost line of the class's own file, though the built-in law lies between."""
+    text = INHERITS + "    @staticmethod\n    def _height(b, vz):\n        return 1 / 0\n"
+    trial = own(tmp_path / "mine.py", text)
+    with pytest.raises(LawFault, match=r"ZeroDivisionError: division by zero \(mine\.py line 7\)"):
+        asked(made(law_class(trial), setup_for(trial, Contact(0.8))), STILL)
+
+
+def test_a_fault_within_an_inherited_method_tells_the_line_of_the_base(tmp_path: Path) -> None:
+    trial = own(tmp_path / "mine.py", INHERITS + "    gains = {}\n")
+    with pytest.raises(LawFault, match=r"KeyError: .* \(mirror\.py line \d+\)"):
         made(law_class(trial), setup_for(trial, Contact(0.8)))

@@ -219,11 +219,29 @@ def test_a_gain_that_the_users_law_has_not(tmp_path: Path) -> None:
     assert 'did you mean "after"' in done.err and files_in(tmp_path) == before
 
 
-@pytest.mark.xfail(strict=True, reason="what a law prints goes to standard output too")
 def test_what_a_law_prints_is_not_mixed_into_the_json(tmp_path: Path) -> None:
     path = cell(tmp_path, 'law = "law.py:Mine"\n', OWN + "print('loaded')\n")
     done = call("trial", path, "--out", tmp_path / "o", "--allow-code", "--json", *ONE)
     json.loads(done.out)
+    assert done.err.count("loaded") == 1
+
+
+@pytest.mark.parametrize("workers", ["1", "2"])
+def test_what_a_law_prints_as_it_is_asked_is_not_mixed_in_either(workers: str, tmp_path: Path) -> None:
+    """With two workers it goes the way of their own streams."""
+    loud = OWN.replace("def twist(self, seen):", "def twist(self, seen):\n        print('asked')")
+    path = cell(tmp_path, 'law = "law.py:Mine"\n', loud)
+    done = spawn("trial", path, "--allow-code", "--json", "--workers", workers, cwd=tmp_path)
+    json.loads(done.out)
+    assert "asked" in done.err
+
+
+def test_a_law_file_runs_once_with_one_worker(tmp_path: Path) -> None:
+    """The starts that are lost are tried again with changes; that does not load it anew."""
+    counts = OWN + "with open(__file__ + '.count', 'a') as stream:\n    stream.write('x')\n"
+    path = cell(tmp_path, 'law = "law.py:Mine"\ngains = { after = 1 }\n', counts)
+    assert call("trial", path, "--out", tmp_path / "o", "--allow-code", *ONE).code == 1
+    assert (tmp_path / "law.py.count").read_text(encoding="utf-8") == "x"
 
 
 # Its own failures

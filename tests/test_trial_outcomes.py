@@ -86,9 +86,6 @@ def test_a_law_that_cant_be_made_fails_every_trial() -> None:
     assert len(run.contacts.t_s) == 0 and run.contacts.ball.shape == (0, 3) and run.motion is None
 
 
-@pytest.mark.xfail(
-    strict=True, reason="the line is looked for in the file of `twist` alone, here another one"
-)
 def test_the_line_is_told_too_where_the_law_has_its_twist_from_another_file() -> None:
     class Unmade(Hand):
         def __init__(self, setup: Setup):
@@ -112,11 +109,16 @@ def test_a_law_that_cant_be_made_a_second_time_fails_its_trial(monkeypatch: pyte
     assert bout(tried(slow_gantry(x={"acceleration": 5.0})), Once, (0.04, 0.0)).outcome == "law failed"
 
 
-@pytest.mark.xfail(strict=True, reason="a finite answer that no solver can square is put down to the solver")
-@pytest.mark.filterwarnings("ignore::RuntimeWarning")
-def test_an_answer_beyond_all_measure_is_the_laws_failure() -> None:
-    run = bout(tried(gantry(), bounces=3), failing(lambda: (0.0, 0.0, 1e200, 0.0, 0.0, 0.0)))
-    assert run.outcome == "law failed"
+@pytest.mark.parametrize("speed", [1e4, 1e100, 1e200])
+def test_an_answer_beyond_all_measure_is_the_laws_failure(speed: float) -> None:
+    run = bout(tried(gantry(), bounces=3), failing(lambda: (0.0, 0.0, speed, 0.0, 0.0, 0.0)))
+    assert run.outcome == "law failed" and "within ±1000 m/s and rad/s" in run.text
+
+
+def test_the_greatest_twist_that_may_be_asked_is_no_trouble_to_the_solver() -> None:
+    for twist in ((1000.0,) * 6, (-1000.0, 1000.0, -1000.0, -1000.0, 1000.0, 1000.0)):
+        run = bout(tried(slow_gantry(), bounces=3), failing(lambda twist=twist: twist))
+        assert run.outcome not in ("law failed", "solver failed") and run.failed_steps == 0
 
 
 # Limits and drives that lose the ball

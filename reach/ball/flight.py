@@ -228,14 +228,13 @@ def launch(
     guess = np.array((vx + gx * up, vy + gy * up))
     if air.drag_per_m > 0 and gx == gy == 0:
         way = math.hypot(x1 - x0, y1 - y0)
-        cos, sin = ((x1 - x0) / way, (y1 - y0) / way) if way > 0 else (1.0, 0.0)
         found = arc(air.drag_per_m, down, rise, drop, way)
         if found is not None:
-            (out, up_m_s), (last, down_m_s) = found.start_m_s, found.landing_m_s
+            along = np.array(((x1 - x0) / way, (y1 - y0) / way, 0.0)) if way > 0 else np.zeros(3)
             if not any(air.lifting(spin_m_s)):
-                velocity = np.array((out * cos, out * sin, up_m_s))
-                return Launch(velocity, found.flight_s, np.array((last * cos, last * sin, down_m_s)))
-            guess = found.apex_m_s * np.array((cos, sin))
+                (vx, vz), (wx, wz) = found.start_m_s, found.landing_m_s
+                return Launch(vx * along + (0, 0, vz), found.flight_s, wx * along + (0, 0, wz))
+            guess = found.apex_m_s * along[:2]
     ends = np.array((x0, y0, z0)), np.array((x1, y1, z1))
     spin = np.asarray(spin_m_s, dtype=float)
     return _launch(air, ends, apex_z, spin, guess, flight_s)

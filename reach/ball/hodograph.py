@@ -51,7 +51,8 @@ def arc(drag_per_m: float, down_m_s2: float, rise_m: float, drop_m: float, way_m
     ends = [math.sqrt(-g / k * math.expm1(-2 * k * rise_m)), math.sqrt(g / k * math.expm1(2 * k * drop_m))]
     heights = rise_m, drop_m
     for _ in range(ROUNDS):
-        legs = [_Leg(sign, end, u, k, g) for sign, end in zip((1, -1), ends, strict=True)]
+        with np.errstate(over="ignore", invalid="ignore"):  # of a way that no ball makes
+            legs = [_Leg(sign, end, u, k, g) for sign, end in zip((1, -1), ends, strict=True)]
         if not all(LEAST_SHARE <= leg.share <= MOST_SHARE for leg in legs):
             return None
         for leg in legs:

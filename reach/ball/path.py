@@ -20,7 +20,8 @@ RELATIVE, ABSOLUTE = (
     1e-13,
 )  # tolerances of a step, m and m/s; ten times wider leaves errors of 2e-9 m/s
 REST_SHARE = 0.8  # of the time in which a slowing ball would come to rest: most that a step takes
-REST_STEP_S = 4e-3  # a step may be as long where a ball comes to rest: what it errs by there is 1e-11 m at most
+REST_STEP_S = 4e-3  # it takes as much where the ball rests: flights over a top then err by 2e-11 m at most
+FASTEST = 1e50  # m and m/s: beyond, squares overflow, and the solver's step is no number and never ends
 ROUNDING_M = 1e-12  # a height above the top by less is the top
 
 State = tuple[float, float, float, float, float, float]
@@ -45,8 +46,8 @@ class Path:
     With drag and lift of the other sign it runs the same flight backwards.
 
     Drag |v| v is not smooth where the ball rests, as at the top of a vertical flight, and the method takes a smooth
-    rate for granted: over a step of 0.1 s across a top it errs by 1e-9 m and 7e-9 m/s and its estimate does not show it.
-    So a step of a ball that slows down ends well before |v|/|a|, which is how far off the zeros of v · v are.
+    rate for granted: over a step of 0.1 s across a top it errs by 1e-9 m and 7e-9 m/s, which its own estimate does not
+    show. So a step of a ball that slows down ends well before |v|/|a|, which is how far off the zeros of v · v are.
 
     Parameters
     ----------
@@ -59,6 +60,8 @@ class Path:
     def __init__(self, start: State, drag_per_m: float, lift_per_m: Vec3, gravity_m_s2: Vec3):
         from scipy.integrate import DOP853
 
+        if not max(map(abs, start)) < FASTEST:
+            raise NoFlight("the flight can't be followed: its start is beyond all measure")
         self._rate = _rate(drag_per_m, lift_per_m, gravity_m_s2)
         self._solver = DOP853(
             self._rate, 0.0, start, math.inf, max_step=LONGEST_STEP_S, rtol=RELATIVE, atol=ABSOLUTE

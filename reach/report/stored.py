@@ -10,6 +10,7 @@ from typing import Any
 
 import numpy as np
 
+from reach.cell import Cell
 from reach.report.document import strict
 from reach.report.json import json_text
 from reach.result import Result
@@ -58,3 +59,11 @@ def cell_file(result: Result, own: Mapping[str, Any]) -> bytes:
         "inputs": [asdict(source) for source in cell.inputs],
     }
     return json_text(strict(content, digits=None)).encode()
+
+
+def ball_and_contact(cell: Cell) -> dict[str, Any]:
+    """Return what the ball does by, as plain data; None for what the cell does not have."""
+    return {
+        name: None if value is None else asdict(value)
+        for name, value in (("ball", cell.ball), ("contact", cell.contact))
+    }

@@ -21,7 +21,7 @@ from reach.limits.base import Limit
 from reach.limits.build import build_limits
 from reach.strike.setting import Setting
 from reach.strike.sides import upper
-from reach.trial.laws import LawFault, Setup, gains_of, law_class, made
+from reach.trial.laws import LawFault, Setup, aside, gains_of, law_class, made
 from reach.trial.loop import AWAY_TIMES, GoneBack, Loop, Loss
 from reach.trial.starts import Eye, Start
 from reach.verdict import ROUNDING
@@ -187,7 +187,8 @@ def rolled(ground: Ground, start: Start, number: int, careful: bool) -> tuple[Lo
     longest = (trial.bounces + 2) * ground.flight_s * np.sqrt(AWAY_TIMES)
     loop = Loop(cell, ground.arm, law, eye, ball, centre, trial.apex_m, trial.bounces, longest)
     start_q = np.array(cell.arm.start)
-    return loop, roll(cell, ground.arm, ground.limits, loop, start_q, careful)
+    with aside():
+        return loop, roll(cell, ground.arm, ground.limits, loop, start_q, careful)
 
 
 def _ending(ground: Ground, loop: Loop, done: Roll) -> Loss:

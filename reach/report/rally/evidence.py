@@ -8,7 +8,7 @@ import numpy as np
 
 from reach.evidence.rallies import Knots, RallyPoints
 from reach.report.rally.document import settings
-from reach.report.stored import archive, cell_file
+from reach.report.stored import archive, ball_and_contact, cell_file
 from reach.result import RallyResult
 
 APART = ("reason", "motions")  # fields of RallyPoints that are no arrays; reasons are in rally.csv
@@ -19,6 +19,7 @@ def evidence_files(result: RallyResult) -> dict[str, bytes | None]:
     evidence = result.evidence
     own = {
         "rally": settings(result.cell.rally),
+        **ball_and_contact(result.cell),
         "drag": evidence.drag,
         "lift": evidence.lift,
         "nominal_only": evidence.nominal_only,

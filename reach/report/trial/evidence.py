@@ -8,7 +8,7 @@ from dataclasses import fields
 import numpy as np
 
 from reach.evidence.trials import Contacts, Run
-from reach.report.stored import archive, cell_file
+from reach.report.stored import archive, ball_and_contact, cell_file
 from reach.report.trial.document import settings
 from reach.result import TrialResult
 
@@ -18,6 +18,7 @@ def evidence_files(result: TrialResult) -> dict[str, bytes | None]:
     evidence = result.evidence
     own = {
         "trial": settings(result.cell.trial),
+        **ball_and_contact(result.cell),
         "law": evidence.law,
         "gains": dict(evidence.gains),
         "centre_m": evidence.centre,

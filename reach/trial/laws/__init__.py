@@ -7,9 +7,21 @@ from reach.errors import FaultList, nearest
 from reach.trial.laws.base import Law, Seen, Setup, Twist
 from reach.trial.laws.mirror import Mirror
 from reach.trial.laws.planning import Planning
-from reach.trial.laws.user import LawFault, asked, load, made, own_gains
+from reach.trial.laws.user import LawFault, aside, asked, load, made, own_gains
 
-__all__ = ["LAWS", "Law", "LawFault", "Seen", "Setup", "Twist", "asked", "gains_of", "law_class", "made"]
+__all__ = [
+    "LAWS",
+    "Law",
+    "LawFault",
+    "Seen",
+    "Setup",
+    "Twist",
+    "aside",
+    "asked",
+    "gains_of",
+    "law_class",
+    "made",
+]
 
 LAWS: dict[str, type[Law]] = {"mirror": Mirror, "planning": Planning}
 

@@ -4,13 +4,15 @@ from __future__ import annotations
 
 import ast
 import sys
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
+from contextlib import AbstractContextManager, redirect_stdout
+from hashlib import sha256
 from importlib.machinery import SourceFileLoader
 from importlib.util import module_from_spec, spec_from_file_location
 from inspect import getattr_static
-from math import isfinite
+from math import inf, isfinite
 from os.path import basename
-from types import CodeType, TracebackType
+from types import CodeType, FunctionType, ModuleType, TracebackType
 from typing import Any
 
 import numpy as np
@@ -20,8 +22,14 @@ from reach.trial.laws.base import Seen, Setup, Twist
 
 MODULE = "_reach_user_law"  # what a user's file is called among the modules; the last one loaded has the name
 PARTS = 6
+TAKEN = (tuple, list, np.ndarray)
 SHOWN = 200  # characters of an answer
+MOST = (
+    1000.0  # m/s and rad/s: some hundred times what arms do; far beyond, its square is too much for a solver
+)
 RAISED = (Exception, SystemExit)  # whatever a user's code ends with, short of a key pressed
+
+_loaded: dict[tuple[str, bytes], ModuleType] = {}  # of this process, by file and digest of its bytes
 
 
 class LawFault(Exception):
@@ -39,37 +47,34 @@ class LawFault(Exception):
 
 
 class _Source(SourceFileLoader):
-    """Reads the source and nothing else: no compiled copy is taken from beside it or left there."""
+    """Compiles the bytes that were read, once: no compiled copy is taken from beside the file or left there."""
+
+    source: bytes
 
     def get_code(self, fullname: str) -> CodeType:
-        """The code of the file as it stands."""
-        source = self.get_data(self.path)
-        code: CodeType = self.source_to_code(source, self.path)
+        """The code of these bytes."""
+        code: CodeType = self.source_to_code(self.source, self.path)
         return code
+
+
+def aside() -> AbstractContextManager[object]:
+    """Standard output goes to standard error meanwhile: what a user's code prints is no part of an answer."""
+    return redirect_stdout(sys.stderr)
 
 
 def load(file: str, name: str) -> type:
     """The class of a name from a user's file.
 
     The file runs with all that the user may do. Whether it may run at all is decided by the caller before; nothing here
-    asks. The class need not derive from `Law`: it has `__init__(self, setup)`, `twist(self, seen)` and, where it has
-    gains, a dict `gains`.
+    asks. It runs once a process for as long as its bytes stay the same. The class need not derive from `Law`: it has
+    `__init__(self, setup)`, `twist(self, seen)` and, where it has gains, a dict `gains`.
 
     Raises
     ------
     InputError
         The file can't be read or fails while it is loaded, or has no such class.
     """
-    spec = spec_from_file_location(MODULE, file, loader=_Source(MODULE, file))
-    if spec is None or spec.loader is None:
-        raise _fault(file, 1, "can't be loaded as Python")
-    module = module_from_spec(spec)
-    sys.modules[MODULE] = module
-    try:
-        spec.loader.exec_module(module)
-    except RAISED as error:
-        del sys.modules[MODULE]
-        raise _fault(file, _line(error, file) or 1, f"fails while it is loaded: {_told(error)}") from error
+    module = _module(file)
     found = vars(module).get(name)
     line = _defined(file, name)
     if found is None:
@@ -81,6 +86,27 @@ def load(file: str, name: str) -> type:
     if not callable(getattr(found, "twist", None)):
         raise _fault(file, line, f'"{name}" has no method "twist(self, seen)"')
     return found
+
+
+def _module(file: str) -> ModuleType:
+    """The module of a file as it stands."""
+    loader = _Source(MODULE, file)
+    spec = spec_from_file_location(MODULE, file, loader=loader)
+    if spec is None:
+        raise _fault(file, 1, "can't be loaded as Python")
+    try:
+        loader.source = loader.get_data(file)
+        key = file, sha256(loader.source).digest()
+        module = _loaded.get(key) or module_from_spec(spec)
+        sys.modules[MODULE] = module
+        if key not in _loaded:
+            with aside():
+                loader.exec_module(module)
+            _loaded[key] = module
+    except RAISED as error:
+        sys.modules.pop(MODULE, None)
+        raise _fault(file, _line(error, file) or 1, f"fails while it is loaded: {_told(error)}") from error
+    return module
 
 
 def own_gains(cls: type, file: str | None) -> dict[str, float]:
@@ -102,13 +128,14 @@ def own_gains(cls: type, file: str | None) -> dict[str, float]:
 def made(cls: type, setup: Setup) -> Any:
     """A law of a class; LawFault with the line where its `__init__` fails."""
     try:
-        return cls(setup)
+        with aside():
+            return cls(setup)
     except RAISED as error:
         raise _law_fault(cls, error) from error
 
 
 def asked(law: Any, seen: Seen) -> Twist:
-    """The twist that a law answers, six finite numbers; LawFault for anything else.
+    """The twist that a law answers, six finite numbers of at most MOST; LawFault for anything else.
 
     Tuples, lists and arrays are taken.
     """
@@ -117,10 +144,12 @@ def asked(law: Any, seen: Seen) -> Twist:
     except RAISED as error:
         raise _law_fault(type(law), error) from error
     try:
-        vx, vy, vz, wx, wy, wz = answer.tolist() if type(answer) is np.ndarray else answer
-        straight = isfinite(vx) and isfinite(vy) and isfinite(vz)
-        if straight and isfinite(wx) and isfinite(wy) and isfinite(wz):
-            return float(vx), float(vy), float(vz), float(wx), float(wy), float(wz)
+        if isinstance(answer, TAKEN):
+            vx, vy, vz, wx, wy, wz = answer.tolist() if isinstance(answer, np.ndarray) else answer
+            most, least = MOST, -MOST  # neither nan nor what is no real number lies between
+            straight = least <= vx <= most and least <= vy <= most and least <= vz <= most
+            if straight and least <= wx <= most and least <= wy <= most and least <= wz <= most:
+                return float(vx), float(vy), float(vz), float(wx), float(wy), float(wz)
     except RAISED:
         pass
     raise _wrong(type(law), answer)
@@ -129,23 +158,38 @@ def asked(law: Any, seen: Seen) -> Twist:
 def _wrong(cls: type, answer: Any) -> LawFault:
     """What is wrong with an answer; its line is that of the method."""
     file, line = _home(cls)
+    plain, within = type(answer) in (tuple, list, np.ndarray, type(None)), ""
     try:
-        plain = type(answer) in (tuple, list, np.ndarray, type(None))
         shown = repr(answer)[:SHOWN] if plain else _an(answer)
-        shape = np.shape(answer)
+        shape = np.shape(answer) if plain else ()
+        if shape == (PARTS,) and all(
+            isinstance(part, int | float | np.integer | np.floating) and -inf < part < inf for part in answer
+        ):
+            within = f" within ±{MOST:g} m/s and rad/s"
     except RAISED:
         shown, shape = _an(answer), (PARTS,)
     if shape not in ((), (PARTS,)):
         shown += f" of shape {shape}"
-    text = f"twist must be six finite numbers, got {shown}"
+    text = f"twist must be six finite numbers{within}, got {shown}"
     return LawFault(f"{text} ({basename(file)} line {line})" if line else text, line)
 
 
 def _law_fault(cls: type, error: BaseException) -> LawFault:
-    """What a law raised, with the innermost line of its file."""
-    file, _ = _home(cls)
-    line = _line(error, file)
-    return LawFault(_told(error) + (f" ({basename(file)} line {line})" if line else ""), line)
+    """What a law raised, with the innermost line of its file; that of a base where its own has no part in it."""
+    for file in _files(cls):
+        line = _line(error, file)
+        if line:
+            return LawFault(f"{_told(error)} ({basename(file)} line {line})", line)
+    return LawFault(_told(error), 0)
+
+
+def _files(cls: type) -> Iterator[str]:
+    """Files that a class, and then its bases, have their methods from."""
+    for base in cls.__mro__:
+        for value in vars(base).values():
+            method = value.__func__ if isinstance(value, classmethod | staticmethod) else value
+            if isinstance(method, FunctionType):
+                yield method.__code__.co_filename
 
 
 def _home(cls: type) -> tuple[str, int]:
