@@ -277,9 +277,13 @@ def test_public_names() -> None:
         "InputError",
         "describe_cell",
         "follow_commands",
+        "RallyResult",
         "SurveyResult",
+        "TrialResult",
         "load_cell",
+        "size_rally",
         "survey_strikes",
+        "try_law",
         "write_results",
     }
     for name in reach.__all__:

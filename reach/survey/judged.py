@@ -38,7 +38,9 @@ class Scribe:
         self._cell, self._setting, self._folds = cell, setting, folds
         self._origin, self._length = origin, length
         self._unstated = [pair for pair in unknown_limits(setting.limits) if pair[0] != DUTY]
-        lacking = {limit for limit, _ in self._unstated}
+        lacking = {limit for limit, _ in self._unstated} | {
+            DUTY
+        }  # one stroke is no cycle: duty is never looked at
         self._unknown = [limit for limit in cell.accept.require if limit in lacking]
         velocity = setting.limits["velocity"]
         self._fastest = np.maximum(velocity.kept_hi, -velocity.kept_lo)

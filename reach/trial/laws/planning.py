@@ -27,7 +27,6 @@ LEAST_UP = 0.01  # square of the normal's part along z, on a path that overshoot
 STEEPEST = 0.5  # sine of the tilt, 30 degrees; beyond, a strike is not one that keeps a ball up
 FARTHEST_M = 1.0  # aside of the centre: beyond, no arm is sent after the ball
 
-SOLVED_M = 0.02  # a contact predicted farther from the last one in its flight is solved for anew
 SAME_S = 1e-7  # sights taken no farther apart are one
 
 AXES = range(5)  # x, y, z of the strike point, then x and y of the normal
@@ -268,8 +267,10 @@ class Planning(Law):
         run_s = contact_s - t - HOLD_S
         if run_s > 2 * self.stroke_s:
             return self._resting(seen, contact_s - HOLD_S - self.stroke_s)
+        x, y, z = self.setup.centre_m
+        land = [p + self.share * (c - p) for p, c in zip(place, (x, y, z), strict=True)]
         try:
-            out = self._sent(place)
+            out = launch(self.air, place, land, z + self.setup.apex_m).velocity
             normal, speed = strike_for(ball_in, out, self.setup.contact)
         except (NoFlight, NoContact):
             return self._resting(seen, t + RETRY_S)
@@ -282,23 +283,6 @@ class Planning(Law):
         late = contact_s + LATE_S
         down, late = -float(ball_in[2]), contact_s + LATE_S
         return Plan("strike", along, late, contact_s, _triple(place), _triple(out), down, change)
-
-    def _sent(self, place: Array) -> Array:
-        """The wanted velocity (3,) right after a strike at a place (3,).
-
-        In air it is solved for once a flight. A place that has moved since by a little turns it by what it would in
-        vacuum, which leaves a tenth of the move's own effect.
-        """
-        if self.drag and self.solved is not None:
-            contacts, at, out, flight_s = self.solved
-            move = place - at
-            if contacts == self.contacts and abs(move).max() < SOLVED_M:
-                return np.asarray(out - self.share / flight_s * np.array([move[0], move[1], 0.0]))
-        x, y, z = self.setup.centre_m
-        land = [p + self.share * (c - p) for p, c in zip(place, (x, y, z), strict=True)]
-        sent = launch(self.air, place, land, z + self.setup.apex_m)
-        self.solved = self.contacts, place, sent.velocity, sent.flight_s
-        return sent.velocity
 
     def _coming(self, t: float, ball: Twist) -> tuple[float, Array, Array] | None:
         """When and where the ball's centre comes down through the centre's height, and how fast; None: not so."""
