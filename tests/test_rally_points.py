@@ -327,8 +327,8 @@ def test_a_slide_slower_than_asked_by_less_than_is_accepted_is_not_refused() -> 
     assert given["verdict"] != NOT_DELIVERABLE
 
 
-def test_no_demonstrated_strike_passes_its_own_bound() -> None:
-    """Two links with the face level in one posture alone: 0.35 m/s demonstrated, the bound says 0."""
+def test_an_arm_that_must_turn_its_paddle_to_strike_can_not() -> None:
+    """Two links with the face level in one posture alone: any way up turns it, at 0.9 rad/s for the 0.35 m/s asked."""
     cell = robot_cell(
         "link2",
         paddle="[paddle]\nmount = { xyz_m = [0.0, 0.0, 0.0] }\nradius_m = 0.05\nmass_kg = 0.1\n",
@@ -337,8 +337,8 @@ def test_no_demonstrated_strike_passes_its_own_bound() -> None:
     arm = replace(cell.arm, start=(0.8, -0.8))
     place = 0.5 * np.array([np.cos(0.8), 0.0, np.sin(0.8)]) + np.array([0.4, 0.0, 0.02])
     given = row(points_at(court_of(rallied(replace(cell, arm=arm), tuple(place.tolist())))), 0)
-    assert given["verdict"] == DELIVERABLE
-    assert given["paddle_speed_m_s"] <= given["speed_bound_m_s"]
+    assert given["verdict"] == NOT_DELIVERABLE and given["basis"] == "searched"
+    assert "m/s asked, at most" in given["reason"]
 
 
 def test_with_latency_a_deliverable_point_is_above_its_time_bound() -> None:

@@ -1,10 +1,10 @@
 """Whether a strike or the way between two may be done at all by joint velocities within the limits.
 
-In given postures a strike's joint velocities are free but for what [accept] asks of the paddle's speed, direction and
-turning, and the posture may lie off by what it allows of place and tilt. Each joint by itself must get from one strike
-to the next in exactly the flight. What a joint covers in a time is concave in its speeds at both ends, so the speeds
-and postures that may do are a convex set; linear programs with cuts along its border find a point of it or show that
-there is none. A point of the set proves nothing; that there is none refuses the postures.
+In given postures a strike's joint velocities are free but for what [accept] asks of the paddle's speed and direction,
+and that it does not turn; the posture may lie off by what is accepted of place and tilt. Each joint by itself must get
+from one strike to the next in exactly the flight. What a joint covers in a time is concave in its speeds at both ends,
+so the speeds and postures that may do are a convex set; linear programs with cuts along its border find a point of it
+or show that there is none. A point of the set proves nothing; that there is none refuses the postures.
 
 Cutting planes: J. E. Kelley, "The cutting-plane method for solving convex programs", J. SIAM 8 (1960) 703.
 """
@@ -17,13 +17,13 @@ import numpy as np
 
 from reach.cell import Array
 from reach.rally.fastest import farthest, farthest_slopes, limits_of
+from reach.rally.stance import STILL_RAD_S
 from reach.strike.bound import strike_rows
 from reach.strike.setting import Setting
 
 CUTS = 25  # rounds of cuts before a posture counts as possible
 NEAR = 1e-6  # rad or m: a way missed by less is met
 LOOSE_RAD = 0.2  # a posture may lie off by this much of each joint, redundancy included
-STILL_S = 1e-4  # least half window: an instant's strike may turn, but not without bound
 
 
 class Due(NamedTuple):
@@ -133,9 +133,8 @@ def _aside(setting: Setting, q: Array, normal: Array) -> tuple[Array, Array]:
     accept = setting.accept
     across = np.linalg.svd(normal[None])[2][1:]
     turning = rotation[:, :2].T @ jacobian[3:]
-    rate = 2 * accept.strike_tilt_error_rad / max(accept.strike_window_s, 2 * STILL_S)
     lateral = accept.strike_lateral_m_s
-    return np.vstack([across @ jacobian[:3], turning]), np.array([lateral, lateral, rate, rate])
+    return np.vstack([across @ jacobian[:3], turning]), np.array([lateral, lateral, STILL_RAD_S, STILL_RAD_S])
 
 
 def _place(setting: Setting, q: Array) -> tuple[Array, Array]:

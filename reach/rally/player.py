@@ -14,7 +14,7 @@ from reach.rally.cycle import Cycles, Ways
 from reach.rally.exchange import Exchange
 from reach.rally.gauge import Gauge
 from reach.rally.quintic import States
-from reach.rally.stance import gains, postures, velocities
+from reach.rally.stance import STILL_RAD_S, gains, postures, velocities
 from reach.strike.setting import Setting
 
 REACH, WINDOW, CYCLE = "reach", "strike window", "cycle time"
@@ -108,7 +108,7 @@ class Player:
         return cycles.after(q[leg], v[leg]), cycles.before(q[leg + 1], v[leg + 1])
 
     def _held(self, q: Array, v: Array, normal: Array, speed: Array) -> NDArray[np.bool_]:
-        """Whether speed, direction and tilt hold at both ends of the strike windows."""
+        """Whether speed, direction and tilt hold at both ends of the strike windows, and the paddle does not turn."""
         accept, half = self.setting.accept, self._window / 2
         good = np.ones(len(q), dtype=bool)
         for side in (-half, half):
@@ -117,7 +117,9 @@ class Player:
             along = np.einsum("mi,mi->m", error, normal)
             aside = np.linalg.norm(error - along[:, None] * normal, axis=1)
             turned = np.einsum("mi,mi->m", rotation[:, :, 2], normal)
+            turning = np.linalg.norm(np.cross(twist[:, 3:], rotation[:, :, 2]), axis=1)
             good &= np.abs(along) <= accept.strike_speed_error_share * np.abs(speed) + 1e-9
+            good &= turning <= STILL_RAD_S
             good &= (aside <= accept.strike_lateral_m_s) & (
                 np.arccos(np.clip(turned, -1.0, 1.0)) <= accept.strike_tilt_error_rad
             )

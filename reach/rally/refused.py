@@ -81,7 +81,7 @@ def _too_fast(
     need = speed_m_s * (1 - setting.accept.strike_speed_error_share)
     for player in court.players:
         q, met = postures(setting, player.stance, place[None], normal[None], player.gain)
-        if met[0] and upper(setting, q, normal[None]).free[0] >= need:
+        if met[0] and most_speed(setting, q[0], normal) >= need:
             return None
     found, _ = from_library(setting, court.kit.library, place[None], normal[None], deep=True)
     if not len(found.q):
@@ -89,10 +89,11 @@ def _too_fast(
     moved = improved(setting, found, place[None], normal[None], normal[None], count=WIDE)
     q = np.concatenate([moved.found.q, found.q])
     above = upper(setting, q, np.repeat(normal[None], len(q), axis=0))
-    if above.free.max() >= need or any(most_speed(setting, one, normal) >= need for one in q):
+    speeds = [most_speed(setting, one, normal) for one in q]
+    i = int(np.argmax(speeds))
+    speed, count = speeds[i], int(moved.tried[0])
+    if speed >= need:
         return None
-    i = int(above.free.argmax())
-    speed, count = float(above.free[i]), int(moved.tried[0])
     text = f"{speed_m_s:.3g} m/s asked, at most {speed:.3g} m/s in {count} postures"
     if speed < SINGULAR_M_S:
         return Refusal(SEARCHED, SINGULARITY, "", text)

@@ -17,6 +17,9 @@ BY_PROMISE = 4  # stances by what to expect of them, and one more of each other 
 WEIGHTED_STEPS = 4  # toward a strike, each joint by what it can do, before the plain ones
 STEPS = 20  # of inverse kinematics from a stance to a strike near it
 RIDGE = 1e-9  # of the rows' mean square, so that a singular posture gives a finite answer
+STILL_RAD_S = (
+    0.2  # a paddle that turns no faster counts as still at a strike: by a tenth of a degree in 10 ms
+)
 SAME = 0.05  # rad or m: closer in every joint, two stances are one
 UP = np.array([[0.0, 0.0, 1.0]])
 
