@@ -257,7 +257,7 @@ BAD_TRIALS = [
     ('law = "own.py:a.b"\n', "law", ("no name of a class",)),
     ('law = "own.py:class"\n', "law", ("no name of a class",)),
     ('law = "own.py:Own()"\n', "law", ("no name of a class",)),
-    ('law = "/tmp/own.py:Own"\n', "law", ('"/tmp/own.py" is an absolute path', "beside the cell file")),
+    ('law = "/own.py:Own"\n', "law", ('"/own.py" is an absolute path', "beside the cell file")),
     ('law = "a.py:own\\u0000.py:Own\\n"\n', "law", ("no name of a class",)),
 ]
 
