@@ -210,10 +210,11 @@ def _rally_lines(cell: Cell) -> list[str]:
         return []
     apexes, offsets = (", ".join(f"{1000 * x:.4g}" for x in row) for row in (rally.apexes_m, rally.offsets_m))
     bearings = ", ".join(f"{x:.4g}" for x in np.degrees(rally.bearings_rad))
+    lateral = f", coming in at {rally.lateral_m_s:g} m/s outward" if rally.lateral_m_s else ""
     grid = "" if rally.centres_box_m is None else f"; a grid of centres every {rally.centres_spacing_m:g} m"
     return [
         f"Rally      ball's centre at contact {_vector(rally.centre_m)} m; apexes {apexes} mm above it, offsets "
-        f"{offsets} mm toward {bearings}°",
+        f"{offsets} mm toward {bearings}°{lateral}",
         f"           back at the centre within {rally.recover_within_bounces} "
         f"bounce{'s' if rally.recover_within_bounces > 1 else ''}, seen after {1000 * rally.latency_s:g} ms; "
         f"{100 * rally.required_share:g} % of the points required{grid}",

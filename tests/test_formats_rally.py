@@ -62,11 +62,13 @@ def test_every_key_of_a_rally(tmp_path: Path) -> None:
     rally = rally_of(
         tmp_path,
         "offsets_m = [0, 0.05]\nbearings_deg = [-90, 30]\nrecover_within_bounces = 3\nlatency_s = 0.02\n",
+        "lateral_m_s = -0.1\n",
         "required_share = 0.9\ncentres_box_m = [[0.2, -0.4, 0.4], [0.8, 0.4, 0.4]]\ncentres_spacing_m = 0.05\n",
         "contact_offset_spread_m = 0.01\nvelocity_spread_m_s = 0.1\ncases = 200\n",
     )
     assert rally.bearings_rad == pytest.approx((-math.pi / 2, math.pi / 6), abs=1e-12)  # rad
     assert (rally.offsets_m, rally.recover_within_bounces, rally.latency_s) == ((0, 0.05), 3, 0.02)
+    assert rally.lateral_m_s == -0.1
     assert (rally.required_share, rally.centres_spacing_m) == (0.9, 0.05)
     assert rally.centres_box_m == ((0.2, -0.4, 0.4), (0.8, 0.4, 0.4))
     assert (rally.contact_offset_spread_m, rally.velocity_spread_m_s, rally.cases) == (0.01, 0.1, 200)

@@ -158,6 +158,22 @@ def test_the_ball_is_back_at_the_centre_in_the_bounces_allowed(count: int) -> No
     np.testing.assert_allclose(steady.normal, [0, 0, 1], atol=1e-12)
 
 
+@pytest.mark.parametrize("offset", [0.0, 0.05])
+def test_a_ball_that_drifts_outward_is_stopped_and_returned(offset: float) -> None:
+    """With a lateral speed s at the main strike; the face leans by what takes s away and sends the ball back."""
+    apex, s = 0.2, 0.3
+    made = Ballistics(cell_of(), 1, lateral_m_s=s)
+    exchange = made.exchange(apex, offset, np.pi / 2)
+    main = exchange.strikes[exchange.main]
+    np.testing.assert_allclose(main.ball_in, [0.0, s, -np.sqrt(2 * G * apex)], atol=1e-12)  # m/s
+    flight_s = 2 * np.sqrt(2 * apex / G)
+    np.testing.assert_allclose(main.ball_out[:2], [0.0, -offset / flight_s], atol=1e-9)
+    # On a face without friction the normal is along the change of velocity.
+    change = main.ball_out - main.ball_in
+    np.testing.assert_allclose(main.normal, change / np.linalg.norm(change), atol=1e-9)
+    follow(replace(exchange, strikes=exchange.strikes[1:], flights_s=exchange.flights_s[1:]))
+
+
 @pytest.mark.parametrize("bearing", [0.5, np.pi / 2, 4.0])
 def test_a_bearing_turns_everything(bearing: float) -> None:
     made = ballistics(2)

@@ -106,6 +106,7 @@ class Rally:
     centre_m : the ball's centre at contact
     apexes_m : above the centre
     offsets_m, bearings_rad : where the ball comes down, from the centre; bearings from +x, counter-clockwise from above
+    lateral_m_s : the ball's speed when it comes down there, outward along the bearing
     recover_within_bounces : strikes after which the ball is to be at the centre again
     latency_s : from the ball seen to the arm moving
     required_share : of the points
@@ -118,6 +119,7 @@ class Rally:
     apexes_m: tuple[float, ...]
     offsets_m: tuple[float, ...] = (0.0,)
     bearings_rad: tuple[float, ...] = QUARTERS_RAD
+    lateral_m_s: float = 0.0
     recover_within_bounces: int = 1
     latency_s: float = 0.0
     required_share: float = 1.0

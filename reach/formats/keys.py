@@ -85,7 +85,8 @@ _SECTIONS = {
     "strike goes along the normal unless direction says otherwise.",
     "rally": "Flights of the ball that the paddle is to keep up, for the command rally. Every apex goes with every "
     "offset and bearing: the ball rises so far above the centre and comes down so far from it, toward bearings from "
-    "+x, counter-clockwise seen from above, and is to be back at the centre after recover_within_bounces strikes. "
+    "+x, counter-clockwise seen from above, at lateral_m_s outward along the bearing, and is to be back at the centre "
+    "after recover_within_bounces strikes. "
     "Needs [ball], [contact], a paddle of shape disc or plate, and gravity straight down; spreads are standard "
     "deviations, tried in so many cases. centres_box_m gives further places for the centre, a grid of at most "
     f"{MOST_CENTRES} from its low corner on; there are at most {MOST_FLIGHTS} flights.",

@@ -233,6 +233,7 @@ RALLY = Table(
         ),
         "offsets_m": Key(_OFFSETS, (0.0,)),
         "bearings_deg": Key(_BEARINGS, (0.0, 90.0, 180.0, 270.0)),
+        "lateral_m_s": Key(_LATERAL, 0.0),
         "recover_within_bounces": Key(Integer(lo=1, hi=20), 1),
         "latency_s": Key(LATENCY_S, 0.0),
         "required_share": Key(SHARE_REQUIRED, 1.0),

@@ -16,6 +16,7 @@ SAME_DEG = 9  # decimals to which two bearings are compared
 
 _AS_WRITTEN = (
     "centre_m",
+    "lateral_m_s",
     "recover_within_bounces",
     "latency_s",
     "required_share",

@@ -34,12 +34,12 @@ class Point(NamedTuple):
 
 
 def points_of(rally: Rally) -> list[Point]:
-    """Every apex with every offset and bearing; the centre itself has one bearing."""
+    """Every apex with every offset and bearing; a ball straight down onto the centre has one bearing."""
     return [
         Point(apex, offset, bearing)
         for apex in rally.apexes_m
         for offset in rally.offsets_m
-        for bearing in (rally.bearings_rad if offset > 0 else rally.bearings_rad[:1])
+        for bearing in (rally.bearings_rad if offset > 0 or rally.lateral_m_s else rally.bearings_rad[:1])
     ]
 
 
@@ -98,9 +98,11 @@ class Court:
         """How the ball flies and meets the face, for each stance; all the same where the paddle does not give."""
         cell, bounces = self.kit.cell, self.kit.rally.recover_within_bounces
         assert cell.ball is not None and cell.contact is not None
+        lateral = self.kit.rally.lateral_m_s
         if not cell.contact.arm_gives:
-            return [Ballistics(cell, bounces)] * len(self.stances)
-        return [Ballistics(cell, bounces, cell.ball.mass_kg / self.mass_kg(q)) for q in self.stances]
+            return [Ballistics(cell, bounces, 0.0, lateral)] * len(self.stances)
+        ratios = [cell.ball.mass_kg / self.mass_kg(q) for q in self.stances]
+        return [Ballistics(cell, bounces, ratio, lateral) for ratio in ratios]
 
     def mass_kg(self, stance: Array) -> float:
         """The arm's effective mass along the vertical in a stance (n,), joints free to give."""

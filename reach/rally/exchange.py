@@ -15,6 +15,7 @@ from reach.ball import Air, Flight, NoContact, NoFlight, fall, impact, launch, s
 from reach.cell import Array, Cell, Contact
 
 AT_CENTRE_M = 1e-9  # an offset below it is none
+STEADY = 2  # strikes of an exchange that nothing disturbs
 
 
 @dataclass(frozen=True, eq=False)
@@ -70,17 +71,19 @@ class Ballistics:
     ----------
     cell : with ball and contact
     bounces : strikes within which a ball is to be back at the centre
+    lateral_m_s : outward along the bearing, of a ball that comes down off the centre
     mass_ratio : of the ball to the arm's effective mass, 0 where the paddle does not give
     """
 
-    def __init__(self, cell: Cell, bounces: int, mass_ratio: float = 0.0):
+    def __init__(self, cell: Cell, bounces: int, mass_ratio: float = 0.0, lateral_m_s: float = 0.0):
         assert cell.ball is not None and cell.contact is not None
         self.air = Air.of(cell.ball, cell.arm.gravity_m_s2)
         self.contact, self.bounces, self.mass_ratio = cell.contact, bounces, mass_ratio
+        self.lateral = np.array([lateral_m_s, 0.0, 0.0])
         self._along_x = cache(self._returned)
 
     def exchange(self, apex_m: float, offset_m: float, bearing_rad: float) -> Exchange:
-        """A ball that leaves the centre for an apex, comes straight down off the centre, and is returned to it.
+        """A ball that leaves the centre for an apex, comes down off the centre, and is returned to it.
 
         Raises
         ------
@@ -88,10 +91,16 @@ class Ballistics:
             Where no flight or no strike does that.
         """
         plain = self._along_x(apex_m, offset_m)
-        if offset_m <= AT_CENTRE_M:
+        if len(plain.strikes) == STEADY:
             return plain
         turn = about_vertical(bearing_rad)
         return replace(plain, strikes=tuple(strike.turned(turn) for strike in plain.strikes))
+
+    def steady(self, apex_m: float) -> Exchange:
+        """A ball kept up at the centre: two strikes alike."""
+        centre = np.zeros(3)
+        strike, flight_s = self.strike(centre, centre, fall(self.air, apex_m, centre), apex_m)
+        return Exchange((strike,) * STEADY, (flight_s,))
 
     def disturbed(
         self, apex_m: float, offset_m: float, bearing_rad: float, wrong: Disturbance
@@ -127,12 +136,12 @@ class Ballistics:
 
     def _returned(self, apex_m: float, offset_m: float) -> Exchange:
         """The undisturbed exchange with the offset along +x."""
-        steady = self.strike(np.zeros(3), np.zeros(3), fall(self.air, apex_m, np.zeros(3)), apex_m)
-        if offset_m <= AT_CENTRE_M:
-            return Exchange((steady[0], steady[0]), (steady[1],))
+        steady = self.steady(apex_m)
+        if offset_m <= AT_CENTRE_M and not self.lateral.any():
+            return steady
         place = np.array([offset_m, 0.0, 0.0])
-        strikes, flights = self._return(place, fall(self.air, apex_m, place), apex_m)
-        return Exchange((steady[0], *strikes), (steady[1], *flights))
+        strikes, flights = self._return(place, fall(self.air, apex_m, place) + self.lateral, apex_m)
+        return Exchange((steady.strikes[0], *strikes), (*steady.flights_s, *flights))
 
     def _return(self, place: Array, coming: Array, apex_m: float) -> tuple[list[Strike], list[float]]:
         """Strikes from a place (3,) back to the centre, the one that stops the ball there, and the steady one after."""

@@ -6,10 +6,10 @@ from collections.abc import Sequence
 
 import numpy as np
 
-from reach.ball import Face, restitution
+from reach.ball import Face, NoContact, NoFlight, restitution
 from reach.cell import Array
 from reach.evidence.rallies import Bounce, OffsetEdge
-from reach.rally.court import Court, Point
+from reach.rally.court import Court
 from reach.rally.cycle import LEGAL
 from reach.rally.exchange import Exchange
 from reach.rally.quintic import States, legs
@@ -24,10 +24,12 @@ def bounces(
     """The steady bounce at each apex, from one stance."""
     found = []
     for apex in apexes_m:
-        (exchange,) = court.exchanges([Point(apex, 0.0, 0.0)], stance)
-        if exchange is not None:
-            edges = [edge.largest_m or 0.0 for edge in offsets if edge.apex_m == apex]
-            found.append(_bounce(court, stance, apex, exchange, min(edges, default=np.nan)))
+        try:
+            exchange = court.ballistics[stance].steady(apex)
+        except (NoFlight, NoContact):
+            continue
+        edges = [edge.largest_m or 0.0 for edge in offsets if edge.apex_m == apex]
+        found.append(_bounce(court, stance, apex, exchange, min(edges, default=np.nan)))
     return tuple(found)
 
 

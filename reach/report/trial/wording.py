@@ -107,7 +107,7 @@ def meaning(asked: Recovered, apex_m: float) -> str:
     return (
         f"contacts within {millimetres(asked.within_m)} mm of the centre and apexes within "
         f"{millimetres(asked.apex_error_m)} mm of {millimetres(apex_m)} mm, from bounce {asked.by_bounce} at the "
-        f"latest, and for {plural(asked.then_for, 'bounce')} on"
+        f"latest, and for {plural(asked.then_for, 'bounce')} on; and the ball kept up to the last one asked for"
     )
 
 
