@@ -163,7 +163,7 @@ def test_every_outcome_is_explained() -> None:
 def test_what_counts_and_what_is_seen_in_words() -> None:
     assert meaning(Recovered(), 0.3) == (
         "contacts within 20 mm of the centre and apexes within 30 mm of 300 mm, from bounce 10 at the latest, and for "
-        "20 bounces on"
+        "20 bounces on; and the ball kept up to the last one asked for"
     )
     assert sensor(Sensor()) == "at every control period, at once, its true state"
     assert sensor(Sensor(60.0, 0.015, 0.004, 0.05)) == (

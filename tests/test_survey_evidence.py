@@ -391,6 +391,7 @@ def test_straight_strokes_are_right_by_their_files_alone(tmp_path):
     assert not faults(checked(files))
 
 
+@pytest.mark.campaign
 def test_slanting_strikes_of_a_turning_paddle_are_right_by_their_files_alone(tmp_path):
     asked = {"normals": unit(0.2, 0.1, 1.0), "directions": unit(0.0, -0.3, 1.0), "rotation": "free"}
     files = surveyed(tmp_path, spacing_m=0.4, **asked)

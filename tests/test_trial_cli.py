@@ -226,7 +226,7 @@ def test_what_a_law_prints_is_not_mixed_into_the_json(tmp_path: Path) -> None:
     assert done.err.count("loaded") == 1
 
 
-@pytest.mark.parametrize("workers", ["1", "2"])
+@pytest.mark.parametrize("workers", ["1", pytest.param("2", marks=pytest.mark.campaign)])
 def test_what_a_law_prints_as_it_is_asked_is_not_mixed_in_either(workers: str, tmp_path: Path) -> None:
     """With two workers it goes the way of their own streams."""
     loud = OWN.replace("def twist(self, seen):", "def twist(self, seen):\n        print('asked')")

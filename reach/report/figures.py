@@ -65,7 +65,7 @@ def svg_of(figure: Figure) -> bytes:
     out = io.BytesIO()
     FigureCanvasSVG(figure)
     figure.savefig(out, format="svg", metadata={"Date": None, "Creator": None})
-    return _steady_names(out.getvalue())
+    return _steady_numbers(_steady_names(out.getvalue()))
 
 
 def _steady_names(svg: bytes) -> bytes:
@@ -74,3 +74,12 @@ def _steady_names(svg: bytes) -> bytes:
     return re.sub(
         rb"\bp[0-9a-f]{10}\b", lambda found: names.setdefault(found[0], b"clip%d" % len(names)), svg
     )
+
+
+def _steady_numbers(svg: bytes) -> bytes:
+    """The picture with its coordinates to a thousandth of a point.
+
+    The library's layout is solved in an order that memory addresses give, so that its last digits differ from run to
+    run. Numbers below one, which may be factors, stay as they are.
+    """
+    return re.sub(rb"(?<![\w.])-?[1-9]\d*\.\d{4,}(?![\w.])", lambda found: b"%.3f" % float(found[0]), svg)
