@@ -208,18 +208,19 @@ def test_more_latency_delivers_no_more_and_comes_off_the_margin(
 ) -> None:
     court: Court = request.getfixturevalue(arm)
     before: Any = None
-    lost = 0
+    lost = compared = 0
     for latency in (0.0, 0.02, 0.05, 0.1, 0.2):
         found = points_at(again(court, latency_s=latency))
         done = found.verdict == DELIVERABLE
         if before is not None:
-            was, margin, at = before
+            was, margin, at, q = before
             assert not (done & ~was).any()
             lost += int((was & ~done).sum())
-            both = done & (found.margin_s > 1e-9)
+            both = done & (found.margin_s > 1e-9) & (found.q == q).all(axis=1)  # played from the same stance
+            compared += int(both.sum())
             np.testing.assert_allclose(margin[both] - found.margin_s[both], latency - at, atol=1e-9)
-        before = (done, found.margin_s, latency)
-    assert lost > 0
+        before = (done, found.margin_s, latency, found.q)
+    assert lost > 0 and compared > 0
 
 
 # Other arms, faces and envelopes

@@ -16,6 +16,7 @@ from reach.strike.impact import effective_mass
 from reach.trial.laws import LawFault, Seen, asked
 from reach.trial.starts import BallState, Eye
 
+BELOW_M = 1e-6  # into the face's plane: less is rounding of a contact
 LOOK_M = 1e-3  # a gap below it is looked into for a contact in the period just gone
 PATH_STEPS = 256  # control periods of a flight that are worked out at once
 CONTACTS_A_PERIOD = 5  # more, and the ball lies on the paddle
@@ -80,7 +81,6 @@ class Loop(Commands):
         self.contacts: list[tuple[float, ...]] = []
         self._trace: list[tuple[float, ...]] = []
         self.last_contact_s = 0.0
-        self._past_m = 0.0  # how far past the edge the ball met the face's plane last
         self._fly(ball, 0)
 
     def target(self, k: int, q: Array, v: Array, state: State | None) -> Array:
@@ -98,9 +98,8 @@ class Loop(Commands):
         if x * normal[0] + y * normal[1] + z * normal[2] - self._radius < LOOK_M:
             self._look(k, q, v)
             ball = self._ball_at(k)
-            lowest = paddle[2] - self._face.half_width_m * (1 - normal[2] ** 2) ** 0.5
-            if self.loss is None and ball[5] < 0 and ball[2] < lowest:
-                self._missed(np.array(ball[:3]))
+            if self.loss is None:
+                self._watch_edge(np.array(ball), point, rotation)
         if k % TRACE_EVERY == 0:
             self._trace.append((k * self._dt, *ball[:3], *paddle))
         self._before = (q.copy(), v.copy())
@@ -203,8 +202,7 @@ class Loop(Commands):
         ball, velocity = np.array(state[:3]), np.array(state[3:])
         normal, twist = rotation[:, 2], jacobian @ v
         on_face = (ball - self._radius * normal - point) @ rotation[:, :2]
-        self._past_m = self._face.past(*on_face.tolist())
-        if self._past_m > 0:
+        if self._face.past(*on_face.tolist()) > 0:
             return
         ratio = 0.0
         if self._ball_mass:
@@ -237,8 +235,21 @@ class Loop(Commands):
         text = f"the ball rises less than {1000 * DEAD_SHARE * self._apex_m:.0f} mm at {t_s:.2f} s"
         self.loss = Loss("died on the paddle", text)
 
-    def _missed(self, ball: Array) -> None:
-        """The ball falls below the face without having met it."""
+    def _watch_edge(self, ball: Array, point: Array, rotation: Array) -> None:
+        """The ball (6,) is missed where it comes at the face's edge from aside, or falls below its lowest point.
+
+        A ball is at the edge that reaches below the face's plane within its radius of the outline.
+        """
+        away = (ball[:3] - point) @ rotation
+        if away[2] > self._radius - BELOW_M:
+            return
+        past = self._face.past(float(away[0]), float(away[1]))
+        lowest = point[2] - self._face.half_width_m * (1 - rotation[2, 2] ** 2) ** 0.5
+        if past < self._radius or (ball[5] < 0 and ball[2] < lowest):
+            self._missed(ball[:3], past)
+
+    def _missed(self, ball: Array, past_m: float) -> None:
+        """The ball (3,) is past the edge, or falls below the face without having met it."""
         assert self._left_from is not None
         flight, down = self._flight, self._flight.down_to(float(self._centre[2]))
         place, time_s = ball, self._dt
@@ -247,6 +258,6 @@ class Loop(Commands):
         way = (place - self._left_from)[:2]
         far = float(np.linalg.norm(way))
         speed = max(far - self._face.half_width_m, 0.0) / time_s
-        by = f", {1000 * self._past_m:.0f} mm past it" if self._past_m > 0 else ""
+        by = f", {1000 * past_m:.0f} mm past it" if past_m > 0 else ""
         text = f"the ball after bounce {len(self.contacts)} goes down outside the paddle's edge{by}"
         self.loss = Loss("missed past the edge", text, way / far * speed if far > 0 else np.zeros(2))
