@@ -27,6 +27,8 @@ from test_report import NAMES, Page, listing, refuse, terminal_width
 from reach.evidence.rallies import ApexEdge, Knots, OffsetEdge, RallyPoints
 from reach.report import WRITERS as ALL_WRITERS
 from reach.report import write_folder
+from reach.report.columns import COLUMNS as TERMINAL
+from reach.report.columns import table
 from reach.report.document import document
 from reach.report.rally.csv import COLUMNS, MORE_COLUMNS
 from reach.report.rally.envelope_figure import some
@@ -411,3 +413,14 @@ def test_folder_holds_everything_and_no_motion_of_another_run(result: RallyResul
     written = write_folder(made("nothing held"), tmp_path)
     assert listing(tmp_path) == COMPLETE | {"junit.xml"}
     assert written[-1] == tmp_path / "verdict.json"
+
+
+def test_long_names_leave_every_column_readable() -> None:
+    header, names = ("#what", "bounded by", "#more", "bounded by"), "acceleration of shoulder_pan_joint"
+    lines = table(header, [("1234567890" * 3, names, "1234567890" * 3, names)])
+    assert max(map(len, lines)) <= TERMINAL
+    assert any("shoulder_pan_joint" in line[-20:] for line in lines)  # the last column has room for the joint
+    assert [line.split() for line in table(("a", "b"), [("1", "two words")])] == [
+        ["a", "b"],
+        ["1", "two", "words"],
+    ]

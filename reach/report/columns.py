@@ -4,8 +4,12 @@ from __future__ import annotations
 
 import unicodedata
 from collections.abc import Sequence
+from itertools import zip_longest
 
 COLUMNS = 100
+GAP = 2  # spaces before a column of a table
+LAST = 18  # columns that a table's last one has at least
+NARROWEST = 12  # columns to which others are taken back for that
 
 
 def width(text: str) -> int:
@@ -58,7 +62,7 @@ def shorten(text: str, columns: int) -> str:
 
 
 def table(header: Sequence[str], rows: Sequence[Sequence[str]], left: int = 0) -> list[str]:
-    """Lay rows out under a header, two spaces apart; the last column wraps.
+    """Lay rows out under a header, two spaces apart; the last column wraps, and wide ones where it needs room.
 
     Parameters
     ----------
@@ -66,12 +70,24 @@ def table(header: Sequence[str], rows: Sequence[Sequence[str]], left: int = 0) -
         How many leading columns are flush left; the last column is always, the rest flush right.
     """
     count = len(header) - 1
-    widths = [max(width(row[i]) for row in (header, *rows)) for i in range(count)]
+    widths = _narrowed([max(width(row[i]) for row in (header, *rows)) for i in range(count)])
+    last = COLUMNS - sum(widths) - GAP * len(header)
     lines: list[str] = []
     for row in (header, *rows):
-        cells = [_pad(row[i], widths[i], i < left) for i in range(count)]
-        lines += [line.rstrip() for line in wrap(row[count], "  " + "".join(f"{cell}  " for cell in cells))]
+        cells = [wrap(text, columns=room) for text, room in zip(row, (*widths, last), strict=True)]
+        for parts in zip_longest(*cells, fillvalue=""):
+            padded = [_pad(parts[i], widths[i], i < left) for i in range(count)]
+            lines.append("".join(" " * GAP + part for part in (*padded, parts[count])).rstrip())
     return lines
+
+
+def _narrowed(widths: list[int]) -> list[int]:
+    """Widths with the widest taken back, one column at a time, until the last column has its room."""
+    room = COLUMNS - LAST - GAP * (len(widths) + 1)
+    found = list(widths)
+    while sum(found) > room and max(found) > NARROWEST:
+        found[found.index(max(found))] -= 1
+    return found
 
 
 def _pad(text: str, columns: int, left: bool) -> str:
