@@ -383,6 +383,7 @@ def test_the_example_is_right_by_its_files_alone(coarse):
     assert found["tool speed"].max() > 0.97 and found["torque_rate"].max() > 0.5
 
 
+@pytest.mark.campaign
 def test_straight_strokes_are_right_by_their_files_alone(tmp_path):
     # A long strike window asks for strokes that hold speed and attitude: some go straight.
     files = surveyed(tmp_path, spacing_m=0.4, window_s=0.08, speeds_m_s=np.array([1.0]))
