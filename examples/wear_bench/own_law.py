@@ -14,7 +14,7 @@ class OwnLaw:
         "energy": 0.4,  # how much harder to strike per missing share of the ball's energy
         "lean_per_m": 0.25,  # tilt of the face per offset of the ball, rad/m
         "lean_s_per_m": 0.17,  # and per lateral speed, rad s/m
-        "follow_per_s": 20.0,
+        "follow_per_s": 10.0,  # twice as much drives the example's arm into its acceleration limits
         "turn_per_s": 20.0,
     }
 
