@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from collections import Counter
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 import numpy as np
 
@@ -14,28 +14,16 @@ from reach.evidence.rallies import Centre, RallyEvidence
 from reach.evidence.record import Remedy
 from reach.rally.court import Kit, points_of
 from reach.rally.points import score
+from reach.survey.remedies import GROWN, RAISED, SHRUNK, Advice
 from reach.survey.rounds import Progress, Rounds
 from reach.variants import FIELDS, lighter, one_limit_scaled, raised_base, scaled_limits
 from reach.verdict import DELIVERABLE
 from reach.workers import worker_pool
 
-RAISED = 1.25  # times a limit that is tried
 LIMITS_TRIED = 3
 BASE_STEPS_M = (0.1, -0.1)
 PADDLE_SHARE = 0.7  # of the paddle's mass
 SAMPLE = 60  # points that the headroom is looked for on
-SHRUNK = (0.95, 0.9, 0.8, 0.7, 0.6, 0.5)
-GROWN = (1.05, 1.1, 1.2, 1.35, 1.5, 2.0)
-
-
-@dataclass(frozen=True)
-class Advice:
-    """What would help, what was tried in vain (in words), and by how much all limits may shrink or must grow."""
-
-    remedies: tuple[Remedy, ...]
-    in_vain: tuple[str, ...]
-    headroom_share: float | None
-    headroom_text: str
 
 
 def advice(cell: Cell, evidence: RallyEvidence, workers: int, seed: int, progress: Progress | None) -> Advice:

@@ -13,12 +13,13 @@ from reach.evidence.rallies import RallyEvidence, RallyPoints
 from reach.evidence.record import Reason
 from reach.limits import LIMITS
 from reach.limits.build import build_limits, not_checked, unknown_limits
-from reach.rally.advice import Advice, advice
+from reach.rally.advice import advice
 from reach.rally.envelope import Envelope, envelope
 from reach.rally.needs import needs
 from reach.rally.player import CYCLE
 from reach.result import RallyResult
 from reach.strike.stroke import DUTY
+from reach.survey.remedies import Advice
 from reach.survey.rounds import Progress
 from reach.verdict import DELIVERABLE, NOT_DELIVERABLE, Verdict, judge_rally, unknown_required
 

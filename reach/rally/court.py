@@ -49,6 +49,7 @@ class Kit:
     Attributes
     ----------
     setting, gauge : with the cell's margins; bare : Gauge with none, the same where the cell has none
+    starts : random postures that inverse kinematics starts from
     unknown : limits that a deliverable point needs and nobody stated, or that are not looked at here (duty)
     """
 
@@ -60,7 +61,7 @@ class Kit:
         bare = without_margins(cell)
         self.bare = self.gauge if bare.margins == cell.margins else Gauge(Setting.made(bare))
         self.folds = folds(self.setting.chain, self.setting.arm.names)
-        self.library = Library(self.setting, seed)
+        self.starts = Library(self.setting, seed)
         self.near = None if cell.arm.start is None else np.array(cell.arm.start)
         self.reach = reach_bound(self.setting.arm)
         lacking = {limit for limit, _ in unknown_limits(self.setting.limits)} | {DUTY}
@@ -88,7 +89,7 @@ class Court:
         assert kit.cell.ball is not None
         self.kit, self.centre = kit, np.array(centre)
         self.point = self.centre - np.array([0.0, 0.0, kit.cell.ball.radius_m])
-        self.stances = stances(kit.setting, kit.folds, kit.library, self.point, kit.near)
+        self.stances = stances(kit.setting, kit.folds, kit.starts, self.point, kit.near)
         self.players = [
             Player(kit.cell, kit.setting, kit.gauge, self.centre, stance) for stance in self.stances
         ]

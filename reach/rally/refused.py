@@ -69,7 +69,7 @@ def _too_far(court: Court, setting: Setting, place: Array, normal: Array) -> Ref
         if postures(setting, player.stance, place[None], normal[None], player.gain)[1][0]:
             return None
     near = np.linalg.norm(place - court.kit.reach[0]) <= court.kit.reach[1]
-    if near and len(from_library(setting, court.kit.library, place[None], normal[None], deep=True)[0].q):
+    if near and len(from_library(setting, court.kit.starts, place[None], normal[None], deep=True)[0].q):
         return None
     return unreached(court, place)
 
@@ -83,7 +83,7 @@ def _too_fast(
         q, met = postures(setting, player.stance, place[None], normal[None], player.gain)
         if met[0] and most_speed(setting, q[0], normal) >= need:
             return None
-    found, _ = from_library(setting, court.kit.library, place[None], normal[None], deep=True)
+    found, _ = from_library(setting, court.kit.starts, place[None], normal[None], deep=True)
     if not len(found.q):
         return None
     moved = improved(setting, found, place[None], normal[None], normal[None], count=WIDE)

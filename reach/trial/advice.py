@@ -11,7 +11,8 @@ import numpy as np
 from reach.cell import Cell, Sensor, Vec3
 from reach.evidence.record import Remedy
 from reach.evidence.trials import TrialEvidence
-from reach.rally.advice import LIMITS_TRIED, RAISED
+from reach.rally.advice import LIMITS_TRIED
+from reach.survey.remedies import RAISED
 from reach.survey.rounds import Rounds
 from reach.trial.bout import Ground, play
 from reach.trial.laws import LAWS, gains_of, law_class

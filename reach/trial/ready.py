@@ -9,7 +9,7 @@ import numpy as np
 from reach.arm import Arm
 from reach.cell import Array, Cell, Rally, Trial, Vec3
 from reach.rally.court import Kit, points_of
-from reach.rally.points import score
+from reach.rally.envelope import best_stance
 
 
 def centre_of(cell: Cell) -> Vec3:
@@ -36,4 +36,4 @@ def ready(cell: Cell, centre: Vec3, seed: int) -> Array | None:
     court = kit.court(centre)
     if not len(court.stances):
         return None
-    return np.asarray(court.stances[score(court, points_of(kit.rally)).best])
+    return np.asarray(court.stances[best_stance(court, points_of(kit.rally))])
