@@ -17,6 +17,7 @@ from typing import TYPE_CHECKING
 if TYPE_CHECKING:
     from reach.api import describe_cell as describe_cell
     from reach.api import follow_commands as follow_commands
+    from reach.api import recheck_results as recheck_results
     from reach.api import size_rally as size_rally
     from reach.api import survey_strikes as survey_strikes
     from reach.api import try_law as try_law
@@ -26,6 +27,7 @@ if TYPE_CHECKING:
     from reach.formats import load_cell as load_cell
     from reach.result import FollowResult as FollowResult
     from reach.result import RallyResult as RallyResult
+    from reach.result import RecheckResult as RecheckResult
     from reach.result import SurveyResult as SurveyResult
     from reach.result import TrialResult as TrialResult
 
@@ -36,11 +38,13 @@ _HOMES = {
     "FollowResult": "reach.result",
     "InputError": "reach.errors",
     "RallyResult": "reach.result",
+    "RecheckResult": "reach.result",
     "SurveyResult": "reach.result",
     "TrialResult": "reach.result",
     "describe_cell": "reach.api",
     "follow_commands": "reach.api",
     "load_cell": "reach.formats",
+    "recheck_results": "reach.api",
     "size_rally": "reach.api",
     "survey_strikes": "reach.api",
     "try_law": "reach.api",

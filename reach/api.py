@@ -1,10 +1,10 @@
-"""The library's verbs: follow a log, survey strikes, describe a cell, write what came out."""
+"""The library's verbs: follow, survey, size a rally, try a law, describe a cell, write what came out, recheck it."""
 
 from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import replace
-from os import PathLike
+from os import PathLike, fspath
 from pathlib import Path
 from typing import Literal, cast, get_args
 
@@ -12,14 +12,15 @@ import numpy as np
 from numpy.typing import ArrayLike
 
 from reach.advice.answer import answer as follow_answer
-from reach.cell import Cell, CommandLog, Follow, Vec3
+from reach.cell import Cell, CommandLog, Follow, Input, Vec3
 from reach.describe import describe_cell as describe_cell
 from reach.errors import Fault, FaultList, InputError
 from reach.formats import check_arrays, check_span
 from reach.rally.answer import answer as rally_answer
-from reach.result import FollowResult, RallyResult, Result, SurveyResult, TrialResult
+from reach.result import Answer, FollowResult, RallyResult, RecheckResult, SurveyResult, TrialResult
 from reach.survey.answer import answer as survey_answer
 from reach.trial.answer import answer as trial_answer
+from reach.verdict import judge_recheck
 
 Frame = Literal["world", "base", "paddle"]
 Point = Literal["strike", "tip"] | Vec3
@@ -199,6 +200,46 @@ def try_law(
     return trial_answer(cell, workers, allow_code, advice, progress, seed)
 
 
+def recheck_results(
+    folder: str | PathLike[str], *, progress: Callable[[str], None] | None = None
+) -> RecheckResult:
+    """Say whether a second engine, which shares no code with the first, agrees with what a command stored.
+
+    Parameters
+    ----------
+    folder : path
+        That a command wrote its results to (`write_results`). The inputs that it names are looked for from the
+        present folder, as the command was given them.
+    progress : callable
+        As for `follow_commands`.
+
+    Returns
+    -------
+    RecheckResult
+        Torques need the extra `second-opinion`; without it they count as not checkable.
+
+    Raises
+    ------
+    InputError
+        The folder is no finished run's, or a file of it or an input has changed since.
+    """
+    from reach.recheck.answer import opinion
+
+    found = opinion(folder, progress)
+    verdict = judge_recheck(found.items, found.command, found.verdict)
+    return RecheckResult(
+        folder=fspath(folder),
+        of=found.command,
+        stored=found.verdict,
+        items=found.items,
+        verdict=verdict,
+        engine=found.engine,
+        files=tuple(Input(path, digest) for path, digest in found.files),
+        notes=found.notes,
+        versions=found.versions,
+    )
+
+
 def _has(cell: Cell, table: str, found: object) -> None:
     """Raise where a cell lacks a table."""
     if found is None:
@@ -234,7 +275,7 @@ def _settings(cell: Cell, frame: object, point: object) -> Follow:
 
 
 def write_results(
-    result: Result, folder: str | PathLike[str], junit: str | PathLike[str] | None = None
+    result: Answer, folder: str | PathLike[str], junit: str | PathLike[str] | None = None
 ) -> list[Path]:
     """Write verdict.json, motion.csv or survey.csv, report.html and evidence/ into a folder, each whole or not at all.
 

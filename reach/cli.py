@@ -3,16 +3,22 @@
 from __future__ import annotations
 
 import argparse
+import contextlib
 import io
 import os
+import signal
 import sys
+import threading
 import traceback
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from pathlib import Path
-from typing import NamedTuple
+from typing import TYPE_CHECKING, NamedTuple
 
 from reach import __version__
-from reach.errors import ReachError
+from reach.errors import ReachError, Stopped
+
+if TYPE_CHECKING:
+    from reach.result import Answer
 
 
 class Asked(NamedTuple):
@@ -49,6 +55,10 @@ EXITS = """exit codes:
   0  deliverable          1  not deliverable      2  bad input, nothing written
   3  undecided            4  the program or a solver failed
 """
+RECHECK_EXITS = """exit codes:
+  0  all items agree      1  one differs          2  no finished run, or a file changed since
+  3  none differs, but not all could be checked   4  the program failed
+"""
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
@@ -59,19 +69,33 @@ def main(arguments: Sequence[str] | None = None) -> int:
         if isinstance(stream, io.TextIOWrapper):
             stream.reconfigure(errors="backslashreplace")  # a terminal that lacks a sign still shows the rest
     options = _parser().parse_args(arguments)
+    before = _verdict_of(options)
     try:
-        return int(options.run(options))
+        with _ended_by_signals():
+            code = int(options.run(options))
+            if sys.stdout is not None:
+                sys.stdout.flush()  # a full disk is told of here, and not by the interpreter as it ends
+            return code
     except ReachError as error:
         print(error, file=sys.stderr)
         return error.exit_code
-    except KeyboardInterrupt:
-        print("stopped; nothing was written", file=sys.stderr)
+    except (KeyboardInterrupt, Stopped):
+        written = (
+            "nothing was written" if _verdict_of(options) == before else "the results were written before"
+        )
+        print(f"stopped; {written}", file=sys.stderr)
         return 4
     except BrokenPipeError:
         sys.stderr.close()
+        _drop_output()
         return 4
     except OSError as error:
-        print(f"can't go on: {error.strerror or error}", file=sys.stderr)
+        where = "" if error.filename is None else f"{error.filename}: "
+        print(f"can't go on: {where}{error.strerror or error}", file=sys.stderr)
+        _drop_output()
+        return 4
+    except MemoryError:
+        print("out of memory; free some, or run again with --workers 1", file=sys.stderr)
         return 4
     except Exception:  # a fault of this program, said so
         print(
@@ -80,6 +104,47 @@ def main(arguments: Sequence[str] | None = None) -> int:
         )
         traceback.print_exc()
         return 4
+
+
+def _verdict_of(options: argparse.Namespace) -> tuple[int, int] | None:
+    """What tells a verdict.json in the folder of results from another; None where there is none."""
+    try:
+        found = os.stat(Path(options.out, "verdict.json"))
+    except (AttributeError, OSError, ValueError):
+        return None
+    return found.st_ino, found.st_mtime_ns
+
+
+@contextlib.contextmanager
+def _ended_by_signals() -> Iterator[None]:
+    """Let the signals that end a process raise Stopped meanwhile, so that all is put away; only those it heeds."""
+    if threading.current_thread() is not threading.main_thread():
+        yield
+        return
+    numbers = [getattr(signal, name) for name in ("SIGTERM", "SIGHUP") if hasattr(signal, name)]
+    numbers = [number for number in numbers if signal.getsignal(number) is signal.SIG_DFL]
+
+    def stop(number: int, _: object) -> None:
+        for each in numbers:
+            signal.signal(each, signal.SIG_IGN)  # once is enough
+        raise Stopped
+
+    for number in numbers:
+        signal.signal(number, stop)
+    try:
+        yield
+    finally:
+        for number in numbers:
+            signal.signal(number, signal.SIG_DFL)
+
+
+def _drop_output() -> None:
+    """Let what can't be put out be tried no more."""
+    try:
+        sys.stdout.flush()
+    except OSError:
+        with contextlib.suppress(OSError, ValueError):
+            os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
 
 
 def _parser() -> argparse.ArgumentParser:
@@ -112,6 +177,15 @@ def _parser() -> argparse.ArgumentParser:
             )
         _common(command, name)
         command.set_defaults(run=_answered, command=name)
+    recheck = commands.add_parser(
+        "recheck",
+        help="does an independent engine agree with what a command stored?",
+        epilog=RECHECK_EXITS,
+        formatter_class=argparse.RawDescriptionHelpFormatter,
+    )
+    recheck.add_argument("folder", metavar="DIR", help="the folder that a command wrote its results to")
+    _common(recheck, "recheck")
+    recheck.set_defaults(run=_recheck)
     return parser
 
 
@@ -171,8 +245,8 @@ def _describe(options: argparse.Namespace) -> int:
 def _answered(options: argparse.Namespace) -> int:
     """Load the cell, ask, write what came out, show it; returns the exit code."""
     import reach
-    from reach import load_cell, write_results
-    from reach.report import WRITERS, check_targets
+    from reach import load_cell
+    from reach.report import check_targets
 
     command, ask = options.command, ASKED[options.command]
     cell = load_cell(options.cell, need=command)
@@ -186,6 +260,24 @@ def _answered(options: argparse.Namespace) -> int:
         progress=_progress(options.quiet),
         **choices,
     )
+    return _handed_over(result, options)
+
+
+def _recheck(options: argparse.Namespace) -> int:
+    """Look at a folder of results again, write what came out, show it; returns the exit code."""
+    from reach import recheck_results
+    from reach.report import check_targets
+
+    check_targets(Path(options.out), options.junit, [], kept=Path(options.folder))
+    return _handed_over(recheck_results(options.folder, progress=_progress(options.quiet)), options)
+
+
+def _handed_over(result: Answer, options: argparse.Namespace) -> int:
+    """Write a result, show it; returns the exit code."""
+    from reach import write_results
+    from reach.report import WRITERS
+
+    command = result.command
     written = write_results(result, options.out, options.junit)
     if options.json:
         print(WRITERS[command]["json"](result), end="")

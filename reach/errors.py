@@ -52,12 +52,20 @@ class SolverFailure(ReachError):
     """No quadratic-programming solver gave a usable answer to a problem that has one."""
 
 
+class SolverHung(SolverFailure):
+    """A solver did not come back."""
+
+
 class WorkerLost(ReachError):
     """A process that ran part of a search died."""
 
 
 class OutputError(ReachError):
     """Results can't be written where they were asked for."""
+
+
+class Stopped(BaseException):
+    """The operating system asks this process to end; no `except Exception` on the way holds it up."""
 
 
 class FaultList:

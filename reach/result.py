@@ -6,7 +6,8 @@ from abc import ABC, abstractmethod
 from dataclasses import dataclass
 from typing import ClassVar
 
-from reach.cell import Cell
+from reach.cell import Cell, Input
+from reach.evidence.items import Item
 from reach.evidence.points import SurveyEvidence
 from reach.evidence.rallies import RallyEvidence
 from reach.evidence.record import Evidence, Need, Reason, Remedy, SolverCount
@@ -147,3 +148,39 @@ class TrialResult(Result):
     def failed(self) -> bool:
         """Whether a trial ended because no solver answered."""
         return any(run.outcome == "solver failed" for run in self.evidence.runs)
+
+
+@dataclass(frozen=True, eq=False, kw_only=True)
+class RecheckResult:
+    """The second opinion on a folder of results.
+
+    Attributes
+    ----------
+    folder : that was looked at; of : the command that wrote it; stored : its verdict
+    items : every claim looked at, in the order in which it was
+    verdict : "agree", "differ" or "not checkable"
+    engine : the second engine and its version, None without one
+    files : what was read, with the digests found
+    notes : what rests on a search and can't be decided anew, a line each
+    versions : of what wrote the folder, by name
+    """
+
+    command: ClassVar[str] = "recheck"
+
+    folder: str
+    of: str
+    stored: str
+    items: tuple[Item, ...]
+    verdict: Verdict
+    engine: str | None
+    files: tuple[Input, ...]
+    notes: tuple[str, ...]
+    versions: dict[str, str | None]
+
+    @property
+    def failed(self) -> bool:
+        """Whether a solver failed; there is none here."""
+        return False
+
+
+Answer = Result | RecheckResult  # of any command

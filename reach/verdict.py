@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from typing import Protocol
 
 from reach.cell import Accept
+from reach.evidence.items import AGREE, DIFFER, NOT_CHECKABLE, Item, counts, decided
 from reach.evidence.points import SurveyEvidence, Texts
 from reach.evidence.rallies import RallyEvidence
 from reach.evidence.record import Evidence, Use
@@ -19,7 +20,7 @@ DELIVERABLE = "deliverable"
 NOT_DELIVERABLE = "not deliverable"
 UNDECIDED = "undecided"
 
-EXIT_CODES = {DELIVERABLE: 0, NOT_DELIVERABLE: 1, UNDECIDED: 3}
+EXIT_CODES = {DELIVERABLE: 0, NOT_DELIVERABLE: 1, UNDECIDED: 3, AGREE: 0, DIFFER: 1, NOT_CHECKABLE: 3}
 
 
 @dataclass(frozen=True)
@@ -190,6 +191,22 @@ def judge_trials(verdicts: Texts, required_share: float, accept: Accept, evidenc
         )
         return Verdict(NOT_DELIVERABLE, sentence, (evidence.blocked,))
     return judge_share(verdicts, "starts", required_share, accept, evidence, "recovered")
+
+
+def judge_recheck(items: Sequence[Item], command: str, stored: str) -> Verdict:
+    """Judge a second opinion: it differs where one item does, and agrees where all do.
+
+    Parameters
+    ----------
+    command, stored : that wrote the folder, and its verdict
+    """
+    word, found = decided(items), counts(items)
+    grounds = [f"{found[AGREE]} of {len(items)} items agree"]
+    if found[DIFFER]:
+        grounds.append(f"{found[DIFFER]} differ")
+    if found[NOT_CHECKABLE]:
+        grounds.append(f"{found[NOT_CHECKABLE]} could not be checked")
+    return Verdict(word, f"{word}: {command} says {stored}; {', '.join(grounds)}", tuple(grounds))
 
 
 def _sentence(verdict: str, grounds: list[str], evidence: Evidence) -> str:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 
 import numpy as np
+import pytest
 from builders import ROBOTS, cell_text
 
 from reach.cell import Array
@@ -75,6 +76,11 @@ def write_case(
     for name, content in files.items():
         (folder / name).write_text(content, encoding="utf-8")
     return folder / "cell.toml"
+
+
+def without_drawings(monkeypatch: pytest.MonkeyPatch, command: str) -> None:
+    """Leave the drawings out of a command's pages, for tests that do not look at them: they take their time."""
+    monkeypatch.setattr(f"reach.report.{command}.html.pictures", lambda _: [])
 
 
 def without_key(limits: str, joint: str, key: str) -> str:

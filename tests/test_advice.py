@@ -54,6 +54,7 @@ G = 9.80665
 FAR = limits(position=3.0, velocity=50.0, torque=500.0, torque_rate=1e6)
 PEAK = 2.0  # rad/s, of the bump
 LASTS_S = 0.3
+PERIOD_S = 0.004  # of the control: every answer is many runs
 LEAST_SHARE = 0.97  # of the commanded speed that a strike must have
 
 
@@ -185,7 +186,7 @@ def test_headroom_of_a_cell_that_only_just_passes_is_no_failure() -> None:
 def bumped(cell: Cell, peak: float = PEAK) -> Cell:
     """The hinge with a bump of speed, the contact at its top."""
     t, speed, marks = bump(peak, LASTS_S)
-    return hinge_log(replace(cell, accept=WIDE), t, speed, marks, interpolation="linear")
+    return hinge_log(replace(cell, accept=WIDE, period_s=PERIOD_S), t, speed, marks, interpolation="linear")
 
 
 @cache
@@ -215,7 +216,8 @@ def held(torque: float, paddle_kg: float = 0.0) -> Cell:
     cell = hinge(limits(torque=torque), LEVEL)
     t = 0.001 * np.arange(60)
     paddle = Paddle(Pose(), paddle_kg, "given", com_m=(0.0, 0.0, 0.0), inertia_kg_m2=(0.0,) * 6)
-    return hinge_log(replace(cell, paddle=paddle), t, np.zeros(60), np.zeros(60, bool))
+    still = np.zeros(60)
+    return hinge_log(replace(cell, paddle=paddle, period_s=PERIOD_S), t, still, np.zeros(60, bool))
 
 
 def test_headroom_where_torque_alone_binds() -> None:
@@ -324,7 +326,8 @@ def moved(cell: Cell, start: tuple[float, ...], way: Sequence[float], lasts_s: f
     """The paddle taken along a way (3,) in m by a bump of speed, its attitude held; the contact is half way."""
     t, speed, marks = bump(2 / lasts_s, lasts_s)
     twist = np.hstack([np.outer(speed, way), np.zeros((len(t), 3))])
-    log = following(started_at(cell, start), t, twist, interpolation="linear")
+    started = replace(started_at(cell, start), period_s=PERIOD_S)
+    log = following(started, t, twist, interpolation="linear")
     assert log.follow is not None
     return replace(log, follow=replace(log.follow, commands=replace(log.follow.commands, strike=marks)))
 

@@ -27,6 +27,7 @@ from cli_case import (
     START,
     URDF,
     log_text,
+    without_drawings,
     without_key,
     write_case,
 )
@@ -67,6 +68,12 @@ def spawn(*arguments: str | Path, cwd: Path = TOP, **environment: str) -> Done:
     own = {**os.environ, "PYTHONPATH": str(TOP), "PYTHONIOENCODING": "utf-8", **environment}
     done = subprocess.run(command, capture_output=True, cwd=cwd, env=own, timeout=300)
     return Done(done.returncode, done.stdout.decode(), done.stderr.decode())
+
+
+@pytest.fixture
+def undrawn(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Pages without drawings, where they are not looked at."""
+    without_drawings(monkeypatch, "follow")
 
 
 def document(folder: Path) -> dict[str, Any]:
@@ -130,7 +137,7 @@ def test_unknown_command_in_its_own_process() -> None:
 def test_describe_tells_each_limit_with_its_source(tmp_path: Path) -> None:
     cell = write_case(tmp_path, limits=without_key(LIMITS, "j2", "torque_rate_nm_s"))
     before = files_in(tmp_path)
-    done = spawn("describe", cell, cwd=tmp_path)
+    done = call("describe", cell)
     assert (done.code, done.err) == (0, "")
     assert files_in(tmp_path) == before
     block = done.out.partition("\nLimits ")[2].partition("\n\n")[0].splitlines()[1:]
@@ -223,6 +230,7 @@ def test_not_deliverable_and_json_alone_on_standard_output(tmp_path: Path) -> No
     assert "Traceback" not in done.err
 
 
+@pytest.mark.usefixtures("undrawn")
 def test_unknown_limit_is_undecided_and_its_need_holds(tmp_path: Path) -> None:
     unknown = without_key(LIMITS, "j1", "torque_rate_nm_s")
     cell = write_case(tmp_path / "a", limits=unknown)
@@ -242,6 +250,7 @@ def test_unknown_limit_is_undecided_and_its_need_holds(tmp_path: Path) -> None:
         assert call("follow", again, "--out", tmp_path / name / "o", "--quiet", *NO_ADVICE).code == code
 
 
+@pytest.mark.usefixtures("undrawn")
 def test_guessed_contacts_are_undecided_until_accepted_and_quiet_says_nothing(tmp_path: Path) -> None:
     rows = [line.rsplit(",", 1)[0] for line in log_text(SLOW_M_S).splitlines()]
     log = "\n".join(rows) + "\n"
@@ -251,6 +260,7 @@ def test_guessed_contacts_are_undecided_until_accepted_and_quiet_says_nothing(tm
     assert call("follow", cell, "--out", tmp_path / "b" / "o", "--quiet", *NO_ADVICE) == Done(0, "", "")
 
 
+@pytest.mark.usefixtures("undrawn")
 def test_a_log_that_begins_elsewhere_is_a_verdict(tmp_path: Path) -> None:
     log = log_text(SLOW_M_S, pose="0.5,0.3,0.5,1,0,0,0")
     done = call("follow", write_case(tmp_path, log=log), "--out", tmp_path / "o", *NO_ADVICE)
@@ -367,6 +377,7 @@ def test_failures(
     assert not (tmp_path / "o").exists()
 
 
+@pytest.mark.usefixtures("undrawn")
 def test_steps_that_no_solver_answers(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     def no_number(_: Solver, problem: QpProblem, name: str) -> tuple[Array, Array, Array]:
         return tuple(np.full(len(part), np.nan) for part in (problem.q, problem.h, problem.q))

@@ -36,6 +36,7 @@ LEVELS = (
     ("advice", "rally"),
     ("trial",),
     ("formats",),
+    ("recheck",),
     ("report",),
     ("describe",),
     ("api", ""),  # "" is the package itself, which hands names on
@@ -48,7 +49,15 @@ ALONE = {
     "errors": (),
     "cell": ("errors",),
     "paddle": ("cell", "errors"),
-    "verdict": ("cell", "evidence.record", "evidence.points", "evidence.rallies", "evidence.trials"),
+    "recheck": ("errors", "evidence.items", "formats.files", "formats.xml_tree"),
+    "verdict": (
+        "cell",
+        "evidence.items",
+        "evidence.record",
+        "evidence.points",
+        "evidence.rallies",
+        "evidence.trials",
+    ),
     "ball": ("cell", "errors"),
     "formats": ("cell", "errors", "ball"),
     "qp": ("cell", "errors"),
@@ -60,6 +69,7 @@ ALONE = {
         "evidence.points",
         "evidence.rallies",
         "evidence.trials",
+        "evidence.items",
         "verdict",
         "result",
     ),
@@ -70,6 +80,7 @@ SOLE = {
     "pinocchio": "arm",
     "qpsolvers": "qp.backends",
     "matplotlib": "report.figures",
+    "mujoco": "recheck.engine",
 }
 
 # What `import reach` must not load.

@@ -10,6 +10,7 @@ from pathlib import Path
 from typing import Any
 
 import pytest
+from cli_case import without_drawings
 from rally_case import Own, write_gantry
 from survey_case import die
 from test_cli import Done, call, document, files_in
@@ -27,9 +28,10 @@ TWO = RALLY + "apexes_m = [0.2, 0.4]\n"
 
 
 @pytest.fixture(autouse=True)
-def few_bearings(monkeypatch: pytest.MonkeyPatch) -> None:
-    """Largest offsets at the cell's own bearings alone."""
+def quick(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Largest offsets at the cell's own bearings alone, and pages without drawings; `delivered` has them."""
     monkeypatch.setattr(envelope_module, "TURNS", 1)
+    without_drawings(monkeypatch, "rally")
 
 
 def written(folder: Path, rally: str = ONE, own: Own = None, rest: str = "") -> Path:
@@ -140,7 +142,7 @@ def test_the_same_bytes_for_any_number_of_workers_and_the_same_seed(
 ) -> None:
     monkeypatch.setattr(envelope_module, "CHUNK", 1)
     cell = written(
-        tmp_path, ONE + "offsets_m = [0, 0.03]\nvelocity_spread_m_s = 0.3\ncases = 4\nlatency_s = 0.01\n"
+        tmp_path, ONE + "offsets_m = [0, 0.03]\nvelocity_spread_m_s = 0.3\ncases = 2\nlatency_s = 0.01\n"
     )
     found = []
     for name, workers in (("a", "1"), ("b", "2")):

@@ -153,7 +153,7 @@ def test_a_slow_slide_refuses_by_its_speed() -> None:
 
 
 def test_a_capped_tool_refuses_by_the_tools_speed() -> None:
-    cell = on_bench("bench7", (0.4,))
+    cell = on_gantry((0.4,))
     assert cell.tool is None
     given = row(points_at(court_of(replace(cell, tool=Tool(0.3, "invented")))), 0)
     assert (given["verdict"], given["limit"], given["joint"]) == (NOT_DELIVERABLE, "tool speed", "")

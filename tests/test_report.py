@@ -15,12 +15,14 @@ import sys
 import unicodedata
 import xml.etree.ElementTree as ET
 from dataclasses import replace
+from functools import cache
 from html.parser import HTMLParser
 from pathlib import Path
 from typing import Literal
 
 import numpy as np
 import pytest
+from cli_case import without_drawings
 
 import reach
 from reach.cell import ArmSpec, Bound, Cell, CommandLog, Follow, Input, Joint, JointLimits, Paddle, Pose
@@ -53,6 +55,7 @@ from reach.verdict import judge
 
 NAMES = ("a b", '<b>"x"&\'', "关节$1_{}^")
 WRITERS = ALL_WRITERS["follow"]
+WRITE_PAGE = WRITERS["html"]  # whatever takes its place in a test
 PERIOD_S = 0.001
 KINDS = (  # name, unit, stated limit, share kept; all invented
     ("position", "rad", 2.9, 0.999),
@@ -289,6 +292,18 @@ def result() -> FollowResult:
     return made_result()
 
 
+@cache
+def html_of(result: FollowResult) -> str:
+    """Its page; drawing takes its time."""
+    return str(WRITE_PAGE(result))
+
+
+@pytest.fixture
+def undrawn(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Pages without drawings, where their words alone matter."""
+    without_drawings(monkeypatch, "follow")
+
+
 def refuse(constant: str) -> None:
     raise AssertionError(f"{constant} is not strict JSON")
 
@@ -317,7 +332,7 @@ class Page(HTMLParser):
 
 @pytest.mark.parametrize("kind", WRITERS)
 def test_writers_give_the_same_bytes_again_and_no_control_character(kind: str, result: FollowResult) -> None:
-    once = WRITERS[kind](result)
+    once = html_of(result) if kind == "html" else WRITERS[kind](result)
     assert once == WRITERS[kind](result)
     text = once.decode() if isinstance(once, bytes) else once
     assert "关节" in text
@@ -429,7 +444,7 @@ def test_quaternions_are_exact_and_never_jump() -> None:
 
 
 def test_html_escapes_every_name_and_fetches_nothing(result: FollowResult) -> None:
-    text = str(WRITERS["html"](result))
+    text = html_of(result)
     page = Page(text)
     assert not {"script", "b", "i", "link", "iframe", "object"} & set(page.tags)
     assert all(source.startswith("data:image/svg+xml;base64,") for source in page.sources)
@@ -442,7 +457,7 @@ def test_html_escapes_every_name_and_fetches_nothing(result: FollowResult) -> No
 
 
 def test_figures_are_drawings_that_fetch_and_run_nothing(result: FollowResult) -> None:
-    drawings = [base64.b64decode(s.split(",", 1)[1]) for s in Page(str(WRITERS["html"](result))).sources]
+    drawings = [base64.b64decode(s.split(",", 1)[1]) for s in Page(html_of(result)).sources]
     for drawing in drawings:
         tree = ET.fromstring(drawing)
         assert tree.tag.endswith("svg")
@@ -518,6 +533,7 @@ def with_needs(result: FollowResult) -> FollowResult:
     return replace(result, needs=(*spare, *alike))
 
 
+@pytest.mark.usefixtures("undrawn")
 def test_needs_are_columns_and_say_once_what_they_share(result: FollowResult) -> None:
     text = str(WRITERS["text"](with_needs(result)))
     lines = [line.split() for line in text.splitlines()]
@@ -550,6 +566,7 @@ def test_texts_that_differ_in_names_and_numbers_are_told_once() -> None:
     ]
 
 
+@pytest.mark.usefixtures("undrawn")
 def test_notes_are_each_told_once_and_few_in_the_text(result: FollowResult) -> None:
     read = tuple(f"{'ab'[k % 2] * (k + 1)} is odd" for k in range(20))
     noted = replace(result, notes=("replayed", *read), cell=replace(result.cell, notes=read))
@@ -562,6 +579,7 @@ def test_notes_are_each_told_once_and_few_in_the_text(result: FollowResult) -> N
     assert all(page.count(f"<li>{note}</li>") == 1 for note in all_notes(noted))
 
 
+@pytest.mark.usefixtures("undrawn")
 @pytest.mark.parametrize(
     ("interpolation", "sample_s", "words"),
     [
@@ -602,6 +620,7 @@ def test_text_cuts_a_long_list_of_strikes() -> None:
     assert "… and 37 more delivered" in text
 
 
+@pytest.mark.usefixtures("undrawn")
 @pytest.mark.parametrize(("factor", "words"), [(1.0, "motion exceeds it, with 36"), (0.1, "stays within it")])
 def test_cautions_know_the_reduced_speed(factor: float, words: str, result: FollowResult) -> None:
     track = result.evidence.track
@@ -658,7 +677,10 @@ def listing(folder: Path) -> set[str]:
 COMPLETE = {"verdict.json", "motion.csv", "report.html", "evidence/motion.npz", "evidence/cell.json"}
 
 
-def test_folder_holds_everything_and_no_motion_of_another_run(result: FollowResult, tmp_path: Path) -> None:
+def test_folder_holds_everything_and_no_motion_of_another_run(
+    result: FollowResult, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setitem(WRITERS, "html", html_of)  # the same page, not drawn anew
     out = tmp_path / "a" / "b"
     written = write_folder(result, out)
     assert listing(out) == COMPLETE == {str(path.relative_to(out)) for path in written}

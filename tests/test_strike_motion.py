@@ -32,6 +32,7 @@ from reach.strike.stroke import Demonstration
 EXACT = 1e-9  # m, m/s, rad, rad/s
 HOME = {"bench7": np.array(list(WORKING["bench7"].values())), "fer": np.array(FER_READY_RAD)}
 RUN_UPS = (0.3, 0.05)
+NO_LOSS = 0.995  # of the quick timing's speed, that the optimisation has at least
 
 
 @cache
@@ -199,6 +200,7 @@ def assert_converged(name: str, run_up_m: float, count: int, first: int = 0) -> 
         best = [max(quick.speed, done.speed) for done in (coarse, fine)]
         assert best[1] == pytest.approx(best[0], rel=0.01)
         assert fine.speed == pytest.approx(coarse.speed, rel=0.01)
+        assert coarse.speed >= NO_LOSS * quick.speed
 
 
 def assert_no_loss(name: str, run_up_m: float, count: int) -> None:
@@ -207,7 +209,7 @@ def assert_no_loss(name: str, run_up_m: float, count: int) -> None:
     for stroke in strokes:
         quick, best = demonstrated(setting, stroke), demonstrated(setting, stroke, (20, 40))
         assert quick is not None and best is not None
-        assert best.speed >= 0.995 * quick.speed
+        assert best.speed >= NO_LOSS * quick.speed
 
 
 ARMS = ("bench7", "fer", "ur5")
@@ -219,9 +221,8 @@ def test_more_pieces_change_little(name: str) -> None:
 
 
 @pytest.mark.parametrize("name", ARMS)
-@pytest.mark.parametrize("run_up_m", RUN_UPS)
-def test_optimising_loses_nothing(name: str, run_up_m: float) -> None:
-    assert_no_loss(name, run_up_m, 1)
+def test_optimising_loses_nothing(name: str) -> None:
+    assert_no_loss(name, 0.3, 1)  # 0.05 m is in the test before
 
 
 def test_optimising_loses_nothing_where_it_once_lost_most() -> None:
@@ -231,7 +232,7 @@ def test_optimising_loses_nothing_where_it_once_lost_most() -> None:
     (stroke,) = swings_of(setting, postures(setting, 9, seed=7)[8:])
     quick, best = demonstrated(setting, stroke), demonstrated(setting, stroke, (20, 40))
     assert quick is not None and best is not None
-    assert best.speed >= 0.995 * quick.speed
+    assert best.speed >= NO_LOSS * quick.speed
 
 
 @pytest.mark.campaign

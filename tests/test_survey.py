@@ -92,6 +92,12 @@ def quick(cell: Cell) -> Points:
 
 
 @pytest.fixture
+def verdicts_alone(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Surveys without the optimisation, without what stops strikes, and without how they stand with no margins."""
+    monkeypatch.setattr(sweep_module, "Looker", partial(look_module.Looker, full=False))
+
+
+@pytest.fixture
 def cheap(monkeypatch: pytest.MonkeyPatch) -> None:
     """Without the optimisation, which takes its time and has no say in bounds."""
     monkeypatch.setattr("reach.survey.weigh.exact", lambda *_, **__: None)
@@ -125,6 +131,7 @@ def test_a_box_goes_x_slowest_then_y_z_and_face() -> None:
     ],
     ids=["one point", "flat", "faces"],
 )
+@pytest.mark.usefixtures("verdicts_alone")
 def test_small_boxes(low: Vec3, high: Vec3, faces: Array, shape: tuple[int, ...]) -> None:
     cell = boxed(arm_cell("bench7"), low, high, 0.2, 0.4, faces, run_up_m=0.3)
     result = reach.survey_strikes(cell, advice=False)
@@ -147,7 +154,7 @@ def test_listed_strikes_have_no_shape_and_their_own_speeds() -> None:
 
 def test_workers_change_nothing(monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(sweep_module, "CHUNK", 2)
-    cell = struck("bench6", 5, 1, 0.5, 0.4, run_up_m=0.2)
+    cell = struck("bench6", 3, 1, 0.5, 0.4, run_up_m=0.2)
     one, two = swept(cell), swept(cell, workers=2)
     assert "deliverable" in one.verdict.tolist()
     same(one, two)
@@ -159,11 +166,11 @@ def test_another_seed_is_another_search_with_the_same_verdicts() -> None:
     assert one.verdict.tolist() == other.verdict.tolist()
 
 
+@pytest.mark.usefixtures("verdicts_alone")
 def test_order_changes_nothing(monkeypatch: pytest.MonkeyPatch) -> None:
     # Chunks that are not whole lines of the grid, so that other strikes come together. What stops them is left out.
-    monkeypatch.setattr(sweep_module, "CHUNK", 5)
-    monkeypatch.setattr(sweep_module, "Looker", partial(look_module.Looker, full=False))
-    cell = boxed(arm_cell("bench7"), (0.4, -0.3, 0.3), (0.7, 0.3, 0.6), 0.3, 0.4, run_up_m=0.1)
+    monkeypatch.setattr(sweep_module, "CHUNK", 4)
+    cell = boxed(arm_cell("bench7"), (0.4, -0.3, 0.3), (0.7, 0.3, 0.3), 0.3, 0.4, run_up_m=0.1)
     grid = grid_of(cell)
     order = np.random.default_rng(1).permutation(len(grid))
     one, other = swept(cell), swept(cell, grid.take(order))
@@ -398,13 +405,19 @@ def plain(small: Cell) -> Points:
     return quick(small)
 
 
+@pytest.fixture(scope="module")
+def half(small: Cell) -> tuple[Cell, Points]:
+    """At a speed that about half of them deliver, where it matters who is looked at more closely; and the rows."""
+    cell = asked(small, speeds_m_s=np.array([1.45]))
+    return cell, quick(cell)
+
+
 @pytest.mark.parametrize(
     "change", [lambda cell: scaled_limits(cell, 1.2), without_margins], ids=["limits at 1.2", "no margins"]
 )
-def test_looser_limits_lower_no_bound(change: Any, small: Cell, cheap: None) -> None:
-    # At a speed that about half of them deliver: there it matters who is looked at more closely.
-    cell = asked(small, speeds_m_s=np.array([1.45]))
-    tight, loose = quick(cell), quick(change(cell))
+def test_looser_limits_lower_no_bound(change: Any, half: tuple[Cell, Points]) -> None:
+    cell, tight = half
+    loose = quick(change(cell))
     kept = tight.verdict == "deliverable"
     assert "not deliverable" not in loose.verdict[kept].tolist()
     for name in ("bound_still_m_s", "bound_free_m_s"):
@@ -420,21 +433,31 @@ def test_looser_limits_lower_no_bound_of_a_posture(small: Cell, plain: Points) -
         assert np.all(after.still >= before.still / HAIR) and np.all(after.free >= before.free / HAIR)
 
 
-def test_a_paddle_that_may_turn_has_no_lower_bound(small: Cell, plain: Points) -> None:
-    free = quick(asked(small, rotation="free"))
-    assert np.all(free.bound_free_m_s >= plain.bound_still_m_s / HAIR)
+@pytest.fixture(scope="module")
+def still_and_free(small: Cell) -> tuple[Points, Points]:
+    """Rows of a paddle that keeps still and of one that may turn, at a speed that is not easily delivered."""
+    cell = asked(small, speeds_m_s=np.array([1.3]))
+    return quick(cell), quick(asked(cell, rotation="free"))
 
 
-def test_a_paddle_that_may_turn_delivers_what_a_still_one_does(small: Cell) -> None:
-    still = quick(asked(small, speeds_m_s=np.array([1.3])))
-    free = quick(asked(small, speeds_m_s=np.array([1.3]), rotation="free"))
+def test_a_paddle_that_may_turn_has_no_lower_bound(still_and_free: tuple[Points, Points]) -> None:
+    still, free = still_and_free
+    assert np.all(free.bound_free_m_s >= still.bound_still_m_s / HAIR)
+
+
+def test_a_paddle_that_may_turn_delivers_what_a_still_one_does(
+    still_and_free: tuple[Points, Points],
+) -> None:
+    still, free = still_and_free
     done = still.verdict == "deliverable"
     assert done.sum() >= 3
     assert free.verdict[done].tolist() == ["deliverable"] * int(done.sum())
 
 
-def test_a_longer_run_up_is_no_slower(small: Cell, cheap: None) -> None:
-    speeds = [quick(asked(small, run_up_m=m)).demonstrated_m_s for m in (0.05, 0.1, 0.3, None)]
+def test_a_longer_run_up_is_no_slower(small: Cell, plain: Points) -> None:
+    assert small.survey is not None and small.survey.run_up_m == 0.3
+    shortest, short, none = (quick(asked(small, run_up_m=m)) for m in (0.05, 0.1, None))
+    speeds = [one.demonstrated_m_s for one in (shortest, short, plain, none)]
     for short, longer in pairwise(speeds):
         assert np.all(longer >= 0.99 * short), (longer / short).round(3)
     assert np.median(speeds[1] / speeds[0]) > 1.2
@@ -538,6 +561,7 @@ def test_a_stopped_survey_says_so() -> None:
     assert "stopped before all" in judged(["undecided"] * 2, 1.0, stopped=True).sentence
 
 
+@pytest.mark.usefixtures("verdicts_alone")
 def test_enough_out_of_reach_decides() -> None:
     # One within reach, one that no posture is found for, two beyond the links.
     far = boxed(arm_cell("bench7"), (0.5, 0.0, 0.5), (2.0, 0.0, 0.5), 0.5, 0.3, run_up_m=0.3)
@@ -622,7 +646,10 @@ def claimed(effect: str) -> tuple[int, int]:
     return int(words[0]), int(words[3])
 
 
-def test_a_tight_limit_is_raised_and_the_count_is_what_a_new_run_gives() -> None:
+def test_a_tight_limit_is_raised_and_the_count_is_what_a_new_run_gives(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    monkeypatch.setattr("reach.survey.remedies.BASE_STEPS_M", ())  # what else would be tried takes its time
     cell = one_limit_scaled(links(np.array([1.0, 1.1, 1.3, 1.4, 1.6, 1.3])), "velocity", "j2", 0.6)
     result = reach.survey_strikes(cell)
     before = result.evidence.points.verdict == "deliverable"
@@ -649,7 +676,9 @@ def test_a_longer_run_up_is_found(cheap: None, monkeypatch: pytest.MonkeyPatch) 
 
 
 def test_a_box_that_is_too_high_wants_a_higher_base(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr("reach.survey.remedies.BASE_STEPS_M", (0.1, -0.1))  # the others take their time
+    monkeypatch.setattr("reach.survey.remedies.BASE_STEPS_M", (0.1, -0.1))  # what else would be tried
+    monkeypatch.setattr("reach.survey.remedies.RUN_UPS", ())  # takes its time
+    monkeypatch.setattr("reach.survey.remedies.LIMITS_TRIED", 0)
     cell = boxed(arm_cell("bench7"), (0.5, -0.1, 0.9), (0.5, 0.1, 1.1), 0.2, 0.3, run_up_m=0.3)
     result = reach.survey_strikes(cell)
     before = result.evidence.points.verdict == "deliverable"

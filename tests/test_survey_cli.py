@@ -12,7 +12,7 @@ from typing import Any
 import numpy as np
 import pytest
 from builders import ROBOTS
-from cli_case import LIMITS, without_key, write_case
+from cli_case import LIMITS, without_drawings, without_key, write_case
 from survey_case import die, faces_of, listed
 from test_cli import Done, call, document, files_in, spawn
 
@@ -56,6 +56,12 @@ def bench(folder: Path, survey: str) -> Path:
     path = folder / "cell.toml"
     path.write_text(text.replace("../../robots", ROBOTS.as_posix()), encoding="utf-8")
     return path
+
+
+@pytest.fixture(autouse=True)
+def undrawn(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Pages without drawings; `delivered` and the process of its own have them."""
+    without_drawings(monkeypatch, "survey")
 
 
 # Verdicts

@@ -10,6 +10,7 @@ from typing import Any
 
 import numpy as np
 import pytest
+from cli_case import without_drawings
 from survey_case import die
 from test_cli import Done, call, document, files_in, spawn
 from trial_case import G, write_gantry
@@ -44,6 +45,12 @@ def cell(folder: Path, trial: str = "", law: str = "", own: dict[str, Any] | Non
     if law:
         (folder / "law.py").write_text(law, encoding="utf-8")
     return path
+
+
+@pytest.fixture(autouse=True)
+def undrawn(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Pages without drawings; `recovered` and the process of its own have them."""
+    without_drawings(monkeypatch, "trial")
 
 
 # Verdicts
@@ -109,7 +116,7 @@ def test_progress_goes_to_standard_error(recovered: tuple[Path, Done]) -> None:
 
 def test_json_alone_on_standard_output(tmp_path: Path) -> None:
     path = cell(tmp_path, "gains = { mirror = 0.0, energy = 0.0 }\n")
-    done = spawn("trial", path, "--json", *ONE, cwd=tmp_path)
+    done = spawn("trial", path, "--json", "--no-advice", *ONE, cwd=tmp_path)
     assert done.code == 1, done.err
     told = json.loads(done.out)
     assert (told["schema"], told["verdict"], told["recovered_share"]) == (
@@ -195,7 +202,7 @@ def test_a_cell_without_a_trial(tmp_path: Path) -> None:
 @pytest.mark.parametrize(("gains", "code"), [("", 0), ("gains = { after = 1 }\n", 1)])
 def test_a_law_of_the_users_runs_when_that_is_allowed(gains: str, code: int, tmp_path: Path) -> None:
     path = cell(tmp_path, f'law = "law.py:Mine"\n{gains}', OWN)
-    done = call("trial", path, "--out", tmp_path / "o", "--allow-code", *ONE)
+    done = call("trial", path, "--out", tmp_path / "o", "--allow-code", "--no-advice", *ONE)
     assert done.code == code, done.err
     told = document(tmp_path / "o")
     assert any(item["path"].endswith("law.py") for item in told["inputs"])
@@ -208,7 +215,7 @@ def test_a_law_of_the_users_runs_when_that_is_allowed(gains: str, code: int, tmp
 
 def test_a_law_that_fails_after_three_good_bounces_does_not_keep_the_ball_up(tmp_path: Path) -> None:
     path = cell(tmp_path, 'law = "law.py:Mine"\ngains = { after = 3 }\n', OWN)
-    assert call("trial", path, "--out", tmp_path / "o", "--allow-code", *ONE).code == 1
+    assert call("trial", path, "--out", tmp_path / "o", "--allow-code", "--no-advice", *ONE).code == 1
 
 
 def test_a_gain_that_the_users_law_has_not(tmp_path: Path) -> None:
@@ -228,10 +235,11 @@ def test_what_a_law_prints_is_not_mixed_into_the_json(tmp_path: Path) -> None:
 
 @pytest.mark.parametrize("workers", ["1", pytest.param("2", marks=pytest.mark.campaign)])
 def test_what_a_law_prints_as_it_is_asked_is_not_mixed_in_either(workers: str, tmp_path: Path) -> None:
-    """With two workers it goes the way of their own streams."""
+    """With two workers it goes the way of their own streams, which only a process of its own shows."""
     loud = OWN.replace("def twist(self, seen):", "def twist(self, seen):\n        print('asked')")
     path = cell(tmp_path, 'law = "law.py:Mine"\n', loud)
-    done = spawn("trial", path, "--allow-code", "--json", "--workers", workers, cwd=tmp_path)
+    given = ("trial", path, "--allow-code", "--json", "--out", tmp_path / "o", "--workers", workers)
+    done = call(*given) if workers == "1" else spawn(*given)
     json.loads(done.out)
     assert "asked" in done.err
 

@@ -305,7 +305,7 @@ SLOW = slow_gantry(x={"velocity": 0.4})
 
 @pytest.mark.parametrize(("share", "verdict"), [(0.5, DELIVERABLE), (0.51, NOT_DELIVERABLE)])
 def test_the_share_asked_for_decides(share: float, verdict: str) -> None:
-    result = answer(on_two(SLOW, required_share=share))
+    result = answer(on_two(SLOW, required_share=share), with_advice=False)
     evidence = result.evidence
     assert result.verdict.verdict == verdict
     assert evidence.recovered.tolist() == [True, False] and evidence.recovered_share == 0.5
@@ -317,7 +317,7 @@ def test_the_share_asked_for_decides(share: float, verdict: str) -> None:
 
 def test_the_interval_of_the_share_is_wilsons() -> None:
     """E. B. Wilson, J. American Statistical Association 22 (1927) 209: roots of (p - s)² = z² p (1 - p)/n."""
-    evidence = answer(on_two(SLOW, bounces=6, apex_m=0.05)).evidence
+    evidence = answer(on_two(SLOW, bounces=6, apex_m=0.05), with_advice=False).evidence
     z, n, s = 1.959963984540054, 2, 0.5
     roots = np.sort(np.roots([1 + z * z / n, -(2 * s + z * z / n), s * s]))
     assert (evidence.low, evidence.high) == pytest.approx(tuple(roots), abs=1e-7)
@@ -325,7 +325,7 @@ def test_the_interval_of_the_share_is_wilsons() -> None:
 
 def test_a_required_limit_that_nobody_stated_leaves_recovered_starts_undecided() -> None:
     unknown = slow_gantry(x={"velocity": 0.4, "torque_rate": None})
-    both = answer(on_two(unknown, required_share=0.5))
+    both = answer(on_two(unknown, required_share=0.5), with_advice=False)
     assert both.verdict.verdict == UNDECIDED and "torque rate unknown for x" in both.verdict.sentence
     assert both.evidence.recovered_share == 0.5
 

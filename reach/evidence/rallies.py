@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
@@ -37,6 +37,7 @@ class RallyPoints:
     largest_delay_s, largest_tilt_rad, largest_contact_offset_m, largest_restitution_error : (m,) each alone, with
         which the point still passes
     motions : what regenerates the demonstrated motion of a row: knots
+    proof : (m,) SpeedProof or TimeProof of a point refused by speed or by time, else None
     """
 
     centre: Array
@@ -66,6 +67,16 @@ class RallyPoints:
     largest_contact_offset_m: Array
     largest_restitution_error: Array
     motions: dict[int, Knots]
+    proof: NDArray[np.object_] = field(default_factory=lambda: np.zeros(0, dtype=object))
+
+    def __post_init__(self) -> None:
+        if len(self.proof) != len(self.verdict):
+            object.__setattr__(self, "proof", np.full(len(self.verdict), None))
+
+    @property
+    def proofs(self) -> dict[int, Proof]:
+        """What proves the refusal of a row, where one product does."""
+        return {row: one for row, one in enumerate(self.proof.tolist()) if one is not None}
 
     @property
     def margin_free(self) -> NDArray[np.bool_]:
@@ -82,6 +93,76 @@ class Knots:
     v: Array
     a: Array
     strike_s: tuple[float, ...]
+
+
+@dataclass(frozen=True, eq=False)
+class SpeedProof:
+    """Why a strike can't be as fast as asked for in one posture, the best of those compared.
+
+    With y = Jᵀ dual and dual[:3] · normal = 1 no joint velocity within the limits moves the paddle along the normal
+    faster than Σ max(hi y, lo y), more by lateral · |dual[:3] − normal| and still · |dual[3:]| for what is accepted of
+    speed across the normal and of turning.
+
+    Attributes
+    ----------
+    strike : which of the point's strikes, from 0; stance : (n,) that it was compared from
+    q : (n,) posture; normal : (3,) along which; dual : (6,) on the rows of the Jacobian, world axes
+    bound_m_s : what the product says, the tool's cap included; needed_m_s : the strike's speed less what is accepted
+    """
+
+    strike: int
+    stance: Array
+    q: Array
+    normal: Array
+    dual: Array
+    bound_m_s: float
+    needed_m_s: float
+
+
+@dataclass(frozen=True, eq=False)
+class LegProof:
+    """Why joints don't get from one strike to the next in exactly the flight, near the postures of one stance.
+
+    The unknowns are the joint velocities at both strikes, within the limits, and changes of both postures. Every
+    condition on them is a sum that stays below something; the multipliers add conditions up to one that nothing within
+    the ranges of the unknowns keeps. `short` is by how much, rad or m.
+
+    Attributes
+    ----------
+    leg : which of the point's legs, from 0; stance : (n,) that it was played from
+    q : (2, n) postures of the two strikes; normal : (2, 3); speed_m_s : (2,) along it; flight_s : the leg's
+    velocity_dual, place_dual : (2, 6) multipliers on the paddle's twist at each strike, and on its change of place and
+        tilt, rows as of the Jacobian, world axes
+    change_dual : (n,) multipliers on the change of each joint's velocity
+    cut_joint, cut_sign : (c,) a joint and the direction in which it has a farthest way; cut_speeds : (c, 2) its
+        velocities, times the sign, where the tangent of the farthest way is taken; cut_weight : (c,) multipliers,
+        not below 0
+    """
+
+    leg: int
+    stance: Array
+    q: Array
+    normal: Array
+    speed_m_s: Array
+    flight_s: float
+    velocity_dual: Array
+    place_dual: Array
+    change_dual: Array
+    cut_joint: NDArray[np.int64]
+    cut_sign: Array
+    cut_speeds: Array
+    cut_weight: Array
+    short: float
+
+
+@dataclass(frozen=True, eq=False)
+class TimeProof:
+    """Why a point can't be played in time: from each stance compared a leg that can't."""
+
+    legs: tuple[LegProof, ...]
+
+
+Proof = SpeedProof | TimeProof
 
 
 @dataclass(frozen=True)

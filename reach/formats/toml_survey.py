@@ -7,7 +7,6 @@ from typing import Any
 
 import numpy as np
 
-from reach.ball import NoContact, strike_for
 from reach.cell import Array, Contact, Survey
 from reach.errors import FaultList, InputError
 from reach.formats.cross_checks import check_survey
@@ -163,6 +162,8 @@ def _directions(survey: Mapping[str, Any], normals: Array, faults: FaultList) ->
 
 def _by_ball(survey: Mapping[str, Any], contact: Contact | None, faults: FaultList) -> Strikes | None:
     """The one face and speed that make ball_in_m_s into ball_out_m_s."""
+    from reach.ball import NoContact, strike_for  # loaded only where a ball is given
+
     ball_in, ball_out = survey["ball_in_m_s"], survey["ball_out_m_s"]
     if ball_in is None or ball_out is None or contact is None:
         return None

@@ -71,7 +71,7 @@ class Rows:
             item.name: np.full(m, np.nan) for item in fields(RallyPoints) if item.name not in (*at, *APART)
         }
         at |= {"centre": np.repeat(court.centre[None], m, axis=0), "q": np.full((m, n), np.nan)}
-        at |= {"postures": np.full(m, len(court.stances))}
+        at |= {"postures": np.full(m, len(court.stances)), "proof": np.full(m, None)}
         at["verdict"][:] = at["bare"][:] = UNDECIDED
         self.at = at
         self.reason = [""] * m

@@ -10,29 +10,23 @@ from reach.result import Result
 from reach.verdict import DELIVERABLE
 
 
-class Suite:
-    """The cases of one run, the verdict's first.
+class Cases:
+    """The cases of one run of a command.
 
     Parameters
     ----------
-    result : Result
+    command : str
     """
 
-    def __init__(self, result: Result) -> None:
-        self._result = result
+    def __init__(self, command: str) -> None:
+        self._command = command
         self._root = ET.Element("testsuites")
-        self._suite = ET.SubElement(self._root, "testsuite", name=f"strikecheck {result.command}")
-        self.add("verdict")
-        if result.verdict.verdict != DELIVERABLE:
-            self.fail(
-                result.verdict.sentence, result.verdict.verdict, (reason.text for reason in result.reasons)
-            )
+        self._suite = ET.SubElement(self._root, "testsuite", name=f"strikecheck {command}")
 
-    def add(self, name: str) -> None:
-        """Add a case that passes."""
-        ET.SubElement(
-            self._suite, "testcase", classname=f"strikecheck.{self._result.command}", name=plain(name)
-        )
+    def add(self, name: str, kind: str = "") -> None:
+        """Add a case that passes, of a kind where the command's cases have some."""
+        classname = ".".join(("strikecheck", self._command, *([plain(kind)] if kind else [])))
+        ET.SubElement(self._suite, "testcase", classname=classname, name=plain(name))
 
     def fail(self, message: str, kind: str, more: Iterable[str] = ()) -> None:
         """Make the last case a failure of a kind, with further lines."""
@@ -43,15 +37,6 @@ class Suite:
         """Make the last case one that could not be looked at."""
         ET.SubElement(self._suite[-1], "skipped", message=plain(message))
 
-    def unknown(self, kind: str, unknown: Iterable[tuple[str, str | None]]) -> None:
-        """Let the last case fail, or be skipped where nobody requires it, for a limit kind that is unknown."""
-        owners = [owner(joint) for name, joint in unknown if name == kind]
-        message = f"unknown for {', '.join(owners)}"
-        if owners and kind in self._result.cell.accept.require:
-            self.fail(message, "unknown limit")
-        elif owners:
-            self.skip(message)
-
     def written(self) -> bytes:
         """Return the whole as a file in UTF-8."""
         for tag, count in (("failure", "failures"), ("skipped", "skipped")):
@@ -61,3 +46,30 @@ class Suite:
         ET.indent(self._root)
         text = ET.tostring(self._root, encoding="unicode")
         return f'<?xml version="1.0" encoding="UTF-8"?>\n{text}\n'.encode()
+
+
+class Suite(Cases):
+    """The cases of one run with a result on a cell, the verdict's first.
+
+    Parameters
+    ----------
+    result : Result
+    """
+
+    def __init__(self, result: Result) -> None:
+        super().__init__(result.command)
+        self._result = result
+        self.add("verdict")
+        if result.verdict.verdict != DELIVERABLE:
+            self.fail(
+                result.verdict.sentence, result.verdict.verdict, (reason.text for reason in result.reasons)
+            )
+
+    def unknown(self, kind: str, unknown: Iterable[tuple[str, str | None]]) -> None:
+        """Let the last case fail, or be skipped where nobody requires it, for a limit kind that is unknown."""
+        owners = [owner(joint) for name, joint in unknown if name == kind]
+        message = f"unknown for {', '.join(owners)}"
+        if owners and kind in self._result.cell.accept.require:
+            self.fail(message, "unknown limit")
+        elif owners:
+            self.skip(message)

@@ -14,7 +14,7 @@ import numpy as np
 import reach
 from reach.report.wording import all_notes
 from reach.report.writers import part
-from reach.result import Result
+from reach.result import Answer, Result
 
 DIGITS = 9  # significant digits of a value that leaves the program
 TIME_DECIMALS = 9  # of an instant: nanoseconds, whatever the log's zero is
@@ -30,7 +30,7 @@ DISTRIBUTIONS = {
 }
 
 
-def document(result: Result) -> dict[str, Any]:
+def document(result: Answer) -> dict[str, Any]:
     """Return the result as dicts, lists, strings, numbers and None, in the order of the published schema."""
     content: dict[str, Any] = part(result.command, "document").document(result)
     return content

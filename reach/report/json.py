@@ -5,10 +5,10 @@ from __future__ import annotations
 import json
 
 from reach.report.document import document
-from reach.result import Result
+from reach.result import Answer
 
 
-def write(result: Result) -> str:
+def write(result: Answer) -> str:
     """Return the verdict document as JSON text."""
     return json_text(document(result))
 

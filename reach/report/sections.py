@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 
+from reach.evidence.items import AGREE, DIFFER
 from reach.evidence.record import Reason
 from reach.report import needs
 from reach.report.alike import once
@@ -12,9 +13,10 @@ from reach.report.figures import Picture
 from reach.report.page import bullets, details, esc, paragraph, picture, section, table
 from reach.report.wording import NOTHING, all_notes, number, remedy_line, span, unknown_limits
 from reach.result import Result
-from reach.verdict import DELIVERABLE, NOT_DELIVERABLE
+from reach.verdict import DELIVERABLE, NOT_DELIVERABLE, Verdict
 
 Unknown = Iterable[tuple[str, str | None]]
+FRAMES = {DELIVERABLE: "good", AGREE: "good", NOT_DELIVERABLE: "bad", DIFFER: "bad"}  # any other is "open"
 
 
 def heading(question: str, result: Result) -> str:
@@ -24,16 +26,15 @@ def heading(question: str, result: Result) -> str:
 
 def verdict_box(result: Result, lines: Iterable[str] = ()) -> str:
     """Return the framed verdict; `lines` are a command's own, before the headroom."""
-    verdict = result.verdict.verdict
-    look = {DELIVERABLE: "good", NOT_DELIVERABLE: "bad"}.get(verdict, "open")
-    texts = [
-        result.verdict.sentence,
-        f"Without margins: {result.without_margins}.",
-        *lines,
-        f"Headroom: {result.headroom_text}",
-    ]
-    content = "".join(paragraph(text) for text in texts)
-    return f'<div class="verdict {look}"><strong>{esc(verdict)}</strong>{content}</div>'
+    texts = [f"Without margins: {result.without_margins}.", *lines, f"Headroom: {result.headroom_text}"]
+    return framed(result.verdict, texts)
+
+
+def framed(verdict: Verdict, lines: Iterable[str]) -> str:
+    """Return a verdict in the frame of its kind, with its sentence and further lines."""
+    content = "".join(paragraph(text) for text in (verdict.sentence, *lines))
+    look = FRAMES.get(verdict.verdict, "open")
+    return f'<div class="verdict {look}"><strong>{esc(verdict.verdict)}</strong>{content}</div>'
 
 
 def deciding(result: Result) -> str:

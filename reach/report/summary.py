@@ -21,7 +21,12 @@ Unknown = Iterable[tuple[str, str | None]]
 
 def written(result: Result, sections: Iterable[Section]) -> str:
     """Return the verdict's sentence, and below it each section that has lines under its heading."""
-    lines = wrap(plain(result.verdict.sentence))
+    return headed(result.verdict.sentence, sections)
+
+
+def headed(sentence: str, sections: Iterable[Section]) -> str:
+    """Return a sentence, and below it each section that has lines under its heading."""
+    lines = wrap(plain(sentence))
     for heading, content in sections:
         if content:
             lines += ["", *([heading] if heading else []), *content]

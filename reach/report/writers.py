@@ -15,9 +15,9 @@ import importlib
 from collections.abc import Callable
 from types import ModuleType
 
-from reach.result import Result
+from reach.result import Answer
 
-Writer = Callable[[Result], str | bytes]
+Writer = Callable[[Answer], str | bytes]
 
 # Each command, and the file that its table of numbers goes to.
 COMMANDS = {
@@ -25,6 +25,7 @@ COMMANDS = {
     "survey": "survey.csv",
     "rally": "rally.csv",
     "trial": "trial.csv",
+    "recheck": "recheck.csv",
 }
 
 KINDS = (
@@ -45,7 +46,7 @@ def part(command: str, name: str) -> ModuleType:
 def _late(command: str, kind: str) -> Writer:
     """Return a writer that loads its module when it is first called."""
 
-    def write(result: Result) -> str | bytes:
+    def write(result: Answer) -> str | bytes:
         module = importlib.import_module(f"reach.report.{kind}") if kind in ALIKE else part(command, kind)
         written: str | bytes = module.write(result)
         return written

@@ -2,18 +2,49 @@
 
 from __future__ import annotations
 
-from dataclasses import asdict
+from dataclasses import asdict, fields
+from typing import Any
 
 import numpy as np
 
+from reach.cell import CommandLog, Follow
 from reach.report.stored import archive, cell_file
 from reach.result import FollowResult
 
+ARRAYS = ("t_s", "twist", "strike", "pose")  # of a log, where it has them
+
 
 def evidence_files(result: FollowResult) -> dict[str, bytes | None]:
-    """Return the content of motion.npz and cell.json by file name; None for a file that must not be there."""
-    strikes = [asdict(strike) for strike in result.evidence.strikes]
-    return {"motion.npz": _motion(result), "cell.json": cell_file(result, {"strikes": strikes})}
+    """Return the content of motion.npz, log.npz and cell.json by file name; None for a file that must not be there."""
+    evidence, follow = result.evidence, result.cell.follow
+    own: dict[str, Any] = {
+        "follow": None if follow is None else settings(follow),
+        "drive": None if result.cell.drive is None else asdict(result.cell.drive),
+        "strikes": [asdict(strike) for strike in evidence.strikes],
+        "throughout": evidence.throughout_faults,
+        "stopped": evidence.stopped,
+        "guessed": evidence.guessed,
+        "failed_steps": evidence.failed_steps,
+        "blocked": [asdict(reason) for reason in evidence.blocked],
+        "unknown": [{"limit": limit, "joint": joint} for limit, joint in evidence.unknown],
+        "not_checked": evidence.not_checked,
+    }
+    return {
+        "motion.npz": _motion(result),
+        "log.npz": None if follow is None else _log(follow.commands),
+        "cell.json": cell_file(result, own),
+    }
+
+
+def settings(follow: Follow) -> dict[str, Any]:
+    """Return how the log is read, as plain data; the log's arrays stand in log.npz."""
+    found = {item.name: getattr(follow, item.name) for item in fields(Follow) if item.name != "commands"}
+    return {**found, "source": follow.commands.source, "mends": follow.commands.mends}
+
+
+def _log(log: CommandLog) -> bytes:
+    """Return t_s (N,), twist (N, 6) as sent, and strike (N,) and pose (N, 7) where the log has them."""
+    return archive(**{name: getattr(log, name) for name in ARRAYS if getattr(log, name) is not None})
 
 
 def _motion(result: FollowResult) -> bytes | None:

@@ -26,6 +26,7 @@ def evidence_files(result: TrialResult) -> dict[str, bytes | None]:
         "flight_s": evidence.flight_s,
         "ready": None if evidence.ready is None else evidence.ready.tolist(),
         "starts": evidence.asked,
+        "broken": [run.broken for run in evidence.runs],
         "kinds": evidence.kinds,
         "unknown": [{"limit": limit, "joint": joint} for limit, joint in evidence.unknown],
         "not_checked": evidence.not_checked,

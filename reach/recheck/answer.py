@@ -1,0 +1,66 @@
+"""The second opinion on a folder of results."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from os import PathLike, fspath
+
+from reach.evidence.items import Item
+from reach.recheck import follow, rally, stated, survey, trial
+from reach.recheck.ground import ground
+from reach.recheck.stored import read_folder
+
+CHECKERS = {"follow": follow, "survey": survey, "rally": rally, "trial": trial}
+
+
+@dataclass(frozen=True)
+class Opinion:
+    """What was looked at, and what came out.
+
+    Attributes
+    ----------
+    command, verdict : that wrote the folder, and its verdict
+    items : a claim each
+    notes : on what rests on a search
+    engine : name and version of the second engine, None without one
+    files : (path, digest) of what was read
+    versions : of what wrote the folder
+    """
+
+    command: str
+    verdict: str
+    items: tuple[Item, ...]
+    notes: tuple[str, ...]
+    engine: str | None
+    files: tuple[tuple[str, str], ...]
+    versions: dict[str, str | None]
+
+
+def opinion(folder: str | PathLike[str], progress: Callable[[str], None] | None = None) -> Opinion:
+    """Read a folder and decide anew what a run claims there.
+
+    Raises
+    ------
+    InputError
+        The folder is no run's, or a file has changed since.
+    """
+    stored = read_folder(fspath(folder))
+    checker = CHECKERS[stored.command]
+    found = stated.items(stored)
+    second = ground(stored)
+    found += checker.items(stored, second, progress or _silent)
+    versions = stored.verdict.get("versions")
+    return Opinion(
+        command=stored.command,
+        verdict=str(stored.verdict.get("verdict")),
+        items=tuple(found),
+        notes=tuple(checker.notes(stored)),
+        engine=None if second.engine is None else second.engine.name,
+        files=stored.files,
+        versions={str(k): str(v) for k, v in versions.items()} if isinstance(versions, dict) else {},
+    )
+
+
+def _silent(text: str) -> None:
+    """No progress asked for."""
