@@ -284,7 +284,10 @@ def _handed_over(result: Answer, options: argparse.Namespace) -> int:
     elif not options.quiet:
         print(WRITERS[command]["text"](result), end="")
         print(f"\nwritten: {', '.join(str(path) for path in written)}")
-    return 4 if result.failed else result.verdict.exit_code
+    if result.failed:
+        print(f"a solver failed, so this can't be trusted: {result.verdict.sentence}", file=sys.stderr)
+        return 4
+    return result.verdict.exit_code
 
 
 def _progress(quiet: bool) -> Callable[[str], None] | None:

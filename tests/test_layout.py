@@ -80,7 +80,7 @@ SOLE = {
     "pinocchio": "arm",
     "qpsolvers": "qp.backends",
     "matplotlib": "report.figures",
-    "mujoco": "recheck.engine",
+    "mujoco": "recheck.arm.engine",
 }
 
 # What `import reach` must not load.

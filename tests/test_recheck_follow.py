@@ -295,7 +295,7 @@ def test_the_second_opinion_shares_no_code_with_the_first(honest):
         "reach.formats.xml_tree",
     )
     outside = {"numpy", "mujoco"}
-    for path in package.glob("*.py"):
+    for path in package.rglob("*.py"):
         for node in ast.walk(ast.parse(path.read_text("utf-8"))):
             names = [a.name for a in node.names] if isinstance(node, ast.Import) else []
             names += [node.module or ""] if isinstance(node, ast.ImportFrom) else []

@@ -21,12 +21,12 @@ from reach.evidence.motion import Motion
 from reach.evidence.rallies import Knots
 from reach.posture import reach_bound
 from reach.rally.quintic import motion_of
-from reach.recheck.chain import Chain
-from reach.recheck.engine import available
-from reach.recheck.ground import Ground, ground
-from reach.recheck.limits import KINDS, TOOL, Limits, kept, motion_items, overshoot, torques, values
+from reach.recheck.arm.chain import Chain
+from reach.recheck.arm.engine import available
+from reach.recheck.arm.ground import Ground, ground
+from reach.recheck.arm.limits import KINDS, TOOL, Limits, kept, motion_items, overshoot, torques, values
+from reach.recheck.arm.trace import FINE, Trace, fine, quintic
 from reach.recheck.stored import BadFolder, Stored
-from reach.recheck.trace import FINE, Trace, fine, quintic
 from reach.report.document import strict
 
 # Both sides multiply a dozen matrices of numbers around one in double precision: 1e-12 m, rad, m/s is wide of that.

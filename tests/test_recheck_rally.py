@@ -20,12 +20,12 @@ from reach.evidence.items import AGREE, DIFFER, NOT_CHECKABLE, Item
 from reach.evidence.rallies import RallyPoints, SpeedProof, TimeProof
 from reach.rally.answer import gathered
 from reach.rally.envelope import Envelope
-from reach.recheck import rally
+from reach.recheck.arm.engine import available
+from reach.recheck.arm.ground import Ground, ground
 from reach.recheck.ball import Air, Flights, tops
-from reach.recheck.bounce import Exchanges, Knots, launches
-from reach.recheck.engine import available
-from reach.recheck.ground import Ground, ground
-from reach.recheck.refusals import PROOFS, _tangent, claims
+from reach.recheck.rally import whole as rally
+from reach.recheck.rally.exchange import Exchanges, Knots, launches
+from reach.recheck.rally.refusals import PROOFS, _tangent, claims
 from reach.recheck.stored import BadFolder, Stored
 from reach.report.document import strict
 from reach.report.json import json_text

@@ -15,7 +15,7 @@ import pytest
 from reach.errors import InputError
 from reach.evidence.items import AGREE, DIFFER, NOT_CHECKABLE, Item
 from reach.formats import load_cell
-from reach.recheck import stated
+from reach.recheck.stated import whole as stated
 from reach.recheck.stored import Stored
 from reach.report.rally.document import settings as rally_settings
 from reach.report.stored import cell_file

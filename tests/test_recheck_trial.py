@@ -21,12 +21,12 @@ from reach.arm import Arm
 from reach.cell import Array, Bound, Cell, Recovered, Starts
 from reach.evidence.items import AGREE, DIFFER, NOT_CHECKABLE, Item
 from reach.evidence.trials import Contacts, Run
-from reach.recheck import trial
+from reach.recheck.arm.engine import available
+from reach.recheck.arm.ground import Ground, ground
 from reach.recheck.ball import Air, Bounce, Flights, Outline, launch, tops
-from reach.recheck.bounces import given
-from reach.recheck.engine import available
-from reach.recheck.ground import Ground, ground
 from reach.recheck.stored import BadFolder, Stored
+from reach.recheck.trial import whole as trial
+from reach.recheck.trial.bounces import given
 from reach.report.document import strict
 from reach.report.json import json_text
 from reach.report.trial.document import document

@@ -674,7 +674,10 @@ def listing(folder: Path) -> set[str]:
     return {str(path.relative_to(folder)) for path in folder.rglob("*") if path.is_file()}
 
 
-COMPLETE = {"verdict.json", "motion.csv", "report.html", "evidence/motion.npz", "evidence/cell.json"}
+COMPLETE = {
+    *("verdict.json", "motion.csv", "report.html", "evidence/motion.npz", "evidence/cell.json"),
+    *("evidence/log.npz", "evidence/digests.json"),
+}
 
 
 def test_folder_holds_everything_and_no_motion_of_another_run(
@@ -710,10 +713,11 @@ def test_folder_that_fails_while_writing_leaves_nothing(
 
 
 @pytest.mark.usefixtures("quick_page")
-def test_folder_that_fails_while_moving_has_no_verdict(
+def test_folder_that_fails_while_moving_holds_the_older_run_whole(
     result: FollowResult, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
     write_folder(result, tmp_path)
+    before = {name: (tmp_path / name).read_bytes() for name in COMPLETE}
     move = os.replace
 
     def fails(source: Path, target: Path) -> None:
@@ -723,8 +727,9 @@ def test_folder_that_fails_while_moving_has_no_verdict(
 
     monkeypatch.setattr(os, "replace", fails)
     with pytest.raises(OutputError, match=r"report\.html: can't be written: Permission denied"):
-        write_folder(result, tmp_path)
-    assert listing(tmp_path) == COMPLETE - {"verdict.json"}
+        write_folder(without_motion(), tmp_path)
+    assert listing(tmp_path) == COMPLETE
+    assert {name: (tmp_path / name).read_bytes() for name in COMPLETE} == before
 
 
 @pytest.mark.usefixtures("quick_page")

@@ -388,7 +388,7 @@ def test_evidence_reads_back_to_the_last_digit(result: RallyResult) -> None:
     first, second, third = files["points.npz"], files["motions.npz"], files["cell.json"]
     assert first is not None and second is not None and third is not None
     with np.load(io.BytesIO(first), allow_pickle=False) as arrays:
-        wanted = {item.name for item in fields(RallyPoints)} - {"reason", "motions"}
+        wanted = {item.name for item in fields(RallyPoints)} - {"reason", "motions", "proof"}
         assert set(arrays) == wanted
         for name in wanted:
             np.testing.assert_array_equal(arrays[name], getattr(points, name), err_msg=name)
@@ -405,7 +405,10 @@ def test_evidence_reads_back_to_the_last_digit(result: RallyResult) -> None:
     assert cell["contact"]["restitution"] == 0.85
 
 
-COMPLETE = {"verdict.json", "rally.csv", "report.html", "evidence/points.npz", "evidence/cell.json"}
+COMPLETE = {
+    *("verdict.json", "rally.csv", "report.html", "evidence/points.npz", "evidence/cell.json"),
+    "evidence/digests.json",
+}
 
 
 def test_folder_holds_everything_and_no_motion_of_another_run(

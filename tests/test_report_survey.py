@@ -599,7 +599,10 @@ def test_evidence_reads_back_to_the_last_digit(result: SurveyResult) -> None:
     assert cell["arm"]["model_xml"] == result.cell.arm.model_xml
 
 
-COMPLETE = {"verdict.json", "survey.csv", "report.html", "evidence/points.npz", "evidence/cell.json"}
+COMPLETE = {
+    *("verdict.json", "survey.csv", "report.html", "evidence/points.npz", "evidence/cell.json"),
+    "evidence/digests.json",
+}
 
 
 def test_folder_holds_everything_and_no_strokes_of_another_run(

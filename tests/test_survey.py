@@ -626,9 +626,9 @@ def test_a_narrow_travel_stops(cheap: None) -> None:
 @pytest.mark.parametrize(
     ("limit", "joint", "factor"),
     [
-        ("velocity", "j3", 0.1),
+        pytest.param("velocity", "j3", 0.1, marks=pytest.mark.campaign),  # both on two links above
         ("torque", "j2", 0.2),
-        ("torque rate", "j3", 0.03),
+        pytest.param("torque rate", "j3", 0.03, marks=pytest.mark.campaign),
     ],
 )
 def test_a_tiny_limit_of_six_axes_is_what_stops(limit: str, joint: str, factor: float, cheap: None) -> None:

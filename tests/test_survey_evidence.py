@@ -17,10 +17,10 @@ from reach import load_cell, survey_strikes
 from reach.cell import Cell
 from reach.errors import InputError
 from reach.evidence.items import AGREE, DIFFER, Item
-from reach.recheck import survey
-from reach.recheck.bounds import covering_m_s, reach_item, velocity_box
-from reach.recheck.ground import Ground, ground
+from reach.recheck.arm.bounds import covering_m_s, reach_item, velocity_box
+from reach.recheck.arm.ground import Ground, ground
 from reach.recheck.stored import Stored
+from reach.recheck.survey import whole as survey
 from reach.report.json import write
 from reach.report.survey.evidence import evidence_files
 
@@ -72,6 +72,7 @@ def alone(stored: Stored, row: int, change: Change | None = None) -> Stored:
     own["profile_first"] = np.array([0, part.stop - part.start])
     own = {name: array.copy() for name, array in own.items()}
     cell = json.loads(json.dumps(stored.cell))
+    cell["verdict"] = str(own["verdict"][0])
     cell["survey"] |= {"listed": own["position"].tolist(), "box_m": None}
     cell["survey"] |= {key: own[key[:-1]].tolist() for key in ("normals", "directions")}
     cell["survey"]["speeds_m_s"] = own["required_m_s"].tolist()

@@ -252,8 +252,8 @@ def dense(name: str, count: int, seed: int, starts: int) -> tuple[Setting, Array
 
 @pytest.fixture(scope="module", params=["bench7", "fer"])
 def truth(request: pytest.FixtureRequest) -> tuple[str, Setting, Array, Array, Array]:
-    """Twelve strikes with a dense search's bounds: a few hundred starts; ten times as many give the same to 0.1 %."""
-    return (request.param, *dense(request.param, 12, 5, 300))
+    """Eight strikes with a dense search's bounds: a few hundred starts; ten times as many give the same to 0.1 %."""
+    return (request.param, *dense(request.param, 8, 5, 300))
 
 
 def test_the_first_search_finds_most_of_the_bound(truth: tuple[str, Setting, Array, Array, Array]) -> None:
@@ -287,7 +287,7 @@ def test_no_strike_is_refused_while_a_posture_allows_it(name: str, monkeypatch: 
     # it has no say in what is refused.
     for slow in ("exact", "_try_straight"):
         monkeypatch.setattr(f"reach.survey.weigh.{slow}", lambda *_, **__: None)
-    setting, place, face, most = dense(name, 30, 77, 60)
+    setting, place, face, most = dense(name, 15, 77, 60)
     cell = listed(arm_cell(name), place, face, 0.9 * most)
     look, grid = looker(cell), grid_of(cell)
     rows = look.judge(grid, look.search(grid), Found.none(setting.arm.n)).points

@@ -117,7 +117,7 @@ def test_largest_velocity_is_the_edge():
 POSITION_RAD = 1e-5
 VELOCITY_SHARE = 1e-6  # of the limit; the row is exact, the solver's check is not
 TORQUE_SHARE = 0.01  # of torque and torque rate, beside the margins that a plan keeps
-ROLLS = 16  # a robot in the default run; the whole campaign is 1,000
+ROLLS = 8  # a robot in the default run; the whole campaign is 1,000
 # The stated ends and speeds, ordinary margins on torque and acceleration.
 HARD_ENDS = Margins(position_rad=0.0, position_m=0.0, velocity_share=0.0)
 

@@ -246,7 +246,12 @@ class _Roller:
         del self.q[k + 1 :], self.v[k + 1 :]
         for step in [s for s in self.noted if s >= k]:
             del self.noted[step]
-        self.careful_at, self.close_until = k, k + CLOSE_FOR
+        self.in_vain = 0
+        while self.in_vain < k and (step := self.noted.get(k - 1 - self.in_vain)) and step.status != "solved":
+            self.in_vain += 1
+        self.careful_at, self.close_until, self.cautious_until = k, k + CLOSE_FOR, k
+        due = self.commanded if k >= self.commanded else k - k % POSTURE_EVERY
+        self.posture_velocity = self._posture_velocity(due, self.q[due])
         before = max(k - 1, 0)
         self.bias_before = self.arm.at(self.q[before], self.v[before]).bias
         self.state = self.arm.at(self.q[k], self.v[k])

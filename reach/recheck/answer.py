@@ -7,9 +7,13 @@ from dataclasses import dataclass
 from os import PathLike, fspath
 
 from reach.evidence.items import Item
-from reach.recheck import follow, rally, stated, survey, trial
-from reach.recheck.ground import ground
+from reach.recheck.arm.ground import ground
+from reach.recheck.follow import whole as follow
+from reach.recheck.rally import whole as rally
+from reach.recheck.stated import whole as stated
 from reach.recheck.stored import read_folder
+from reach.recheck.survey import whole as survey
+from reach.recheck.trial import whole as trial
 
 CHECKERS = {"follow": follow, "survey": survey, "rally": rally, "trial": trial}
 

@@ -10,14 +10,14 @@ from numpy.typing import NDArray
 from reach.cell import Array, Cell
 from reach.posture import reach_bound
 from reach.strike.setting import Setting
-from reach.strike.sides import AT_BOUND
+from reach.strike.sides import AT_BOUND, searched, upper
 from reach.survey.family import folds
 from reach.survey.grid import Strikes
 from reach.survey.inverse import Found, Library, from_library, from_postures, merged
 from reach.survey.judged import Scribe
 from reach.survey.rows import Judged, Rows, judged
 from reach.survey.selfmotion import LEADERS, best_first, improved, own_bound
-from reach.survey.stops import gains, loosened, stop_at_bound, stop_of
+from reach.survey.stops import loosened, stop_at_bound, stop_of
 from reach.survey.weigh import Effort, Shown, Weighed, show, weigh
 from reach.variants import without_margins
 from reach.verdict import DELIVERABLE, NOT_DELIVERABLE
@@ -193,8 +193,13 @@ class Looker:
         if not short or not self._loose:
             return {k: {} for k, _ in short}
         at, index = (np.array(column) for column in zip(*short, strict=True))
-        q = weighed.found.q[weighed.pick[index]]
-        speeds = gains(self._loose, q, strikes.normal[at], strikes.direction[at])
+        q, tangent = weighed.found.q[weighed.pick[index]], weighed.below.tangent[index]
+        normal, direction = strikes.normal[at], strikes.direction[at]
+        speeds = {}
+        for kind, setting in self._loose.items():
+            above = upper(setting, q, direction)
+            # From the swing that there is: a looser limit does not lose it.
+            _, speeds[kind] = searched(setting, q, normal, direction, above, tangent)
         return {
             k: {kind: float(found[j]) for kind, found in speeds.items()} for j, (k, _) in enumerate(short)
         }

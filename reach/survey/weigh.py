@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from reach.cell import Array
 from reach.strike.motions import exact, straights, swing
 from reach.strike.setting import Setting
-from reach.strike.sides import Lower, Upper, lower, part_of, promise, upper
+from reach.strike.sides import Lower, Upper, along, begun, part_of, promise, searched, upper
 from reach.strike.stroke import Demonstration
 from reach.survey.family import Folds
 from reach.survey.grid import Strikes
@@ -20,6 +20,7 @@ from reach.survey.selfmotion import leaders
 
 WITHIN = 1.2  # times the quick speed: what is asked beyond it, no optimisation has ever made up (at most 1.1 measured)
 CANDIDATES, PROMISING = 2, 4  # postures of a strike, by bound and by promise, that get both sides
+SEARCHED = 2  # of those, the fastest by a first try: their joint velocity at the strike is searched
 
 
 @dataclass(frozen=True, eq=False)
@@ -64,8 +65,23 @@ def weigh(setting: Setting, folds: Folds, strikes: Strikes, found: Found) -> Wei
     picked[np.unique(np.stack([found.owner, family]), axis=1, return_index=True)[1]] = True
     pick = np.flatnonzero(picked)
     at = found.owner[pick]
-    below = lower(setting, found.q[pick], strikes.normal[at], strikes.direction[at], part_of(above, pick))
+    below = _swings(
+        setting, found.q[pick], strikes.normal[at], strikes.direction[at], part_of(above, pick), at
+    )
     return Weighed(found, above, pick, below, family[pick])
+
+
+def _swings(
+    setting: Setting, q: Array, normal: Array, direction: Array, above: Upper, owner: NDArray[np.int64]
+) -> Lower:
+    """A quick motion of each posture q (p, n); the most is made of each strike's fastest ones, which decide it."""
+    tangent, speed = begun(setting, q, normal, direction, above)
+    order = np.lexsort((-speed, owner))
+    top = np.sort(order[leaders(Found(q[order], owner[order]), SEARCHED)])
+    tangent[top], _ = searched(
+        setting, q[top], normal[top], direction[top], part_of(above, top), tangent[top]
+    )
+    return along(setting, q, normal, direction, above, tangent)
 
 
 @dataclass(frozen=True, eq=False)

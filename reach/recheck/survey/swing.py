@@ -8,10 +8,10 @@ import numpy as np
 
 from reach.evidence.items import Check, same
 from reach.recheck import allowed
-from reach.recheck.chain import Array
-from reach.recheck.ground import Ground
+from reach.recheck.arm.chain import Array
+from reach.recheck.arm.ground import Ground
+from reach.recheck.arm.trace import Trace, fine
 from reach.recheck.stored import BadFolder, Stored, largest
-from reach.recheck.trace import Trace, fine
 
 POINTS, MOTIONS = "points.npz", "motions.npz"
 SWING, STRAIGHT = "swing", "straight"

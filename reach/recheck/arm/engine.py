@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from reach.errors import ReachError
 from reach.formats.xml_tree import Element
-from reach.recheck.chain import (
+from reach.recheck.arm.chain import (
     STILL,
     Array,
     UrdfJoint,

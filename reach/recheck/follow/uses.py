@@ -9,10 +9,10 @@ import numpy as np
 
 from reach.evidence.items import Check, Item, same
 from reach.recheck import allowed
-from reach.recheck.ground import Ground
-from reach.recheck.limits import KINDS, TORQUE_KINDS, overshoot, torques, values
+from reach.recheck.arm.ground import Ground
+from reach.recheck.arm.limits import KINDS, TORQUE_KINDS, overshoot, torques, values
+from reach.recheck.arm.trace import FINE, Trace
 from reach.recheck.stored import VERDICT, Stored, largest
-from reach.recheck.trace import FINE, Trace
 
 MOTION = "motion.npz"
 PASSIVE = tuple(kind for kind in KINDS if kind not in TORQUE_KINDS)

@@ -9,11 +9,11 @@ import numpy as np
 
 from reach.evidence.items import Check, Item, same
 from reach.recheck import allowed
+from reach.recheck.arm.chain import Seen
+from reach.recheck.arm.ground import Ground
+from reach.recheck.arm.trace import FINE, Trace
 from reach.recheck.ball import Air, Bounce, Flights, Outline, launch, refused, tops
-from reach.recheck.chain import Seen
-from reach.recheck.ground import Ground
 from reach.recheck.stored import BadFolder, Stored, largest
-from reach.recheck.trace import FINE, Trace
 
 RUNS = "runs.npz"
 DEAD_SHARE, AWAY_TIMES = (

@@ -10,8 +10,13 @@ import numpy as np
 
 from reach.evidence.items import Check, Item, same
 from reach.recheck import allowed
+from reach.recheck.arm.ground import Ground
+from reach.recheck.arm.limits import TOOL, TORQUE_KINDS, kept, overshoot, torques, values
+from reach.recheck.arm.trace import FINE, Trace, fine
 from reach.recheck.ball import refused
-from reach.recheck.bounces import (
+from reach.recheck.shares import word_of
+from reach.recheck.stored import VERDICT, BadFolder, Stored, largest, number_in
+from reach.recheck.trial.bounces import (
     RUNS,
     Asked,
     Bounces,
@@ -22,10 +27,6 @@ from reach.recheck.bounces import (
     flight_item,
     impact_item,
 )
-from reach.recheck.ground import Ground
-from reach.recheck.limits import TOOL, TORQUE_KINDS, kept, overshoot, torques, values
-from reach.recheck.stored import VERDICT, BadFolder, Stored, largest, number_in
-from reach.recheck.trace import FINE, Trace, fine
 
 FAILED = ("solver failed", "law failed")
 MISSED = ("missed past the edge", "too fast to catch")
@@ -328,10 +329,7 @@ def _judged(asked: Asked, total: int, blind: bool, words: list[Word]) -> str:
     """The verdict on starts, those not tried undecided."""
     good = 0 if blind else sum(word.recovered and not word.open for word in words)
     bad = sum(not word.recovered and not word.open for word in words)
-    needed = math.ceil(asked.required_share * total - 1e-9)
-    if total and good >= needed:
-        return "deliverable"
-    return "undecided" if total and total - bad >= needed else "not deliverable"
+    return word_of(total, good, bad, asked.required_share)
 
 
 def _shares(good: int, count: int) -> tuple[float, float, float]:

@@ -8,8 +8,8 @@ import numpy as np
 
 from reach.evidence.items import Check, Item
 from reach.recheck import allowed
-from reach.recheck.chain import Array
-from reach.recheck.ground import Ground
+from reach.recheck.arm.chain import Array
+from reach.recheck.arm.ground import Ground
 from reach.recheck.stored import largest
 
 VAST = 1e4  # rad/s or m/s: stands for a joint velocity without a limit

@@ -12,9 +12,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from reach.formats.files import MAX_TEXT_BYTES, Reading
-from reach.recheck.chain import SLIDING, TURNING, Array, Chain, sensible
-from reach.recheck.engine import Engine, NoEngine
-from reach.recheck.limits import KINDS, TOOL, Limits
+from reach.recheck.arm.chain import SLIDING, TURNING, Array, Chain, sensible
+from reach.recheck.arm.engine import Engine, NoEngine
+from reach.recheck.arm.limits import KINDS, TOOL, Limits
 from reach.recheck.stored import CELL, BadFolder, Stored
 
 SHORTEST_S, LONGEST_S = 1e-5, 0.1  # of a control period

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from reach.recheck.chain import Array
+from reach.recheck.arm.chain import Array
 from reach.recheck.stored import BadFolder
 
 FINE = 4  # samples a control period

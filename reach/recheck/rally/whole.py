@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Callable
 from dataclasses import dataclass
 
@@ -11,19 +10,28 @@ from numpy.typing import NDArray
 
 from reach.evidence.items import Check, Item, same
 from reach.recheck import allowed
+from reach.recheck.arm.bounds import reach_item
+from reach.recheck.arm.chain import Array
+from reach.recheck.arm.ground import Ground
+from reach.recheck.arm.limits import motion_items
+from reach.recheck.arm.trace import fine, quintic
 from reach.recheck.ball import Flights, tops
-from reach.recheck.bounce import MOTIONS, Exchange, Exchanges, Knots, demands
-from reach.recheck.bounds import reach_item
-from reach.recheck.chain import Array
-from reach.recheck.ground import Ground
-from reach.recheck.limits import motion_items
-from reach.recheck.refusals import FACE_RAD, Asked, Leg, Speed, claims, mass_ratio, speed_item, time_item
+from reach.recheck.rally.exchange import MOTIONS, Exchange, Exchanges, Knots, demands
+from reach.recheck.rally.refusals import (
+    FACE_RAD,
+    Asked,
+    Leg,
+    Speed,
+    claims,
+    mass_ratio,
+    speed_item,
+    time_item,
+)
+from reach.recheck.shares import DELIVERABLE, NOT_DELIVERABLE, UNDECIDED, claimed, word_of
 from reach.recheck.stored import CELL, BadFolder, Stored, largest
-from reach.recheck.trace import fine, quintic
 from reach.recheck.turns import between
 
 POINTS = "points.npz"
-DELIVERABLE, NOT_DELIVERABLE, UNDECIDED = "deliverable", "not deliverable", "undecided"
 DEMONSTRATED, PROVED, SEARCHED = "demonstrated", "proved", "searched"
 REACH, DUTY = "reach", "duty"
 EVERY = 10  # points between two lines of progress
@@ -330,20 +338,11 @@ def _whole(stored: Stored, words: list[str | None]) -> Item:
     if None in words:
         return Item("verdict", "", (), "the verdict of a point could not be told")
     total, done, lost = len(words), words.count(DELIVERABLE), words.count(NOT_DELIVERABLE)
-    needed = math.ceil(stored.number("rally", "required_share") * total - 1e-9)
-    word = UNDECIDED
-    if done >= needed and total:
-        word = DELIVERABLE
-    elif total - lost < needed or not total:
-        word = NOT_DELIVERABLE
-    counted = {
+    word = word_of(total, done, lost, stored.number("rally", "required_share"))
+    figures = {
         "points": total,
         "deliverable": done,
         "not_deliverable": lost,
         "undecided": total - done - lost,
     }
-    figures = stored.verdict.get("figures")
-    figures = figures if isinstance(figures, dict) else {}
-    checks = [same(name.replace("_", " "), count, figures.get(name)) for name, count in counted.items()]
-    claimed = stored.verdict.get("verdict"), stored.at("verdict")
-    return Item("verdict", "", (*checks, *(same("verdict", word, claim) for claim in claimed)))
+    return Item("verdict", "", tuple(claimed(stored, word, figures)))

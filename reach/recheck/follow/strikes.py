@@ -9,10 +9,10 @@ import numpy as np
 
 from reach.evidence.items import Check, Item, same
 from reach.recheck import allowed
-from reach.recheck.command import Command, Log
-from reach.recheck.ground import Ground
+from reach.recheck.arm.ground import Ground
+from reach.recheck.arm.trace import FINE, Trace
+from reach.recheck.follow.command import Command, Log
 from reach.recheck.stored import Stored, largest, number_in
-from reach.recheck.trace import FINE, Trace
 from reach.recheck.turns import between
 
 MOTION = "motion.npz"

@@ -14,10 +14,10 @@ from numpy.typing import NDArray
 
 from reach.evidence.items import Check, Item, same
 from reach.recheck import allowed
-from reach.recheck.bounce import Exchange
-from reach.recheck.bounds import DUAL, cap_m_s, ends, velocity_box
-from reach.recheck.chain import Array
-from reach.recheck.ground import Ground
+from reach.recheck.arm.bounds import DUAL, cap_m_s, ends, velocity_box
+from reach.recheck.arm.chain import Array
+from reach.recheck.arm.ground import Ground
+from reach.recheck.rally.exchange import Exchange
 from reach.recheck.stored import BadFolder, Stored, largest
 from reach.recheck.turns import between
 

@@ -10,8 +10,8 @@ from typing import Any
 
 from reach.evidence.items import Check, Item, same
 from reach.formats.files import MAX_LOG_BYTES, MAX_TEXT_BYTES, Reading
-from reach.recheck.asked import cell_checks, command_checks, near, strikes_checks
-from reach.recheck.joints import DRIVE, FIELDS, Said, read_joints, with_limits_file
+from reach.recheck.stated.asked import cell_checks, command_checks, near, strikes_checks
+from reach.recheck.stated.joints import DRIVE, FIELDS, Said, read_joints, with_limits_file
 from reach.recheck.stored import CELL, BadFolder, Stored
 
 KIND = "as stated"

@@ -9,10 +9,10 @@ import numpy as np
 
 from reach.evidence.items import Check, Item, same
 from reach.recheck import allowed
-from reach.recheck.bounds import WAYS
-from reach.recheck.chain import Array
+from reach.recheck.arm.bounds import WAYS
+from reach.recheck.arm.chain import Array
 from reach.recheck.stored import CELL, BadFolder, Stored, largest
-from reach.recheck.swing import POINTS, Pieces
+from reach.recheck.survey.swing import POINTS, Pieces
 
 VECTORS = ("position", "normal", "direction")
 NUMBERS = ("demonstrated_m_s", "bound_still_m_s", "bound_free_m_s")

@@ -4,23 +4,22 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
-from typing import Any
 
 import numpy as np
 
 from reach.evidence.items import Check, Item, same
 from reach.recheck import allowed
-from reach.recheck.bounds import FACE_RAD, WAYS, bound_item, reach_item, speed_item
-from reach.recheck.chain import Array
-from reach.recheck.ground import Ground
-from reach.recheck.limits import KINDS, TOOL, motion_items
+from reach.recheck.arm.bounds import FACE_RAD, WAYS, bound_item, reach_item, speed_item
+from reach.recheck.arm.chain import Array
+from reach.recheck.arm.ground import Ground
+from reach.recheck.arm.limits import KINDS, TOOL, motion_items
+from reach.recheck.arm.trace import FINE, Trace
+from reach.recheck.shares import DELIVERABLE, NOT_DELIVERABLE, UNDECIDED, claimed, word_of
 from reach.recheck.stored import CELL, BadFolder, Stored, largest
-from reach.recheck.strikes import Strikes, own_way, strikes_item
-from reach.recheck.swing import POINTS, stroke
-from reach.recheck.trace import FINE, Trace
+from reach.recheck.survey.strikes import Strikes, own_way, strikes_item
+from reach.recheck.survey.swing import POINTS, stroke
 from reach.recheck.turns import between
 
-DELIVERABLE, NOT_DELIVERABLE, UNDECIDED = "deliverable", "not deliverable", "undecided"
 DEMONSTRATED, PROVED, SEARCHED = "demonstrated", "proved", "searched"
 REACH, DUTY = "reach", "duty"
 MARGINS = ("position_rad", "position_m", "velocity_share", "acceleration_share")
@@ -199,12 +198,7 @@ def _verdict_item(strikes: Strikes, row: int, word: str) -> Item:
 def _whole(stored: Stored, ground: Ground, words: list[str], strikes: Strikes) -> Item:
     """The verdict by the share of strikes, and the counts that the verdict's file gives."""
     total, done, lost = len(words), words.count(DELIVERABLE), words.count(NOT_DELIVERABLE)
-    needed = math.ceil(stored.number("survey", "required_share") * total - 1e-9)
-    word = UNDECIDED
-    if done >= needed and total:
-        word = DELIVERABLE
-    elif total - lost < needed or not total:
-        word = NOT_DELIVERABLE
+    word = word_of(total, done, lost, stored.number("survey", "required_share"))
     pairs: list[tuple[str, str | None]] = [
         (kind, name)
         for kind in KINDS
@@ -217,10 +211,6 @@ def _whole(stored: Stored, ground: Ground, words: list[str], strikes: Strikes) -
         (entry.get("limit"), entry.get("joint")) for entry in stored.at("unknown") if isinstance(entry, dict)
     ]
     away = int((strikes.columns["limit"] == REACH).sum())
-    counted = {"strikes": total, "deliverable": done, "not_deliverable": lost, "unreachable": away}
-    given = stored.verdict.get("figures")
-    figures: dict[str, Any] = given if isinstance(given, dict) else {}
-    checks = [same(name.replace("_", " "), count, figures.get(name)) for name, count in counted.items()]
-    checks.append(same("unknown limits", sorted(map(str, pairs)), sorted(map(str, told))))
-    checks.append(same("verdict", word, stored.verdict.get("verdict")))
-    return Item("verdict", "", tuple(checks))
+    figures = {"strikes": total, "deliverable": done, "not_deliverable": lost, "unreachable": away}
+    told_alike = same("unknown limits", sorted(map(str, pairs)), sorted(map(str, told)))
+    return Item("verdict", "", (told_alike, *claimed(stored, word, figures)))

@@ -8,13 +8,13 @@ import numpy as np
 
 from reach.evidence.items import Check, Item, same
 from reach.recheck import allowed
-from reach.recheck.command import Command, Log, command_of, first_pose, log_again
-from reach.recheck.ground import Ground
+from reach.recheck.arm.ground import Ground
+from reach.recheck.arm.trace import fine
+from reach.recheck.follow.command import Command, Log, command_of, first_pose, log_again
+from reach.recheck.follow.strikes import strike_items
+from reach.recheck.follow.uses import limit_items
 from reach.recheck.stored import CELL, BadFolder, Stored, largest, number_in
-from reach.recheck.struck import strike_items
-from reach.recheck.trace import fine
 from reach.recheck.turns import apart
-from reach.recheck.uses import limit_items
 
 MOTION = "motion.npz"
 REST = 1e-6  # rad/s or m/s, and by the period a change of it: below it the arm stands

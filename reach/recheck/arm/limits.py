@@ -11,10 +11,10 @@ import numpy as np
 
 from reach.evidence.items import Check, Item
 from reach.recheck import allowed
-from reach.recheck.chain import Array, Chain, sensible
-from reach.recheck.engine import Engine
+from reach.recheck.arm.chain import Array, Chain, sensible
+from reach.recheck.arm.engine import Engine
+from reach.recheck.arm.trace import FINE, Trace
 from reach.recheck.stored import CELL, BadFolder
-from reach.recheck.trace import FINE, Trace
 
 KINDS = ("position", "velocity", "acceleration", "jerk", "torque", "torque rate", "duty")
 TORQUE_KINDS = ("torque", "torque rate", "duty")

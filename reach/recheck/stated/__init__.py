@@ -1,0 +1,1 @@
+"""What the inputs state, read again."""

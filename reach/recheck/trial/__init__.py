@@ -1,0 +1,1 @@
+"""The second opinion on trials of a law."""
