@@ -192,12 +192,14 @@ def test_one_solver_that_answers_wrongly_changes_nothing(
     found, expected = followed(tmp_path, PEAKS_M_S[word]), sound[word]
     assert found.verdict == expected.verdict
     assert found.solver.failed_steps == 0
-    if each == 1:  # and the very motion of the second solver alone: what a roll takes back, it takes back whole
+    if (
+        each == 1
+    ):  # and the very motion of the second solver alone: what a roll takes back, it takes back whole
         one, other = found.evidence.motion, by_second[word].evidence.motion
         assert one is not None and other is not None
         np.testing.assert_allclose(one.q, other.q, rtol=0, atol=SAME_RAD)
     # asked again a solver may answer well: then the second one was not needed
-    assert found.solver.fallback_steps > 0 or (each > 1 and wrong in (not_a_number, none_found, raises))
+    assert found.solver.fallback_steps > 0 or each > 1
 
 
 @pytest.mark.parametrize("word", PEAKS_M_S)

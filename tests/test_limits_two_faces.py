@@ -142,7 +142,7 @@ def largest_uses(margins: str, alone: str | None) -> dict[str, float]:
 def _largest_uses(margins: str, variant: str, alone: str | None) -> dict[str, float]:
     cell, arm, moments = setting(margins, variant)
     limits = build_limits(cell)
-    rows = Rows(limits if alone is None else {alone: limits[alone]}, arm.n, cell.period_s)
+    rows = Rows(cell, limits if alone is None else {alone: limits[alone]})
     most = limits["acceleration"].hi * cell.period_s
     rng = np.random.default_rng(32)
     worst = dict.fromkeys(PLANNED, 0.0)

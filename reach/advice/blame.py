@@ -32,7 +32,7 @@ class Blames:
     def __init__(self, cell: Cell, arm: Arm, roll: Roll):
         self._arm, self._roll, self._dt = arm, roll, cell.period_s
         limits = build_limits(cell)
-        self._rows = Rows(limits, arm.n, cell.period_s)
+        self._rows = Rows(cell, limits)
         self._percent = {name: limit.percent() for name, limit in limits.items()}
         self.of = cache(self._of)
 

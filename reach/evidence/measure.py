@@ -75,13 +75,13 @@ def limit_uses(limit: Limit, fine: Fine, rows: int) -> list[Use]:
     """A limit's use by each joint of a motion of `rows` control rows."""
     values = limit.measure(fine)
     share = limit.utilisation(values)
-    strength = np.where(np.isnan(share), np.abs(values), share)
+    unbounded = limit.known & np.isinf(limit.hi) & np.isinf(limit.lo)
+    strength = np.where(np.isnan(share) | unbounded, np.abs(values), share)
     uses = []
     for i, joint in enumerate(limit.joints):
         at = int(np.argmax(strength[:, i]))
         worst = _largest_in_period(values[:, i], strength[:, i], fine.per_period, rows)
         known = bool(limit.known[i])
-        unbounded = known and np.isinf(limit.hi[i]) and np.isinf(limit.lo[i])
         uses.append(
             Use(
                 limit.name,
@@ -94,7 +94,7 @@ def limit_uses(limit: Limit, fine: Fine, rows: int) -> list[Use]:
                 source=limit.sources[i],
                 peak=float(values[at, i]),
                 time_s=None if limit.family == "none" else float(fine.t_s[at]),
-                utilisation=None if not known else 0.0 if unbounded else float(share[at, i]),
+                utilisation=None if not known else 0.0 if unbounded[i] else float(share[at, i]),
                 demand_peak=np.nan,
                 series=worst,
             )

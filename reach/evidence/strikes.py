@@ -12,7 +12,9 @@ from reach.evidence.motion import FINE, Motion
 from reach.evidence.record import Strike, Track
 from reach.kinematics import Chain
 
-STILL_M_S = 1e-3  # speed errors up to here never fail a log judged throughout
+STILL_M_S = (
+    1e-3  # errors of speed along the normal up to here never fail: a share of next to nothing means nothing
+)
 Wanted = Callable[[Array], tuple[Array, Array, Array]]  # times -> twist, position, axes of the command
 
 
@@ -63,11 +65,16 @@ def window_times(time_s: float, half_s: float, period_s: float) -> Array:
 def strike_faults(errors: Errors, accept: Accept) -> tuple[str, ...]:
     """Which acceptance items fail anywhere in a window, in words."""
     found = []
-    size = np.maximum(np.abs(errors.wanted_normal), 1e-9)
-    share = (errors.normal - errors.wanted_normal) * np.sign(errors.wanted_normal) / size
-    worst = share[np.argmax(np.abs(share))]
-    if not abs(worst) <= accept.strike_speed_error_share:  # so that a nan fails, here and below
-        found.append(f"too {'fast' if worst > 0 else 'slow'} by {100 * abs(worst):.1f} %")
+    size = np.abs(errors.wanted_normal)
+    allowed = np.maximum(accept.strike_speed_error_share * size, STILL_M_S)
+    error = errors.normal - errors.wanted_normal
+    worst = int(np.argmax(np.abs(error) / allowed))
+    if not abs(error[worst]) <= allowed[worst]:  # so that a nan fails, here and below
+        if size[worst] > STILL_M_S:
+            fast = error[worst] * errors.wanted_normal[worst] > 0
+            found.append(f"too {'fast' if fast else 'slow'} by {100 * abs(error[worst]) / size[worst]:.1f} %")
+        else:
+            found.append(f"{errors.normal[worst]:.3f} m/s along the normal, where none is commanded")
     if not (lateral := errors.lateral.max()) <= accept.strike_lateral_m_s:
         found.append(f"{lateral:.3f} m/s sideways")
     if not (off := errors.position.max()) <= accept.strike_position_m:

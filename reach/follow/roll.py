@@ -9,14 +9,17 @@ from reach.cell import Array, Cell
 from reach.follow.commands import Commands
 from reach.follow.direction import same_direction
 from reach.follow.drive import DriveState
-from reach.follow.rolled import GaveWay, Roll, motion_of, now_at
+from reach.follow.gave_way import gave_way
+from reach.follow.rolled import Roll, motion_of, now_at
+from reach.follow.rub import Chords
 from reach.follow.step import BLOCK, Step, Stepper, start_velocity
-from reach.limits.base import SIGNS, Brake, Limit, Now
+from reach.limits.base import Brake, Limit, Now
 from reach.limits.brake import BrakeModel
 
 HOPELESS_STEPS = 200  # in a row without keeping all rows: what came after would be no physics
 CLOSE_FOR = 20  # steps for which all rows stay in once a step came near a position or velocity limit
 CAUTIOUS_FOR = 5  # steps for which a cautious braking ability serves
+CHORD_ROUNDS = 3  # times that a step is solved again where friction bends more than its rows know
 POSTURE_EVERY = 5  # steps between looks at that return
 POSTURE_SPEED = 0.2  # rad/s or m/s: cap of the slow return toward the start posture
 REST_SPEED = 1e-7  # rad/s or m/s: below it the arm stands
@@ -25,7 +28,6 @@ STOP_WITHIN_S = (
 )
 # not stop: it sags under a load that its torque can't hold
 SETTLING_LAGS = 20  # time constants in which a drive comes to rest
-GAVE_WAY = 1e-6  # smaller slack is rounding
 
 
 def roll(
@@ -127,6 +129,7 @@ class _Roller:
             self.posture_velocity = self._posture_velocity(k, q)
         target = self._target(k)
         change, brake = self._solve(k, target)
+        change = self._rubbing(k, target, brake, change)
         self.last_torque = self.stepper.rows.torque_of(state, change)
         next_v = v + change
         next_q = (v + next_v) * (dt / 2)
@@ -142,6 +145,25 @@ class _Roller:
             self.real_change.append(self.drive.advance(next_v))
         self.last_change, self.bias_before = change, state.bias
         self.state = self.arm.at(next_q, next_v)
+
+    def _rubbing(self, k: int, target: Array, brake: Brake, change: Array) -> Array:
+        """Step k solved again where it passes its torque or torque rate by the bend of dry friction."""
+        rows, now = self.stepper.rows, self._now(k, brake)
+        chords = rows.chords(now, change)
+        if chords is not None and k not in self.noted and k - self.checked not in self.free_slots:
+            change = self._noted(
+                k, self._careful_step(k, target, brake)
+            )  # a solver's mere word bends nothing
+            chords = rows.chords(now, change)
+        for _ in range(CHORD_ROUNDS):
+            if chords is None:
+                break
+            again = self._careful_step(k, target, brake, chords)
+            if again.status != "solved":
+                break  # what it passes is less than what would have to give way
+            change = self._noted(k, again)
+            chords = rows.chords(now, change)
+        return change
 
     def _posture_velocity(self, k: int, q: Array) -> Array:
         """Slow return toward the start posture; nothing while stopping."""
@@ -176,10 +198,16 @@ class _Roller:
         change = self._attempt(k, target, brake, close=True)
         if change is not None:
             return change, brake
-        problem = self.stepper.problem(self._now(k, brake), k - self.checked)
+        return self._noted(k, self._careful_step(k, target, brake)), brake
+
+    def _careful_step(self, k: int, target: Array, brake: Brake, chords: Chords | None = None) -> Step:
+        """The step with all its rows, checked at once."""
+        slot, now = k - self.checked, self._now(k, brake)
+        self.stepper.cost(now, target, self.posture_velocity, slot)
+        problem = self.stepper.problem(now, slot, chords=chords)
         if self.keeps_direction:
-            return self._noted(k, same_direction(self.stepper, problem, k - self.checked, target)), brake
-        return self._noted(k, self.stepper.careful(problem)), brake
+            return same_direction(self.stepper, problem, slot, target)
+        return self.stepper.careful(problem)
 
     def _now(self, k: int, brake: Brake) -> Now:
         return Now(self.q[k], self.v[k], self.last_change, self.last_torque, self.state, brake)
@@ -209,10 +237,12 @@ class _Roller:
 
     def _noted(self, k: int, step: Step) -> Array:
         """Keep a step that was checked at once out of the block's check, and what it says."""
+        if k not in self.noted:
+            self.in_vain = 0 if step.status == "solved" else self.in_vain + 1
         self.noted[k] = step
-        self.in_vain = 0 if step.status == "solved" else self.in_vain + 1
         block, slot, m = self.stepper.block, k - self.checked, self.stepper.rows.count
         self.was_free = False
+        self.free_slots.discard(slot)
         block.x[slot] = step.change
         block.z[slot] = 0.0 if step.z is None else step.z[:m]
         block.z_box[slot] = 0.0 if step.z_box is None else step.z_box
@@ -247,7 +277,11 @@ class _Roller:
         for step in [s for s in self.noted if s >= k]:
             del self.noted[step]
         self.in_vain = 0
-        while self.in_vain < k and (step := self.noted.get(k - 1 - self.in_vain)) and step.status != "solved":
+        while (
+            self.in_vain < k
+            and (earlier := self.noted.get(k - 1 - self.in_vain))
+            and earlier.status != "solved"
+        ):
             self.in_vain += 1
         self.careful_at, self.close_until, self.cautious_until = k, k + CLOSE_FOR, k
         due = self.commanded if k >= self.commanded else k - k % POSTURE_EVERY
@@ -289,7 +323,7 @@ class _Roller:
             z_box=np.vstack(self.z_box) if self.z_box else np.zeros((0, n)),
             z_tool=z_tool,
             brakes=tuple(self.brake_of),
-            gave_way=tuple(self._gave_way()),
+            gave_way=tuple(gave_way(self.stepper.rows.joint, self.noted, self._then)),
             elastic_steps=sum(step.status == "elastic" for step in steps_noted),
             failed_steps=sum(step.status == "failed" for step in steps_noted),
             fallback_steps=sum(step.fell_back for step in steps_noted),
@@ -297,27 +331,6 @@ class _Roller:
             end_row=min(self.commanded, steps),
         )
 
-    def _gave_way(self) -> list[GaveWay]:
-        """What elastic steps could not keep."""
-        found = []
-        n = self.arm.n
-        for k, step in self.noted.items():
-            if step.slack is None:
-                continue
-            found += self._overrun(k, step.change)
-            kinds = ["tool speed"] * step.tool
-            kinds += ["torque"] * (len(step.slack) - n - len(kinds))
-            for kind, amount in zip(kinds, step.slack[n:].tolist(), strict=True):
-                if amount > GAVE_WAY:
-                    found.append(GaveWay(k, kind, -1, amount))
-        return found
-
-    def _overrun(self, k: int, change: Array) -> list[GaveWay]:
-        """The joint-family limits that step k's change of velocity (n,) overruns."""
-        lanes = self.stepper.rows.joint
-        lanes.tightest(now_at(self.arm, self.q[k], self.v[k], self.change, self.torque, self.brake_of[k], k))
-        over = (SIGNS * change - lanes.values).max(axis=1)
-        return [
-            GaveWay(k, lanes.kinds[kind].name, joint, float(over[kind, joint]))
-            for kind, joint in np.argwhere(over > GAVE_WAY).tolist()
-        ]
+    def _then(self, k: int) -> Now:
+        """What step k knew."""
+        return now_at(self.arm, self.q[k], self.v[k], self.change, self.torque, self.brake_of[k], k)

@@ -5,7 +5,8 @@ from __future__ import annotations
 import numpy as np
 
 from reach.arm import State
-from reach.cell import Array
+from reach.cell import Array, Cell
+from reach.follow.rub import Chords, Rub
 from reach.limits.base import SIGNS, Ahead, Caution, Limit, Now
 from reach.limits.tool_speed import ToolSpeed
 from reach.qp.problem import QpProblem
@@ -76,7 +77,9 @@ class Rows:
     scale : (n,) factor on each joint's torque rows
     """
 
-    def __init__(self, limits: dict[str, Limit], n: int, period_s: float):
+    def __init__(self, cell: Cell, limits: dict[str, Limit]):
+        n, period_s = len(cell.arm.joints), cell.period_s
+        self._rub = Rub(cell, limits, PHASE)
         self.joint = Lanes(limits, "joint", n, FREE)
         self.torque = Lanes(limits, "torque", n, np.inf)
         tool = [k for k in limits.values() if isinstance(k, ToolSpeed) and k.known.any()]
@@ -111,17 +114,21 @@ class Rows:
         self._tool_calm -= 1
         return True
 
-    def fill(self, now: Now, p: QpProblem, close: bool = True) -> QpProblem:
+    def fill(self, now: Now, p: QpProblem, close: bool = True, chords: Chords | None = None) -> QpProblem:
         """Write the rows for a state into a problem; the cost is the caller's. `close` as in Lanes.tightest.
 
-        Returns that problem, or where the tool's cap is near another one with its rows added.
+        With `chords` friction goes along them. Returns that problem, or where the tool's cap is near another one with
+        its rows added.
         """
         most = self.joint.tightest(now, close)
         p.ub[:] = most[0]
         np.negative(most[1], out=p.lb)
         self._sum_inertia(now)
         if self.limited.size:
-            self._fill_torque(now, p)
+            if chords is not None:
+                own = chords.slope - PHASE * self._rub.slope(now.v)
+                self.matrix[np.diag_indices_from(self.matrix)] += own * self._period_s
+            self._fill_torque(now, p, chords)
         extra = None
         if self.tool is not None:
             self._tool_calm -= 1
@@ -139,6 +146,11 @@ class Rows:
         speed += np.abs(next_v)
         return self.joint.clear(Ahead(q, np.abs(change), speed, caution))
 
+    def chords(self, now: Now, change: Array) -> Chords | None:
+        """What to solve a step again with, since friction bends more than its rows know; None where it need not be."""
+        self._sum_inertia(now)
+        return self._rub.chords(now, change, self.torque_of(now.state, change)) if self.limited.size else None
+
     def torque_of(self, state: State, change: Array) -> Array:
         """Torque (n,) that the rows of the last `fill` or `inside` hold, for a change of velocity (n,)."""
         torque = self.matrix.dot(change / self._period_s)
@@ -149,9 +161,11 @@ class Rows:
         np.multiply(now.state.slope, PHASE * self._period_s, out=self.matrix)
         self.matrix += now.state.mass
 
-    def _fill_torque(self, now: Now, p: QpProblem) -> None:
+    def _fill_torque(self, now: Now, p: QpProblem, chords: Chords | None) -> None:
         m = len(self.limited)
         most = self.torque.tightest(now)
+        if chords is not None:
+            most += chords.before
         np.multiply(SIGNS, now.state.bias, out=self._signed)
         most -= self._signed
         most *= self.scale

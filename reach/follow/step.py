@@ -9,6 +9,7 @@ from scipy.linalg.lapack import dposv
 
 from reach.cell import Array, Cell
 from reach.follow.rows import Rows
+from reach.follow.rub import Chords
 from reach.limits.base import Limit, Now
 from reach.paddle import paddle_radius
 from reach.qp.backends import Solver
@@ -67,7 +68,7 @@ class Stepper:
 
     def __init__(self, cell: Cell, limits: dict[str, Limit]):
         n = len(cell.arm.joints)
-        self.rows = Rows(limits, n, cell.period_s)
+        self.rows = Rows(cell, limits)
         self.solver = Solver(cell.solver.name, cell.solver.fallback)
         self.block = QpBlock(BLOCK, n, self.rows.count)
         self.task, self.error = np.empty((BLOCK, 6, n)), np.empty((BLOCK, 6))
@@ -105,8 +106,8 @@ class Stepper:
         """
         return self.ideal if self.rows.inside(now, self.ideal, close) else None
 
-    def problem(self, now: Now, slot: int, close: bool = True) -> QpProblem:
-        """The quadratic program of a slot whose cost was just written, with its rows. `close` as in Lanes.tightest.
+    def problem(self, now: Now, slot: int, close: bool = True, chords: Chords | None = None) -> QpProblem:
+        """The quadratic program of a slot whose cost was just written, its rows as in Rows.fill.
 
         The cost grows by that of leaving the step which no row holds back.
         """
@@ -114,7 +115,7 @@ class Stepper:
         diagonal += self._calm
         problem.q -= self._calm * self.ideal
         self._calm = 0.0  # once a cost
-        return self.rows.fill(now, problem, close)
+        return self.rows.fill(now, problem, close, chords)
 
     def quick(self, problem: QpProblem, slot: int) -> Array | None:
         """The change of velocity by the first solver's word, noted in the block; None where it has no answer."""

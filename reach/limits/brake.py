@@ -11,6 +11,7 @@ from __future__ import annotations
 import math
 
 import numpy as np
+from numpy.typing import NDArray
 
 from reach.arm import State
 from reach.cell import Array
@@ -79,12 +80,23 @@ class BrakeModel:
         much torque and a modest rate does not slow the others' brakes.
         """
         torque, own_inertia = self._limit[0], np.diagonal(state.mass)
-        alone = np.minimum(torque / own_inertia, UNLIMITED)
         together = np.abs(np.linalg.inv(state.mass)) @ (torque + np.abs(state.bias))
         most = np.minimum(together, UNLIMITED)
-        ramp = np.minimum(self._limit[1] / own_inertia, UNLIMITED)
-        own = np.where(self._stated, self._acceleration, alone)
+        own = np.where(self._stated, self._acceleration, torque / own_inertia)
+        own = _like_the_others(own, self._stated | (torque < VAST), np.ones_like(own))
+        ramp = _like_the_others(self._limit[1] / own_inertia, self._limit[1] < VAST, own)
         return own, ramp, np.where(self._stated, self._acceleration, most)
+
+
+def _like_the_others(values: Array, known: NDArray[np.bool_], scale: Array) -> Array:
+    """Values (n,), and where nothing limits a joint the largest that the others have, in shares of a scale (n,).
+
+    Only their proportion counts: a joint that could do anything must not ask the others to keep up with it.
+    """
+    shares = values[known] / scale[known]
+    return np.where(
+        known, np.minimum(values, UNLIMITED), scale * shares.max(initial=0.0) if len(shares) else UNLIMITED
+    )
 
 
 def stopping_distance(v: float, a: float, deceleration: float, rate: float) -> float:

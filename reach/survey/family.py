@@ -6,7 +6,8 @@ angle, whatever the others do: an elbow, a wrist. Postures of one family are on 
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -18,6 +19,7 @@ SAMPLES = 6  # random postures that must all be singular at a fold
 GRID = 180  # angles a turn that are looked at
 BISECTIONS = 40
 SINGULAR = 1e-7  # smallest over largest singular value
+STEEP = 3.0  # times the mean slope toward a fold that its value may have near it
 NEAR = 0.05  # the same, where a closer look begins
 MIDDLE_RAD = 1e-6  # rounding of where the middle between two angles is
 SIX_AXES = 6  # arms of fewer are judged by where the strike point can go
@@ -60,20 +62,40 @@ class Folds:
         )
 
 
+class _Alike:
+    """A chain that counts as the same as another of the same numbers."""
+
+    def __init__(self, chain: Chain):
+        self.chain = chain
+        self._key = tuple(np.asarray(getattr(chain, item.name)).tobytes() for item in fields(Chain))
+
+    def __eq__(self, other: object) -> bool:
+        return isinstance(other, _Alike) and self._key == other._key
+
+    def __hash__(self) -> int:
+        return hash(self._key)
+
+
 def folds(chain: Chain, names: tuple[str, ...]) -> Folds:
     """The folds of a chain, by looking for angles of one joint at which all of several random postures are singular."""
-    rank = _rank(chain)
-    found = []
-    for joint in range(len(names)):
-        if not chain.sliding[joint]:
-            zeros = _zeros(chain, joint, rank)
-            if len(zeros) == 2:
-                found.append((joint, names[joint], (zeros[0], zeros[1])))
+    found = _angles(_Alike(chain))
     return Folds(
-        tuple(joint for joint, _, _ in found),
-        tuple(name for _, name, _ in found),
-        tuple(angles for _, _, angles in found),
+        tuple(joint for joint, _ in found),
+        tuple(names[joint] for joint, _ in found),
+        tuple(angles for _, angles in found),
     )
+
+
+@lru_cache(maxsize=8)  # of one run; a search changes limits and bases, and comes back to the same arm
+def _angles(alike: _Alike) -> tuple[tuple[int, tuple[float, float]], ...]:
+    """Each joint that is a fold, with its two angles."""
+    chain, found = alike.chain, []
+    rank = _rank(chain)
+    for joint in np.flatnonzero(~np.asarray(chain.sliding)).tolist():
+        zeros = _zeros(chain, joint, rank)
+        if len(zeros) == 2:
+            found.append((joint, (zeros[0], zeros[1])))
+    return tuple(found)
 
 
 def _postures(chain: Chain) -> Array:
@@ -108,9 +130,12 @@ def _zeros(chain: Chain, joint: int, rank: int) -> list[float]:
     found = []
     for at in grid[dips].tolist():
         low, high = at - step, at + step
+        slope = float(least(np.array([low, high])).max()) / step  # of a value that goes to zero in between
         for _ in range(BISECTIONS):  # of thirds: the value falls and rises once
             a, b = low + (high - low) / 3, high - (high - low) / 3
             va, vb = least(np.array([a, b])).tolist()
+            if min(va, vb) > STEEP * slope * (high - low):
+                break  # it does not get there
             low, high = (low, b) if va < vb else (a, high)
         if least(np.array([(low + high) / 2]))[0] < SINGULAR:
             turn = float(np.mod((low + high) / 2 + np.pi, 2 * np.pi) - np.pi)

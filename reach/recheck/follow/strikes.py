@@ -16,7 +16,7 @@ from reach.recheck.stored import Stored, largest, number_in
 from reach.recheck.turns import between
 
 MOTION = "motion.npz"
-STILL_M_S = 1e-3  # errors of speed up to here never fail a log judged throughout
+STILL_M_S = 1e-3  # errors of speed along the normal up to here never fail
 
 
 def strike_items(
@@ -64,10 +64,12 @@ def _strike(
     count = math.ceil(half / (ground.period_s / FINE))
     times = time + np.linspace(-half, half, 2 * count + 1) if count else np.array([time])
     errors = _errors(ground, command, trace, times)
-    size = np.maximum(np.abs(errors["asked"]), 1e-9)
     limits = ground.accept
     delivered = bool(
-        (np.abs(errors["along"]) / size).max() <= limits["strike_speed_error_share"]
+        (
+            np.abs(errors["along"])
+            <= np.maximum(limits["strike_speed_error_share"] * np.abs(errors["asked"]), STILL_M_S)
+        ).all()
         and errors["aside"].max() <= limits["strike_lateral_m_s"]
         and errors["off"].max() <= limits["strike_position_m"]
         and errors["tilt"].max() <= limits["strike_tilt_error_rad"]

@@ -77,11 +77,13 @@ def _use(
     peak, used = claim.get("delivered_peak"), claim.get("utilisation")
     ends = np.array([series.max(), series.min()])
     most = float(np.abs(ends - (peak if isinstance(peak, int | float) else math.nan)).min())
-    checks = [Check(kind, most, allowed.PEAK_SHARE * max(_scale(bound), largest(ends)), unit)]
+    rounding = max(allowed.PEAK_SHARE * max(_scale(bound), largest(ends)), allowed.LIMIT_LEAST)
+    checks = [Check(kind, most, rounding, unit)]
     if isinstance(used, int | float) and used > 1 + allowed.LIMIT_SHARE:
         checks.append(same(f"{kind} passed", over > 0, True))
     else:
-        checks.append(Check(f"{kind} kept", over, allowed.LIMIT_SHARE * _scale(bound), unit))
+        least = max(allowed.LIMIT_SHARE * _scale(bound), allowed.LIMIT_LEAST)
+        checks.append(Check(f"{kind} kept", over, least, unit))
     return checks
 
 
