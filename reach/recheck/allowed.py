@@ -25,4 +25,11 @@ LIMIT_LEAST = 1e-9  # rad or m, per s …, N·m or N: of a limit that is zero
 PEAK_SHARE = 1e-6  # of a limit or a peak, whichever is larger: a peak in verdict.json, torque among them
 NUMBER = 1e-12  # of a number that is read from the same text by two readers
 
+# A strike's joint velocities are solved for with a ridge of 1e-9 of the rows' squares, so that singular postures have
+# an answer. Where joints are fast enough for the strike, rows are no weaker than 1/100 of the strongest: that leaves
+# 1e-5 of the speed. On the examples it is 5e-9 m/s, on random arms 1.3e-6 m/s at the most.
+STRIKE_M_S = 1e-5
+STRIKE_RAD_S = 1e-4
+
 TIME_S = 1e-9  # of an instant; a ball at 10 m/s passes 1e-8 m in it
+DIGITS = 1e-8  # of a number in verdict.json, which rounds to nine digits

@@ -86,7 +86,7 @@ def _strike(
         Check(
             key.rsplit("_", 2 if unit == "m/s" else 1)[0].replace("_", " "),
             abs(float(value) - number_in(claim, key)),
-            most,
+            most + allowed.DIGITS * abs(float(value)),
             unit,
         )
         for key, (value, most, unit) in own.items()

@@ -35,10 +35,6 @@ POINTS = "points.npz"
 DEMONSTRATED, PROVED, SEARCHED = "demonstrated", "proved", "searched"
 REACH, DUTY = "reach", "duty"
 EVERY = 10  # points between two lines of progress
-# A strike's joint velocities are solved for with a ridge of 1e-9 of the rows' squares, so that singular postures have
-# an answer. Where joints are fast enough for the strike, rows are no weaker than 1/100 of the strongest: that leaves
-# 1e-5 of the speed, and 5e-9 m/s on the example.
-RIDGE_M_S, RIDGE_RAD_S = 1e-5, 1e-4
 BALL_M = 1e-4  # where a ball comes down after as much; 1e-5 m/s make 1e-5 m of an apex at 1 m
 WINDOW_M_S = 1e-6  # a paddle that stands still for a strike is accepted with as much
 NUMBERS = ("paddle_speed_m_s", "face_tilt_rad", "flight_s")
@@ -269,8 +265,8 @@ def _strike_checks(ground: Ground, knots: Knots, asked: Asked, apex_m: float) ->
         "strike point": (seen.place - asked.places(), allowed.PLACE_M, "m"),
         "face": (between(normal, exchange.normal), FACE_RAD, "rad"),
         "offset and bearing": (ball - exchange.place, allowed.PLACE_M, "m"),
-        "speed": (seen.linear - speeds * exchange.normal, RIDGE_M_S, "m/s"),
-        "turning": (np.cross(seen.angular, exchange.normal), RIDGE_RAD_S, "rad/s"),
+        "speed": (seen.linear - speeds * exchange.normal, allowed.STRIKE_M_S, "m/s"),
+        "turning": (np.cross(seen.angular, exchange.normal), allowed.STRIKE_RAD_S, "rad/s"),
         "flight": (gone - exchange.flights_s, allowed.TIME_S, "s"),
         "ball, place": (lands - aims, BALL_M, "m"),
         "ball, apex": (tops(exchange.air, exchange.place, after, still) - apex_m, BALL_M, "m"),

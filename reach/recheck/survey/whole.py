@@ -145,10 +145,10 @@ def _motion_checks(stored: Stored, ground: Ground, strikes: Strikes, row: int, t
     found = [
         Check("strike point", largest(seen.place[at] - position), allowed.PLACE_M, "m"),
         Check("face normal", float(between(faces[at : at + 1], normal[None])[0]), FACE_RAD, "rad"),
-        Check("strike speed", largest(seen.linear[at] - speed * direction), allowed.SPEED_M_S, "m/s"),
+        Check("strike speed", largest(seen.linear[at] - speed * direction), allowed.STRIKE_M_S, "m/s"),
         Check("posture", largest(trace.q[at] - columns["q"][row]), allowed.TURN_RAD, "rad or m"),
         Check("joint speeds", largest(rates), allowed.RATE_RAD_S, "rad/s or m/s"),
-        Check("turning", largest(angular) if still else 0.0, allowed.RATE_RAD_S, "rad/s"),
+        Check("turning", largest(angular) if still else 0.0, allowed.STRIKE_RAD_S, "rad/s"),
         Check("above the bound", float(np.maximum(past, 0.0)), allowed.SPEED_M_S, "m/s"),
     ]
     run_up = stored.at("survey", "run_up_m")
