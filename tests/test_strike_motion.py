@@ -186,7 +186,7 @@ def test_lift(up: bool, rate: float, tmp_path: Path) -> None:
 def slow_swings(name: str, run_up_m: float, count: int) -> tuple[Setting, list[Stroke]]:
     """Swings of random postures that joint speed does not end."""
     setting = Setting.of(strikable(cell_of(name), run_up_m))
-    strokes = swings_of(setting, postures(setting, 3 * count, seed=7))
+    strokes = swings_of(setting, postures(setting, max(30, 3 * count), seed=7))
     return setting, [s for s in strokes if s.quick.speed < 0.95 * s.bound][:count]
 
 

@@ -26,7 +26,7 @@ def swing(setting: Setting, normal: Array, direction: Array, below: Lower, i: in
     """The quick swing of posture i as a motion."""
     if below.speed[i] <= 0:
         return None
-    profile = below.profile(i, setting.accept.strike_window_s)
+    profile = below.profile(i, setting.hold_s)
     return demonstrate(setting, normal, direction, SWING, below.paths.take([i]), profile)
 
 
@@ -39,7 +39,7 @@ class Straights:
 
     def motion(self, setting: Setting, normal: Array, direction: Array, i: int) -> Demonstration | None:
         """One of the strokes as a motion."""
-        profile = profile_of(self.timing, i, setting.accept.strike_window_s)
+        profile = profile_of(self.timing, i, setting.hold_s)
         return demonstrate(setting, normal, direction, STRAIGHT, self.paths.take([i]), profile)
 
 
@@ -69,7 +69,7 @@ def exact(
         return None
     paths = below.paths.take([i])
     profile = optimised_profile(
-        setting, below.load.take([i]), paths, below.profile(i, setting.accept.strike_window_s), pieces
+        setting, below.load.take([i]), paths, below.profile(i, setting.hold_s), pieces
     )
     return demonstrate(setting, normal, direction, SWING, paths, profile)
 
@@ -80,7 +80,7 @@ def optimised_profile(
     """The fastest profile of one stroke by sequential linear programs: each side by itself, then at one speed."""
     sides = []
     for k, side in enumerate((start.before, start.after)):
-        problem = SideProblem(load, paths.distance[0, k], k, setting.accept.strike_window_s)
+        problem = SideProblem(load, paths.distance[0, k], k, setting.hold_s)
         for count in pieces:
             side = optimised(problem, side, count)
         sides.append(side)

@@ -9,6 +9,7 @@ from __future__ import annotations
 from dataclasses import dataclass, replace
 
 import numpy as np
+from numpy.typing import NDArray
 
 from reach.arm import FRICTION_WIDTH_M_S, FRICTION_WIDTH_RAD_S, Arm
 from reach.cell import Array
@@ -42,7 +43,7 @@ class Paths:
     bend: Array
     pace: Array
 
-    def take(self, rows: list[int]) -> Paths:
+    def take(self, rows: list[int] | NDArray[np.int64]) -> Paths:
         """Some of the strokes."""
         return Paths(*(getattr(self, name)[rows] for name in ("distance", "q", "slope", "bend", "pace")))
 
@@ -84,7 +85,7 @@ class Load:
     turning: Array
     bending: Array
 
-    def take(self, rows: list[int]) -> Load:
+    def take(self, rows: list[int] | NDArray[np.int64]) -> Load:
         """Some of the strokes."""
         return Load(*(getattr(self, name)[rows] for name in self.__dataclass_fields__))
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -66,6 +67,14 @@ class Setting:
         """Kept-back ends of travel (n,), infinite where there are none."""
         position = self.limits["position"]
         return position.kept_lo, position.kept_hi
+
+    @property
+    def hold_s(self) -> float:
+        """For how long a strike's speed is held: the strike window, out to whole control periods on both sides.
+
+        Between rows velocity is a straight line, so what a row outside the window does would reach into it.
+        """
+        return 2 * self.period_s * math.ceil(self.accept.strike_window_s / 2 / self.period_s - 1e-9)
 
     @property
     def tool_cap_m_s(self) -> float:

@@ -9,12 +9,18 @@ from numpy.typing import NDArray
 
 from reach.cell import Array
 from reach.strike.bound import Bounds, maximisers, strike_rows, upper_bounds, world_dual
-from reach.strike.path import Load, Paths, load_along, swings, travel_along
+from reach.strike.freedom import axes_of, climbed
+from reach.strike.path import FARTHEST_TURN_RAD, Load, Paths, load_along, swings, travel_along
 from reach.strike.profile import Profile, double_s
 from reach.strike.setting import Setting
 from reach.strike.timing import Timing, fastest
 
 AT_BOUND = 0.995  # of the upper bound: nothing worth looking for is left
+NEAR_BOUND = 0.999  # of the upper bound: no faster swing is looked for
+BLOCK = 256  # swings timed at once
+SHORTEST = 1e-6  # rad or m: stands for no way at all
+TIMES = 5  # run-up times tried
+STARTS = 3  # of the search in more than two dimensions: one alone may end on a lower summit
 BEYOND = 1e3  # m/s: a bound above it counts as unlimited
 STEP_M = 1e-3  # along the path, for its curvature at the strike
 KEPT = 0.98  # of what the strike window allows by the curvature alone; the motion itself decides
@@ -113,37 +119,123 @@ def profile_of(timing: Timing, i: int, window_s: float) -> Profile:
 
 
 def lower(setting: Setting, q: Array, normal: Array, direction: Array, above: Upper) -> Lower:
-    """The quickest safe swing of postures q (c, n) through strikes along directions (c, 3) with normals (c, 3).
+    """The quickest safe swing found of postures q (c, n) through strikes along directions (c, 3), normals (c, 3)."""
+    starts, _ = begun(setting, q, normal, direction, above)
+    tangent, _ = searched(setting, q, normal, direction, above, starts)
+    return along(setting, q, normal, direction, above, tangent)
 
-    The joint direction of the upper bound is tried first; where acceleration or torque end it sooner, so are the
-    direction that gains speed soonest, and the one between; where the paddle may turn, also that of a still one.
+
+def begun(setting: Setting, q: Array, normal: Array, direction: Array, above: Upper) -> tuple[Array, Array]:
+    """Joint velocities per m/s (k, c, n) of the fastest of a few swings, the fastest first, and its speed (c,).
+
+    The joint direction of the upper bound is tried first; where acceleration or torque end it sooner, so are others.
+    It is nan where the bound is 0. k is 1, or more where the rows leave much freedom.
     """
+    own = above.own(setting.still)
     first = _tangents(above.rows, direction, above.lo, above.hi, above.joints)
-    best = _timed(setting, q, normal, direction, above, first)
-    short = np.flatnonzero(best.speed < AT_BOUND * above.own(setting.still))
+    count = STARTS if above.rows.shape[2] - above.rows.shape[1] > 2 else 1
+    best, speed = np.repeat(first[None], count, axis=0), np.zeros((count, len(q)))
+    speed[0] = _speeds(setting, q, normal, direction, own, first, speed[0])
+    short = np.flatnonzero(speed[0] < NEAR_BOUND * own)
     if len(short):
-        posture, face, along = q[short], normal[short], direction[short]
         near = part_of(above, short)
-        quick = _quickest(setting, posture, along, near)
-        tangents = [quick, (quick + first[short]) / 2]
-        if not setting.still:
-            tangents.append(_still(setting, posture, along, near))
-        for tangent in tangents:
-            tried = _timed(setting, posture, face, along, near, tangent)
-            better = np.flatnonzero(np.asarray(tried.speed > best.speed[short] * (1 + 1e-6)))
-            best = _replaced(best, short[better], tried, better)
-    return best
+        for tangent in _tangents_to_try(setting, q[short], direction[short], near, first[short]):
+            slowest = speed[-1, short]
+            tried = _speeds(setting, q[short], normal[short], direction[short], own[short], tangent, slowest)
+            both = np.concatenate([speed[:, short], tried[None]])
+            order = np.argsort(-both, axis=0, kind="stable")[:count]
+            at = np.arange(len(short))
+            best[:, short] = np.concatenate([best[:, short], tangent[None]])[order, at]
+            speed[:, short] = both[order, at]
+    return best, speed[0]
 
 
-def timed(setting: Setting, paths: Paths, load: Load, ceiling: Array) -> Timing:
-    """The quick timing of strokes, no faster than a ceiling (c,)."""
-    top = np.minimum(ceiling, load.fastest[:, :, 0].min(axis=1))
-    return fastest(load, paths.distance, setting.accept.strike_window_s, np.minimum(top, BEYOND))
+def searched(
+    setting: Setting, q: Array, normal: Array, direction: Array, above: Upper, starts: Array
+) -> tuple[Array, Array]:
+    """Joint velocity per m/s (c, n) and speed (c,) of the fastest swing found from given ones (k, c, n) on, in all
+    the freedom that the rows leave."""
+    own = above.own(setting.still)
+    axes = axes_of(above.rows, (above.hi - above.lo) / 2)
+    best, most = starts[0].copy(), np.zeros(len(q))
+
+    def speeds(rows: NDArray[np.int64], tangent: Array, floor: Array) -> Array:
+        return _speeds(setting, q[rows], normal[rows], direction[rows], own[rows], tangent, floor)
+
+    for start in starts:
+        speed = speeds(np.arange(len(q)), start, np.zeros(len(q)))
+        tangent, speed = climbed(
+            speeds, axes, start, speed, np.where(most < NEAR_BOUND * own, NEAR_BOUND * own, 0.0)
+        )
+        better = speed > most
+        best[better], most[better] = tangent[better], speed[better]
+    return best, most
 
 
-def _timed(
-    setting: Setting, q: Array, normal: Array, direction: Array, above: Upper, tangent: Array
-) -> Lower:
+def _tangents_to_try(setting: Setting, q: Array, direction: Array, above: Upper, first: Array) -> list[Array]:
+    """Joint velocities per m/s (c, n) to begin with: the one that gains speed soonest, the one between it and the
+    bound's, those of `_within_times`; where the paddle may turn, also that of a still one."""
+    each = alone(setting, q)
+    quick = _tangents(above.rows, direction, -each, each, upper_bounds(above.rows, direction, -each, each))
+    tangents = [quick, (quick + first) / 2, *_within_times(setting, q, direction, above, each)]
+    if not setting.still:
+        tangents.append(_still(setting, q, direction, above))
+    return tangents
+
+
+def _within_times(setting: Setting, q: Array, direction: Array, above: Upper, each: Array) -> list[Array]:
+    """Joint velocities per m/s (c, n), each of the fastest strike with a run-up of 2T from rest, for some T.
+
+    Each joint by itself gains 2 a T at most, over a way that ends the travel at a speed of way / T: the bound's linear
+    program once more. Short of the joints' coupling, of turning on and off, and of the velocity's limit it is exact.
+    """
+    lo, hi = setting.ends
+    way = np.clip(np.minimum(hi - q, q - lo), SHORTEST, FARTHEST_TURN_RAD)
+    own = np.sqrt(way / (2 * each))  # T of each joint, where both ends of its speed meet
+    first, last = own.min(axis=1), own.max(axis=1)
+    tangents = []
+    for share in (np.arange(TIMES) + 0.5) / TIMES:
+        time = (first ** (1 - share) * last**share)[:, None]
+        most = np.minimum(way / time, 2 * each * time)
+        slowest, fastest = np.maximum(above.lo, -most), np.minimum(above.hi, most)
+        bounds = upper_bounds(above.rows, direction, slowest, fastest)
+        tangents.append(_tangents(above.rows, direction, slowest, fastest, bounds))
+    return tangents
+
+
+def _speeds(
+    setting: Setting, q: Array, normal: Array, direction: Array, own: Array, tangent: Array, floor: Array
+) -> Array:
+    """Speeds (k,) of swings by quick timing, no faster than `own` (k,); 0 where they do not pass the floors (k,)."""
+    out = np.zeros(len(q))
+    likely = np.flatnonzero(_may_pass(setting, q, tangent, floor))
+    for k in range(0, len(likely), BLOCK):
+        rows = likely[k : k + BLOCK]
+        ceiling = np.minimum(own[rows], _held(setting, q[rows], tangent[rows], normal[rows], direction[rows]))
+        passing = np.asarray(ceiling > floor[rows])
+        rows, ceiling = rows[passing], ceiling[passing]
+        if len(rows):
+            paths = swings(setting.chain, setting.ends, q[rows], tangent[rows], setting.run_up_m)
+            load = load_along(setting.arm, setting.limits, paths, bends=False)
+            out[rows] = timed(setting, paths, load, ceiling, floor[rows]).speed
+    return out
+
+
+def _may_pass(setting: Setting, q: Array, tangent: Array, speed: Array) -> NDArray[np.bool_]:
+    """Whether swings (k,) keep joint velocity at a speed (k,) and gain it over their travel; nan tangents don't."""
+    velocity, most = setting.limits["velocity"], setting.limits["acceleration"].tighter
+    usable = np.asarray(np.isfinite(tangent).all(axis=1))
+    joint = np.where(usable[:, None], tangent, 1.0)
+    with np.errstate(divide="ignore"):
+        side = np.where(joint > 0, velocity.kept_hi, -velocity.kept_lo)
+        fastest = (side / np.abs(joint)).min(axis=1)
+        acceleration = (most / np.abs(joint)).min(axis=1)
+    way = travel_along(setting.ends, q, joint).min(axis=1)
+    return np.asarray(usable & (fastest >= speed) & (2 * acceleration * way >= speed**2))
+
+
+def along(setting: Setting, q: Array, normal: Array, direction: Array, above: Upper, tangent: Array) -> Lower:
+    """The swings of postures (c, n) along tangents (c, n) as fast as they surely go; nan tangents have none."""
     usable = np.asarray(np.isfinite(tangent).all(axis=1))
     safe = np.where(usable[:, None], tangent, 1.0)
     paths = swings(setting.chain, setting.ends, q, safe, setting.run_up_m)
@@ -151,6 +243,12 @@ def _timed(
     ceiling = np.minimum(above.own(setting.still), _held(setting, q, safe, normal, direction))
     timing = timed(setting, paths, load, np.where(usable, ceiling, 0.0))
     return Lower(np.where(usable, timing.speed, 0.0), safe, paths, load, timing)
+
+
+def timed(setting: Setting, paths: Paths, load: Load, ceiling: Array, floor: Array | None = None) -> Timing:
+    """The quick timing of strokes, no faster than a ceiling (c,); speed 0 where it does not reach a floor (c,)."""
+    top = np.minimum(np.minimum(ceiling, load.fastest[:, :, 0].min(axis=1)), BEYOND)
+    return fastest(load, paths.distance, setting.hold_s, top, floor)
 
 
 def _tangents(rows: Array, direction: Array, lo: Array, hi: Array, bounds: Bounds) -> Array:
@@ -162,16 +260,6 @@ def _tangents(rows: Array, direction: Array, lo: Array, hi: Array, bounds: Bound
         target = np.r_[direction[i], np.zeros(rows.shape[1] - 3)]
         tangent[i] = np.linalg.pinv(rows[i]) @ target
     return np.asarray(tangent)
-
-
-def _quickest(setting: Setting, q: Array, direction: Array, above: Upper) -> Array:
-    """Joint velocity per m/s (c, n) along which the strike's speed grows soonest, each joint by itself.
-
-    The same linear program as the bound's, on accelerations: the kept-back limit or what torque gives the joint alone.
-    """
-    each = alone(setting, q)
-    bounds = upper_bounds(above.rows, direction, -each, each)
-    return _tangents(above.rows, direction, -each, each, bounds)
 
 
 def alone(setting: Setting, q: Array) -> Array:
@@ -230,29 +318,3 @@ def part_of(above: Upper, rows: NDArray[np.int64]) -> Upper:
         lo=above.lo[rows],
         hi=above.hi[rows],
     )
-
-
-def _replaced(best: Lower, at: NDArray[np.int64], other: Lower, rows: NDArray[np.int64]) -> Lower:
-    """The best with some postures' swings taken from another."""
-    if len(at) == 0:
-        return best
-    timing = Timing(*(_put(a, at, b, rows) for a, b in _pairs(best.timing, other.timing)))
-    paths = Paths(*(_put(a, at, b, rows) for a, b in _pairs(best.paths, other.paths)))
-    load = Load(*(_put(a, at, b, rows) for a, b in _pairs(best.load, other.load)))
-    return Lower(
-        _put(best.speed, at, other.speed, rows),
-        _put(best.tangent, at, other.tangent, rows),
-        paths,
-        load,
-        timing,
-    )
-
-
-def _pairs(first: object, second: object) -> list[tuple[Array, Array]]:
-    return list(zip(vars(first).values(), vars(second).values(), strict=True))
-
-
-def _put(a: Array, at: NDArray[np.int64], b: Array, rows: NDArray[np.int64]) -> Array:
-    out = a.copy()
-    out[at] = b[rows]
-    return out

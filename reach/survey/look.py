@@ -193,7 +193,7 @@ class Looker:
         if not short or not self._loose:
             return {k: {} for k, _ in short}
         at, index = (np.array(column) for column in zip(*short, strict=True))
-        q, tangent = weighed.found.q[weighed.pick[index]], weighed.below.tangent[index]
+        q, tangent = weighed.found.q[weighed.pick[index]], weighed.below.tangent[None, index]
         normal, direction = strikes.normal[at], strikes.direction[at]
         speeds = {}
         for kind, setting in self._loose.items():

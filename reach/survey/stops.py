@@ -9,7 +9,7 @@ import numpy as np
 from reach.cell import Array, Cell
 from reach.evidence.record import Use
 from reach.strike.setting import Setting
-from reach.strike.sides import AT_BOUND, Upper, lower, upper
+from reach.strike.sides import AT_BOUND, Upper
 from reach.strike.stroke import Demonstration
 from reach.variants import one_limit_scaled
 
@@ -45,14 +45,6 @@ def loosened(cell: Cell) -> dict[str, Setting]:
     )
     settings[WINDOW] = Setting.of(replace(cell, accept=wider))
     return settings
-
-
-def gains(settings: dict[str, Setting], q: Array, normal: Array, direction: Array) -> dict[str, Array]:
-    """Quick speeds (c,) of postures (c, n) with each kind loosened."""
-    found = {}
-    for kind, setting in settings.items():
-        found[kind] = lower(setting, q, normal, direction, upper(setting, q, direction)).speed
-    return found
 
 
 def stop_at_bound(setting: Setting, above: Upper, i: int, q: Array) -> Stop:

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from reach.cell import Array
 from reach.strike.motions import exact, straights, swing
 from reach.strike.setting import Setting
-from reach.strike.sides import Lower, Upper, along, begun, part_of, promise, searched, upper
+from reach.strike.sides import NEAR_BOUND, Lower, Upper, along, begun, part_of, promise, searched, upper
 from reach.strike.stroke import Demonstration
 from reach.survey.family import Folds
 from reach.survey.grid import Strikes
@@ -75,12 +75,19 @@ def _swings(
     setting: Setting, q: Array, normal: Array, direction: Array, above: Upper, owner: NDArray[np.int64]
 ) -> Lower:
     """A quick motion of each posture q (p, n); the most is made of each strike's fastest ones, which decide it."""
-    tangent, speed = begun(setting, q, normal, direction, above)
+    starts, speed = begun(setting, q, normal, direction, above)
+    tangent, own = starts[0].copy(), above.own(setting.still)
     order = np.lexsort((-speed, owner))
-    top = np.sort(order[leaders(Found(q[order], owner[order]), SEARCHED)])
-    tangent[top], _ = searched(
-        setting, q[top], normal[top], direction[top], part_of(above, top), tangent[top]
-    )
+    ranked = Found(q[order], owner[order])
+    done = np.zeros(owner.max() + 1)  # fastest of each strike so far
+    np.maximum.at(done, owner, np.where(speed >= NEAR_BOUND * own, speed, 0.0))
+    for rank in range(SEARCHED):
+        top = order[np.setdiff1d(leaders(ranked, rank + 1), leaders(ranked, rank))]
+        top = top[NEAR_BOUND * own[top] > done[owner[top]]]
+        tangent[top], found = searched(
+            setting, q[top], normal[top], direction[top], part_of(above, top), starts[:, top]
+        )
+        done[owner[top]] = np.maximum(done[owner[top]], found)
     return along(setting, q, normal, direction, above, tangent)
 
 
