@@ -194,9 +194,9 @@ def load_along(arm: Arm, limits: dict[str, Limit], paths: Paths, bends: bool) ->
         hi = np.concatenate([hi, limits["acceleration"].kept_hi])
         most = np.concatenate([most, limits["jerk"].tighter])
     else:
-        with np.errstate(divide="ignore"):
-            acceleration = (limits["acceleration"].tighter / turning[:, 0, 0]).min(axis=1)
-            jerk = (limits["jerk"].tighter / turning[:, 0, 0]).min(axis=1)
+        acceleration, jerk = (
+            _of_path(limits[kind].tighter, turning[:, 0, 0]) for kind in ("acceleration", "jerk")
+        )
     derivatives = [_by_s(paths.distance, x) for x in rows]
     shape = (m, len(lo))
     return Load(
@@ -219,6 +219,13 @@ def load_along(arm: Arm, limits: dict[str, Limit], paths: Paths, bends: bool) ->
         turning=turning,
         bending=bending,
     )
+
+
+def _of_path(most: Array, turning: Array) -> Array:
+    """What limits (n,) leave of a path's own rate (m,), joints turning by (m, n); nothing where one turns endlessly."""
+    with np.errstate(divide="ignore", invalid="ignore"):
+        shares = most / turning
+    return np.asarray(np.where(np.isnan(shares), 0.0, shares).min(axis=1))
 
 
 def _fastest(limits: dict[str, Limit], paths: Paths) -> Array:

@@ -231,7 +231,8 @@ def _may_pass(setting: Setting, q: Array, tangent: Array, speed: Array) -> NDArr
         fastest = (side / np.abs(joint)).min(axis=1)
         acceleration = (most / np.abs(joint)).min(axis=1)
     way = travel_along(setting.ends, q, joint).min(axis=1)
-    return np.asarray(usable & (fastest >= speed) & (2 * acceleration * way >= speed**2))
+    gained = 2 * np.where(way > 0, acceleration, 0.0) * way
+    return np.asarray(usable & (fastest >= speed) & (gained >= speed**2))
 
 
 def along(setting: Setting, q: Array, normal: Array, direction: Array, above: Upper, tangent: Array) -> Lower:
