@@ -12,6 +12,7 @@ from reach.limits.tool_speed import ToolSpeed
 from reach.qp.problem import QpProblem
 
 PHASE = 0.375  # of a period: midway between its first and its last fine sample, so that drift errs equally at both
+COARSE = 1e3  # times what one period's rate allows: solvers round at 1e-6 of a row's scale
 FREE = 1e3  # rad/s or m/s: stands for "no bound" on a change of velocity, and binds nowhere
 
 
@@ -178,9 +179,12 @@ class Rows:
         np.negative(p.G[:m], out=p.G[m:])
 
     def _scale(self, n: int, period_s: float) -> Array:
-        scale = np.ones(n)
+        """By the torque limit, unless it is so large beside what one period's rate allows that rounding matters."""
+        scale, least = np.ones(n), np.full(n, np.inf)
         for kind in reversed(self.torque.kinds):
             reach = kind.tighter * (period_s if kind.name == "torque rate" else 1.0)
             usable = kind.known & np.isfinite(reach) & (reach > 0)
-            scale = np.where(usable, 1 / np.where(usable, reach, 1.0), scale)
+            least = np.where(usable, np.minimum(least, reach), least)
+            own = np.minimum(reach, COARSE * least)
+            scale = np.where(usable, 1 / np.where(usable, own, 1.0), scale)
         return np.asarray(scale)

@@ -14,6 +14,8 @@ from reach.strike.path import NODES, SPREAD, Paths
 LONGEST_M = 0.6  # a side, where no run-up ends it sooner
 STRAIN = 4.0  # times the joint speed at the strike: from there the line runs into a singularity
 SHORTEST_M = 1e-6  # stands for no room at all
+EXACT = 1e-6  # of the speed: a line that the joints can't begin so exactly is none that the arm can go
+REFINED = 3
 DAMPING = 1e-6  # of the largest eigenvalue, in the inverse of the rows
 
 
@@ -51,10 +53,11 @@ def straight_strokes(
         return _integrate(chain, q, tangent, direction, way * length, spin_free, length_m)
 
     nodes, slopes = integrated(np.full(2 * m, longest))
-    inside = ((nodes >= lo) & (nodes <= hi)).all(axis=2)
+    exact = _misses(chain, q, slopes[:, 0], direction, spin_free, length_m) <= EXACT
+    inside = ((nodes >= lo) & (nodes <= hi)).all(axis=2) & exact[:, None]
     calm = np.abs(slopes).max(axis=2) <= STRAIN * np.abs(slopes[:, :1]).max(axis=2)
     good = np.minimum.accumulate(inside & calm, axis=1).sum(axis=1) - 1
-    length = longest * SPREAD[np.maximum(good, 0)]
+    length = longest * SPREAD[np.maximum(good, 0)]  # none where the line can't be begun
     nodes, slopes = integrated(np.maximum(length, SHORTEST_M))
     distance = np.maximum(length, SHORTEST_M)[:, None] * SPREAD
     shape = (m, 2, NODES)
@@ -79,24 +82,37 @@ def _integrate(
 ) -> tuple[Array, Array]:
     """Nodes and slopes (m, NODES, n) along each line, from the strike out to path coordinates `ends` (m,)."""
 
-    def slope(at: Array) -> Array:
+    def slope(at: Array, near: Array) -> Array:
         _, rotation, jacobian = chain.jacobians(at)
         rows = strike_rows(jacobian, rotation, spin_free, length_m)
-        miss = -np.einsum("mrn,mn->mr", rows, tangent)
+        miss = -np.einsum("mrn,mn->mr", rows, near)
         miss[:, :3] += direction
         gram = rows @ rows.transpose(0, 2, 1)
         gram += DAMPING * np.trace(gram, axis1=1, axis2=2)[:, None, None] * np.eye(rows.shape[1])
         return np.asarray(
-            tangent + np.einsum("mrn,mr->mn", rows, np.linalg.solve(gram, miss[:, :, None])[:, :, 0])
+            near + np.einsum("mrn,mr->mn", rows, np.linalg.solve(gram, miss[:, :, None])[:, :, 0])
         )
 
-    nodes, slopes = [q], [slope(q)]
+    first = slope(q, tangent)
+    for _ in range(REFINED):  # the damping taken out again: the strike itself is exact
+        first = slope(q, first)
+    nodes, slopes = [q], [first]
     for step in np.diff(SPREAD):
         h = (ends * step)[:, None]
-        middle = slope(nodes[-1] + h / 2 * slopes[-1])
+        middle = slope(nodes[-1] + h / 2 * slopes[-1], tangent)
         nodes.append(nodes[-1] + h * middle)
-        slopes.append(slope(nodes[-1]))
+        slopes.append(slope(nodes[-1], tangent))
     return np.stack(nodes, axis=1), np.stack(slopes, axis=1)
+
+
+def _misses(
+    chain: Chain, q: Array, slope: Array, direction: Array, spin_free: bool, length_m: float
+) -> Array:
+    """How far (m,) slopes (m, n) at the strike are from the line: of its rows, per m/s."""
+    _, rotation, jacobian = chain.jacobians(q)
+    rows = np.einsum("mrn,mn->mr", strike_rows(jacobian, rotation, spin_free, length_m), slope)
+    rows[:, :3] -= direction
+    return np.asarray(np.abs(rows).max(axis=1))
 
 
 def _bends(paths: Paths) -> Array:
