@@ -129,7 +129,8 @@ class Rows:
             if chords is not None:
                 own = chords.slope - PHASE * self._rub.slope(now.v)
                 self.matrix[np.diag_indices_from(self.matrix)] += own * self._period_s
-            self._fill_torque(now, p, chords)
+                now = now._replace(torque=now.torque + chords.before)
+            self._fill_torque(now, p)
         extra = None
         if self.tool is not None:
             self._tool_calm -= 1
@@ -162,11 +163,9 @@ class Rows:
         np.multiply(now.state.slope, PHASE * self._period_s, out=self.matrix)
         self.matrix += now.state.mass
 
-    def _fill_torque(self, now: Now, p: QpProblem, chords: Chords | None) -> None:
+    def _fill_torque(self, now: Now, p: QpProblem) -> None:
         m = len(self.limited)
         most = self.torque.tightest(now)
-        if chords is not None:
-            most += chords.before
         np.multiply(SIGNS, now.state.bias, out=self._signed)
         most -= self._signed
         most *= self.scale

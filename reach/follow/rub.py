@@ -25,7 +25,7 @@ class Chords(NamedTuple):
     """What the rows of a step solved again take.
 
     slope : (n,) of friction by change of velocity
-    before : (2, n) what the period before already has of the bend, taken off how far torque may go
+    before : (n,) what the period before has of the bend, which its torque by the rows does not know
     """
 
     slope: Array
@@ -82,8 +82,7 @@ class Rub:
         tiny = np.abs(change) < 1e-9
         chord = np.where(tiny, self.slope(now.v), gained[at] / np.where(tiny, 1.0, change))
         slope = np.where(passed, chord, self._phase * self.slope(now.v))
-        had = np.where(passed, before[at], 0.0)
-        return Chords(slope, np.minimum(np.array([had, -had]), 0.0))
+        return Chords(slope, np.where(passed, before[at], 0.0))
 
     def _bend(self, v: Array, change: Array) -> tuple[Array, Array]:
         """What friction gains (FINE, n) by the period's samples, and how far that is off the rows' straight line."""
