@@ -31,6 +31,7 @@ LOGS = {
     3000048: "a strike commanded at no speed accepted any",
     2026000036: "a speed of 30 m/s in nine digits is not good to 1e-8 m/s",
 }
+AS_IT_IS = roll.CHORD_ROUNDS
 STRIKES = {
     7000264: "speed not held to the end of a strike window shorter than a control period",
     2026000409: "a straight stroke that two joints can't begin along its line",
@@ -110,7 +111,7 @@ def rubbing(rounds: int, monkeypatch: pytest.MonkeyPatch) -> float:
 
 def test_torque_rate_holds_where_dry_friction_bends(monkeypatch: pytest.MonkeyPatch) -> None:
     assert rubbing(0, monkeypatch) > 1.3
-    assert rubbing(roll.CHORD_ROUNDS, monkeypatch) <= 1.0
+    assert rubbing(AS_IT_IS, monkeypatch) <= 1.0
 
 
 def test_a_solvers_rounding_passes_no_jerk_limit() -> None:

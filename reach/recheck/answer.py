@@ -6,12 +6,14 @@ from collections.abc import Callable
 from dataclasses import dataclass
 from os import PathLike, fspath
 
+import numpy as np
+
 from reach.evidence.items import Item
 from reach.recheck.arm.ground import ground
+from reach.recheck.folder import read_folder
 from reach.recheck.follow import whole as follow
 from reach.recheck.rally import whole as rally
 from reach.recheck.stated import whole as stated
-from reach.recheck.stored import read_folder
 from reach.recheck.survey import whole as survey
 from reach.recheck.trial import whole as trial
 
@@ -51,9 +53,9 @@ def opinion(folder: str | PathLike[str], progress: Callable[[str], None] | None 
     """
     stored = read_folder(fspath(folder))
     checker = CHECKERS[stored.command]
-    found = stated.items(stored)
-    second = ground(stored)
-    found += checker.items(stored, second, progress or _silent)
+    with np.errstate(all="ignore"):  # what overflows is no number, and differs
+        second = ground(stored)  # first: it checks what the inputs are compared with
+        found = [*stated.items(stored), *checker.items(stored, second, progress or _silent)]
     versions = stored.verdict.get("versions")
     return Opinion(
         command=stored.command,

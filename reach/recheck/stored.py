@@ -1,35 +1,27 @@
-"""What a run stored, read back: hostile until checked, and the same bytes as were written."""
+"""What a run stored, handed out checked: no shape, type or number of it is taken on trust."""
 
 from __future__ import annotations
 
-import io
-import json
 import math
-import zipfile
 from collections.abc import Mapping
 from dataclasses import dataclass
-from pathlib import Path
 from typing import Any
 
 import numpy as np
 
 from reach.errors import Fault, InputError
-from reach.formats.files import Reading
 
-VERDICT, CELL, DIGESTS = "verdict.json", "evidence/cell.json", "evidence/digests.json"
-SCHEMA, DIGESTS_SCHEMA = "strikecheck/evidence/1", "strikecheck/digests/1"
-COMMANDS = ("follow", "survey", "rally", "trial")
-ARCHIVES = ("log.npz", "motion.npz", "points.npz", "motions.npz", "proofs.npz", "runs.npz")  # of evidence/
-MAX_BYTES = 2_000_000_000  # of one file; 40 trials of a minute at 1 kHz have 40 MB
-MAX_UNPACKED = 8_000_000_000  # of one archive
-MAX_DEPTH = 60  # of a JSON file; ours nest 8 deep
+VERDICT, CELL = "verdict.json", "evidence/cell.json"
+MOST_INPUTS = 10  # files; a cell names six at the most
+LONGEST_WHERE, LONGEST_WHAT = 200, 400  # characters of a fault; what a folder holds may be of any length
 
 
 class BadFolder(InputError):
     """A folder that is no run's, or not as it was written; exit code 2."""
 
     def __init__(self, where: str, what: str, file: str = ""):
-        super().__init__([Fault(file or "folder", where, what)])
+        place, why = _shown(where, LONGEST_WHERE), _shown(what, LONGEST_WHAT)
+        super().__init__([Fault(_shown(file, LONGEST_WHAT) or "folder", place, why)])
 
 
 @dataclass(frozen=True, eq=False)
@@ -114,107 +106,82 @@ class Stored:
 
     def number(self, *keys: str | int) -> float:
         """A finite number at a place of cell.json."""
-        found = self.at(*keys)
-        value = math.nan if isinstance(found, bool) else as_number(found)
+        value = as_number(self.at(*keys))
         if not math.isfinite(value):
-            raise BadFolder(".".join(map(str, keys)), "is no finite number", f"{self.folder}/{CELL}")
+            raise self.refused(keys, "is no finite number")
         return value
 
+    def between(self, low: float, high: float, *keys: str | int) -> float:
+        """A number of cell.json within bounds that every cell file keeps."""
+        value = self.number(*keys)
+        if not low <= value <= high:
+            raise self.refused(keys, f"is not from {low:g} to {high:g}")
+        return value
 
-def read_folder(folder: str) -> Stored:
-    """Read what a run stored, every file as it was written.
+    def vector(self, count: int, *keys: str | int) -> np.ndarray:
+        """So many finite numbers of cell.json: (count,)."""
+        found = self.at(*keys)
+        values = [as_number(value) for value in found] if isinstance(found, list) else []
+        if len(values) != count or not all(map(math.isfinite, values)):
+            raise self.refused(keys, f"is not {count} finite numbers")
+        return np.array(values)
 
-    Raises
-    ------
-    InputError
-        Naming what is missing, damaged or changed, and inputs that have changed since.
-    """
-    top = Path(folder)
-    if not top.is_dir():
-        raise BadFolder("folder", "not found; name the folder that a command wrote (--out)", folder)
-    if not (top / VERDICT).is_file():
-        raise BadFolder(VERDICT, "is not there: the run did not end, or it is no folder of results", folder)
-    reading = Reading()
-    digests = _digests(folder, _json(folder, DIGESTS, reading))
-    contents = {name: reading.read(f"{folder}/{name}", MAX_BYTES) for name in digests}
-    _raise(reading)
-    changed = []
-    for source in reading.inputs[1:]:
-        name = source.path.removeprefix(f"{folder}/")
-        if digests[name] != source.sha256:
-            changed.append(Fault(source.path, "file", "changed since it was written; run the command again"))
-    if changed:
-        raise InputError(changed)
-    cell, verdict = (_parsed(folder, name, contents.get(name)) for name in (CELL, VERDICT))
-    if cell.get("schema") != SCHEMA or cell.get("command") not in COMMANDS:
-        raise BadFolder("schema", f"is not {SCHEMA} of a command with a verdict", f"{folder}/{CELL}")
-    arrays = {}
-    for name in ARCHIVES:
-        content = contents.get(f"evidence/{name}")
-        if content is not None:
-            arrays[name] = _unpacked(f"{folder}/evidence/{name}", content)
-    files = tuple((source.path, source.sha256) for source in reading.inputs)
-    return Stored(folder, cell["command"], cell, verdict, arrays, files)
+    def flag(self, *keys: str | int) -> bool:
+        """A truth value of cell.json."""
+        found = self.at(*keys)
+        if not isinstance(found, bool):
+            raise self.refused(keys, "is neither true nor false")
+        return found
 
+    def word(self, *keys: str | int) -> str:
+        """A text of cell.json."""
+        found = self.at(*keys)
+        if not isinstance(found, str):
+            raise self.refused(keys, "is no text")
+        return found
 
-def _digests(folder: str, content: dict[str, Any]) -> dict[str, str]:
-    """Digest by name of every file of the run, the names all inside the folder."""
-    place = f"{folder}/{DIGESTS}"
-    listed = content.get("files")
-    if content.get("schema") != DIGESTS_SCHEMA or not isinstance(listed, list):
-        raise BadFolder("schema", f"is not {DIGESTS_SCHEMA}", place)
-    found = {}
-    for entry in listed:
-        name, digest = (entry.get(key) if isinstance(entry, dict) else None for key in ("path", "sha256"))
-        if not isinstance(name, str) or not isinstance(digest, str):
-            raise BadFolder("files", "has an entry without path and sha256", place)
-        parts = name.removeprefix("evidence/").split("/")
-        if len(parts) != 1 or parts[0] in ("", ".", "..") or "\0" in name:
-            raise BadFolder("files", f"names {name[:80]!r}, which lies elsewhere", place)
-        found[name] = digest
-    for name in (VERDICT, CELL):
-        if name not in found:
-            raise BadFolder("files", f"does not list {name}", place)
-    return found
+    def words(self, *keys: str | int) -> list[str]:
+        """A list of texts of cell.json."""
+        found = self.at(*keys)
+        if not isinstance(found, list) or not all(isinstance(word, str) for word in found):
+            raise self.refused(keys, "is no list of words")
+        return found
 
+    def table(self, *keys: str | int) -> dict[str, Any]:
+        """A table of cell.json."""
+        found = self.at(*keys)
+        if not isinstance(found, dict):
+            raise self.refused(keys, "is no table")
+        return found
 
-def _json(folder: str, name: str, reading: Reading) -> dict[str, Any]:
-    content = reading.read(f"{folder}/{name}", MAX_BYTES)
-    _raise(reading)
-    return _parsed(folder, name, content)
+    def tables(self, *keys: str | int) -> list[dict[str, Any]]:
+        """A list of tables of cell.json."""
+        found = self.at(*keys)
+        if not isinstance(found, list) or not all(isinstance(entry, dict) for entry in found):
+            raise self.refused(keys, "is no list of tables")
+        return found
 
+    def inputs(self) -> dict[str, str]:
+        """Digest by path of every file that the run read."""
+        listed = self.tables("inputs")
+        if len(listed) > MOST_INPUTS:
+            raise self.refused(("inputs",), f"names more than {MOST_INPUTS} files")
+        paths, digests = (
+            [self.word("inputs", i, key) for i in range(len(listed))] for key in ("path", "sha256")
+        )
+        if len(set(paths)) < len(paths):
+            raise self.refused(("inputs",), "names a file twice")
+        return dict(zip(paths, digests, strict=True))
 
-def _parsed(folder: str, name: str, content: bytes | None) -> dict[str, Any]:
-    try:
-        found = json.loads(content or b"")
-    except (ValueError, RecursionError) as error:
-        raise BadFolder("file", f"is no JSON that can be read ({error})", f"{folder}/{name}") from None
-    if not isinstance(found, dict):
-        raise BadFolder("file", "is no JSON object", f"{folder}/{name}")
-    return found
-
-
-def _unpacked(path: str, content: bytes) -> dict[str, np.ndarray]:
-    """Arrays of an archive; nothing in it is unpickled."""
-    try:
-        with zipfile.ZipFile(io.BytesIO(content)) as packed:
-            if sum(item.file_size for item in packed.infolist()) > MAX_UNPACKED:
-                raise BadFolder("file", f"unpacks to more than {MAX_UNPACKED / 1e9:.0f} GB", path)
-        with np.load(io.BytesIO(content), allow_pickle=False) as archive:
-            return {name: archive[name] for name in archive.files}
-    except (ValueError, OSError, EOFError, KeyError, zipfile.BadZipFile, NotImplementedError) as error:
-        raise BadFolder("file", f"is no archive of arrays ({error})", path) from None
-
-
-def _raise(reading: Reading) -> None:
-    if reading.faults:
-        raise InputError(reading.faults)
+    def refused(self, keys: tuple[str | int, ...], what: str) -> BadFolder:
+        """The error for what cell.json has at a place."""
+        return BadFolder(".".join(map(str, keys)), what, f"{self.folder}/{CELL}")
 
 
 def as_number(value: Any) -> float:
-    """A number as such, nan for anything else; a whole one may be too large for it."""
+    """A number as such, nan for anything else, truth values among it; a whole one may be too large for it."""
     try:
-        return float(value) if isinstance(value, int | float) else math.nan
+        return float(value) if isinstance(value, int | float) and not isinstance(value, bool) else math.nan
     except OverflowError:
         return math.nan
 
@@ -227,3 +194,9 @@ def number_in(entry: Mapping[str, Any], key: str) -> float:
 def largest(values: Any) -> float:
     """Largest size among values, 0 of none; nan where one is."""
     return float(np.abs(values).max(initial=0.0))
+
+
+def _shown(text: str, most: int) -> str:
+    """A text out of a folder on one line, no longer than so many characters, without what a terminal would obey."""
+    cut = text if len(text) <= most else f"{text[:most]}…"
+    return "".join(sign if sign.isprintable() else "?" for sign in cut)

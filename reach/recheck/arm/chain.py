@@ -111,7 +111,8 @@ class Chain:
             Where the file is no such arm.
         """
         path = way(joints_of(root_of(xml, file), file), tip, file)
-        chain = [joint for joint in path if joint.moves and joint.name in set(names)]
+        wanted = set(names)
+        chain = [joint for joint in path if joint.moves and joint.name in wanted]
         if [joint.name for joint in chain] != list(names) or not names:
             raise BadFolder("joints", f"are not {', '.join(names)[:200]} from the root to the tip link", file)
         shift, rpy = placement(base, "arm.base")

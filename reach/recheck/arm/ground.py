@@ -79,11 +79,11 @@ def ground(stored: Stored) -> Ground:
     BadFolder
         Where cell.json does not describe an arm.
     """
-    joints = _tables(stored, "arm", "joints")
+    joints = stored.tables("arm", "joints")
     if not joints:
         raise BadFolder("arm.joints", "is empty", f"{stored.folder}/{CELL}")
-    names = tuple(_word(stored, joint, f"arm.joints.{i}", "name") for i, joint in enumerate(joints))
-    kinds = [_word(stored, joint, f"arm.joints.{i}", "kind") for i, joint in enumerate(joints)]
+    names = tuple(stored.word("arm", "joints", i, "name") for i in range(len(joints)))
+    kinds = [stored.word("arm", "joints", i, "kind") for i in range(len(joints))]
     if any(kind not in (*TURNING, *SLIDING) for kind in kinds) or len(set(names)) < len(names):
         raise BadFolder("arm.joints", "has a kind that is none, or a name twice", f"{stored.folder}/{CELL}")
     sliding = np.array([kind in SLIDING for kind in kinds])
@@ -93,8 +93,8 @@ def ground(stored: Stored) -> Ground:
     limits = Limits.of(joints)
     robot, base, mount = (
         _robot(stored, names),
-        _table(stored, "arm", "base"),
-        _table(stored, "paddle", "mount"),
+        stored.table("arm", "base"),
+        stored.table("paddle", "mount"),
     )
     chain = Chain.read(robot.xml, robot.file, robot.names, robot.tip, robot.held, base, mount)
     if (chain.sliding != sliding).any():
@@ -112,8 +112,8 @@ def ground(stored: Stored) -> Ground:
         limits=limits,
         **drive,
         tool_m_s=math.inf if stored.at("tool") is None else _number(stored, "tool", "speed_m_s"),
-        margins=dict(_table(stored, "margins")),
-        accept=dict(_table(stored, "accept")),
+        margins=dict(stored.table("margins")),
+        accept=dict(stored.table("accept")),
         source=robot.file,
     )
 
@@ -129,9 +129,9 @@ def _engine(
             robot.names,
             robot.tip,
             robot.held,
-            _table(stored, "arm", "base"),
+            stored.table("arm", "base"),
             gravity,
-            _table(stored, "paddle"),
+            stored.table("paddle"),
             **drive,
             sliding=sliding,
             file=robot.file,
@@ -150,20 +150,19 @@ def _robot(stored: Stored, names: tuple[str, ...]) -> _Robot:
         Where the user's file has changed since.
     """
     held: dict[str, dict[str, float]] = {"name": {}, "model_name": {}}
-    for i, joint in enumerate(_tables(stored, "arm", "held")):
+    for i in range(len(stored.tables("arm", "held"))):
         for key, by_name in held.items():
             value = _number(stored, "arm", "held", i, "value")
-            by_name[_word(stored, joint, f"arm.held.{i}", key)] = value
-    path = stored.at("arm", "urdf_path")
-    digests = {entry.get("path"): entry.get("sha256") for entry in _tables(stored, "inputs")}
-    if isinstance(path, str) and path in digests and "\0" not in path:
+            by_name[stored.word("arm", "held", i, key)] = value
+    path, digests = stored.word("arm", "urdf_path"), stored.inputs()
+    if path in digests:
         content = Reading().read(path, MAX_TEXT_BYTES)
         if content is not None:
             if hashlib.sha256(content).hexdigest() != digests[path]:
                 raise BadFolder("file", "has changed since the run; run the command again", path)
-            tip = _word(stored, _table(stored, "arm"), "arm", "tip")
+            tip = stored.word("arm", "tip")
             return _Robot(content, path, names, tip, held["name"])
-    xml = _word(stored, _table(stored, "arm"), "arm", "model_xml").encode("utf-8", "replace")
+    xml = stored.word("arm", "model_xml").encode("utf-8", "replace")
     chain = tuple(f"chain_{i}" for i in range(len(names)))
     return _Robot(xml, f"{stored.folder}/{CELL}", chain, "tip", held["model_name"])
 
@@ -179,27 +178,6 @@ def _own(joints: list[dict[str, Any]], key: str) -> Array:
             if out[i] < 0:
                 raise BadFolder(where, "is below 0", CELL)
     return out
-
-
-def _table(stored: Stored, *keys: str) -> dict[str, Any]:
-    found = stored.at(*keys)
-    if not isinstance(found, dict):
-        raise BadFolder(".".join(keys), "is no table", f"{stored.folder}/{CELL}")
-    return found
-
-
-def _tables(stored: Stored, *keys: str) -> list[dict[str, Any]]:
-    found = stored.at(*keys)
-    if not isinstance(found, list) or not all(isinstance(entry, dict) for entry in found):
-        raise BadFolder(".".join(keys), "is no list of tables", f"{stored.folder}/{CELL}")
-    return found
-
-
-def _word(stored: Stored, entry: Mapping[str, Any], where: str, key: str) -> str:
-    found = entry.get(key)
-    if not isinstance(found, str):
-        raise BadFolder(f"{where}.{key}", "is no text", f"{stored.folder}/{CELL}")
-    return found
 
 
 def _number(stored: Stored, *keys: str | int) -> float:

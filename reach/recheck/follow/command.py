@@ -14,7 +14,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from reach.formats.files import MAX_LOG_BYTES, Reading, decode
-from reach.recheck.stored import CELL, BadFolder, Stored
+from reach.recheck.stored import BadFolder, Stored
 from reach.recheck.turns import exponential, from_quaternion, from_rpy
 
 LOG = "log.npz"
@@ -23,6 +23,8 @@ TWIST = ("vx_m_s", "vy_m_s", "vz_m_s", "wx_rad_s", "wy_rad_s", "wz_rad_s")
 POSE = ("px_m", "py_m", "pz_m", "qw", "qx", "qy", "qz")
 COLUMNS = {"t_s": (TIME,), "twist": TWIST, "strike": ("strike",), "pose": POSE}
 SNAP_SHARE = 1e-6  # of a period: a stamp this close to a control instant is on it
+MOST_PERIODS = 2_000_000  # control periods of a log; half an hour at 1 kHz
+LATEST_S = 1e10  # of a stamp; seconds since 1970 are 1.8e9
 TERMS = 12  # of a series in an angle that one period covers: 0.5 rad leaves 1e-14
 
 
@@ -43,13 +45,21 @@ class Log:
         ------
         BadFolder
         """
-        times = stored.finite(LOG, "t_s", (None,))
+        times, place = stored.finite(LOG, "t_s", (None,)), f"{stored.folder}/evidence/{LOG}"
         if len(times) < 2 or not (np.diff(times) > 0).all():
-            raise BadFolder("t_s", "does not increase", f"{stored.folder}/evidence/{LOG}")
+            raise BadFolder("t_s", "does not increase", place)
+        long = times[-1] - times[0] > MOST_PERIODS * stored.number("period_s")
+        if long or np.abs(times).max() > LATEST_S:
+            raise BadFolder("t_s", f"is no time of a log of at most {MOST_PERIODS} control periods", place)
         n = len(times)
         strike = stored.array(LOG, "strike", (n,), "b") if stored.has(LOG, "strike") else None
         pose = stored.finite(LOG, "pose", (n, 7)) if stored.has(LOG, "pose") else None
         return Log(times, stored.finite(LOG, "twist", (n, 6)), strike, pose)
+
+    @property
+    def end_s(self) -> float:
+        """Where the command ends: one period after the last stamp."""
+        return float(self.t_s[-1] + np.median(np.diff(self.t_s)))
 
     @property
     def marked_s(self) -> np.ndarray:
@@ -68,24 +78,21 @@ def log_again(stored: Stored) -> dict[str, np.ndarray] | str:
     BadFolder
         Where the file has changed since.
     """
-    source, mends = stored.at("follow", "source"), stored.at("follow", "mends")
+    source, mends = stored.word("follow", "source"), stored.words("follow", "mends")
     if source == "arrays":
         return "the log was given as arrays, not as a file"
     if mends:
         return "the log was mended while it was read"
-    digests = {
-        entry.get("path"): entry.get("sha256") for entry in stored.at("inputs") if isinstance(entry, dict)
-    }
+    digests = stored.inputs()
     reading = Reading()
-    content = reading.read(str(source), MAX_LOG_BYTES) if source in digests else None
+    content = reading.read(source, MAX_LOG_BYTES) if source in digests else None
     if content is None:
         return f"{source} is not there; run recheck in the folder in which the command was run"
     if reading.inputs[0].sha256 != digests[source]:
-        raise BadFolder("file", "changed since the run; run the command again", str(source))
+        raise BadFolder("file", "changed since the run; run the command again", source)
     text, _ = decode(content)
-    rows = list(csv.reader(io.StringIO(text or "")))
-    rows = [row for row in rows if row]
     try:
+        rows = [row for row in csv.reader(io.StringIO(text or "")) if row]
         names = [name.strip() for name in rows[0]]
         values = np.array(rows[1:], dtype=np.float64)
         return {
@@ -93,7 +100,7 @@ def log_again(stored: Stored) -> dict[str, np.ndarray] | str:
             for key, columns in COLUMNS.items()
             if columns[0] in names
         }
-    except (IndexError, ValueError) as error:
+    except (IndexError, ValueError, csv.Error) as error:
         return f"{source} is not plain rows of numbers ({error})"
 
 
@@ -126,12 +133,10 @@ def command_of(stored: Stored, log: Log, position: np.ndarray, rotation: np.ndar
     ------
     BadFolder
     """
-    frame, period = stored.at("follow", "frame"), stored.number("period_s")
-    axes = (
-        from_rpy(np.array(stored.at("arm", "base", "rpy_rad"), dtype=float)) if frame == "base" else np.eye(3)
-    )
+    frame, period = stored.word("follow", "frame"), stored.number("period_s")
+    axes = from_rpy(stored.vector(3, "arm", "base", "rpy_rad")) if frame == "base" else np.eye(3)
     arm = _offset(stored)
-    t = _instants(log.t_s, period)
+    t = _instants(log, period)
     sent, rate = _sent(log, t, stored.at("follow", "interpolation") == "linear")
     span = np.append(np.diff(t), 0.0)[:, None]
     mean = sent + rate * span / 2
@@ -160,9 +165,10 @@ def _next(values: np.ndarray) -> np.ndarray:
     return np.concatenate([values[1:], values[-1:]])
 
 
-def _instants(stamps: np.ndarray, period: float) -> np.ndarray:
+def _instants(log: Log, period: float) -> np.ndarray:
     """Control instants and stamps up to the command's end, those that are the same but for rounding once."""
-    end = stamps[-1] + np.median(np.diff(stamps))
+    stamps = log.t_s
+    end = log.end_s
     count = int(np.ceil((end - stamps[0]) / period - SNAP_SHARE)) + 1
     grid = stamps[0] + period * np.arange(count)
     ticks = (np.append(stamps, end) - stamps[0]) / period
@@ -172,7 +178,7 @@ def _instants(stamps: np.ndarray, period: float) -> np.ndarray:
 
 def _sent(log: Log, t: np.ndarray, linear: bool) -> tuple[np.ndarray, np.ndarray]:
     """The twist as sent from instants (k,) on, and its rate: (k, 6) each; nothing from the command's end on."""
-    end = log.t_s[-1] + np.median(np.diff(log.t_s))
+    end = log.end_s
     hair = 1e-9 * max(1.0, abs(end))
     k = np.clip(np.searchsorted(log.t_s, t + hair, side="right") - 1, 0, len(log.t_s) - 1)
     sent, rate = log.twist[k], np.zeros((len(t), 6))
@@ -190,12 +196,9 @@ def _offset(stored: Stored) -> np.ndarray:
     if point == "strike":
         return np.zeros(3)
     if point == "tip":
-        mount = stored.at("paddle", "mount")
-        return np.asarray(-from_rpy(np.array(mount["rpy_rad"], float)).T @ np.array(mount["xyz_m"], float))
-    try:
-        return np.array(point, dtype=np.float64).reshape(3)
-    except (TypeError, ValueError):
-        raise BadFolder("follow.point", "is no point", f"{stored.folder}/{CELL}") from None
+        place, turn = (stored.vector(3, "paddle", "mount", key) for key in ("xyz_m", "rpy_rad"))
+        return np.asarray(-from_rpy(turn).T @ place)
+    return stored.vector(3, "follow", "point")
 
 
 def _moved(sent: np.ndarray, axes: np.ndarray, lever: np.ndarray) -> np.ndarray:

@@ -11,11 +11,13 @@ from reach.evidence.items import Check, Item, same
 from reach.recheck import allowed
 from reach.recheck.arm.ground import Ground
 from reach.recheck.arm.trace import FINE, Trace
-from reach.recheck.follow.command import Command, Log
+from reach.recheck.follow.command import SNAP_SHARE, Command, Log
+from reach.recheck.follow.contacts import contacts
 from reach.recheck.stored import Stored, largest, number_in
 from reach.recheck.turns import between
 
 MOTION = "motion.npz"
+LONGEST_JITTER_S = 1.0  # of a drive
 STILL_M_S = 1e-3  # errors of speed along the normal up to here never fail
 
 
@@ -24,16 +26,9 @@ def strike_items(
 ) -> tuple[list[Item], list[str]]:
     """Every strike over its window, or the whole log; and what is not delivered, in words."""
     accept, claims = ground.accept, stored.entries("strikes")
-    found, missed = [], 0
-    if log.strike is not None:
-        own, kept = log.marked_s, np.array([number_in(claim, "time_s") for claim in claims])
-        off = largest(own - kept) if own.shape == kept.shape else np.inf
-        found.append(Item("strike", "marks", (Check("instants", off, allowed.TIME_S, "s"),)))
-        times = own
-    else:
-        times = np.array([number_in(claim, "time_s") for claim in claims])
-    drive = stored.at("drive")
-    jitter = float(drive.get("jitter_s", 0.0)) if isinstance(drive, dict) else 0.0
+    counted, times = contacts(stored, log, command)
+    found, missed = [counted] if len(times) or claims else [], 0
+    jitter = 0.0 if stored.at("drive") is None else stored.between(0.0, LONGEST_JITTER_S, "drive", "jitter_s")
     half = float(accept["strike_window_s"]) / 2 + jitter
     for k, (time, claim) in enumerate(zip(times, claims, strict=False), start=1):
         item, delivered = _strike(k, float(time), half, ground, command, trace, claim)
@@ -45,8 +40,10 @@ def strike_items(
         if len(times) - missed < needed:
             faults.append(f"{missed} of {len(times)} strikes")
     else:
-        wrong = _throughout(stored, ground, command, trace)
-        found.append(Item("throughout", "", (same("delivered", not wrong, not stored.at("throughout")),)))
+        during, counted_rows = _during(stored, log, trace)
+        wrong = _throughout(during, ground, command, trace)
+        kept = same("delivered", not wrong, not stored.at("throughout"))
+        found.append(Item("throughout", "", (counted_rows, kept)))
         faults += wrong
     return found, faults
 
@@ -80,7 +77,7 @@ def _strike(
         "delivered_m_s": ((errors["asked"] + errors["along"])[middle], allowed.SPEED_M_S, "m/s"),
         "lateral_m_s": (errors["aside"].max(), allowed.SPEED_M_S, "m/s"),
         "position_error_m": (errors["off"].max(), allowed.PLACE_M, "m"),
-        "tilt_error_deg": (np.degrees(errors["tilt"].max()), np.degrees(allowed.TURN_RAD), "°"),
+        "tilt_error_deg": (np.degrees(errors["tilt"].max()), math.degrees(allowed.TURN_RAD), "°"),
     }
     checks = [
         Check(
@@ -121,9 +118,16 @@ def _state(trace: Trace, times: np.ndarray, period: float) -> tuple[np.ndarray, 
     return q + v * ahead + a * ahead**2 / 2, v + a * ahead
 
 
-def _throughout(stored: Stored, ground: Ground, command: Command, trace: Trace) -> list[str]:
+def _during(stored: Stored, log: Log, trace: Trace) -> tuple[np.ndarray, Check]:
+    """Rows (m,) of the motion before the command's end, and whether they are those stored."""
+    rows = len(trace.q) // FINE + 1
+    periods = (log.end_s - log.t_s[0]) / trace.period_s
+    own = np.arange(rows) < max(math.ceil(periods - SNAP_SHARE), 1)
+    return own, same("rows judged", int(own.sum()), int(stored.array(MOTION, "during", (rows,), "b").sum()))
+
+
+def _throughout(during: np.ndarray, ground: Ground, command: Command, trace: Trace) -> list[str]:
     """What fails where the whole log is judged: at every row before the command's end."""
-    during = stored.array(MOTION, "during", (len(trace.q) // FINE + 1,), "b")
     errors = _errors(ground, command, trace, trace.t_s[::FINE])
     peak = float(np.abs(errors["asked"][during]).max(initial=0.0))
     accept = ground.accept
@@ -133,4 +137,4 @@ def _throughout(stored: Stored, ground: Ground, command: Command, trace: Trace) 
         "off": accept["strike_position_m"],
         "tilt": accept["strike_tilt_error_rad"],
     }
-    return [name for name, most in bounds.items() if np.abs(errors[name][during]).max(initial=0.0) > most]
+    return [name for name, most in bounds.items() if not largest(errors[name][during]) <= most]

@@ -12,7 +12,7 @@ from reach.recheck import allowed
 from reach.recheck.arm.ground import Ground
 from reach.recheck.arm.limits import KINDS, TORQUE_KINDS, overshoot, torques, values
 from reach.recheck.arm.trace import FINE, Trace
-from reach.recheck.stored import VERDICT, Stored, largest
+from reach.recheck.stored import VERDICT, Stored, largest, number_in
 
 MOTION = "motion.npz"
 PASSIVE = tuple(kind for kind in KINDS if kind not in TORQUE_KINDS)
@@ -20,7 +20,11 @@ PASSIVE = tuple(kind for kind in KINDS if kind not in TORQUE_KINDS)
 
 def limit_items(stored: Stored, ground: Ground, trace: Trace) -> tuple[list[Item], list[str]]:
     """The use of every limit, of every joint and of the tool; and what is broken, in words."""
-    claims = {(entry.get("joint"), entry.get("limit")): entry for entry in stored.entries("limits")}
+    claims = {
+        (entry.get("joint"), entry.get("limit")): entry
+        for entry in stored.entries("limits")
+        if isinstance(entry.get("joint"), str | None) and isinstance(entry.get("limit"), str)
+    }
     torque = standing = None
     if ground.engine is not None:
         torque, standing = torques(ground, trace)
@@ -74,12 +78,12 @@ def _use(
     """The peak claimed against the extremes here, and whether the stated limit is kept."""
     if claim is None:
         return [same(f"{kind} in {VERDICT}", "measured", "missing")]
-    peak, used = claim.get("delivered_peak"), claim.get("utilisation")
+    peak, used = number_in(claim, "delivered_peak"), number_in(claim, "utilisation")
     ends = np.array([series.max(), series.min()])
-    most = float(np.abs(ends - (peak if isinstance(peak, int | float) else math.nan)).min())
+    most = float(np.abs(ends - peak).min())
     rounding = max(allowed.PEAK_SHARE * max(_scale(bound), largest(ends)), allowed.LIMIT_LEAST)
     checks = [Check(kind, most, rounding, unit)]
-    if isinstance(used, int | float) and used > 1 + allowed.LIMIT_SHARE:
+    if used > 1 + allowed.LIMIT_SHARE:
         checks.append(same(f"{kind} passed", over > 0, True))
     else:
         least = max(allowed.LIMIT_SHARE * _scale(bound), allowed.LIMIT_LEAST)

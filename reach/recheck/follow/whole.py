@@ -9,14 +9,16 @@ import numpy as np
 from reach.evidence.items import Check, Item, same
 from reach.recheck import allowed
 from reach.recheck.arm.ground import Ground
-from reach.recheck.arm.trace import fine
-from reach.recheck.follow.command import Command, Log, command_of, first_pose, log_again
+from reach.recheck.arm.trace import FINE, Trace, fine
+from reach.recheck.demands import check_demands
+from reach.recheck.follow.command import LOG, Command, Log, command_of, first_pose, log_again
 from reach.recheck.follow.strikes import strike_items
 from reach.recheck.follow.uses import limit_items
-from reach.recheck.stored import CELL, BadFolder, Stored, largest, number_in
+from reach.recheck.stored import BadFolder, Stored, largest, number_in
 from reach.recheck.turns import apart
 
 MOTION = "motion.npz"
+SOLVER_FAILED = "that no solver answered in some step leaves no trace"
 REST = 1e-6  # rad/s or m/s, and by the period a change of it: below it the arm stands
 Progress = Callable[[str], None]
 
@@ -28,6 +30,7 @@ def items(stored: Stored, ground: Ground, progress: Progress) -> list[Item]:
     ------
     BadFolder
     """
+    check_demands(stored)
     log = Log.of(stored)
     found = [_log_item(stored, log)]
     if MOTION not in stored.arrays:
@@ -36,11 +39,13 @@ def items(stored: Stored, ground: Ground, progress: Progress) -> list[Item]:
     q, v, a = (stored.finite(MOTION, name, (None, len(ground.names))) for name in ("q", "v", "a"))
     if not len(q) == len(v) == len(a):
         raise BadFolder("q", "v and a have other lengths", f"{stored.folder}/evidence/{MOTION}")
-    begin = float(stored.finite(MOTION, "t_s", (len(q),))[0])
+    if not len(q) > 1:
+        raise BadFolder("q", "has less than two rows", f"{stored.folder}/evidence/{MOTION}")
+    begin = log.t_s[0]
     trace = fine(q, v, a, ground.period_s, begin)
     first = ground.chain.seen(q[:1], v[:1])
     command = command_of(stored, log, *first_pose(log, first.place[0], first.axes[0]))
-    found.append(_motion_item(stored, ground, q, v, a))
+    found.append(_motion_item(stored, ground, trace))
     found.append(_command_item(stored, command, len(q), begin))
     progress("recheck: the limits")
     uses, broken = limit_items(stored, ground, trace)
@@ -56,10 +61,9 @@ def items(stored: Stored, ground: Ground, progress: Progress) -> list[Item]:
 
 def notes(stored: Stored) -> list[str]:
     """What of it rests on a search."""
-    blocked = [entry for entry in stored.at("blocked") if isinstance(entry, dict)]
     return [
         f"that no posture reaches the log's first pose rests on a search: {entry.get('text')}"
-        for entry in blocked
+        for entry in stored.tables("blocked")
         if entry.get("basis") == "searched"
     ]
 
@@ -85,17 +89,18 @@ def _log_item(stored: Stored, log: Log) -> Item:
     return Item("as stated", "log", tuple(checks))
 
 
-def _motion_item(stored: Stored, ground: Ground, q: np.ndarray, v: np.ndarray, a: np.ndarray) -> Item:
+def _motion_item(stored: Stored, ground: Ground, trace: Trace) -> Item:
     """The motion as one of constant accelerations, from the stated start; what the strike point does in it."""
-    m, dt, start = len(q), ground.period_s, stored.at("arm", "start")
-    known = isinstance(start, list) and len(start) == q.shape[1]
+    q, v, a, t_s = (rows[::FINE] for rows in (trace.q, trace.v, trace.a, trace.t_s))
+    m, dt, start = len(q), ground.period_s, stored.vector(len(ground.names), "arm", "start")
     seen = ground.chain.seen(q, v)
     place, axes, twist = (
         stored.finite(MOTION, name, (m, *rest))
         for name, rest in (("position", (3,)), ("rotation", (3, 3)), ("twist", (6,)))
     )
     off = {
-        "start posture": (q[0] - np.array(start) if known else np.nan, allowed.JOINT, "rad or m"),
+        "start posture": (q[0] - start, allowed.JOINT, "rad or m"),
+        "instants": (t_s - stored.finite(MOTION, "t_s", (m,)), allowed.TIME_S, "s"),
         "period": (float(stored.finite(MOTION, "period_s", ())) - dt, 0.0, "s"),
         "velocity integrated": (np.diff(v, axis=0) - a[:-1] * dt, REST, "per s"),
         "position integrated": (np.diff(q, axis=0) - (v[1:] + v[:-1]) / 2 * dt, REST * dt, "rad or m"),
@@ -124,7 +129,7 @@ def _command_item(stored: Stored, command: Command, rows: int, begin: float) -> 
 def _without_motion(stored: Stored, ground: Ground, log: Log) -> list[Item]:
     """A log that was not rolled: what stood against it before any motion."""
     found = []
-    for entry in stored.at("blocked"):
+    for entry in stored.tables("blocked"):
         limit, joint = entry.get("limit"), entry.get("joint")
         if limit == "torque" and joint in ground.names:
             found.append(_overloaded(stored, ground, ground.names.index(joint), number_in(entry, "value")))
@@ -133,17 +138,9 @@ def _without_motion(stored: Stored, ground: Ground, log: Log) -> list[Item]:
     return [*found, _verdict(stored, ground, ["no motion"])]
 
 
-def _start(stored: Stored, ground: Ground) -> np.ndarray:
-    """The start posture (1, n)."""
-    try:
-        return np.array(stored.at("arm", "start"), dtype=np.float64).reshape(1, len(ground.names))
-    except (TypeError, ValueError):
-        raise BadFolder("arm.start", "is no posture", f"{stored.folder}/{CELL}") from None
-
-
 def _overloaded(stored: Stored, ground: Ground, joint: int, claimed: float) -> Item:
     """The load of holding the start posture, above the stated torque."""
-    name, q = ground.names[joint], _start(stored, ground)
+    name, q = ground.names[joint], stored.vector(len(ground.names), "arm", "start")[None]
     if ground.engine is None:
         return Item("start", name, (), ground.why_no_engine)
     load = float(ground.engine.torque(q, 0 * q, 0 * q)[0, joint])
@@ -156,7 +153,7 @@ def _overloaded(stored: Stored, ground: Ground, joint: int, claimed: float) -> I
 
 def _elsewhere(stored: Stored, ground: Ground, log: Log) -> Item:
     """The start posture, away from the log's first pose by more than is accepted."""
-    q = _start(stored, ground)
+    q = stored.vector(len(ground.names), "arm", "start")[None]
     seen = ground.chain.seen(q, 0 * q)
     place, axes = first_pose(log, seen.place[0], seen.axes[0])
     far = float(np.linalg.norm(place - seen.place[0])) > ground.accept["strike_position_m"]
@@ -168,11 +165,21 @@ def _verdict(stored: Stored, ground: Ground, failures: list[str]) -> Item:
     """The verdict that follows from what was found here."""
     if not failures and ground.engine is None:
         return Item("verdict", "", (), f"torque is part of it: {ground.why_no_engine}")
-    failed = stored.number("failed_steps") > 0
+    failed, guessed = stored.number("failed_steps") > 0, stored.flag("guessed")
+    checks = []
     if failures and not failed:
         own = "not deliverable"
     else:
-        open_ = failed or bool(ground.unknown & set(ground.accept["require"])) or stored.at("guessed")
+        asked = _guessed(stored)
+        checks.append(same("contacts only guessed", asked, guessed))
+        open_ = failed or bool(ground.unknown & set(ground.accept["require"])) or asked
         own = "undecided" if open_ else "deliverable"
     claims = stored.verdict.get("verdict"), stored.at("verdict")
-    return Item("verdict", "", tuple(same("verdict", own, claim) for claim in claims))
+    checks += [same("verdict", own, claim) for claim in claims]
+    return Item("verdict", "", tuple(checks), SOLVER_FAILED if failed else "")
+
+
+def _guessed(stored: Stored) -> bool:
+    """Whether strikes are peaks of the command that nobody confirmed."""
+    unmarked = not stored.has(LOG, "strike") and len(stored.entries("strikes")) > 0
+    return unmarked and stored.at("follow", "strikes") != "guessed-ok"

@@ -24,13 +24,6 @@ HALVINGS = 100  # of an interval, until nothing is between its ends
 MOST_BOUNCES = 1000
 MOST_M = 1e4  # of an apex or an offset
 MOTIONS = "motions.npz"
-NEEDED = {
-    "accept": tuple(
-        f"strike_{name}"
-        for name in ("window_s", "speed_error_share", "lateral_m_s", "tilt_error_rad", "position_m")
-    ),
-    "margins": ("velocity_share", "acceleration_share", "position_rad", "position_m"),
-}
 LONGEST_S, MOST_ROWS = 600.0, 2_000_000  # of a motion; exchanges last seconds
 
 
@@ -148,16 +141,6 @@ class Exchanges:
         if len(known) < len(normals):
             return None
         return Exchange(place, ball_in, ball_out, np.array(known), np.array(flights_s), self.air, self.bounce)
-
-
-def demands(stored: Stored) -> None:
-    """Raise BadFolder where cell.json does not say what is accepted and kept back."""
-    for table, names in NEEDED.items():
-        for name in names:
-            stored.number(table, name)
-    require = stored.at("accept", "require")
-    if not isinstance(require, list) or not all(isinstance(name, str) for name in require):
-        raise BadFolder("accept.require", "is no list of words", f"{stored.folder}/{CELL}")
 
 
 def launches(air: Air, ways: list[tuple[float, float]]) -> dict[tuple[float, float], Launch]:

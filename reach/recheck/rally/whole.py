@@ -16,7 +16,8 @@ from reach.recheck.arm.ground import Ground
 from reach.recheck.arm.limits import motion_items
 from reach.recheck.arm.trace import fine, quintic
 from reach.recheck.ball import Flights, tops
-from reach.recheck.rally.exchange import MOTIONS, Exchange, Exchanges, Knots, demands
+from reach.recheck.demands import check_demands
+from reach.recheck.rally.exchange import MOTIONS, Exchange, Exchanges, Knots
 from reach.recheck.rally.refusals import (
     FACE_RAD,
     Asked,
@@ -28,7 +29,7 @@ from reach.recheck.rally.refusals import (
     time_item,
 )
 from reach.recheck.shares import DELIVERABLE, NOT_DELIVERABLE, UNDECIDED, claimed, word_of
-from reach.recheck.stored import CELL, BadFolder, Stored, largest
+from reach.recheck.stored import BadFolder, Stored, largest
 from reach.recheck.turns import between
 
 POINTS = "points.npz"
@@ -85,7 +86,7 @@ def items(stored: Stored, ground: Ground, progress: Callable[[str], None]) -> li
     BadFolder
         Where what is stored can't be an envelope's.
     """
-    demands(stored)
+    check_demands(stored)
     n = len(ground.names)
     table = Table.of(stored, n)
     refused = claims(stored, len(table.point), n)
@@ -235,7 +236,7 @@ def _numbers(stored: Stored, *keys: str) -> list[float]:
     """A list of finite numbers of cell.json."""
     found = stored.at(*keys)
     if not isinstance(found, list):
-        raise BadFolder(".".join(keys), "is no list", f"{stored.folder}/{CELL}")
+        raise stored.refused(keys, "is no list")
     return [stored.number(*keys, i) for i in range(len(found))]
 
 
@@ -334,7 +335,7 @@ def _whole(stored: Stored, words: list[str | None]) -> Item:
     if None in words:
         return Item("verdict", "", (), "the verdict of a point could not be told")
     total, done, lost = len(words), words.count(DELIVERABLE), words.count(NOT_DELIVERABLE)
-    word = word_of(total, done, lost, stored.number("rally", "required_share"))
+    word = word_of(total, done, lost, stored.between(0.0, 1.0, "rally", "required_share"))
     figures = {
         "points": total,
         "deliverable": done,

@@ -10,7 +10,7 @@ from dataclasses import replace
 from typing import Any
 
 from reach.evidence.items import Check, same
-from reach.recheck.stored import Stored
+from reach.recheck.stored import Stored, as_number
 
 ROUNDING = 1e-12  # of the number, or of 1 where it is smaller: degrees to radians, and dust read as zero
 LONGEST_TEXT = 60  # characters of one side of two that differ
@@ -177,18 +177,18 @@ def cell_checks(document: Mapping[str, Any], stored: Stored) -> list[Check]:
     down = [0.0, 0.0, -STANDARD_GRAVITY_M_S2]
     found.append(near("gravity", arm.get("gravity_m_s2", down), stored.at("arm", "gravity_m_s2"), "m/s²"))
     found += placement_checks("mount", paddle.get("mount", {}), stored.at("paddle", "mount"))
-    found += table_checks("paddle", paddle, PADDLE, stored.at("paddle"))
-    found += _part_checks(paddle.get("part", []), stored.at("paddle", "parts"))
+    found += table_checks("paddle", paddle, PADDLE, stored.table("paddle"))
+    found += _part_checks(paddle.get("part", []), stored.tables("paddle", "parts"))
     cap = document["tool"]["speed_m_s"] if "tool" in document else None
-    told = stored.at("tool")
-    found.append(near("tool cap", cap, told["speed_m_s"] if told else None, "m/s"))
-    found += table_checks("margins", document.get("margins", {}), MARGINS, stored.at("margins"))
-    found += table_checks("accept", document.get("accept", {}), ACCEPT, stored.at("accept"))
+    told = None if stored.at("tool") is None else stored.at("tool", "speed_m_s")
+    found.append(near("tool cap", cap, told, "m/s"))
+    found += table_checks("margins", document.get("margins", {}), MARGINS, stored.table("margins"))
+    found += table_checks("accept", document.get("accept", {}), ACCEPT, stored.table("accept"))
     for name, defaults in (("ball", BALL), ("contact", CONTACT)):
         if name in document and isinstance(stored.cell.get(name), dict):
             table = document[name]
             asked = {key: default for key, default in defaults.items() if default is not None or key in table}
-            found += table_checks(name, table, asked, stored.at(name))
+            found += table_checks(name, table, asked, stored.table(name))
     return found
 
 
@@ -208,7 +208,7 @@ def command_checks(document: Mapping[str, Any], stored: Stored) -> list[Check]:
         found += _face_checks(table, told)
     if name == "trial":
         for part, defaults in TRIAL_PARTS.items():
-            found += table_checks(f"trial {part}", table.get(part, {}), defaults, told.get(part) or {})
+            found += table_checks(f"trial {part}", table.get(part, {}), defaults, _table(told.get(part)))
         centre = table.get("centre_m", document.get("rally", {}).get("centre_m"))
         found.append(near("trial centre_m", centre, told.get("centre_m"), "m"))
     return found
@@ -230,7 +230,7 @@ def strikes_checks(content: bytes, stored: Stored) -> list[Check]:
         "directions": ([_unit(way) for way in column("dx dy dz")] if turned else normals, "1"),
         "speeds_m_s": (column("paddle_speed_m_s"), "m/s"),
     }
-    told = stored.at("survey")
+    told = stored.table("survey")
     return [near(f"survey {name}", values, told.get(name), unit) for name, (values, unit) in ours.items()]
 
 
@@ -251,7 +251,8 @@ def _face_checks(table: Mapping[str, Any], told: Mapping[str, Any]) -> list[Chec
         bearings = table.get("bearings_deg", [0.0])
         tilted = [_tilted(tilt, bearing) for tilt in table["face_tilts_deg"] for bearing in bearings]
         found.append(near("survey face_tilts_deg", _once(tilted, None), told.get("normals"), "1"))
-    faces = told.get("normals") or []
+    normals = told.get("normals")
+    faces = normals if isinstance(normals, list) else []
     if "strikes" not in table:
         directions = [_unit(table["direction"])] * len(faces) if "direction" in table else faces
         found.append(near("survey direction", directions, told.get("directions"), "1"))
@@ -261,10 +262,14 @@ def _face_checks(table: Mapping[str, Any], told: Mapping[str, Any]) -> list[Chec
     return found
 
 
-def _part_checks(parts: Sequence[Mapping[str, Any]], stored: Any) -> list[Check]:
-    theirs = stored if isinstance(stored, list) else []
-    found = [same("paddle parts", len(parts), len(theirs))]
-    for number, (part, told) in enumerate(zip(parts, theirs, strict=False)):
+def _table(found: Any) -> dict[str, Any]:
+    """A table, an empty one where there is none."""
+    return found if isinstance(found, dict) else {}
+
+
+def _part_checks(parts: Sequence[Mapping[str, Any]], stored: list[dict[str, Any]]) -> list[Check]:
+    found = [same("paddle parts", len(parts), len(stored))]
+    for number, (part, told) in enumerate(zip(parts, stored, strict=False)):
         defaults = {"mass_kg": None, "com_m": None, "inertia_kg_m2": [0.0] * 6}
         found += table_checks(f"paddle part {number}", part, defaults, told)
     return found
@@ -273,11 +278,7 @@ def _part_checks(parts: Sequence[Mapping[str, Any]], stored: Any) -> list[Check]
 def _flat(value: Any) -> list[float | None]:
     if isinstance(value, (list, tuple)):
         return [item for part in value for item in _flat(part)]
-    if value is None:
-        return [None]
-    if isinstance(value, bool) or not isinstance(value, (int, float)):
-        return [math.nan]
-    return [float(value)]
+    return [None] if value is None else [as_number(value)]
 
 
 def _radians(value: Any) -> Any:

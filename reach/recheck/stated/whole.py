@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import csv
 import os
 import tomllib
 from collections.abc import Mapping
@@ -12,14 +13,22 @@ from reach.evidence.items import Check, Item, same
 from reach.formats.files import MAX_LOG_BYTES, MAX_TEXT_BYTES, Reading
 from reach.recheck.stated.asked import cell_checks, command_checks, near, strikes_checks
 from reach.recheck.stated.joints import DRIVE, FIELDS, Said, read_joints, with_limits_file
-from reach.recheck.stored import CELL, BadFolder, Stored
+from reach.recheck.stored import BadFolder, Stored
 
 KIND = "as stated"
-MOST_INPUTS = 100  # files; a cell names five at the most
 STARTS = {"start_rad": 1.0, "start_deg": 0.017453292519943295, "start_m": 1.0}  # to SI units
 NOT_TOLD = "the cell was made in Python: there is no file to compare it with"
 ELSEWHERE = "is not there: run recheck in the folder in which the command was run"
-BROKEN = (ValueError, TypeError, KeyError, AttributeError, IndexError, OverflowError, RecursionError)
+BROKEN = (
+    ValueError,
+    TypeError,
+    KeyError,
+    AttributeError,
+    IndexError,
+    OverflowError,
+    RecursionError,
+    csv.Error,
+)
 
 
 @dataclass(frozen=True)
@@ -60,8 +69,7 @@ def urdf_again(stored: Stored) -> bytes | None:
     BadFolder
         Where it has changed since.
     """
-    path = stored.at("arm", "urdf_path")
-    listed = {name: digest for name, digest in _listed(stored) if name == path}
+    path, listed = stored.word("arm", "urdf_path"), stored.inputs()
     return _verified(path, listed[path], MAX_TEXT_BYTES) if path in listed else None
 
 
@@ -73,26 +81,13 @@ def read_inputs(stored: Stored) -> Inputs:
     BadFolder
         Where one has changed since the run.
     """
-    found = {path: _verified(path, digest, MAX_LOG_BYTES) for path, digest in _listed(stored)}
+    found = {path: _verified(path, digest, MAX_LOG_BYTES) for path, digest in stored.inputs().items()}
     content = {path: data for path, data in found.items() if data is not None}
     return Inputs(content, tuple(path for path in found if path not in content))
 
 
-def _listed(stored: Stored) -> list[tuple[str, str]]:
-    listed = stored.at("inputs")
-    if not isinstance(listed, list) or len(listed) > MOST_INPUTS:
-        raise BadFolder("inputs", "is no list of a run's inputs", f"{stored.folder}/{CELL}")
-    found = []
-    for number in range(len(listed)):
-        path, digest = (stored.at("inputs", number, key) for key in ("path", "sha256"))
-        if not isinstance(path, str) or not isinstance(digest, str):
-            raise BadFolder(f"inputs[{number}]", "is no path with a digest", f"{stored.folder}/{CELL}")
-        found.append((path, digest))
-    return found
-
-
 def _verified(path: str, digest: str, most: int) -> bytes | None:
-    """The bytes of a file, None where it can't be read."""
+    """The bytes of a file, None where it is not there or can't be read."""
     reading = Reading()
     content = reading.read(path, most)
     if content is not None and reading.inputs[0].sha256 != digest:
@@ -147,14 +142,13 @@ def _compared(path: str, document: Mapping[str, Any], inputs: Inputs, stored: St
 
 def _joint_item(joint: Said, stored: Stored, left: str) -> Item:
     """One joint: every limit and number of its drive, or the kind alone where its limits file is not there."""
-    theirs = [told for told in stored.at("arm", "joints") if told["name"] == joint.name]
-    if not theirs:
+    names = [told["name"] for told in stored.tables("arm", "joints")]
+    if joint.name not in names:
         return Item(KIND, joint.name, (same("joint", "on the chain", "none"),))
-    told = theirs[0]
-    checks: list[Check] = [same("kind", joint.kind, told["kind"])]
+    at = ("arm", "joints", names.index(joint.name))
+    checks: list[Check] = [same("kind", joint.kind, stored.at(*at, "kind"))]
     if not left:
-        for field in FIELDS:
-            checks.append(_field_check(field, joint, told["limits"][field]))
+        checks += [_field_check(field, joint, stored.at(*at, "limits", field)) for field in FIELDS]
     return Item(KIND, joint.name, tuple(checks), left)
 
 
@@ -179,9 +173,9 @@ def _chain_checks(
 ) -> list[Check]:
     """The chain's joints in order, the values of those beside it, and the posture at the start."""
     names = [joint.name for joint in chain]
-    found = [same("chain", names, [told["name"] for told in stored.at("arm", "joints")])]
+    found = [same("chain", names, [told["name"] for told in stored.tables("arm", "joints")])]
     locked = {**arm.get("locked_rad", {}), **arm.get("locked_m", {})}
-    held = {told["name"]: told["value"] for told in stored.at("arm", "held")}
+    held = {told["name"]: told["value"] for told in stored.tables("arm", "held")}
     found.append(same("held joints", sorted(joint.name for joint in beside), sorted(held)))
     for joint in beside:
         low, high = joint.values.get("position", (0.0, 0.0))

@@ -11,7 +11,7 @@ from reach.evidence.items import Check, Item, same
 from reach.recheck import allowed
 from reach.recheck.arm.bounds import WAYS
 from reach.recheck.arm.chain import Array
-from reach.recheck.stored import CELL, BadFolder, Stored, largest
+from reach.recheck.stored import Stored, largest
 from reach.recheck.survey.swing import POINTS, Pieces
 
 VECTORS = ("position", "normal", "direction")
@@ -65,9 +65,9 @@ class Strikes:
 def strikes_item(stored: Stored, strikes: Strikes) -> Item:
     """Whether the strikes are those that were asked for: every face at every point of the box, or the listed ones."""
     normals, directions = (_vectors(stored, name) for name in ("normals", "directions"))
-    speeds = _speeds(stored, len(normals))
+    speeds = stored.vector(len(normals), "survey", "speeds_m_s")
     if len(directions) != len(normals):
-        raise _bad(stored, "survey.directions", "is no direction a face")
+        raise stored.refused(("survey", "directions"), "is no direction a face")
     asked = stored.at("survey")
     listed = isinstance(asked, dict) and asked.get("listed") is not None
     points = _vectors(stored, "listed") if listed else _grid(stored, len(strikes))
@@ -101,7 +101,7 @@ def own_way(stored: Stored) -> str:
     """
     way = stored.at("survey", "rotation")
     if way not in WAYS:
-        raise _bad(stored, "survey.rotation", "is none that there is")
+        raise stored.refused(("survey", "rotation"), "is none that there is")
     return str(way)
 
 
@@ -111,7 +111,7 @@ def _grid(stored: Stored, most: int) -> Array:
     spacing = stored.number("survey", "spacing_m")
     sides = [(b - a) / spacing if spacing > 0 else math.nan for a, b in zip(low, high, strict=True)]
     if not all(0 <= side < 1e9 for side in sides):
-        raise _bad(stored, "survey.box_m", "is no box with a spacing")
+        raise stored.refused(("survey", "box_m"), "is no box with a spacing")
     counts = [int(side + HAIR) + 1 for side in sides]
     if math.prod(counts) > most:
         return np.zeros((most + 1, 3))
@@ -119,27 +119,10 @@ def _grid(stored: Stored, most: int) -> Array:
     return np.asarray(np.array(low) + spacing * k)
 
 
-def _speeds(stored: Stored, faces: int) -> Array:
-    """Required speeds (faces,) of the survey's table."""
-    try:
-        found = np.array(stored.at("survey", "speeds_m_s"), dtype=np.float64).reshape(faces)
-    except (TypeError, ValueError):
-        found = np.full(faces, np.nan)
-    if not np.isfinite(found).all():
-        raise _bad(stored, "survey.speeds_m_s", "is no speed a face")
-    return found
-
-
 def _vectors(stored: Stored, key: str) -> Array:
     """Vectors (k, 3) of the survey's table."""
-    try:
-        found = np.array(stored.at("survey", key), dtype=np.float64).reshape(-1, 3)
-    except (TypeError, ValueError):
-        found = np.full((1, 3), np.nan)
-    if not np.isfinite(found).all():
-        raise _bad(stored, f"survey.{key}", "is no list of vectors")
-    return found
-
-
-def _bad(stored: Stored, where: str, what: str) -> BadFolder:
-    return BadFolder(where, what, f"{stored.folder}/{CELL}")
+    found = stored.at("survey", key)
+    if not isinstance(found, list):
+        raise stored.refused(("survey", key), "is no list of vectors")
+    rows = [stored.vector(3, "survey", key, i) for i in range(len(found))]
+    return np.array(rows).reshape(-1, 3)

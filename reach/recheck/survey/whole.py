@@ -14,15 +14,15 @@ from reach.recheck.arm.chain import Array
 from reach.recheck.arm.ground import Ground
 from reach.recheck.arm.limits import KINDS, TOOL, motion_items
 from reach.recheck.arm.trace import FINE, Trace
+from reach.recheck.demands import check_demands
 from reach.recheck.shares import DELIVERABLE, NOT_DELIVERABLE, UNDECIDED, claimed, word_of
-from reach.recheck.stored import CELL, BadFolder, Stored, largest
+from reach.recheck.stored import Stored, largest
 from reach.recheck.survey.strikes import Strikes, own_way, strikes_item
 from reach.recheck.survey.swing import POINTS, stroke
 from reach.recheck.turns import between
 
 DEMONSTRATED, PROVED, SEARCHED = "demonstrated", "proved", "searched"
 REACH, DUTY = "reach", "duty"
-MARGINS = ("position_rad", "position_m", "velocity_share", "acceleration_share")
 EVERY = 100  # strikes between two lines of progress
 
 
@@ -34,7 +34,7 @@ def items(stored: Stored, ground: Ground, progress: Callable[[str], None]) -> li
     BadFolder
         Where what is stored can't be a survey's.
     """
-    _check_settings(stored)
+    check_demands(stored)
     strikes = Strikes.of(stored, len(ground.names))
     unknown = unknown_required(ground)
     with np.errstate(all="ignore"):
@@ -120,15 +120,6 @@ def unknown_required(ground: Ground) -> list[str]:
     return [kind for kind in ground.accept["require"] if kind in lacking]
 
 
-def _check_settings(stored: Stored) -> None:
-    """What is taken from cell.json by name is there, and of its kind."""
-    for key in MARGINS:
-        stored.number("margins", key)
-    for keys in (("accept", "require"), ("unknown",)):
-        if not isinstance(stored.at(*keys), list):
-            raise BadFolder(".".join(keys), "is no list", f"{stored.folder}/{CELL}")
-
-
 def _motion_checks(stored: Stored, ground: Ground, strikes: Strikes, row: int, trace: Trace) -> list[Check]:
     """What a stroke does at the strike and around it, and how far it goes."""
     position, normal, direction = strikes.where(row)
@@ -198,7 +189,7 @@ def _verdict_item(strikes: Strikes, row: int, word: str) -> Item:
 def _whole(stored: Stored, ground: Ground, words: list[str], strikes: Strikes) -> Item:
     """The verdict by the share of strikes, and the counts that the verdict's file gives."""
     total, done, lost = len(words), words.count(DELIVERABLE), words.count(NOT_DELIVERABLE)
-    word = word_of(total, done, lost, stored.number("survey", "required_share"))
+    word = word_of(total, done, lost, stored.between(0.0, 1.0, "survey", "required_share"))
     pairs: list[tuple[str, str | None]] = [
         (kind, name)
         for kind in KINDS
@@ -207,9 +198,7 @@ def _whole(stored: Stored, ground: Ground, words: list[str], strikes: Strikes) -
         if math.isnan(side)
     ]
     pairs += [(TOOL, None)] if math.isinf(ground.tool_m_s) else []
-    told = [
-        (entry.get("limit"), entry.get("joint")) for entry in stored.at("unknown") if isinstance(entry, dict)
-    ]
+    told = [(entry.get("limit"), entry.get("joint")) for entry in stored.tables("unknown")]
     away = int((strikes.columns["limit"] == REACH).sum())
     figures = {"strikes": total, "deliverable": done, "not_deliverable": lost, "unreachable": away}
     told_alike = same("unknown limits", sorted(map(str, pairs)), sorted(map(str, told)))
