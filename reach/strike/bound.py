@@ -197,9 +197,13 @@ def _full_rank(rows: Array, target: Array, lo: Array, hi: Array) -> tuple[Array,
     usable = np.abs(along) > 1e-9 * np.maximum(size, 1e-300)
     scale = 1 / np.where(usable, along, 1.0)
     values, largest = np.zeros(usable.shape), np.zeros(m)
+    idle = np.zeros((len(duals), n, 1), dtype=bool)
+    if r > 1:
+        idle[np.arange(len(duals))[:, None], _subsets(n, r - 1)] = True
     for j in range(n):
         y = sum(duals[:, i] * columns[j, i] for i in range(r))
-        largest = np.maximum(largest, np.abs(y).max(axis=0))
+        # Of columns that a product is made of, rounding alone is left, whatever their scale: no sign of full rank.
+        largest = np.maximum(largest, np.where(idle[:, j], 0.0, np.abs(y)).max(axis=0))
         y *= scale
         values += np.maximum(y * high_side[j], y * low_side[j])
     values[~usable] = np.inf
