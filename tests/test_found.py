@@ -37,6 +37,8 @@ STRIKES = {
     2026000409: "a straight stroke that two joints can't begin along its line",
     2026000209: "a joint at the end of its travel with no limit of acceleration",
     3000024: "a joint that turns endlessly along its path, with no limit of jerk",
+    2026001049: "a swing at rest whose bound is unlimited",
+    2026001079: "a still paddle's bound above that of a turning one, where vertices are all but parallel to the rows",
     7000029: "joint speeds of a near singular strike, by a ridge",
 }
 

@@ -166,6 +166,7 @@ def test_another_seed_is_another_search_with_the_same_verdicts() -> None:
     assert one.verdict.tolist() == other.verdict.tolist()
 
 
+@pytest.mark.campaign  # a second run and two workers give the same bytes by default, in test_properties.py
 @pytest.mark.usefixtures("verdicts_alone")
 def test_order_changes_nothing(monkeypatch: pytest.MonkeyPatch) -> None:
     # Chunks that are not whole lines of the grid, so that other strikes come together. What stops them is left out.
@@ -361,6 +362,7 @@ def test_rows_of_the_bench_hold_together(surveyed: reach.SurveyResult) -> None:
     assert verdicts.count("deliverable") > 15 and verdicts.count("not deliverable") > 3
 
 
+@pytest.mark.campaign  # rows of the bench by default, of random arms in test_random_strikes.py
 def test_rows_of_a_published_arm_hold_together() -> None:
     cell = boxed(arm_cell("fer"), (0.35, -0.3, 0.3), (0.65, 0.3, 0.6), 0.3, 0.6, run_up_m=0.2)
     rows_hold_together(reach.survey_strikes(cell, advice=False))
@@ -454,6 +456,7 @@ def test_a_paddle_that_may_turn_delivers_what_a_still_one_does(
     assert free.verdict[done].tolist() == ["deliverable"] * int(done.sum())
 
 
+@pytest.mark.campaign  # a remedy's longer run-up is run again by default
 def test_a_longer_run_up_is_no_slower(small: Cell, plain: Points) -> None:
     assert small.survey is not None and small.survey.run_up_m == 0.3
     shortest, short, none = (quick(asked(small, run_up_m=m)) for m in (0.05, 0.1, None))

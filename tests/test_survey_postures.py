@@ -94,7 +94,7 @@ def by_least_squares(setting: Setting, position: Array, normal: Array, starts: i
     return np.array(found).reshape(-1, len(lo))
 
 
-@pytest.mark.parametrize("name", ARMS)
+@pytest.mark.parametrize("name", [ARMS[0], *(pytest.param(n, marks=pytest.mark.campaign) for n in ARMS[1:])])
 def test_what_another_search_finds_is_found(name: str) -> None:
     cell = struck(name, 3, 21, 0.5)
     setting, survey = Setting.of(cell), cell.survey
@@ -281,7 +281,7 @@ def test_the_search_that_decides_finds_nearly_all_of_the_bound(
     assert np.median(share) >= 0.98 and share.min() >= 0.9, np.sort(share).round(3)
 
 
-@pytest.mark.parametrize("name", ["bench6", "ur5"])
+@pytest.mark.parametrize("name", ["bench6", pytest.param("ur5", marks=pytest.mark.campaign)])
 def test_no_strike_is_refused_while_a_posture_allows_it(name: str, monkeypatch: pytest.MonkeyPatch) -> None:
     # Required is nine tenths of the bound that a posture of a denser search has. What costs time is left out:
     # it has no say in what is refused.

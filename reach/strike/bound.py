@@ -18,6 +18,7 @@ from numpy.typing import NDArray
 from reach.cell import Array
 from reach.kinematics import Chain
 
+EXACT = 1e-6  # of a strike's speed: joint velocities further from what it asks are no strike
 RANK_TOLERANCE = 1e-7  # of the largest singular value (rows in m/s): below it a row counts as none
 FLAT = 1e-10  # of the size of r columns' product: largest minor of a matrix that may lack rank
 ASIDE_TOLERANCE = 1e-7  # part of the wanted twist outside the range of A that counts as none

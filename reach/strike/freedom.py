@@ -50,7 +50,8 @@ def climbed(speeds: Speeds, axes: Array, tangent: Array, speed: Array, enough: A
     enough : (c,) m/s, from there on nothing is looked for
     """
     tangent, speed = tangent.copy(), speed.copy()
-    step = FIRST_STEP / np.where(speed > 0, np.sqrt(speed * np.maximum(speed, enough)), np.inf)
+    ahead = np.where(np.isfinite(enough), np.maximum(speed, enough), speed)
+    step = FIRST_STEP / np.where(speed > 0, np.sqrt(speed * ahead), np.inf)
     compasses = _compasses(axes.shape[2])
     for k in range(ROUNDS if axes.shape[2] else 0):
         going = np.flatnonzero((speed > 0) & (speed < enough))

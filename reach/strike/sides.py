@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from reach.cell import Array
-from reach.strike.bound import Bounds, maximisers, strike_rows, upper_bounds, world_dual
+from reach.strike.bound import EXACT, Bounds, maximisers, strike_rows, upper_bounds, world_dual
 from reach.strike.freedom import axes_of, climbed
 from reach.strike.path import FARTHEST_TURN_RAD, Load, Paths, load_along, swings, travel_along
 from reach.strike.profile import Profile, double_s
@@ -59,11 +59,16 @@ def upper(setting: Setting, q: Array, direction: Array) -> Upper:
     rows = strike_rows(jacobian, rotation, setting.spin_free, setting.length_m)
     linear = np.ascontiguousarray(jacobian[:, :3])
     still, free = upper_bounds(rows, direction, lo, hi), upper_bounds(linear, direction, lo, hi)
+    # What a turning paddle can't pass, a still one can't: the better proof where the still one's vertices are all but
+    # parallel to its rows.
+    looser = still.speed > free.speed
+    dual = np.where(looser[:, None], 0.0, still.dual)
+    dual[looser, :3] = free.dual[looser]
     cap = setting.tool_cap_m_s
     return Upper(
-        np.minimum(still.speed, cap),
+        np.minimum(np.minimum(still.speed, free.speed), cap),
         np.minimum(free.speed, cap),
-        world_dual(still.dual, rotation, setting.length_m),
+        world_dual(dual, rotation, setting.length_m),
         world_dual(free.dual, rotation, setting.length_m),
         rows if setting.still else linear,
         still if setting.still else free,
@@ -253,13 +258,19 @@ def timed(setting: Setting, paths: Paths, load: Load, ceiling: Array, floor: Arr
 
 
 def _tangents(rows: Array, direction: Array, lo: Array, hi: Array, bounds: Bounds) -> Array:
-    """Joint velocity per m/s (c, n) of the bounds' maximisers; where nothing limits it, with the least motion."""
+    """Joint velocity per m/s (c, n) of the bounds' maximisers; where nothing limits it, with the least motion.
+
+    Nan where it is not exactly the strike's: next to singular postures rounding leaves more than that.
+    """
     velocity = maximisers(rows, direction, lo, hi, bounds)
     with np.errstate(divide="ignore", invalid="ignore"):
         tangent = velocity / bounds.speed[:, None]
     for i in np.flatnonzero(np.isinf(bounds.speed)):
         target = np.r_[direction[i], np.zeros(rows.shape[1] - 3)]
         tangent[i] = np.linalg.pinv(rows[i]) @ target
+    done = np.einsum("crn,cn->cr", rows, tangent)
+    done[:, :3] -= direction
+    tangent[~(np.abs(done).max(axis=1) <= EXACT)] = np.nan
     return np.asarray(tangent)
 
 

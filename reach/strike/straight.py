@@ -8,13 +8,12 @@ import numpy as np
 
 from reach.cell import Array
 from reach.kinematics import Chain
-from reach.strike.bound import strike_rows
+from reach.strike.bound import EXACT, strike_rows
 from reach.strike.path import NODES, SPREAD, Paths
 
 LONGEST_M = 0.6  # a side, where no run-up ends it sooner
 STRAIN = 4.0  # times the joint speed at the strike: from there the line runs into a singularity
 SHORTEST_M = 1e-6  # stands for no room at all
-EXACT = 1e-6  # of the speed: a line that the joints can't begin so exactly is none that the arm can go
 REFINED = 3
 DAMPING = 1e-6  # of the largest eigenvalue, in the inverse of the rows
 
