@@ -718,7 +718,6 @@ BY_WITNESS = {  # bugs that the second opinion agrees to, each with its reason
     "rally: a quintic's acceleration at a knot",  # the motion that the knots stand for keeps every limit all the same
     "rally: cycles told half as long",  # not decided anew
     "rally: half the sight's delay",  # not decided anew
-    "trial: a ball by its name, too large",  # taken as the run read it
     "trial: a sensor without delay",  # what the law saw is not stored
 }
 
@@ -728,7 +727,22 @@ def test_nothing_speaks_against_the_honest_program(tmp_path: Path, run: Run) -> 
     assert run(tmp_path) == []
 
 
-@pytest.mark.parametrize("name", BUGS)
+BY_DEFAULT = (
+    "survey",
+    "trial: an impact",
+    "trial: held",
+    "trial: the torque rate",
+    "rally: gravity",
+    "rally: apexes",
+)
+
+
+def marked(name: str) -> Any:
+    """A bug, those of rally and trial for the most part left to the campaign."""
+    return pytest.param(name, marks=() if name.startswith(BY_DEFAULT) else pytest.mark.campaign)
+
+
+@pytest.mark.parametrize("name", [marked(name) for name in BUGS])
 def test_a_deliberate_bug_is_caught(tmp_path: Path, monkeypatch: pytest.MonkeyPatch, name: str) -> None:
     run, patch = BUGS[name]
     patch(monkeypatch)

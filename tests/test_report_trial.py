@@ -342,7 +342,7 @@ def test_a_motion_that_was_not_kept_is_left_out(result: TrialResult) -> None:
 
 
 def test_folder_holds_everything_and_no_runs_of_another_run(result: TrialResult, tmp_path: Path) -> None:
-    complete = {"verdict.json", "trial.csv", "report.html", "evidence/cell.json"}
+    complete = {"verdict.json", "trial.csv", "report.html", "evidence/cell.json", "evidence/digests.json"}
     write_folder(result, tmp_path, tmp_path / "junit.xml")
     assert listing(tmp_path) == complete | {"evidence/runs.npz", "junit.xml"}
     written = write_folder(made("blocked"), tmp_path)

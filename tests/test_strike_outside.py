@@ -105,7 +105,7 @@ def fastest_through(
     return float(speeds[GRID])
 
 
-@pytest.mark.parametrize("name", CELLS)
+@pytest.mark.parametrize("name", ["bench7", pytest.param("fer", marks=pytest.mark.campaign)])
 @pytest.mark.parametrize(
     ("run_up_m", "acceleration"),
     [
