@@ -17,6 +17,7 @@ from reach.recheck.stated import whole as stated
 from reach.recheck.survey import whole as survey
 from reach.recheck.trial import whole as trial
 
+NOT_DECIDED = "what stops or would help, needs, headroom and verdicts without margins are not decided anew"
 CHECKERS = {"follow": follow, "survey": survey, "rally": rally, "trial": trial}
 
 
@@ -61,7 +62,7 @@ def opinion(folder: str | PathLike[str], progress: Callable[[str], None] | None 
         command=stored.command,
         verdict=str(stored.verdict.get("verdict")),
         items=tuple(found),
-        notes=tuple(checker.notes(stored)),
+        notes=(*checker.notes(stored), NOT_DECIDED),
         engine=None if second.engine is None else second.engine.name,
         files=stored.files,
         versions={str(k): str(v) for k, v in versions.items()} if isinstance(versions, dict) else {},

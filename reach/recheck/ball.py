@@ -52,12 +52,16 @@ class Air:
         ------
         BadFolder
         """
-        mass, radius, rho = (stored.number("ball", key) for key in ("mass_kg", "radius_m", "air_kg_m3"))
+        mass, radius, rho = (
+            stored.between(0.0, 1e9, "ball", key) for key in ("mass_kg", "radius_m", "air_kg_m3")
+        )
         if not (mass > 0 and radius > 0):
             raise refused("ball", "has no mass or no radius", stored)
         share = rho * np.pi * radius * radius / (2 * mass)
         gravity = np.array([stored.number("arm", "gravity_m_s2", i) for i in range(3)])
-        drag, lift = (share * stored.number("ball", f"{what}_coefficient") for what in ("drag", "lift"))
+        drag, lift = (
+            share * stored.between(0.0, 1e9, "ball", f"{what}_coefficient") for what in ("drag", "lift")
+        )
         return Air(drag, lift, gravity)
 
     @property
@@ -248,19 +252,21 @@ class Bounce:
         ------
         BadFolder
         """
-        table: Any = stored.at("contact", "restitution_at")
-        rows = [[0.0, stored.number("contact", "restitution")]]
+        place = "contact", "restitution_at"
+        table: Any = stored.at(*place)
+        rows = [[0.0, stored.between(0.0, 1.0, "contact", "restitution")]]
         if isinstance(table, list) and table:
             count = range(len(table))
-            rows = [[stored.number("contact", "restitution_at", k, i) for i in (0, 1)] for k in count]
+            rows = [
+                [stored.between(0.0, most, *place, k, i) for i, most in enumerate((1e9, 1.0))] for k in count
+            ]
         elif table not in ([], None):
             raise refused("contact.restitution_at", "is no table", stored)
         at, values = np.array(rows).T
         if not (np.diff(at) > 0).all():
             raise refused("contact.restitution_at", "has speeds that do not grow", stored)
-        friction, tangential = (
-            stored.number("contact", key) for key in ("friction", "tangential_restitution")
-        )
+        friction = stored.between(0.0, 1e9, "contact", "friction")
+        tangential = stored.between(-1.0, 1.0, "contact", "tangential_restitution")
         return Bounce(at, values, friction, tangential, stored.at("contact", "arm_gives") is True)
 
     def newton(self, approach: Array) -> Array:

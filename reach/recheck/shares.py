@@ -4,9 +4,10 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
+from dataclasses import replace
 
 from reach.evidence.items import Check, same
-from reach.recheck.stored import Stored
+from reach.recheck.stored import CELL, VERDICT, Stored
 
 DELIVERABLE, NOT_DELIVERABLE, UNDECIDED = "deliverable", "not deliverable", "undecided"
 
@@ -24,7 +25,19 @@ def claimed(stored: Stored, word: str, figures: Mapping[str, object]) -> list[Ch
     given = stored.verdict.get("figures")
     given = given if isinstance(given, dict) else {}
     checks = [same(name.replace("_", " "), value, given.get(name)) for name, value in figures.items()]
+    return [*checks, *verdict_checks(stored, word)]
+
+
+def verdict_checks(stored: Stored, word: str) -> list[Check]:
+    """A verdict against what both files of a run claim, and against the sentence that says it."""
+    sentence = stored.verdict.get("sentence", word)
+    begins = isinstance(sentence, str) and sentence.startswith(word)
+    claims = (
+        (VERDICT, stored.verdict.get("verdict")),
+        (CELL, stored.at("verdict")),
+        ("the sentence", word if begins else sentence),
+    )
     return [
-        *checks,
-        *(same("verdict", word, said) for said in (stored.verdict.get("verdict"), stored.at("verdict"))),
+        replace(same("verdict", word, said), text="" if said == word else f"{word} here, {said} in {place}")
+        for place, said in claims
     ]

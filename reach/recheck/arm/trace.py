@@ -10,6 +10,7 @@ from reach.recheck.arm.chain import Array
 from reach.recheck.stored import BadFolder
 
 FINE = 4  # samples a control period
+MOST_NUMBERS = 20_000_000  # of a motion's positions; half an hour of seven joints at 1 kHz has 14 million
 LONGEST = 1_000_000  # control periods of a motion through knots; a minute at 1 kHz has 60,000
 
 
@@ -43,8 +44,8 @@ def fine(
     strike : control row of the strike
     """
     m = len(q)
-    if m == 0:
-        raise BadFolder("motion", "has no rows")
+    if m == 0 or q.size > MOST_NUMBERS:
+        raise BadFolder("motion", f"has no rows, or more than {MOST_NUMBERS} positions")
     row = np.append(np.repeat(np.arange(m - 1), FINE), m - 1)
     part = np.append(np.tile(np.arange(FINE), m - 1), 0)
     since = (part * period_s / FINE)[:, None]

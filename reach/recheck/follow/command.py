@@ -87,7 +87,7 @@ def log_again(stored: Stored) -> dict[str, np.ndarray] | str:
     reading = Reading()
     content = reading.read(source, MAX_LOG_BYTES) if source in digests else None
     if content is None:
-        return f"{source} is not there; run recheck in the folder in which the command was run"
+        return "the log's file is not there"
     if reading.inputs[0].sha256 != digests[source]:
         raise BadFolder("file", "changed since the run; run the command again", source)
     text, _ = decode(content)

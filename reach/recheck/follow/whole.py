@@ -14,11 +14,13 @@ from reach.recheck.demands import check_demands
 from reach.recheck.follow.command import LOG, Command, Log, command_of, first_pose, log_again
 from reach.recheck.follow.strikes import strike_items
 from reach.recheck.follow.uses import limit_items
+from reach.recheck.shares import verdict_checks
 from reach.recheck.stored import BadFolder, Stored, largest, number_in
 from reach.recheck.turns import apart
 
 MOTION = "motion.npz"
 SOLVER_FAILED = "that no solver answered in some step leaves no trace"
+SEARCHED = "that no posture reaches the log's first pose rests on a search"
 REST = 1e-6  # rad/s or m/s, and by the period a change of it: below it the arm stands
 Progress = Callable[[str], None]
 
@@ -62,7 +64,7 @@ def items(stored: Stored, ground: Ground, progress: Progress) -> list[Item]:
 def notes(stored: Stored) -> list[str]:
     """What of it rests on a search."""
     return [
-        f"that no posture reaches the log's first pose rests on a search: {entry.get('text')}"
+        f"{SEARCHED}: {entry.get('text')}"
         for entry in stored.tables("blocked")
         if entry.get("basis") == "searched"
     ]
@@ -128,14 +130,18 @@ def _command_item(stored: Stored, command: Command, rows: int, begin: float) -> 
 
 def _without_motion(stored: Stored, ground: Ground, log: Log) -> list[Item]:
     """A log that was not rolled: what stood against it before any motion."""
-    found = []
-    for entry in stored.tables("blocked"):
+    found, blocked = [], stored.tables("blocked")
+    if not blocked:
+        raise BadFolder(
+            MOTION, "is missing, and cell.json has nothing that stood against a motion", stored.folder
+        )
+    for entry in blocked:
         limit, joint = entry.get("limit"), entry.get("joint")
         if limit == "torque" and joint in ground.names:
             found.append(_overloaded(stored, ground, ground.names.index(joint), number_in(entry, "value")))
         elif limit == "reach" and entry.get("basis") == "proved" and log.pose is not None:
             found.append(_elsewhere(stored, ground, log))
-    return [*found, _verdict(stored, ground, ["no motion"])]
+    return [*found, _verdict(stored, ground, ["no motion"], "" if found else SEARCHED)]
 
 
 def _overloaded(stored: Stored, ground: Ground, joint: int, claimed: float) -> Item:
@@ -161,8 +167,8 @@ def _elsewhere(stored: Stored, ground: Ground, log: Log) -> Item:
     return Item("start", "first pose", (same("away from the start posture", far or turned, True),))
 
 
-def _verdict(stored: Stored, ground: Ground, failures: list[str]) -> Item:
-    """The verdict that follows from what was found here."""
+def _verdict(stored: Stored, ground: Ground, failures: list[str], why: str = "") -> Item:
+    """The verdict that follows from what was found here; `why` it may not be checkable."""
     if not failures and ground.engine is None:
         return Item("verdict", "", (), f"torque is part of it: {ground.why_no_engine}")
     failed, guessed = stored.number("failed_steps") > 0, stored.flag("guessed")
@@ -174,9 +180,8 @@ def _verdict(stored: Stored, ground: Ground, failures: list[str]) -> Item:
         checks.append(same("contacts only guessed", asked, guessed))
         open_ = failed or bool(ground.unknown & set(ground.accept["require"])) or asked
         own = "undecided" if open_ else "deliverable"
-    claims = stored.verdict.get("verdict"), stored.at("verdict")
-    checks += [same("verdict", own, claim) for claim in claims]
-    return Item("verdict", "", tuple(checks), SOLVER_FAILED if failed else "")
+    checks += verdict_checks(stored, own)
+    return Item("verdict", "", tuple(checks), SOLVER_FAILED if failed else why)
 
 
 def _guessed(stored: Stored) -> bool:

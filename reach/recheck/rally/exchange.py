@@ -24,7 +24,7 @@ HALVINGS = 100  # of an interval, until nothing is between its ends
 MOST_BOUNCES = 1000
 MOST_M = 1e4  # of an apex or an offset
 MOTIONS = "motions.npz"
-LONGEST_S, MOST_ROWS = 600.0, 2_000_000  # of a motion; exchanges last seconds
+LONGEST_S, MOST_ROWS = 600.0, 500_000  # of a motion; exchanges last seconds
 
 
 @dataclass(frozen=True, eq=False)

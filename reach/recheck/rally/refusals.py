@@ -18,7 +18,7 @@ from reach.recheck.arm.bounds import DUAL, cap_m_s, ends, velocity_box
 from reach.recheck.arm.chain import Array
 from reach.recheck.arm.ground import Ground
 from reach.recheck.rally.exchange import Exchange
-from reach.recheck.stored import BadFolder, Stored, largest
+from reach.recheck.stored import CELL, BadFolder, Stored, largest
 from reach.recheck.turns import between
 
 PROOFS = "proofs.npz"
@@ -275,6 +275,8 @@ def _ranges(ground: Ground) -> Box:
         stated = ground.limits.lo[kind] if sign < 0 else ground.limits.hi[kind]
         kept = np.abs(stated) * (1 - float(ground.margins[f"{kind}_share"]))
         sides.append(np.where(np.isfinite(kept), np.minimum(kept, UNLIMITED), UNLIMITED))
+        if kind == "acceleration" and not (sides[-1] > 0).all():
+            raise BadFolder("arm.joints", "has a joint whose acceleration is limited to nothing", CELL)
     return Box(-sides[0], *sides[1:])
 
 

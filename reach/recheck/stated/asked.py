@@ -65,6 +65,13 @@ BALL = {
     "lift_coefficient": 0.0,
     "air_kg_m3": 1.2,
 }
+BALLS = {
+    "table tennis": {"mass_kg": 0.0027, "radius_m": 0.020},
+    "tennis": {"mass_kg": 0.0577, "radius_m": 0.0335},
+    "squash": {"mass_kg": 0.0240, "radius_m": 0.020},
+}
+"""ITTF Technical Leaflet T3; ITF Rules of Tennis, Appendix I, mid-range; WSF specification, mid-range (from memory)."""
+DRIVE = {"delay_s": 0.0, "lag_s": 0.0, "jitter_s": 0.0}
 CONTACT: dict[str, Any] = {
     "restitution": None,
     "restitution_spread": 0.0,
@@ -184,9 +191,15 @@ def cell_checks(document: Mapping[str, Any], stored: Stored) -> list[Check]:
     found.append(near("tool cap", cap, told, "m/s"))
     found += table_checks("margins", document.get("margins", {}), MARGINS, stored.table("margins"))
     found += table_checks("accept", document.get("accept", {}), ACCEPT, stored.table("accept"))
+    if stored.command == "follow":
+        told = stored.at("drive")
+        found.append(same("drives given", "drive" in document, told is not None))
+        found += table_checks(
+            "drive", document.get("drive", {}), DRIVE, DRIVE if told is None else stored.table("drive")
+        )
     for name, defaults in (("ball", BALL), ("contact", CONTACT)):
         if name in document and isinstance(stored.cell.get(name), dict):
-            table = document[name]
+            table = {**BALLS.get(document[name].get("preset", ""), {}), **document[name]}
             asked = {key: default for key, default in defaults.items() if default is not None or key in table}
             found += table_checks(name, table, asked, stored.table(name))
     return found

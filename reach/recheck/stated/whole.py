@@ -5,7 +5,7 @@ from __future__ import annotations
 import csv
 import os
 import tomllib
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -18,7 +18,7 @@ from reach.recheck.stored import BadFolder, Stored
 KIND = "as stated"
 STARTS = {"start_rad": 1.0, "start_deg": 0.017453292519943295, "start_m": 1.0}  # to SI units
 NOT_TOLD = "the cell was made in Python: there is no file to compare it with"
-ELSEWHERE = "is not there: run recheck in the folder in which the command was run"
+ELSEWHERE = "not there: run recheck in the folder in which the command was run"
 BROKEN = (
     ValueError,
     TypeError,
@@ -50,7 +50,8 @@ def items(stored: Stored) -> list[Item]:
     inputs = read_inputs(stored)
     if not inputs.content and not inputs.missing:
         return [Item(KIND, "", (), NOT_TOLD)]
-    found = [Item(KIND, path, (), f"{path} {ELSEWHERE}") for path in inputs.missing]
+    told = f"{_list_of(inputs.missing)} {ELSEWHERE}"
+    found = [Item(KIND, path, (), told) for path in inputs.missing]
     cell = next(((path, table) for path, table in _tables(inputs) if _is_cell(table)), None)
     if cell is None:
         return found or [Item(KIND, "", (), "none of the inputs is a cell file")]
@@ -107,6 +108,11 @@ def _tables(inputs: Inputs) -> list[tuple[str, dict[str, Any]]]:
     return found
 
 
+def _list_of(paths: Sequence[str]) -> str:
+    """Paths in words, up to "is" or "are"."""
+    return f"{', '.join(paths)} {'is' if len(paths) == 1 else 'are'}"
+
+
 def _is_cell(table: Mapping[str, Any]) -> bool:
     return isinstance(table.get("arm"), dict) and "urdf" in table["arm"]
 
@@ -116,9 +122,12 @@ def _compared(path: str, document: Mapping[str, Any], inputs: Inputs, stored: St
     arm = document["arm"]
     urdf = _beside(path, arm["urdf"])
     limits = _beside(path, arm["limits"]) if "limits" in arm else None
-    named = [name for name in (urdf, limits) if name is not None]
+    log = _log_of(path, document, stored)
+    named = [name for name in (urdf, limits, log) if name is not None]
     listed = {*inputs.content, *inputs.missing}
     checks = [same("named file", name, name if name in listed else "none of the inputs") for name in named]
+    checks.append(same("URDF", urdf, stored.at("arm", "urdf_path")))
+    checks += [] if log is None else [same("log", log, stored.at("follow", "source"))]
     checks.append(same("tip", arm["tip"], stored.at("arm", "tip")))
     checks += cell_checks(document, stored)
     found, left = [], ""
@@ -128,16 +137,23 @@ def _compared(path: str, document: Mapping[str, Any], inputs: Inputs, stored: St
         if limits is not None and limits in inputs.content:
             chain = with_limits_file(chain, dict(_tables(inputs))[limits])
         whole = limits is None or limits in inputs.content
-        found = [_joint_item(joint, stored, "" if whole else f"{limits} {ELSEWHERE}") for joint in chain]
+        found = [_joint_item(joint, stored, "" if whole else f"{limits} is {ELSEWHERE}") for joint in chain]
     else:
-        left = f"{urdf} {ELSEWHERE}"
+        left = f"{urdf} is {ELSEWHERE}"
     found.append(Item(KIND, "cell", tuple(checks), left))
     asked, left = command_checks(document, stored), ""
     if stored.command == "survey" and "strikes" in document["survey"]:
         file = _beside(path, document["survey"]["strikes"])
         asked += strikes_checks(inputs.content[file], stored) if file in inputs.content else []
-        left = "" if file in inputs.content else f"{file} {ELSEWHERE}"
+        left = "" if file in inputs.content else f"{file} is {ELSEWHERE}"
     return [*found, Item(KIND, stored.command, tuple(asked), left)] if asked else found
+
+
+def _log_of(path: str, document: Mapping[str, Any], stored: Stored) -> str | None:
+    """The log that the cell names, None where another was handed over or none is followed."""
+    if stored.command != "follow" or stored.at("follow", "source") == "arrays":
+        return None
+    return _beside(path, document["follow"]["commands"])
 
 
 def _joint_item(joint: Said, stored: Stored, left: str) -> Item:

@@ -15,7 +15,7 @@ from reach.recheck.stored import BadFolder, Stored, largest
 
 POINTS, MOTIONS = "points.npz", "motions.npz"
 SWING, STRAIGHT = "swing", "straight"
-MOST_ROWS = 1_000_000  # control periods of one stroke; a second at 1 kHz has 1000
+MOST_ROWS = 500_000  # control periods of one stroke; a second at 1 kHz has 1000
 WHOLE = 1e-9  # of a period: a side that is longer by less ends on its row
 FARTHEST = 1e6  # rad or m, per s, per s²: what no joint comes near to
 

@@ -14,7 +14,7 @@ from reach.recheck.arm.ground import Ground
 from reach.recheck.arm.limits import TOOL, TORQUE_KINDS, kept, overshoot, torques, values
 from reach.recheck.arm.trace import FINE, Trace, fine
 from reach.recheck.ball import refused
-from reach.recheck.shares import word_of
+from reach.recheck.shares import verdict_checks, word_of
 from reach.recheck.stored import VERDICT, BadFolder, Stored, largest, number_in
 from reach.recheck.trial.bounces import (
     RUNS,
@@ -245,7 +245,8 @@ def _outcome(
         same(f"in {VERDICT}", (told, claim.recovered, at, len(c.t_s)), listed),
     ]
     if gaps is not None and told in MISSED and not ending:
-        checks.append(Check("ball over the face", max(float(gaps.gap[-1]), 0.0), allowed.PLACE_M, "m"))
+        over_m = float(np.maximum(gaps.gap[-1], 0.0)) if len(gaps.gap) else math.nan
+        checks.append(Check("ball over the face", over_m, allowed.PLACE_M, "m"))
     why = "that no solver answered leaves no trace" if told == FAILED[0] else ""
     if told == FAILED[1] and ending:
         why = "that the law failed after the last bounce leaves no trace"
@@ -317,7 +318,7 @@ def _verdict(stored: Stored, ground: Ground, asked: Asked, words: list[Word]) ->
     shares = zip(
         ("recovered_share", "recovered_low_share", "recovered_high_share"), _shares(good, count), strict=True
     )
-    checks = [same("verdict", own, stored.verdict.get("verdict")), same("verdict", own, stored.at("verdict"))]
+    checks = verdict_checks(stored, own)
     checks += [
         Check(name.replace("_", " "), abs(share - number_in(stored.verdict, name)), allowed.PEAK_SHARE, "")
         for name, share in shares

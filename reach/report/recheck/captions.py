@@ -18,7 +18,7 @@ def of_shares(found: Sequence[Found], left_out: int) -> Caption:
         "no share: it is of words or no number, or none is allowed."
     )
     if left_out:
-        text += f" {plural(left_out, 'comparison')} with smaller shares left out; recheck.csv has all."
+        text += f" {plural(left_out, 'comparison')} with no larger share left out; recheck.csv has all."
     one = worst(found)
     gist = "" if one is None else f"Largest: {item_name(one.item)}: {check_text(one.check)}."
     return Caption("Differences against what is allowed", text, gist)

@@ -20,6 +20,7 @@ ROWS = 30
 NAME_COLUMNS, VALUE_COLUMNS = 38, 30
 LEAST, MOST = -16, 16  # decades of a share that are drawn, at most
 STEPS = 7  # labelled decades, about
+EDGE_ROOM = 0.7  # of the way from one label to the next, between a decade's and an edge's
 
 AGREE_STYLE: dict[str, Any] = {**MARK, "marker": "o", "color": GREEN, "label": "agrees"}
 EXACT_STYLE: dict[str, Any] = {
@@ -105,7 +106,12 @@ def _place(check: Check, low: int, high: int) -> float:
 def _scale(axes: Axes, low: int, high: int) -> None:
     """Draw the line of what is allowed, and name the decades and both edges."""
     step = max(1, math.ceil((high - low) / STEPS))
-    decades = [decade for decade in range(low, high + 1) if decade % step == 0]
+    room = EDGE_ROOM * step  # the edges have names of their own
+    decades = [
+        decade
+        for decade in range(low, high + 1)
+        if decade == 0 or (decade % step == 0 and low - 1 + room <= decade <= high + 1 - room)
+    ]
     places = [low - 1, *decades, high + 1]
     axes.set_xticks(places, ["0", *(f"{10.0**decade:g}" for decade in decades), "no share"])
     axes.set_xlim(low - 1.2, high + 1.2)

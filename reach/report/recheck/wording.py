@@ -77,7 +77,8 @@ def place_text(item: Item) -> str:
 def found_text(found: Found) -> str:
     """Return which comparison of what."""
     known = found.check.text in found.item.where
-    return f"{told(found.check.name) if known else check_name(found.check)}, {place_text(found.item)}"
+    name = told(found.check.name) if known else check_name(found.check)
+    return f"{name}, {told(found.item.where)}" if found.item.where else name
 
 
 def check_name(check: Check) -> str:
