@@ -25,6 +25,7 @@ from recheck_case import evidence_only, forged, named, redigest
 
 import reach
 from reach.cell import Cell
+from reach.cli import main
 from reach.errors import InputError
 from reach.evidence.items import AGREE, DIFFER, NOT_CHECKABLE, decided
 from reach.rally.answer import gathered
@@ -338,7 +339,7 @@ def test_strikes_that_were_guessed_are_counted_again(tmp_path):
 # The files themselves
 
 
-def listed(entries: list[dict[str, Any]], more: bool = True) -> Callable[[Path], None]:
+def listed(entries: list[Any], more: bool = True) -> Callable[[Path], None]:
     """Put entries on the list of digests, beside or instead of those there."""
 
     def change(folder: Path) -> None:
@@ -478,7 +479,7 @@ FILES: dict[str, tuple[Callable[[Path], None], str]] = {
     "an absolute file": (listed([entry("/etc/passwd")]), "which lies elsewhere"),
     "a name of two lines": (listed([entry("x\ny")]), "which lies elsewhere"),
     "a name that is none": (listed([{"path": 7, "sha256": None}]), "without path and sha256"),
-    "an entry that is none": (listed(["x"]), "without path and sha256"),  # type: ignore[list-item]
+    "an entry that is none": (listed(["x"]), "without path and sha256"),
     "a link outside": (linked("/etc/passwd"), "x.csv: file: changed since"),
     "an endless file": (linked("/dev/zero"), "x.csv: file: is not a regular file"),
     "a pipe": (pipe, "x.csv: file: is not a regular file"),
@@ -560,6 +561,62 @@ def test_a_file_that_is_not_listed_is_not_read(runs, tmp_path):
     folder = shutil.copytree(runs / "follow", tmp_path / "out")
     (folder / "evidence" / "points.npz").write_bytes(b"no archive")
     assert decided(opinion(folder).items) == AGREE
+
+
+def gone(name: str) -> Callable[[Path], None]:
+    """A file or folder deleted."""
+
+    def change(folder: Path) -> None:
+        path = folder / name
+        shutil.rmtree(path) if path.is_dir() else path.unlink()
+
+    return change
+
+
+MISSING: dict[str, tuple[Callable[[Path], None], str]] = {
+    "evidence": (gone("evidence"), r"evidence/digests.json: is not there: evidence/ belongs to the results"),
+    "an archive": (gone("evidence/log.npz"), r"evidence/log.npz: file: is not there, and was when"),
+    "the verdict": (gone("verdict.json"), r"verdict.json: is not there: the run did not end"),
+}
+
+
+@pytest.mark.parametrize("name", MISSING)
+def test_what_is_missing_is_told(runs, tmp_path, name):
+    change, told = MISSING[name]
+    folder = shutil.copytree(runs / "follow", tmp_path / "out")
+    change(folder)
+    with pytest.raises(InputError, match=told):
+        opinion(folder)
+
+
+def test_the_command_line_tells_a_difference_and_what_is_a_second_opinion(runs, tmp_path, capsys):
+    """Exit code 1 for a difference in words and numbers; 2 for a folder that recheck wrote."""
+
+    def change(arrays: Any, cell: Any, verdict: Any) -> None:
+        verdict["verdict"] = cell["verdict"] = "deliverable"
+
+    folder, out = forged(runs / "follow", tmp_path / "forged", change), str(tmp_path / "again")
+    assert main(["recheck", str(folder), "--out", out]) == 1
+    shown = " ".join(capsys.readouterr().out.split())
+    assert shown.startswith("differ: follow says deliverable; 24 of 25 items agree, 1 differ")
+    assert "not deliverable here, deliverable in verdict.json" in shown
+    assert main(["recheck", out, "--out", str(tmp_path / "third"), "--quiet"]) == 2
+    assert "is a second opinion's; name the folder that the command itself wrote" in capsys.readouterr().err
+
+
+def test_inputs_that_are_elsewhere_are_told_once(runs, tmp_path):
+    """As when recheck is run in another folder than the command was."""
+
+    def change(arrays: Any, cell: Any, verdict: Any) -> None:
+        for one in cell["inputs"]:
+            one["path"] = one["path"].replace(str(runs), "elsewhere")
+        cell["arm"]["urdf_path"], cell["follow"]["source"] = "elsewhere/gantry.urdf", "elsewhere/commands.csv"
+
+    found = opinion(forged(runs / "follow", tmp_path / "out", change)).items
+    assert decided(found) == NOT_CHECKABLE
+    told = {item.left_out for item in found if item.left_out}
+    (where,) = (text for text in told if "run recheck in the folder in which the command was run" in text)
+    assert where.count("elsewhere/") == 5 and told == {where, "the log's file is not there"}
 
 
 # Inputs that cell.json names, and robots
@@ -668,6 +725,7 @@ resource.setrlimit(resource.RLIMIT_AS, ({bytes}, {bytes}))
 resource.setrlimit(resource.RLIMIT_CPU, ({seconds}, {seconds}))
 import warnings
 from reach.cell import Cell
+from reach.cli import main
 from reach.errors import InputError
 from reach.evidence.items import decided
 from reach.recheck.answer import opinion

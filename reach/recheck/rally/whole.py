@@ -116,7 +116,7 @@ def notes(stored: Stored) -> list[str]:
         f"{away} refused because a search found no posture for a strike, which is not decided anew": away,
         f"{shown} refused by speed or by time are proved in the postures stored, their changes to first order; that "
         "no other posture does better rests on a search": shown,
-        "edges, largest offsets, other centres, errors and verdicts without margins are not decided anew": 1,
+        "edges, largest offsets, other centres and errors are not decided anew": 1,
     }
     return [text for text, count in told.items() if count]
 
