@@ -24,7 +24,7 @@ MAGIC = b"\x93NUMPY\x01\x00"  # of version 1.0, which any array of plain numbers
 HEADER = re.compile(
     rb"\{'descr': '([<>|][fiubU]\d{1,6})', 'fortran_order': (True|False), 'shape': \(([\d, ]{0,200})\), \} *\n"
 )
-BROKEN = (
+BROKEN = (  # what the library's reader of archives raises, NotImplementedError for a packing that it does not know
     *(ValueError, TypeError, OSError, EOFError, NotImplementedError),
     *(struct.error, zipfile.BadZipFile, zlib.error),
 )
